@@ -1,0 +1,48 @@
+"""simimg: what a telescope's detector will record, and whether two stars will come apart.
+
+The public names load their modules when first asked for, so that ``import simimg`` is cheap.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from simimg.errors import InputError as InputError
+    from simimg.errors import RunError as RunError
+    from simimg.exposure import expose as expose
+    from simimg.frame import Frame as Frame
+    from simimg.resolving.limits import limits as limits
+    from simimg.resolving.measure import measure as measure
+    from simimg.resolving.records import PairMeasurement as PairMeasurement
+    from simimg.scene.file import load_scene as load_scene
+    from simimg.scene.model import Scene as Scene
+
+__version__ = "0.1.0"
+
+_HOMES = {
+    "Frame": "simimg.frame",
+    "InputError": "simimg.errors",
+    "PairMeasurement": "simimg.resolving.records",
+    "RunError": "simimg.errors",
+    "Scene": "simimg.scene.model",
+    "expose": "simimg.exposure",
+    "limits": "simimg.resolving.limits",
+    "load_scene": "simimg.scene.file",
+    "measure": "simimg.resolving.measure",
+}
+
+__all__ = ["__version__", *_HOMES]
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _HOMES:
+        raise AttributeError(f"module 'simimg' has no attribute {name!r}")
+    value = getattr(import_module(_HOMES[name]), name)
+    globals()[name] = value
+    return value
+
+
+def __dir__() -> list[str]:
+    return sorted(__all__)

@@ -1,0 +1,48 @@
+"""What can go wrong, sorted by whose mend it is.
+
+`InputError` is for what a user can put right (a scene, a frame, an option): the command line prints
+its lines and exits with 2. `RunError` is for what failed while running (a full disk, say): exit 1.
+"""
+
+from __future__ import annotations
+
+
+class SimimgError(Exception):
+    """Any failure that simimg reports in its own words; carries an exit code."""
+
+    exit_code = 1
+
+    def __init__(self, *lines: str) -> None:
+        self.lines: tuple[str, ...] = lines
+        super().__init__("\n".join(lines))
+
+
+class InputError(SimimgError):
+    """Wrong input: one line for each mistake, each with its mend."""
+
+    exit_code = 2
+
+
+class RunError(SimimgError):
+    """Something failed while running; no input would have been right."""
+
+    exit_code = 1
+
+
+def mistake(where: str, key: str, what: str, mend: str = "") -> str:
+    """One mistake as one line, ``WHERE: key: what; mend``.
+
+    Parameters
+    ----------
+    where : str
+        File (or option) in which the mistake stands.
+    key : str
+        Dotted key, column or keyword; may be empty when the whole file is meant.
+    what : str
+        What is wrong.
+    mend : str, optional
+        What to write instead.
+    """
+    head = f"{where}: {key}: " if key else f"{where}: "
+    line = f"{head}{what}; {mend}" if mend else f"{head}{what}"
+    return " ".join(line.split())
