@@ -1,0 +1,83 @@
+"""What the engine paints: points and shapes with their electrons, in detector pixels.
+
+Places are in pixels, from 0 at the centre of the first pixel, x along columns and y along rows, and
+may lie outside the frame. Electrons are those of one exposure over the whole PSF. A shape brings
+its own Fourier transform or its own quadrature points in radians about its centre.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any, Protocol
+
+import numpy as np
+
+from simimg.arrays import AnyArray, FloatArray, frozen
+
+
+@dataclass(frozen=True)
+class Points:
+    """Point sources: `x`, `y` in pixels and `electrons`, each of shape ``(N,)``."""
+
+    x: FloatArray
+    y: FloatArray
+    electrons: FloatArray
+
+    def __post_init__(self) -> None:
+        for name in ("x", "y", "electrons"):
+            object.__setattr__(self, name, frozen(np.atleast_1d(np.asarray(getattr(self, name), float))))
+        if not self.x.shape == self.y.shape == self.electrons.shape:
+            raise ValueError("x, y and electrons of points must have one shape")
+
+    def __len__(self) -> int:
+        return int(self.x.size)
+
+    def chosen(self, rows: AnyArray) -> Points:
+        """The points picked by a boolean mask or indices `rows`."""
+        return Points(self.x[rows], self.y[rows], self.electrons[rows])
+
+
+def no_points() -> Points:
+    """An empty set of points."""
+    return Points(np.empty(0), np.empty(0), np.empty(0))
+
+
+class TransformShape(Protocol):
+    """A shape known by its Fourier transform, 1 at the origin."""
+
+    @property
+    def radius(self) -> float:
+        """Angle (rad) from the centre beyond which next to no light lies."""
+        ...
+
+    def transform(self, u: FloatArray, v: FloatArray) -> AnyArray:
+        """Transform at frequencies `u`, `v` (cycles/rad), broadcast together."""
+        ...
+
+
+@dataclass(frozen=True)
+class PlacedShape:
+    """A shape with its place (pixels) and its electrons.
+
+    `shape` has either ``transform(u, v)`` or ``points(max_frequency)`` (places in radians from the
+    centre, weights summing to 1) with ``pixel_side`` and ``pixel_angle`` of the square that each of
+    those points stands for.
+    """
+
+    x: float
+    y: float
+    electrons: float
+    shape: Any
+
+
+@dataclass(frozen=True)
+class Sources:
+    """Everything that is up there: points and shapes."""
+
+    points: Points
+    shapes: tuple[PlacedShape, ...] = ()
+
+    @property
+    def total_electrons(self) -> float:
+        """Electrons of all sources together, on the frame or off it."""
+        return float(self.points.electrons.sum() + sum(s.electrons for s in self.shapes))
