@@ -7,8 +7,8 @@ from typing import Any, TypeVar
 import numpy as np
 from numpy.typing import NDArray
 
-FloatArray = NDArray[np.float64]
-ComplexArray = NDArray[np.complex128]
+FloatArray = NDArray[np.floating[Any]]
+ComplexArray = NDArray[np.complexfloating[Any, Any]]
 AnyArray = NDArray[Any]
 
 _Scalar = TypeVar("_Scalar", bound=np.generic)

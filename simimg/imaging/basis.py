@@ -42,11 +42,14 @@ class WingLaw:
         Coefficient of ``theta^(-11/3)`` (rad^(5/3)).
     spikes : tuple of (float, float)
         For each set of spikes its level per steradian and the angle (rad) from which it falls.
+    core : float
+        Angle (rad) that holds the core, where the laws of the wing do not hold yet.
     """
 
     cubic: float = 0.0
     kolmogorov: float = 0.0
     spikes: tuple[tuple[float, float], ...] = ()
+    core: float = 0.0
 
     def __call__(self, theta: FloatArray) -> FloatArray:
         """Envelope per steradian at angles `theta` (rad, positive)."""
@@ -55,8 +58,13 @@ class WingLaw:
             smooth = smooth + level * np.minimum(1.0, (angle / theta) ** 2)
         return smooth
 
+    def mean(self, theta: FloatArray) -> FloatArray:
+        """Azimuthal mean per steradian at angles `theta` (rad), without rings and spikes."""
+        return 0.5 * self.cubic * theta**-3.0 + self.kolmogorov * theta ** (-11.0 / 3.0)
+
     def light_beyond(self, theta: FloatArray) -> FloatArray:
         """Share of the light farther out than `theta` (rad), spikes left out (they are thin)."""
+        theta = np.maximum(theta, 1e-30)
         return 2.0 * pi * (0.5 * self.cubic / theta + 0.6 * self.kolmogorov * theta ** (-5.0 / 3.0))
 
     def reach(self, level: FloatArray | float) -> FloatArray:
@@ -66,6 +74,7 @@ class WingLaw:
         """
         share = np.asarray(level, dtype=np.float64) / (2.0 + len(self.spikes))
         farthest = (self.cubic / share) ** (1.0 / 3.0)
+        farthest = np.maximum(farthest, self.core)
         farthest = np.maximum(farthest, (self.kolmogorov / share) ** (3.0 / 11.0))
         for spike_level, angle in self.spikes:
             beyond = angle * np.sqrt(spike_level / share)
@@ -168,5 +177,6 @@ def _widest(laws: Sequence[WingLaw]) -> WingLaw:
     return WingLaw(
         cubic=max(law.cubic for law in laws),
         kolmogorov=max(law.kolmogorov for law in laws),
+        core=max(law.core for law in laws),
         spikes=max((law.spikes for law in laws), key=lambda s: sum(a * b * b for a, b in s)),
     )

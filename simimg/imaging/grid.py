@@ -94,7 +94,9 @@ def band_edge(transfer: Transfer) -> float:
     return float(f[min(int(above[-1]) + 1, f.size - 1)]) if above.size else float(f[-1])
 
 
-def _quarter_planes(transfer: Transfer, nodes: int = 192) -> tuple[FloatArray, FloatArray, FloatArray]:
+def _quarter_planes(
+    transfer: Transfer, nodes: int = 192
+) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Midpoint samples of ``|T|`` over the half plane within the band edge."""
     edge = band_edge(transfer)
     u = (np.arange(nodes) + 0.5) * (edge / nodes)
@@ -196,12 +198,13 @@ def plan_grid(
     wings = basis.wings
     wrap_level = WRAP_SHARE * peak / pixel_scale**2
     wrap = max(ceil(float(wings.reach(wrap_level)) / pixel_scale), 4 * WIDTH)
-    # Many faint tails add up: lower the level until their mean over the frame is small too.
+    # Many faint tails add up. What is left out is put back as a smooth far field, right to some
+    # tenths; so the level need only sink until the tails' mean is no more than a share of the peak.
     if len(points) > 1:
-        for _ in range(40):
+        for _ in range(20):
             share = level / np.maximum(points.electrons, 1e-300) / pixel_scale**2
             tails = points.electrons * wings.light_beyond(wings.reach(share))
-            if tails.sum() / (columns * rows) <= max(OUTSIDE_SHARE / 4 * peak_electrons, 1e-300):
+            if tails.sum() / (columns * rows) <= OUTSIDE_SHARE * peak_electrons:
                 break
             level *= 0.5
 
@@ -232,7 +235,9 @@ def _splits(columns: int, rows: int) -> list[tuple[int, int]]:
     return splits
 
 
-def reach_pixels(basis: PsfBasis, electrons: FloatArray, level: float, pixel_scale: float) -> FloatArray:
+def reach_pixels(
+    basis: PsfBasis, electrons: FloatArray, level: float, pixel_scale: float
+) -> FloatArray:
     """How far (pixels) a star of so many electrons adds more than `level` electrons a pixel."""
     share = level / np.maximum(electrons, 1e-300) / pixel_scale**2
     return np.asarray(basis.wings.reach(share) / pixel_scale, dtype=np.float64)
@@ -252,7 +257,12 @@ def _tiles(
     points = sources.points
     reach = reach_pixels(basis, points.electrons, level, pixel_scale)
     shapes = [
-        (s.x, s.y, s.shape.radius / pixel_scale, float(reach_pixels(basis, np.array(s.electrons), level, pixel_scale)))
+        (
+            s.x,
+            s.y,
+            s.shape.radius / pixel_scale,
+            float(reach_pixels(basis, np.array(s.electrons), level, pixel_scale)),
+        )
         for s in sources.shapes
     ]
     x_edges = np.linspace(0, columns, across + 1).astype(int)
@@ -266,7 +276,12 @@ def _tiles(
             x, y = points.x[seen], points.y[seen]
             margins = [0.0, 0.0, 0.0, 0.0]
             if x.size:
-                margins = [column - x.min(), x.max() - column_end + 1, row - y.min(), y.max() - row_end + 1]
+                margins = [
+                    column - x.min(),
+                    x.max() - column_end + 1,
+                    row - y.min(),
+                    y.max() - row_end + 1,
+                ]
             for sx, sy, radius, far in shapes:
                 beyond = [
                     column - sx + radius,
@@ -284,7 +299,9 @@ def _tiles(
                     int(column_end - column),
                     int(row_end - row),
                     (left, right, bottom, top),
-                    _even_length(int(column_end - column) + left + right + _padding(left, right, wrap)),
+                    _even_length(
+                        int(column_end - column) + left + right + _padding(left, right, wrap)
+                    ),
                     _even_length(int(row_end - row) + bottom + top + _padding(bottom, top, wrap)),
                 )
             )

@@ -1,9 +1,9 @@
 """Expected electrons: the sources seen through the PSFs, before any photon is counted.
 
-Points and shapes are spread on the fine grid, carried to the Fourier plane by a real FFT, multiplied
-there by the transfer function (optics, air, pixel) and brought back. Only the frequencies inside the
-band are kept, and the spectrum is folded on itself before the way back, so that the inverse FFT
-gives the detector's pixels and nothing else. Electrons a pixel; axes ``[y, x]``.
+Points and shapes are spread on the fine grid, carried to the Fourier plane by a real FFT,
+multiplied there by the transfer function (optics, air, pixel) and brought back. Only the
+frequencies inside the band are kept, and the spectrum is folded on itself before the way back, so
+that the inverse FFT gives the detector's pixels and nothing else. Electrons a pixel; axes ``[y, x]``.
 """
 
 from __future__ import annotations
@@ -19,12 +19,13 @@ from simimg.arrays import AnyArray, FloatArray
 from simimg.imaging.basis import PsfBasis, Transfer
 from simimg.imaging.grid import GridPlan, Tile, band_edge, grid_dtype, plan_grid, reach_pixels
 from simimg.imaging.kernel import kernel_transform
-from simimg.imaging.sources import Sources
+from simimg.imaging.sources import Points, Sources, one_point
 from simimg.imaging.spread import add_stamp, shape_stamp, spread_points
 
 DEFAULT_MEMORY = 2 * 2**30
 _ROW_BLOCK = 128
 _TABLE = 1 << 15
+_FAR_NODES = 5
 
 
 def expected_image(
@@ -95,19 +96,20 @@ def _paint(
     outside_y = np.maximum(tile.row - points.y, points.y - (tile.row + tile.rows - 1))
     distance = np.hypot(np.maximum(outside_x, 0.0), np.maximum(outside_y, 0.0))
     seen = distance <= reach_pixels(basis, points.electrons, plan.level, pixel_scale)
-    points = points if seen.all() else points.chosen(seen)
+    if not seen.all():
+        _add_far_field(piece, tile, basis, points.chosen(~seen), pixel_scale)
+        points = points.chosen(seen)
     if not len(points) and not sources.shapes:
         return
     weights = basis.weights(points)
-    folded: AnyArray | None = None
+    folded: AnyArray = np.zeros(0)
     for k, member in enumerate(basis.members):
         grid = _spread(tile, plan, basis, sources, points, weights[:, k], k, pixel_scale)
-        spectrum = _forward(grid, tile, plan, member, pixel_scale, threads)
+        spectrum = _forward(grid, tile, member, pixel_scale, threads)
         del grid
         _multiply(spectrum, tile, plan, member, pixel_scale, threads)
         part = _fold(spectrum, tile, plan)
-        folded = part if folded is None else folded + part
-    assert folded is not None
+        folded = folded + part if k else part
     periodic = scipy.fft.irfft2(
         folded, s=(tile.length_y, tile.length_x), workers=threads, overwrite_x=True
     )
@@ -115,20 +117,36 @@ def _paint(
     piece += periodic[bottom : bottom + tile.rows, left : left + tile.columns]
 
 
+def _add_far_field(
+    piece: AnyArray, tile: Tile, basis: PsfBasis, far: Points, pixel_scale: float
+) -> None:
+    """Add the faint smooth light of stars too far away to be painted, by the wings' mean law."""
+    nodes_x = np.linspace(0.0, tile.columns - 1.0, _FAR_NODES)
+    nodes_y = np.linspace(0.0, tile.rows - 1.0, _FAR_NODES)
+    level = np.empty((_FAR_NODES, _FAR_NODES))
+    for j, y in enumerate(nodes_y):
+        for i, x in enumerate(nodes_x):
+            distance = np.hypot(far.x - tile.column - x, far.y - tile.row - y) * pixel_scale
+            level[j, i] = far.electrons @ basis.wings.mean(distance)
+    level *= pixel_scale**2
+    across = np.array([np.interp(np.arange(tile.columns), nodes_x, row) for row in level])
+    for row in range(tile.rows):
+        place = min(row / max(tile.rows - 1, 1) * (_FAR_NODES - 1), _FAR_NODES - 1.0)
+        node = min(int(place), _FAR_NODES - 2)
+        piece[row] += (1.0 - place + node) * across[node] + (place - node) * across[node + 1]
+
+
 def _spread(
     tile: Tile,
     plan: GridPlan,
     basis: PsfBasis,
     sources: Sources,
-    points: object,
+    points: Points,
     weights: FloatArray,
     member: int,
     pixel_scale: float,
 ) -> AnyArray:
     """The sources on the tile's grid, each with its weight for one member of the basis."""
-    from simimg.imaging.sources import Points
-
-    assert isinstance(points, Points)
     count = plan.subdivision
     n_x, n_y = tile.length_x * count, tile.length_y * count
     grid = np.zeros((n_y, n_x), dtype=grid_dtype(n_x * n_y))
@@ -142,7 +160,7 @@ def _spread(
     )
     used = ((tile.rows + bottom + top) * count, (tile.columns + left + right) * count)
     for placed in sources.shapes:
-        weight = basis.weights(Points(placed.x, placed.y, placed.electrons))[0, member]
+        weight = basis.weights(one_point(placed.x, placed.y, placed.electrons))[0, member]
         stamp, stamp_left, stamp_bottom = shape_stamp(
             placed,
             x=(placed.x - origin_x) * count,
@@ -155,7 +173,7 @@ def _spread(
 
 
 def _forward(
-    grid: AnyArray, tile: Tile, plan: GridPlan, member: Transfer, pixel_scale: float, threads: int
+    grid: AnyArray, tile: Tile, member: Transfer, pixel_scale: float, threads: int
 ) -> AnyArray:
     """The grid's spectrum, columns beyond the band left out: shape ``(n_y, kept)``."""
     n_y, n_x = grid.shape
@@ -165,12 +183,19 @@ def _forward(
     spectrum = np.empty((n_y, kept), dtype=kind)
     for start in range(0, n_y, 4 * _ROW_BLOCK):
         block = grid[start : start + 4 * _ROW_BLOCK]
-        spectrum[start : start + 4 * _ROW_BLOCK] = scipy.fft.rfft(block, axis=1, workers=threads)[:, :kept]
+        spectrum[start : start + 4 * _ROW_BLOCK] = scipy.fft.rfft(block, axis=1, workers=threads)[
+            :, :kept
+        ]
     return np.asarray(scipy.fft.fft(spectrum, axis=0, workers=threads, overwrite_x=True))
 
 
 def _multiply(
-    spectrum: AnyArray, tile: Tile, plan: GridPlan, member: Transfer, pixel_scale: float, threads: int
+    spectrum: AnyArray,
+    tile: Tile,
+    plan: GridPlan,
+    member: Transfer,
+    pixel_scale: float,
+    threads: int,
 ) -> None:
     """Multiply by the transfer function and divide the gridding kernel out, in place."""
     n_y, kept = spectrum.shape
@@ -224,7 +249,7 @@ def _modulus_table(
         place -= node
         place *= steps[node]
         place += table[node]
-        return place
+        return np.asarray(place)
 
     return value
 

@@ -25,7 +25,9 @@ class Points:
 
     def __post_init__(self) -> None:
         for name in ("x", "y", "electrons"):
-            object.__setattr__(self, name, frozen(np.atleast_1d(np.asarray(getattr(self, name), float))))
+            object.__setattr__(
+                self, name, frozen(np.atleast_1d(np.asarray(getattr(self, name), float)))
+            )
         if not self.x.shape == self.y.shape == self.electrons.shape:
             raise ValueError("x, y and electrons of points must have one shape")
 
@@ -40,6 +42,11 @@ class Points:
 def no_points() -> Points:
     """An empty set of points."""
     return Points(np.empty(0), np.empty(0), np.empty(0))
+
+
+def one_point(x: float, y: float, electrons: float) -> Points:
+    """A single point."""
+    return Points(np.array([x]), np.array([y]), np.array([electrons]))
 
 
 class TransformShape(Protocol):

@@ -89,7 +89,9 @@ def shape_stamp(
     k_y = np.fft.fftfreq(n)
     shape = placed.shape
     if hasattr(shape, "transform"):
-        spectrum = np.asarray(shape.transform(k_x[None, :] / cell, k_y[:, None] / cell), complex)
+        spectrum: AnyArray = np.asarray(
+            shape.transform(k_x[None, :] / cell, k_y[:, None] / cell), complex
+        )
         spectrum *= np.exp(-2j * np.pi * k_x * (x - left))[None, :] * kernel_transform(k_x)[None, :]
         spectrum *= np.exp(-2j * np.pi * k_y * (y - bottom))[:, None]
         spectrum *= kernel_transform(k_y)[:, None]
@@ -107,7 +109,9 @@ def shape_stamp(
     return stamp, left, bottom
 
 
-def add_stamp(grid: AnyArray, stamp: FloatArray, left: int, bottom: int, *, used: tuple[int, int]) -> None:
+def add_stamp(
+    grid: AnyArray, stamp: FloatArray, left: int, bottom: int, *, used: tuple[int, int]
+) -> None:
     """Add a stamp to the grid; cells outside the `used` (rows, columns) of the grid are dropped."""
     rows, columns = used
     # The kernel's half width may hang over the used part: those cells wrap into the padding.
