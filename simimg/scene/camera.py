@@ -1,0 +1,113 @@
+"""The camera of a scene: pixels, and what turns electrons into counts. SI inside."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from typing import Annotated, ClassVar
+
+from simimg.scene.keys import Flag, Quantity, Several, Text, Whole
+from simimg.scene.table import Fault, Table, key
+from simimg.scene.telescope import Angle
+
+
+class Camera(Table):
+    """The detector; electrons until the gain, counts (ADU) after it."""
+
+    heading: ClassVar[str] = "[camera]"
+
+    name: Annotated[str | None, Text(sample="Camera A")] = key(
+        "Name of the camera; INSTRUME in the header.",
+        None,
+    )
+    pixels: Annotated[tuple[int, int] | None, Several(Whole(1, 32768, 256), 2)] = key(
+        "Columns and rows of the detector.", None
+    )
+    pixel_size: Annotated[
+        float | None, Quantity("length", at_least="0.01 um", at_most="1 m", sample="9 um")
+    ] = key("Side of a pixel; with telescope.focal_length it gives the pixel scale.", None)
+    pixel_scale: Annotated[
+        float | None,
+        Quantity("angle", at_least="0.000001 arcsec", at_most="1 deg", sample="0.12 arcsec"),
+    ] = key("Angle that a pixel's side spans on the sky.", None)
+    quantum_efficiency: Annotated[float, Quantity("ratio", above=0.0, at_most=1.0)] = key(
+        "Electrons per photon in the band.",
+        1.0,
+        absent="1",
+        meaning="every photon is detected",
+    )
+    gain: Annotated[
+        float, Quantity("gain", at_least="0.0001 electron/adu", at_most="1000000 electron/adu")
+    ] = key(
+        "Electrons for one count.",
+        1.0,
+        absent="1 electron/adu",
+        meaning="one count is one electron",
+    )
+    read_noise: Annotated[
+        float, Quantity("electrons", at_least="0 electron", at_most="1000000 electron")
+    ] = key(
+        "Standard deviation of the read noise in each pixel.",
+        0.0,
+        absent="0 electron",
+        meaning="no read noise",
+    )
+    dark_current: Annotated[
+        float,
+        Quantity("electron rate", at_least="0 electron/s", at_most="1000000000 electron/s"),
+    ] = key(
+        "Dark current of each pixel.",
+        0.0,
+        absent="0 electron/s",
+        meaning="no dark current",
+    )
+    bias: Annotated[float, Quantity("counts", at_least="0 adu", at_most="1000000000 adu")] = key(
+        "Level added to every pixel before it is digitised.",
+        0.0,
+        absent="0 adu",
+        meaning="no bias: noise below zero is clipped",
+    )
+    full_well: Annotated[
+        float | None,
+        Quantity(
+            "electrons", above="0 electron", at_most="1000000000000 electron", sample="90000 e-"
+        ),
+    ] = key(
+        "Electrons that a pixel can hold.",
+        None,
+        absent="none",
+        meaning="pixels hold any number of electrons",
+    )
+    bit_depth: Annotated[int, Whole(1, 31, 16)] = key(
+        "Bits of the digitiser; the largest count is 2 to this power less 1.",
+        16,
+        absent="16",
+        meaning="the largest count is 65535",
+    )
+    serial: Annotated[int, Whole(0, 2**63 - 1, 7)] = key(
+        "Serial number, from which the fixed patterns of the detector are drawn.",
+        0,
+        absent="0",
+        meaning="the detector with serial number 0",
+    )
+    rotation: Annotated[float, Angle] = key(
+        "Position angle of the detector's +y, north through east.",
+        0.0,
+        absent="0 deg",
+        meaning="north is up",
+    )
+    mirrored: Annotated[bool, Flag()] = key(
+        "True for an odd number of reflections.",
+        False,
+        absent="false",
+        meaning="east is left where north is up",
+    )
+
+    def agree(self) -> Iterator[Fault]:
+        """The bias must leave room for counts."""
+        largest = 2**self.bit_depth - 1
+        if self.bias >= largest:
+            yield Fault(
+                ("bias",),
+                f"must be below the largest count of {self.bit_depth} bits, {largest}",
+                "write a smaller bias or a larger bit_depth",
+            )

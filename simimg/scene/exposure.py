@@ -1,0 +1,84 @@
+"""The sky's light, the exposure, and where the telescope points. SI inside."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from typing import Annotated, Any, ClassVar
+
+from simimg.scene.keys import Instant, Quantity, Whole
+from simimg.scene.table import Fault, Table, key
+
+
+class Sky(Table):
+    """The uniform light of the sky; a scene without it has a dark sky."""
+
+    heading: ClassVar[str] = "[sky]"
+
+    surface_brightness: Annotated[
+        float | None, Quantity("surface brightness", at_least=-30.0, at_most=50.0)
+    ] = key("Magnitudes per square arcsecond in the band, as observed.", None)
+    electrons: Annotated[float | None, Quantity("signal", at_least=0.0, at_most=1e12)] = key(
+        "Electrons detected in each pixel in each exposure, in place of the brightness.", None
+    )
+
+    @classmethod
+    def together(cls, given: Mapping[str, Any]) -> Iterator[Fault]:
+        """One of the two ways to say how bright."""
+        if "surface_brightness" in given and "electrons" in given:
+            yield Fault(
+                ("electrons",),
+                "contradicts sky.surface_brightness: each fixes the other",
+                "leave out surface_brightness or electrons",
+            )
+        elif "surface_brightness" not in given and "electrons" not in given:
+            yield Fault(
+                ("surface_brightness",),
+                "is required in [sky] and missing",
+                "add surface_brightness = 21.4, or leave out [sky] for a dark sky",
+            )
+
+
+class Exposure(Table):
+    """How long, how often, and with which noise."""
+
+    heading: ClassVar[str] = "[exposure]"
+
+    time: Annotated[float | None, Quantity("time", above="0 s", at_most="10000000 s")] = key(
+        "Exposure time of one frame; needed unless every signal is in electrons.", None
+    )
+    count: Annotated[int, Whole(1, 100_000, 3)] = key(
+        "Number of exposures.", 1, absent="1", meaning="one exposure"
+    )
+    seed: Annotated[int, Whole(0, 2**63 - 1, 20260412)] = key(
+        "Seed of all noise; the same seed gives the same frame.",
+        0,
+        absent="0",
+        meaning="the noise of seed 0",
+    )
+    start: Annotated[str | None, Instant()] = key(
+        "Begin of the first exposure in UTC; exposure i begins i (time + overhead) later.",
+        None,
+        absent="none",
+        meaning="no DATE-OBS in the header",
+    )
+    overhead: Annotated[
+        float, Quantity("time", at_least="0 s", at_most="10000000 s", sample="5 s")
+    ] = key(
+        "Time from the end of one exposure to the begin of the next.",
+        0.0,
+        absent="0 s",
+        meaning="exposures follow one another at once",
+    )
+
+
+class Pointing(Table):
+    """Where the centre of the field lies."""
+
+    heading: ClassVar[str] = "[pointing]"
+
+    ra: Annotated[float, Quantity("right ascension", at_least="0 deg", at_most="360 deg")] = key(
+        "Right ascension of the field centre; colons are read as hours."
+    )
+    dec: Annotated[float, Quantity("declination", at_least="-90 deg", at_most="90 deg")] = key(
+        "Declination of the field centre."
+    )

@@ -1,0 +1,162 @@
+"""The files that a scene names, read as data and nothing else.
+
+Every file is hashed; one of up to 16 MiB is kept whole, a larger one by its path and hash. Its size
+is known and bounded before any memory is taken.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import os
+import stat
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+from simimg.errors import InputError
+
+LARGEST_KEPT = 16 * 2**20
+"""Largest file, in bytes, whose content is kept."""
+
+LARGEST_READ = 2**30
+"""Largest file, in bytes, that a scene may name."""
+
+_FILE_KEYS = (("telescope", "pupil"),)
+_FILE_TABLES = ("picture", "catalogue")
+
+
+class UnusableFileError(Exception):
+    """A file that cannot be used: what is wrong with it, and what to do instead."""
+
+    def __init__(self, what: str, mend: str) -> None:
+        self.what = what
+        self.mend = mend
+        super().__init__(f"{what}; {mend}")
+
+
+@dataclass(frozen=True)
+class InputFile:
+    """A file that a scene names.
+
+    Attributes
+    ----------
+    name : str
+        The path as written in the scene.
+    sha256 : str
+        Hash of the content, in hexadecimal.
+    content : bytes or None
+        None for a file of more than `LARGEST_KEPT` bytes.
+    path : Path or None
+        Where it was read; None where it came out of a frame.
+    """
+
+    name: str
+    sha256: str
+    content: bytes | None = field(repr=False)
+    path: Path | None
+
+    def read(self) -> bytes:
+        """The whole content, from disk for a large file.
+
+        Raises
+        ------
+        InputError
+            If the file has gone or changed since the scene was read.
+        """
+        if self.content is not None:
+            return self.content
+        if self.path is None:
+            raise InputError(f"{self.name}: is not here; put the file back")
+        try:
+            content = read_bounded(self.path, LARGEST_READ)
+        except UnusableFileError as problem:
+            raise InputError(f"{self.name}: {problem.what}; {problem.mend}") from None
+        if hashlib.sha256(content).hexdigest() != self.sha256:
+            raise InputError(f"{self.name}: has changed since the scene was read; read it again")
+        return content
+
+
+def read_bounded(path: Path, most: int) -> bytes:
+    """Content of a regular file of at most `most` bytes.
+
+    Raises
+    ------
+    UnusableFileError
+        If there is no such file, or it is too large, or cannot be read.
+    """
+    chunks: list[bytes] = []
+    for chunk in _chunks(path, most):
+        chunks.append(chunk)
+    return b"".join(chunks)
+
+
+def _chunks(path: Path, most: int) -> Iterator[bytes]:
+    try:
+        status = os.stat(path)
+        if not stat.S_ISREG(status.st_mode):
+            raise UnusableFileError("is not a regular file", "name a data file")
+        if status.st_size > most:
+            raise UnusableFileError(
+                f"is too large, {status.st_size} bytes", f"use a file of at most {most} bytes"
+            )
+        taken = 0
+        with open(path, "rb") as stream:
+            while chunk := stream.read(min(2**20, most - taken + 1)):
+                taken += len(chunk)
+                if taken > most:
+                    raise UnusableFileError(
+                        "grew while it was read", "try again when it is complete"
+                    )
+                yield chunk
+    except FileNotFoundError:
+        raise UnusableFileError("no such file", "check the path, or put the file there") from None
+    except PermissionError:
+        raise UnusableFileError("may not be read", "give yourself leave to read it") from None
+    except (OSError, ValueError) as error:
+        reason = getattr(error, "strerror", None) or "not a path"
+        raise UnusableFileError(f"cannot be read: {reason}", "check the path") from None
+
+
+def read_input(name: str, directory: Path) -> InputFile:
+    """Read and hash one file.
+
+    Parameters
+    ----------
+    name : str
+        Path as written in the scene, relative to `directory`.
+    directory : Path
+        Folder of the scene.
+
+    Raises
+    ------
+    UnusableFileError
+        As `read_bounded`.
+    """
+    path = directory / name
+    digest = hashlib.sha256()
+    kept: list[bytes] | None = []
+    size = 0
+    for chunk in _chunks(path, LARGEST_READ):
+        digest.update(chunk)
+        size += len(chunk)
+        if size > LARGEST_KEPT:
+            kept = None
+        if kept is not None:
+            kept.append(chunk)
+    content = None if kept is None else b"".join(kept)
+    return InputFile(name, digest.hexdigest(), content, path.absolute())
+
+
+def files_named(document: Mapping[str, Any]) -> Iterator[tuple[tuple[str | int, ...], str]]:
+    """Every key of a document that names a file, with the path as written."""
+    for table, name in _FILE_KEYS:
+        inner = document.get(table)
+        if isinstance(inner, Mapping) and isinstance(inner.get(name), str):
+            yield (table, name), inner[name]
+    for table in _FILE_TABLES:
+        tables = document.get(table)
+        if isinstance(tables, list):
+            for index, one in enumerate(tables):
+                if isinstance(one, Mapping) and isinstance(one.get("file"), str):
+                    yield (table, index, "file"), one["file"]

@@ -1,0 +1,252 @@
+"""Laying documents over one another: a base station, changes of single keys, tables taken away.
+
+Where a layer gives one of several keys that exclude each other (a seeing, say), those that the
+layers below gave in its stead (an image quality) are dropped.
+"""
+
+from __future__ import annotations
+
+import copy
+import re
+from collections.abc import Iterator, Mapping, MutableMapping, Sequence
+from typing import Any
+
+from simimg.errors import mistake
+from simimg.quantities import shown
+from simimg.scene.keys import Choice, FileName, Text, nearest
+from simimg.scene.model import Scene
+from simimg.scene.table import MANY, Table
+from simimg.scene.text import parse_value
+
+_PLACES = (("east", "north"), ("ra", "dec"), ("x", "y"))
+_RIVALS: Mapping[str, tuple[tuple[tuple[str, ...], ...], ...]] = {
+    "telescope": ((("pupil",), ("obstruction", "vanes")),),
+    "air": ((("seeing",), ("image_quality",)), (("airmass",), ("altitude",))),
+    "band": ((("name",), ("centre", "width")),),
+    "camera": ((("pixel_scale",), ("pixel_size",)),),
+    "sky": ((("surface_brightness",), ("electrons",)),),
+    "pair": ((("magnitudes",), ("electrons",)), _PLACES),
+    **dict.fromkeys(
+        ("star", "galaxy", "disc", "ring", "picture"), ((("magnitude",), ("electrons",)), _PLACES)
+    ),
+}
+_STEP = re.compile(r"[^.\[\]]+|\[\d+\]")
+
+Path = tuple[str | int, ...]
+
+
+class MisplacedKeyError(Exception):
+    """A key that names no place in the document: what is wrong, and what to write instead."""
+
+    def __init__(self, what: str, mend: str) -> None:
+        self.what = what
+        self.mend = mend
+        super().__init__(f"{what}; {mend}")
+
+
+def overlay(below: Mapping[str, Any], above: Mapping[str, Any]) -> dict[str, Any]:
+    """One document over another: tables merge key by key, all else is replaced."""
+    merged = copy.deepcopy(dict(below))
+    for name, value in above.items():
+        under = merged.get(name)
+        if isinstance(value, Mapping) and isinstance(under, dict):
+            for inner, inner_value in value.items():
+                _displace(under, name, inner, given=value)
+                lower = under.get(inner)
+                if isinstance(inner_value, Mapping) and isinstance(lower, dict):
+                    lower.update(copy.deepcopy(dict(inner_value)))
+                else:
+                    under[inner] = copy.deepcopy(inner_value)
+        else:
+            merged[name] = copy.deepcopy(value)
+    return merged
+
+
+def _displace(
+    table: MutableMapping[str, Any], kind: str, name: str, *, given: Mapping[str, Any]
+) -> None:
+    """Drop the keys that `name` excludes, unless the same layer gives them too."""
+    for group in _RIVALS.get(kind, ()):
+        if any(name in members for members in group):
+            for members in group:
+                for rival in members:
+                    if name not in members and rival not in given:
+                        table.pop(rival, None)
+
+
+def parse_path(text: str) -> Path:
+    """Steps of a dotted key: ``pair.0.separation`` or ``pair[0].separation``.
+
+    Raises
+    ------
+    MisplacedKeyError
+        If the text is not a key.
+    """
+    steps = _STEP.findall(text.strip())
+    rebuilt = "".join(step if step.startswith("[") else f".{step}" for step in steps).lstrip(".")
+    if not steps or rebuilt != text.strip() or len(steps) > 8 or steps[0].startswith("["):
+        raise MisplacedKeyError(
+            f"{shown(text)} is not a key", "write KEY=VALUE, as telescope.aperture=2 m"
+        )
+    path: list[str | int] = []
+    for step in steps:
+        word = step.strip("[] ")
+        # Only the first step after an array of tables is an index; header keywords may be digits.
+        is_index = word.isascii() and word.isdigit() and len(word) < 10
+        path.append(int(word) if is_index and path and path[-1] in MANY else word)
+        if is_index and len(path) == 3 and not isinstance(path[-1], int):
+            path[-1] = int(word)
+    return tuple(path)
+
+
+def dotted(path: Path) -> str:
+    """A path as one dotted key."""
+    return ".".join(str(step) for step in path)
+
+
+def change(document: dict[str, Any], path: Path, value: Any) -> None:
+    """Set one key of a document in place; `None` takes it away.
+
+    Raises
+    ------
+    MisplacedKeyError
+        If the path leads through something that is not there or is no table.
+    """
+    here: Any = document
+    for depth, step in enumerate(path[:-1]):
+        here = _step_into(here, path[: depth + 1], step)
+    last = path[-1]
+    if isinstance(here, list):
+        index = _index(here, path, last)
+        if value is None:
+            del here[index]
+        else:
+            here[index] = value
+    elif isinstance(here, dict) and isinstance(last, str):
+        if value is None:
+            here.pop(last, None)
+        else:
+            _displace(here, str(path[0]), last, given={})
+            here[last] = value
+    else:
+        raise MisplacedKeyError("is not inside a table", f"set {dotted(path[:-1])} itself")
+
+
+def _step_into(here: Any, path: Path, step: str | int) -> Any:
+    if isinstance(here, list):
+        return here[_index(here, path, step)]
+    if isinstance(here, dict) and isinstance(step, str):
+        if step in MANY and step not in here:
+            raise MisplacedKeyError(
+                f"there is no [[{step}]] in the scene", f"write a [[{step}]] there"
+            )
+        return here.setdefault(step, {})
+    raise MisplacedKeyError("is not inside a table", f"set {dotted(path[:-1])} itself")
+
+
+def _index(here: list[Any], path: Path, step: str | int) -> int:
+    before = dotted(path[: len(path) - 1])
+    if not isinstance(step, int):
+        raise MisplacedKeyError(
+            f"{before} is an array, of which {shown(step)} names none",
+            f"write {before}.0 for the first",
+        )
+    if step >= len(here):
+        known = f"{before}.0" if len(here) == 1 else f"{before}.0 to {before}.{len(here) - 1}"
+        raise MisplacedKeyError(f"there are only {len(here)} of {before}", f"write {known}")
+    return step
+
+
+def apply_overrides(
+    document: dict[str, Any], overrides: Sequence[str]
+) -> tuple[list[Path], list[str]]:
+    """Apply ``KEY=VALUE`` changes in place.
+
+    Returns
+    -------
+    paths, lines : list of tuple, list of str
+        The keys that were changed, and one line for each change that could not be made.
+    """
+    paths: list[Path] = []
+    lines: list[str] = []
+    for text in overrides:
+        name, equals, written = text.partition("=")
+        try:
+            if not equals:
+                raise MisplacedKeyError(
+                    "has no value", "write KEY=VALUE, as telescope.aperture=2 m"
+                )
+            path = parse_path(name)
+            if path[0] == "base":
+                raise MisplacedKeyError("cannot be changed", "write base in the scene file")
+            value = parse_value(written)
+            if not isinstance(value, str) and _wants_text(path):
+                value = written.strip()
+            change(document, path, value)
+        except MisplacedKeyError as error:
+            lines.append(mistake("--set", _short(name), error.what, error.mend))
+        else:
+            paths.append(path)
+    return paths, lines
+
+
+def _short(name: str) -> str:
+    name = name.strip()
+    plain = len(name) <= 60 and name.isprintable() and name
+    return name if plain else shown(name)
+
+
+def _wants_text(path: Path) -> bool:
+    """True where the key holds text, so that ``label=7`` means the text 7."""
+    table: type[Table] | None = Scene
+    for step in path[:-1]:
+        if isinstance(step, int) or table is None:
+            continue
+        table = next(
+            (one for one in table_types() if one.heading.strip("[]").split(".")[-1] == step), None
+        )
+    reader = table.reader(str(path[-1])) if table is not None else None
+    return isinstance(reader, Text | FileName | Choice)
+
+
+def table_types() -> Iterator[type[Table]]:
+    """Every kind of table that has a heading."""
+    waiting = list(Table.__subclasses__())
+    while waiting:
+        one = waiting.pop()
+        waiting.extend(one.__subclasses__())
+        if one.heading:
+            yield one
+
+
+_ALIASES: Mapping[str, Path] = {"vanes": ("telescope", "vanes")}
+_NEEDED = ("telescope", "band")
+
+
+def take_away(document: dict[str, Any], without: Sequence[str]) -> list[str]:
+    """Take tables out of a document in place; one line for each that is not a table."""
+    lines: list[str] = []
+    known = [name for name in Scene.model_fields if name not in ("title", *_NEEDED)]
+    for name in without:
+        word = name.strip().strip("[]")
+        path = _ALIASES.get(word, (word,))
+        if word == "telescope.vanes":
+            path = _ALIASES["vanes"]
+        if word in _NEEDED:
+            lines.append(mistake("--without", word, "cannot be left out of a scene", "leave it in"))
+        elif len(path) == 1 and word not in known:
+            lines.append(
+                mistake(
+                    "--without",
+                    _short(name),
+                    "is not a table of a scene",
+                    nearest(word, [*known, "vanes"]),
+                )
+            )
+        elif len(path) == 1:
+            document.pop(word, None)
+        else:
+            telescope = document.get("telescope")
+            if isinstance(telescope, dict):
+                telescope.pop("vanes", None)
+    return lines

@@ -1,0 +1,245 @@
+"""The whole scene: what a telescope, through which air, with which camera, looks at.
+
+A `Scene` is frozen and holds SI values. Beside them it carries what it was made from: the document
+as run (plain nested dictionaries, values as written), and the files that the document names.
+"""
+
+from __future__ import annotations
+
+import copy
+import math
+from collections.abc import Iterator, Mapping
+from pathlib import Path
+from types import MappingProxyType
+from typing import Annotated, Any, ClassVar, Self
+
+from pydantic import PrivateAttr
+
+from simimg.scene.air import Air
+from simimg.scene.band import Band
+from simimg.scene.camera import Camera
+from simimg.scene.exposure import Exposure, Pointing, Sky
+from simimg.scene.inputs import InputFile
+from simimg.scene.keys import Header, Text
+from simimg.scene.objects import (
+    Catalogue,
+    Disc,
+    Galaxy,
+    Pair,
+    Picture,
+    Placed,
+    Ring,
+    Star,
+)
+from simimg.scene.table import MANY, Fault, Table, key
+from simimg.scene.telescope import Telescope
+
+MOST_OBJECTS = 10_000
+"""Most objects that a scene file may hold; more of them belong in a catalogue."""
+
+FARTHEST = math.radians(60.0)
+"""Largest distance of an object from the pointing, in radians."""
+
+
+class Scene(Table):
+    """A telescope, the air, a band, a camera, an exposure, and what is in the sky."""
+
+    title: Annotated[str | None, Text(200, sample="A close pair")] = key(
+        "Title of the scene; OBJECT in the header.", None
+    )
+    telescope: Telescope = key("What gathers the light.")
+    air: Air | None = key(
+        "The atmosphere.",
+        None,
+        absent="none",
+        meaning="the telescope is above the atmosphere",
+    )
+    band: Band = key("The wavelengths, and the system of magnitudes.")
+    camera: Camera | None = key(
+        "The detector.", None, absent="none", meaning="limits are without a pixel"
+    )
+    sky: Sky | None = key(
+        "The uniform light of the sky.", None, absent="none", meaning="the sky is dark"
+    )
+    exposure: Exposure | None = key(
+        "How long, how often, with which noise.",
+        None,
+        absent="none",
+        meaning="one exposure, the noise of seed 0",
+    )
+    pointing: Pointing | None = key(
+        "Where the centre of the field lies.",
+        None,
+        absent="ra 0 deg, dec 0 deg",
+        meaning="the centre of the field in the header's world coordinates",
+    )
+    header: Annotated[dict[str, str | int | float | bool], Header()] = key(
+        "Extra keywords for the frame's header.", {}
+    )
+    star: tuple[Star, ...] = key("Single stars.", ())
+    pair: tuple[Pair, ...] = key("Pairs of stars.", ())
+    galaxy: tuple[Galaxy, ...] = key("Sersic profiles.", ())
+    disc: tuple[Disc, ...] = key("Discs, with limb darkening and phase.", ())
+    ring: tuple[Ring, ...] = key("Flat rings.", ())
+    picture: tuple[Picture, ...] = key("Pictures from files.", ())
+    catalogue: tuple[Catalogue, ...] = key("Stars from tables.", ())
+
+    hints: ClassVar[Mapping[str, tuple[str, str]]] = {
+        "base": ("is read only at the top of a scene file", "write base in the file itself"),
+    }
+
+    _document: dict[str, Any] = PrivateAttr(default_factory=dict)
+    _name: str = PrivateAttr("scene.toml")
+    _directory: Path | None = PrivateAttr(None)
+    _inputs: dict[str, InputFile] = PrivateAttr(default_factory=dict)
+
+    @property
+    def document(self) -> dict[str, Any]:
+        """A copy of the scene as run: base and overrides applied, values as written."""
+        return copy.deepcopy(self._document)
+
+    @property
+    def name(self) -> str:
+        """Name of the scene's file, without its folder."""
+        return self._name
+
+    @property
+    def directory(self) -> Path | None:
+        """Folder that the paths in the scene are relative to."""
+        return self._directory
+
+    @property
+    def inputs(self) -> Mapping[str, InputFile]:
+        """The files that the scene names, by their path as written."""
+        return MappingProxyType(self._inputs)
+
+    @property
+    def pixel_scale(self) -> float | None:
+        """Angle of a pixel's side, radians; None without a camera or a route to it."""
+        if self.camera is None:
+            return None
+        if self.camera.pixel_scale is not None:
+            return self.camera.pixel_scale
+        if self.camera.pixel_size is not None and self.telescope.focal_length is not None:
+            return self.camera.pixel_size / self.telescope.focal_length
+        return None
+
+    @property
+    def objects(self) -> tuple[Star | Pair | Galaxy | Disc | Ring | Picture, ...]:
+        """Every object that is written in the scene itself, kind by kind."""
+        return (*self.star, *self.pair, *self.galaxy, *self.disc, *self.ring, *self.picture)
+
+    def origin(
+        self,
+        document: Mapping[str, Any],
+        *,
+        name: str,
+        directory: Path | None,
+        inputs: Mapping[str, InputFile],
+    ) -> Self:
+        """The same scene, carrying what it was made from."""
+        made = self.model_copy()
+        made._document = copy.deepcopy(dict(document))
+        made._name = name
+        made._directory = directory
+        made._inputs = dict(inputs)
+        return made
+
+    @classmethod
+    def complete(cls, given: Mapping[str, Any]) -> Mapping[str, Any]:
+        """Leave out the objects beyond the bound, which is a mistake by itself."""
+        total, _ = _count(given)
+        if total <= MOST_OBJECTS:
+            return given
+        return {name: value for name, value in given.items() if name not in MANY}
+
+    @classmethod
+    def together(cls, given: Mapping[str, Any]) -> Iterator[Fault]:
+        """Header keywords; a bounded number of objects; what right places and pixels need."""
+        header = given.get("header")
+        if isinstance(header, Mapping):
+            for keyword, value in header.items():
+                wrong = Header.check(keyword, value)
+                if wrong is not None:
+                    yield Fault(("header", keyword), *wrong)
+        for kind in MANY:
+            tables = given.get(kind, [])
+            if isinstance(tables, Mapping):
+                yield Fault((kind,), "is a single table", f"write [[{kind}]], in double brackets")
+            elif isinstance(tables, list) and "pointing" not in given:
+                yield from _unpointed(kind, tables[:MOST_OBJECTS])
+        total, fullest = _count(given)
+        if total > MOST_OBJECTS:
+            yield Fault(
+                (fullest,),
+                f"too many objects in one scene file, {total}",
+                f"keep at most {MOST_OBJECTS}, and put stars in a [[catalogue]]",
+            )
+
+    def agree(self) -> Iterator[Fault]:
+        """One route to the pixel scale; objects on the side of the sky that is looked at."""
+        yield from self._pixel_scale_faults()
+        if self.pointing is not None:
+            for kind in MANY:
+                for index, one in enumerate(getattr(self, kind)):
+                    if isinstance(one, Placed) and self._distance(one) > FARTHEST:
+                        yield Fault(
+                            (kind, index, "ra"),
+                            f"lies {math.degrees(self._distance(one)):.1f} deg from the pointing",
+                            "write a place within 60 deg of [pointing]",
+                        )
+
+    def _pixel_scale_faults(self) -> Iterator[Fault]:
+        camera, focal_length = self.camera, self.telescope.focal_length
+        if camera is None or camera.pixel_size is None:
+            return
+        if focal_length is None:
+            if camera.pixel_scale is None:
+                yield Fault(
+                    ("telescope", "focal_length"),
+                    "is required beside camera.pixel_size and missing",
+                    'add focal_length = "16 m" to [telescope], or camera.pixel_scale',
+                )
+            return
+        scale = camera.pixel_size / focal_length
+        arcsec = math.degrees(scale) * 3600.0
+        if camera.pixel_scale is not None and abs(camera.pixel_scale / scale - 1.0) > 1e-3:
+            yield Fault(
+                ("camera", "pixel_scale"),
+                "contradicts camera.pixel_size over telescope.focal_length, "
+                f"which is {arcsec:.6g} arcsec",
+                "leave out pixel_scale or pixel_size",
+            )
+        elif not 1e-6 <= arcsec <= 3600.0:
+            yield Fault(
+                ("camera", "pixel_size"),
+                f"gives a pixel of {arcsec:.3g} arcsec over telescope.focal_length",
+                "write sizes that give from 0.000001 arcsec to 1 deg",
+            )
+
+    def _distance(self, one: Placed) -> float:
+        """Distance of an object from the pointing, radians; 0 where it has no coordinates."""
+        if self.pointing is None or one.ra is None or one.dec is None:
+            return 0.0
+        half_dec = math.sin((one.dec - self.pointing.dec) / 2.0)
+        half_ra = math.sin((one.ra - self.pointing.ra) / 2.0)
+        squared = half_dec**2 + math.cos(one.dec) * math.cos(self.pointing.dec) * half_ra**2
+        return 2.0 * math.asin(min(1.0, math.sqrt(squared)))
+
+
+def _count(given: Mapping[str, Any]) -> tuple[int, str]:
+    """Number of objects written in a scene, and the kind of which there are most."""
+    counts = {kind: len(given[kind]) for kind in MANY if isinstance(given.get(kind), list)}
+    return sum(counts.values()), max(counts, key=lambda kind: counts[kind], default="star")
+
+
+def _unpointed(kind: str, tables: list[Any]) -> Iterator[Fault]:
+    """Objects placed by ra and dec in a scene that does not say where it points."""
+    for index, table in enumerate(tables):
+        place = table.get("columns", table) if isinstance(table, Mapping) else {}
+        if isinstance(place, Mapping) and "ra" in place and "dec" in place:
+            yield Fault(
+                (kind, index, "ra"),
+                "needs a [pointing] table, which is missing",
+                "add [pointing] with the ra and dec of the field centre",
+            )

@@ -1,0 +1,116 @@
+"""What a scene leaves unsaid: the defaults it uses, and what it lacks for a frame."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from typing import Any
+
+from simimg.errors import mistake
+from simimg.scene.model import Scene
+from simimg.scene.table import MANY, Table
+
+
+def requirements_to_expose(scene: Scene) -> list[str]:
+    """One line for each key that an exposure needs and the scene lacks.
+
+    Needed are ``camera.pixels``, one route to the pixel scale, and ``exposure.time`` unless every
+    signal is given in electrons.
+    """
+    lines: list[str] = []
+    if scene.camera is None or scene.camera.pixels is None:
+        lines.append(
+            mistake(
+                scene.name,
+                "camera.pixels",
+                "is required to expose and missing",
+                "add pixels = [256, 256] (columns, rows) to [camera]",
+            )
+        )
+    if scene.pixel_scale is None:
+        lines.append(
+            mistake(
+                scene.name,
+                "camera.pixel_scale",
+                "a pixel scale is required to expose and missing",
+                'add pixel_scale = "0.12 arcsec", or pixel_size with telescope.focal_length',
+            )
+        )
+    timed = next(_signals_by_time(scene), None)
+    if timed is not None and (scene.exposure is None or scene.exposure.time is None):
+        lines.append(
+            mistake(
+                scene.name,
+                "exposure.time",
+                f"is required to expose and missing, because of {timed}",
+                'add time = "30 s" to [exposure], or give every signal in electrons',
+            )
+        )
+    return lines
+
+
+def _signals_by_time(scene: Scene) -> Iterator[str]:
+    """The keys whose signal grows with the exposure time."""
+    if scene.sky is not None and scene.sky.surface_brightness is not None:
+        yield "sky.surface_brightness"
+    if scene.camera is not None and scene.camera.dark_current > 0.0:
+        yield "camera.dark_current"
+    for kind in MANY:
+        for index, one in enumerate(getattr(scene, kind)):
+            if kind == "catalogue":
+                if "magnitude" in one.columns:
+                    yield f"catalogue.{index}.columns.magnitude"
+            elif one.electrons is None:
+                yield f"{kind}.{index}.{'magnitudes' if kind == 'pair' else 'magnitude'}"
+
+
+def defaults_used(scene: Scene) -> list[tuple[str, str, str]]:
+    """Every default that stands in for an absent key.
+
+    Returns
+    -------
+    list of (key, value, meaning)
+        The value as a scene would have it, and what it means for the frame. Objects of one kind
+        share a row, ``star.*.east``, where there are several.
+    """
+    document = scene.document
+    rows = list(_absent(scene, document, ""))
+    for name in Scene.model_fields:
+        value = getattr(scene, name)
+        if isinstance(value, Table):
+            given = document[name]
+            rows.extend(_absent(value, given, f"{name}."))
+            if name == "telescope" and scene.telescope.vanes is not None:
+                vanes = scene.telescope.vanes
+                rows.extend(_absent(vanes, given["vanes"], "telescope.vanes."))
+    for kind in MANY:
+        rows.extend(_of_objects(scene, document, kind))
+    return rows
+
+
+def _absent(table: Table, given: Mapping[str, Any], prefix: str) -> Iterator[tuple[str, str, str]]:
+    for name, field in type(table).model_fields.items():
+        extra = field.json_schema_extra
+        if name in given or not isinstance(extra, dict) or not extra.get("absent"):
+            continue
+        unless = extra.get("unless")
+        if isinstance(unless, list) and any(other in given for other in unless):
+            continue
+        absent = str(extra["absent"])
+        if prefix == "band." and name == "system":
+            absent = getattr(table, "resolved_system", absent)
+        yield f"{prefix}{name}", absent, str(extra["meaning"])
+
+
+def _of_objects(
+    scene: Scene, document: Mapping[str, Any], kind: str
+) -> Iterator[tuple[str, str, str]]:
+    tables = getattr(scene, kind)
+    if len(tables) == 1:
+        yield from _absent(tables[0], document[kind][0], f"{kind}.0.")
+        return
+    counts: dict[tuple[str, str, str], int] = {}
+    for table, given in zip(tables, document.get(kind, []), strict=True):
+        for row in _absent(table, given, f"{kind}.*."):
+            counts[row] = counts.get(row, 0) + 1
+    for (name, value, meaning), count in counts.items():
+        yield name, value, f"{meaning} ({count} of {len(tables)})"

@@ -1,0 +1,373 @@
+"""What may stand in the sky of a scene: stars, pairs, shapes, pictures, catalogues. SI inside.
+
+Each has a place given in one of three ways (offsets, right ascension and declination, pixels) and
+a brightness given in one of two (magnitudes, electrons detected per exposure).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from typing import Annotated, Any, ClassVar
+
+from pydantic import Field
+
+from simimg.quantities import KINDS, QuantityError, shown, unit_factor
+from simimg.scene.keys import FileName, Quantity, Reader, Several, Text, fault, nearest
+from simimg.scene.table import Fault, Table, key
+from simimg.scene.telescope import Angle
+
+ROUTES = (("east", "north"), ("ra", "dec"), ("x", "y"))
+"""The three ways to give a place."""
+
+_Offset = Quantity("angle", at_least="-60 deg", at_most="60 deg", sample="1.5 arcsec")
+_Pixel = Quantity("pixels", at_least=-1e6, at_most=1e6)
+_Magnitude = Quantity("magnitude", at_least=-50.0, at_most=60.0)
+_Electrons = Quantity("signal", above=0.0, at_most=1e18)
+_Size = Quantity("angle", at_least="0.000001 arcsec", at_most="10 deg", sample="2 arcsec")
+_AxisRatio = Quantity("ratio", at_least=0.01, at_most=1.0, sample="0.7")
+
+
+def routes_of(given: Mapping[str, Any]) -> list[tuple[str, str]]:
+    """The ways to a place of which at least one key is given."""
+    return [route for route in ROUTES if route[0] in given or route[1] in given]
+
+
+def place_faults(given: Mapping[str, Any], prefix: tuple[str, ...] = ()) -> Iterator[Fault]:
+    """Mistakes in which keys of a place are given."""
+    routes = routes_of(given)
+    if len(routes) > 1:
+        first, second = (next(k for k in route if k in given) for route in routes[:2])
+        yield Fault(
+            (*prefix, second),
+            f"gives the place a second time, beside {first}",
+            "keep one of east and north, ra and dec, or x and y",
+        )
+        return
+    for one, other in routes:
+        if one == "east" and not prefix:
+            continue
+        for missing, present in ((one, other), (other, one)):
+            if missing not in given:
+                yield Fault(
+                    (*prefix, missing),
+                    f"is required beside {present} and missing",
+                    f"add {missing}",
+                )
+
+
+def brightness_faults(
+    given: Mapping[str, Any], magnitude: str, samples: tuple[str, str], prefix: tuple[str, ...] = ()
+) -> Iterator[Fault]:
+    """Mistakes in which keys of a brightness are given."""
+    if magnitude in given and "electrons" in given:
+        yield Fault(
+            (*prefix, "electrons"),
+            f"gives the brightness a second time, beside {magnitude}",
+            f"leave out {magnitude} or electrons",
+        )
+    elif magnitude not in given and "electrons" not in given:
+        yield Fault(
+            (*prefix, magnitude),
+            "is required and missing",
+            f"add {magnitude} = {samples[0]}, or electrons = {samples[1]}",
+        )
+
+
+class Placed(Table):
+    """A label and a place, given in one way; default the field centre."""
+
+    label: Annotated[str | None, Text(64, sample="SR-014")] = key(
+        "Name of the object in every table.", None
+    )
+    east: Annotated[float | None, _Offset] = key(
+        "Offset towards east from the field centre; None where the place is given otherwise.",
+        None,
+        absent="0 arcsec",
+        meaning="in the middle of the field",
+        unless=("ra", "dec", "x", "y"),
+    )
+    north: Annotated[float | None, _Offset] = key(
+        "Offset towards north from the field centre; None where the place is given otherwise.",
+        None,
+        absent="0 arcsec",
+        meaning="in the middle of the field",
+        unless=("ra", "dec", "x", "y"),
+    )
+    ra: Annotated[
+        float | None, Quantity("right ascension", at_least="0 deg", at_most="360 deg")
+    ] = key("Right ascension, with dec in place of the offsets; needs [pointing].", None)
+    dec: Annotated[float | None, Quantity("declination", at_least="-90 deg", at_most="90 deg")] = (
+        key("Declination, with ra in place of the offsets; needs [pointing].", None)
+    )
+    x: Annotated[float | None, _Pixel] = key(
+        "Column, from 0 at the centre of the first pixel, with y in place of the offsets.", None
+    )
+    y: Annotated[float | None, _Pixel] = key(
+        "Row, from 0 at the centre of the first pixel, with x in place of the offsets.", None
+    )
+
+    @classmethod
+    def complete(cls, given: Mapping[str, Any]) -> Mapping[str, Any]:
+        """The field centre where no place is given."""
+        if any(k in given for route in ROUTES[1:] for k in route):
+            return given
+        return {"east": "0 arcsec", "north": "0 arcsec", **given}
+
+    @classmethod
+    def together(cls, given: Mapping[str, Any]) -> Iterator[Fault]:
+        """One way to the place."""
+        yield from place_faults(given)
+
+
+class Luminous(Placed):
+    """An object with one brightness."""
+
+    magnitude: Annotated[float | None, _Magnitude] = key(
+        "Magnitude in the band, above the air.", None
+    )
+    electrons: Annotated[float | None, _Electrons] = key(
+        "Electrons detected per exposure over the whole image, in place of the magnitude.", None
+    )
+
+    @classmethod
+    def together(cls, given: Mapping[str, Any]) -> Iterator[Fault]:
+        """One way to the place, one to the brightness."""
+        yield from super().together(given)
+        yield from brightness_faults(given, "magnitude", ("11.2", "1e5"))
+
+
+class Star(Luminous):
+    """A point."""
+
+    heading: ClassVar[str] = "[[star]]"
+
+
+class Pair(Placed):
+    """Two points; the place is that of the first."""
+
+    heading: ClassVar[str] = "[[pair]]"
+
+    magnitudes: Annotated[tuple[float, float] | None, Several(_Magnitude, 2)] = key(
+        "Magnitudes of the first and the second star in the band, above the air.", None
+    )
+    electrons: Annotated[tuple[float, float] | None, Several(_Electrons, 2)] = key(
+        "Electrons detected per exposure of each star, in place of the magnitudes.", None
+    )
+    separation: Annotated[
+        float, Quantity("angle", above="0 arcsec", at_most="10 deg", sample="0.35 arcsec")
+    ] = key("Separation of the two stars.")
+    position_angle: Annotated[float, Angle] = key(
+        "Position angle of the second star from the first, north through east.",
+        0.0,
+        absent="0 deg",
+        meaning="the second star lies north of the first",
+    )
+
+    @classmethod
+    def together(cls, given: Mapping[str, Any]) -> Iterator[Fault]:
+        """One way to the place, one to the two brightnesses."""
+        yield from super().together(given)
+        if "magnitude" in given and "magnitudes" not in given:
+            yield Fault(("magnitude",), "is not a key of a pair", "write magnitudes = [11.2, 11.9]")
+        else:
+            yield from brightness_faults(given, "magnitudes", ("[11.2, 11.9]", "[5e5, 2e5]"))
+
+
+class Galaxy(Luminous):
+    """A Sersic profile."""
+
+    heading: ClassVar[str] = "[[galaxy]]"
+
+    sersic_index: Annotated[float, Quantity("number", at_least=0.3, at_most=10.0, sample="1.0")] = (
+        key(
+            "Sersic index: 1 an exponential disc, 4 a de Vaucouleurs profile.",
+            1.0,
+            absent="1",
+            meaning="an exponential disc",
+        )
+    )
+    effective_radius: Annotated[float, _Size] = key(
+        "Radius along the major axis that holds half of the light."
+    )
+    axis_ratio: Annotated[float, _AxisRatio] = key(
+        "Minor over major axis.", 1.0, absent="1", meaning="round"
+    )
+    position_angle: Annotated[float, Angle] = key(
+        "Position angle of the major axis.",
+        0.0,
+        absent="0 deg",
+        meaning="the major axis lies north to south",
+    )
+
+
+class Disc(Luminous):
+    """A disc such as a planet's, full or in phase."""
+
+    heading: ClassVar[str] = "[[disc]]"
+
+    diameter: Annotated[float, _Size] = key("Diameter of the disc along its longer axis.")
+    limb_darkening: Annotated[
+        float, Quantity("number", at_least=0.0, at_most=1.0, sample="0.5")
+    ] = key("Linear coefficient of limb darkening.", 0.0, absent="0", meaning="evenly bright")
+    phase_angle: Annotated[
+        float, Quantity("angle", at_least="0 deg", at_most="175 deg", sample="60 deg")
+    ] = key(
+        "Angle between the light and the line of sight: 0 full, 90 deg half lit.",
+        0.0,
+        absent="0 deg",
+        meaning="fully lit",
+    )
+    position_angle: Annotated[float, Angle] = key(
+        "Position angle of the lit limb.",
+        0.0,
+        absent="0 deg",
+        meaning="the lit limb lies north",
+    )
+    axis_ratio: Annotated[float, _AxisRatio] = key(
+        "Shorter over longer axis of the outline.", 1.0, absent="1", meaning="round"
+    )
+
+
+class Ring(Luminous):
+    """A flat ring, seen at an inclination."""
+
+    heading: ClassVar[str] = "[[ring]]"
+
+    inner_diameter: Annotated[
+        float, Quantity("angle", at_least="0 arcsec", at_most="10 deg", sample="4 arcsec")
+    ] = key("Inner diameter along the longer axis.")
+    outer_diameter: Annotated[float, _Size] = key("Outer diameter along the longer axis.")
+    inclination: Annotated[
+        float, Quantity("angle", at_least="0 deg", at_most="89.9 deg", sample="60 deg")
+    ] = key(
+        "Angle between the ring's axis and the line of sight.",
+        0.0,
+        absent="0 deg",
+        meaning="seen face on",
+    )
+    position_angle: Annotated[float, Angle] = key(
+        "Position angle of the longer axis.",
+        0.0,
+        absent="0 deg",
+        meaning="the longer axis lies north to south",
+    )
+
+    def agree(self) -> Iterator[Fault]:
+        """The ring must have a width."""
+        if self.inner_diameter >= self.outer_diameter:
+            yield Fault(
+                ("inner_diameter",),
+                "must be below outer_diameter",
+                'write, say, inner_diameter = "4 arcsec" and outer_diameter = "6 arcsec"',
+            )
+
+
+class Picture(Luminous):
+    """A picture from a file, as a map of surface brightness."""
+
+    heading: ClassVar[str] = "[[picture]]"
+
+    file: Annotated[str, FileName("spiral.png")] = key(
+        "FITS, PNG or TIFF file; its values are taken as surface brightness."
+    )
+    width: Annotated[float, _Size] = key("Angle that the picture's width spans on the sky.")
+    position_angle: Annotated[float, Angle] = key(
+        "Position angle of the picture's upward direction.",
+        0.0,
+        absent="0 deg",
+        meaning="the picture's top lies north",
+    )
+
+
+COLUMN_KINDS: Mapping[str, str] = {
+    "east": "angle",
+    "north": "angle",
+    "ra": "angle",
+    "dec": "angle",
+    "x": "pixels",
+    "y": "pixels",
+    "magnitude": "magnitude",
+    "electrons": "electrons",
+}
+"""Kind of quantity in each column of a catalogue that may have a unit."""
+
+COLUMNS = (*COLUMN_KINDS, "label")
+"""What a catalogue's columns may hold."""
+
+
+class Names(Reader):
+    """A small table from the meanings of columns to text."""
+
+    def __init__(self, known: tuple[str, ...], sample: str, what: str) -> None:
+        self.known = known
+        self.sample = sample
+        self.what = what
+
+    def read(self, value: Any) -> dict[str, str]:
+        """The names, each as text."""
+        if not isinstance(value, Mapping):
+            raise fault(f"must be a table, got {shown(value)}", f"write {self.example}")
+        for name, text in value.items():
+            if name not in self.known:
+                raise fault(
+                    f"{shown(name)} is not a column of a catalogue", nearest(name, [*self.known])
+                )
+            if not isinstance(text, str) or not text.strip() or len(text) > 200:
+                raise fault(
+                    f"{name} must be {self.what}, got {shown(text)}", f"write {self.example}, say"
+                )
+        return dict(value)
+
+    @property
+    def example(self) -> str:
+        """A good value, as TOML."""
+        return self.sample
+
+    @property
+    def range(self) -> str:
+        """The keys of the table."""
+        return f"{self.what} for some of " + ", ".join(self.known)
+
+
+class Catalogue(Table):
+    """Stars from the rows of a table."""
+
+    heading: ClassVar[str] = "[[catalogue]]"
+
+    label: Annotated[str | None, Text(64, sample="field stars")] = key(
+        "Name of the catalogue in messages.", None
+    )
+    file: Annotated[str, FileName("stars.ecsv")] = key("ECSV, CSV, FITS or VOTable file.")
+    columns: Annotated[
+        dict[str, str],
+        Names(COLUMNS, '{ east = "dx", north = "dy", magnitude = "m" }', "the name of a column"),
+    ] = key("Which columns hold the place, the brightness and the labels.")
+    units: Annotated[
+        dict[str, str], Names(tuple(COLUMN_KINDS), '{ east = "arcsec" }', "a unit")
+    ] = Field(
+        default_factory=dict,
+        description="Units of columns for which the file gives none.",
+    )
+
+    def agree(self) -> Iterator[Fault]:
+        """One place and one brightness; units of the right kind."""
+        yield from place_faults(self.columns, ("columns",))
+        if not routes_of(self.columns):
+            yield Fault(
+                ("columns",),
+                "names no place",
+                'write columns = { east = "dx", north = "dy", magnitude = "m" }, say',
+            )
+        yield from brightness_faults(self.columns, "magnitude", ('"m"', '"counts"'), ("columns",))
+        for name, unit in self.units.items():
+            kind = COLUMN_KINDS[name]
+            if name not in self.columns:
+                yield Fault(
+                    ("units", name), "is the unit of no column", f"name {name} in columns too"
+                )
+                continue
+            try:
+                unit_factor(unit, kind)
+            except QuantityError as error:
+                usual = KINDS[kind].usual or next(iter(KINDS[kind].units))
+                yield Fault(("units", name), error.what, f'write "{usual}", say')
