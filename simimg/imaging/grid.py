@@ -20,7 +20,8 @@ from simimg.arrays import FloatArray
 from simimg.errors import InputError
 from simimg.imaging.basis import PsfBasis, Transfer
 from simimg.imaging.kernel import WIDTH, alias_error
-from simimg.imaging.sources import Sources
+from simimg.imaging.sources import PlacedShape, Sources
+from simimg.imaging.spread import stamp_cells
 
 # Shares of the brightest peak: what sampling may cost, what wrapped light may, and what a star
 # outside may add unseen. Together they stay below the promised 1e-5.
@@ -94,9 +95,7 @@ def band_edge(transfer: Transfer) -> float:
     return float(f[min(int(above[-1]) + 1, f.size - 1)]) if above.size else float(f[-1])
 
 
-def _quarter_planes(
-    transfer: Transfer, nodes: int = 192
-) -> tuple[FloatArray, FloatArray, FloatArray]:
+def _half_plane(transfer: Transfer, nodes: int = 192) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Midpoint samples of ``|T|`` over the half plane within the band edge."""
     edge = band_edge(transfer)
     u = (np.arange(nodes) + 0.5) * (edge / nodes)
@@ -116,25 +115,26 @@ def subdivision(basis: PsfBasis, pixel_scale: float) -> int:
     InputError
         When more than 64 cells a pixel would be needed.
     """
-    planes = [_quarter_planes(member) for member in basis.members]
+    planes = [_half_plane(member) for member in basis.members]
     for count in range(1, _FINEST + 1):
         cell = pixel_scale / count
         worst = 0.0
         for u, v, value in planes:
-            error = np.minimum(alias_error(u * cell)[None, :] + alias_error(v * cell)[:, None], 1.0)
+            across, along = alias_error(u * cell), alias_error(v * cell)
+            error = np.minimum(across[None, :] + along[:, None], 1.0)
             worst = max(worst, float((value * error).sum() / value.sum()))
         if worst <= SAMPLING_SHARE:
             return count
     edge = max(band_edge(member) for member in basis.members)
     raise InputError(
-        f"the pixel is {pixel_scale * edge * 2:.0f} times as wide as the finest detail of the image "
-        f"(Nyquist); at most {_FINEST / 2:.0f} times can be computed; use a smaller pixel scale"
+        f"the pixel is {pixel_scale * edge * 2:.0f} times as wide as the finest detail of the "
+        f"image (Nyquist); at most {_FINEST / 2:.0f} times can be computed; use a smaller pixel scale"
     )
 
 
 def peak_share(transfer: Transfer, pixel_scale: float) -> float:
     """Share of a star's light that falls on the pixel at its centre."""
-    u, v, _ = _quarter_planes(transfer)
+    u, v, _ = _half_plane(transfer)
     value = np.real(transfer(u[None, :], v[:, None]))
     area = float((u[1] - u[0]) * (v[1] - v[0]))
     return float(2.0 * value.sum() * area * pixel_scale**2)
@@ -157,6 +157,11 @@ def _tile_bytes(length_x: int, length_y: int, count: int) -> int:
     cells = length_x * length_y * count * count
     # The grid, its spectrum (at most as large again), and a block of each in work.
     return int(cells * _precision(cells) * 2.2) + length_x * length_y * _precision(cells) * 2
+
+
+def _stamp_bytes(placed: PlacedShape, level: float, pixel_scale: float, count: int) -> int:
+    side = stamp_cells(shape_radius(placed, level, pixel_scale) / pixel_scale * count)
+    return 40 * side * side
 
 
 def plan_grid(
@@ -208,7 +213,9 @@ def plan_grid(
                 break
             level *= 0.5
 
-    image_bytes = columns * rows * 8
+    image_bytes = columns * rows * 8 + max(
+        [_stamp_bytes(s, level, pixel_scale, count) for s in sources.shapes], default=0
+    )
     smallest = 0
     for across, along in _splits(columns, rows):
         tiles = _tiles(sources, basis, level, wrap, columns, rows, across, along, pixel_scale)
@@ -243,6 +250,12 @@ def reach_pixels(
     return np.asarray(basis.wings.reach(share) / pixel_scale, dtype=np.float64)
 
 
+def shape_radius(placed: PlacedShape, level: float, pixel_scale: float) -> float:
+    """Angle (rad) to which a shape is painted: where it sinks below `level` electrons a pixel."""
+    share = level / max(placed.electrons, 1e-300) / pixel_scale**2
+    return max(min(placed.shape.radius, placed.shape.radius_below(share)), pixel_scale)
+
+
 def _tiles(
     sources: Sources,
     basis: PsfBasis,
@@ -260,7 +273,7 @@ def _tiles(
         (
             s.x,
             s.y,
-            s.shape.radius / pixel_scale,
+            shape_radius(s, level, pixel_scale) / pixel_scale,
             float(reach_pixels(basis, np.array(s.electrons), level, pixel_scale)),
         )
         for s in sources.shapes

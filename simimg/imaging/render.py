@@ -3,7 +3,7 @@
 Points and shapes are spread on the fine grid, carried to the Fourier plane by a real FFT,
 multiplied there by the transfer function (optics, air, pixel) and brought back. Only the
 frequencies inside the band are kept, and the spectrum is folded on itself before the way back, so
-that the inverse FFT gives the detector's pixels and nothing else. Electrons a pixel; axes ``[y, x]``.
+that the inverse FFT gives the detector's pixels and nothing else. Electrons a pixel, ``[y, x]``.
 """
 
 from __future__ import annotations
@@ -17,7 +17,15 @@ import scipy.fft
 
 from simimg.arrays import AnyArray, FloatArray
 from simimg.imaging.basis import PsfBasis, Transfer
-from simimg.imaging.grid import GridPlan, Tile, band_edge, grid_dtype, plan_grid, reach_pixels
+from simimg.imaging.grid import (
+    GridPlan,
+    Tile,
+    band_edge,
+    grid_dtype,
+    plan_grid,
+    reach_pixels,
+    shape_radius,
+)
 from simimg.imaging.kernel import kernel_transform
 from simimg.imaging.sources import Points, Sources, one_point
 from simimg.imaging.spread import add_stamp, shape_stamp, spread_points
@@ -166,7 +174,7 @@ def _spread(
             x=(placed.x - origin_x) * count,
             y=(placed.y - origin_y) * count,
             cell=pixel_scale / count,
-            radius=placed.shape.radius,
+            radius=shape_radius(placed, plan.level, pixel_scale),
         )
         add_stamp(grid, weight * stamp, stamp_left, stamp_bottom, used=used)
     return grid

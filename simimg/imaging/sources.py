@@ -8,7 +8,7 @@ its own Fourier transform or its own quadrature points in radians about its cent
 from __future__ import annotations
 
 from dataclasses import dataclass
-from typing import Any, Protocol
+from typing import Protocol
 
 import numpy as np
 
@@ -49,32 +49,36 @@ def one_point(x: float, y: float, electrons: float) -> Points:
     return Points(np.array([x]), np.array([y]), np.array([electrons]))
 
 
-class TransformShape(Protocol):
-    """A shape known by its Fourier transform, 1 at the origin."""
+class SkyShape(Protocol):
+    """A shape of unit light, known by its Fourier transform.
+
+    One that has no transform in closed form brings ``points(max_frequency)`` instead: places (rad,
+    from the centre) and weights that sum to 1, with ``pixel_side`` and ``pixel_angle`` of the
+    square that each of them stands for.
+    """
 
     @property
     def radius(self) -> float:
         """Angle (rad) from the centre beyond which next to no light lies."""
         ...
 
+    def radius_below(self, level: float) -> float:
+        """Angle (rad) beyond which less than `level` per steradian is left."""
+        ...
+
     def transform(self, u: FloatArray, v: FloatArray) -> AnyArray:
-        """Transform at frequencies `u`, `v` (cycles/rad), broadcast together."""
+        """Transform at frequencies `u`, `v` (cycles/rad), broadcast together; 1 at the origin."""
         ...
 
 
 @dataclass(frozen=True)
 class PlacedShape:
-    """A shape with its place (pixels) and its electrons.
-
-    `shape` has either ``transform(u, v)`` or ``points(max_frequency)`` (places in radians from the
-    centre, weights summing to 1) with ``pixel_side`` and ``pixel_angle`` of the square that each of
-    those points stands for.
-    """
+    """A shape with its place (pixels) and its electrons."""
 
     x: float
     y: float
     electrons: float
-    shape: Any
+    shape: SkyShape
 
 
 @dataclass(frozen=True)

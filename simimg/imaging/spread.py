@@ -88,7 +88,7 @@ def shape_stamp(
     k_x = np.arange(n // 2 + 1) / n
     k_y = np.fft.fftfreq(n)
     shape = placed.shape
-    if hasattr(shape, "transform"):
+    if not hasattr(shape, "points"):
         spectrum: AnyArray = np.asarray(
             shape.transform(k_x[None, :] / cell, k_y[:, None] / cell), complex
         )
@@ -101,7 +101,8 @@ def shape_stamp(
     spread_points(stamp, x - left + dx / cell, y - bottom + dy / cell, placed.electrons * weight)
     side = getattr(shape, "pixel_side", 0.0) / cell
     if side:
-        cos, sin = np.cos(shape.pixel_angle), np.sin(shape.pixel_angle)
+        turn = getattr(shape, "pixel_angle", 0.0)
+        cos, sin = np.cos(turn), np.sin(turn)
         along = k_x[None, :] * cos + k_y[:, None] * sin
         across = -k_x[None, :] * sin + k_y[:, None] * cos
         spectrum = scipy.fft.rfft2(stamp) * np.sinc(side * along) * np.sinc(side * across)

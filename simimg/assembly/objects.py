@@ -1,0 +1,345 @@
+"""What is up there, counted out: every object of a scene with its place and its electrons.
+
+The inventory holds one row an object (a pair is two) in the order of the scene, its catalogues'
+stars last, as arrays, so that a million stars cost no more than they must; and the same objects
+as the engine's sources.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from math import pi
+from typing import Any
+
+import numpy as np
+
+from simimg.arrays import AnyArray, FloatArray
+from simimg.assembly.brightness import electrons_from_magnitude, exposure_time, zero_point
+from simimg.assembly.places import FieldGeometry, field_geometry
+from simimg.assembly.train import Train, assemble_train
+from simimg.errors import InputError, mistake
+from simimg.imaging.sources import PlacedShape, Points, SkyShape, Sources
+from simimg.scene.model import Scene
+from simimg.scene.objects import Catalogue, Disc, Galaxy, Pair, Picture, Placed, Ring
+from simimg.sky.catalogues import read_catalogue
+from simimg.sky.disc import DiscShape
+from simimg.sky.mosaic import PictureShape
+from simimg.sky.phase import PhaseDiscShape
+from simimg.sky.pictures import read_picture
+from simimg.sky.ring import RingShape
+from simimg.sky.sersic import SersicShape
+
+SHAPE_KEYS = (
+    "sersic_index",
+    "effective_radius",
+    "axis_ratio",
+    "diameter",
+    "limb_darkening",
+    "phase_angle",
+    "inner_diameter",
+    "outer_diameter",
+    "inclination",
+    "width",
+    "position_angle",
+)
+
+
+@dataclass(frozen=True)
+class Entry:
+    """One row of the inventory.
+
+    Attributes
+    ----------
+    label, kind : str
+    x, y : float
+        Place in pixels.
+    electrons : float
+        Of one exposure, over the whole PSF.
+    magnitude : float
+        NaN where the brightness was given in electrons.
+    separation, position_angle : float
+        Of a pair's second star about its first (rad); NaN otherwise.
+    partner : int
+        Row of the other star of a pair; -1 otherwise.
+    keys : dict
+        Keys of the shape, SI.
+    catalogue : bool
+        True for a star of a catalogue.
+    shape : SkyShape or None
+        None for points.
+    """
+
+    label: str
+    kind: str
+    x: float
+    y: float
+    electrons: float
+    magnitude: float
+    separation: float
+    position_angle: float
+    partner: int
+    keys: dict[str, float]
+    catalogue: bool
+    shape: SkyShape | None
+
+
+@dataclass(frozen=True, eq=False)
+class Inventory:
+    """Every object of a scene, as columns of one length, and as sources for the engine."""
+
+    label: AnyArray
+    kind: AnyArray
+    x: FloatArray
+    y: FloatArray
+    electrons: FloatArray
+    magnitude: FloatArray
+    separation: FloatArray
+    position_angle: FloatArray
+    partner: AnyArray
+    keys: tuple[dict[str, float], ...]
+    shapes: tuple[SkyShape | None, ...]
+    geometry: FieldGeometry
+
+    def __len__(self) -> int:
+        return int(self.x.size)
+
+    @property
+    def written(self) -> int:
+        """Rows that stand in the scene itself; those of catalogues follow."""
+        return len(self.keys)
+
+    @property
+    def sources(self) -> Sources:
+        """The same objects for the engine."""
+        point = np.ones(len(self), dtype=bool)
+        shapes = []
+        for row, shape in enumerate(self.shapes):
+            if shape is not None:
+                point[row] = False
+                place = float(self.x[row]), float(self.y[row]), float(self.electrons[row])
+                shapes.append(PlacedShape(*place, shape))
+        points = Points(self.x[point], self.y[point], self.electrons[point])
+        return Sources(points, tuple(shapes))
+
+    def entry(self, row: int) -> Entry:
+        """One row."""
+        own = row < self.written
+        return Entry(
+            label=str(self.label[row]),
+            kind=str(self.kind[row]),
+            x=float(self.x[row]),
+            y=float(self.y[row]),
+            electrons=float(self.electrons[row]),
+            magnitude=float(self.magnitude[row]),
+            separation=float(self.separation[row]),
+            position_angle=float(self.position_angle[row]),
+            partner=int(self.partner[row]),
+            keys=self.keys[row] if own else {},
+            catalogue=not own,
+            shape=self.shapes[row] if own else None,
+        )
+
+    @property
+    def entries(self) -> Iterator[Entry]:
+        """All rows, one after another."""
+        return (self.entry(row) for row in range(len(self)))
+
+
+def inventory(scene: Scene, *, train: Train | None = None) -> Inventory:
+    """Count out the objects of a scene.
+
+    Parameters
+    ----------
+    scene : Scene
+    train : Train, optional
+        The scene's train, where it has been assembled already.
+
+    Raises
+    ------
+    InputError
+        A catalogue or a picture that cannot serve; a magnitude without an exposure time.
+    """
+    train = assemble_train(scene) if train is None else train
+    geometry = field_geometry(scene)
+    zero = zero_point(scene, area=train.pupil.area, airmass=train.airmass)
+    time = exposure_time(scene)
+    rows: list[dict[str, Any]] = []
+    for kind in ("star", "pair", "galaxy", "disc", "ring", "picture"):
+        for number, one in enumerate(getattr(scene, kind)):
+            label = one.label or f"{kind}-{number + 1}"
+            x, y = _place(one, geometry)
+            if isinstance(one, Pair):
+                rows += _pair_rows(one, label, x, y, geometry, len(rows), zero, time)
+                continue
+            rows.append(
+                {
+                    "label": label,
+                    "kind": kind,
+                    "x": x,
+                    "y": y,
+                    "electrons": _electrons(one.electrons, one.magnitude, zero, time),
+                    "magnitude": np.nan if one.magnitude is None else one.magnitude,
+                    "keys": {k: getattr(one, k) for k in SHAPE_KEYS if hasattr(one, k)},
+                    "shape": _shape(scene, f"{kind}[{number}]", one, geometry),
+                }
+            )
+    columns: dict[str, list[AnyArray]] = {
+        "label": [np.array([r["label"] for r in rows], dtype=str)],
+        "kind": [np.array([r["kind"] for r in rows], dtype=str)],
+        "partner": [np.array([r.get("partner", -1) for r in rows], dtype=np.int64)],
+    }
+    for name in ("x", "y", "electrons", "magnitude", "separation", "position_angle"):
+        columns[name] = [np.array([r.get(name, np.nan) for r in rows], dtype=np.float64)]
+    for number, catalogue in enumerate(scene.catalogue):
+        part = _catalogue_rows(scene, number, catalogue, geometry, zero, time)
+        for name, values in columns.items():
+            values.append(part[name])
+    joined = {name: np.concatenate(values) for name, values in columns.items()}
+    return Inventory(
+        **joined,
+        keys=tuple(r["keys"] for r in rows),
+        shapes=tuple(r["shape"] for r in rows),
+        geometry=geometry,
+    )
+
+
+def _place(one: Placed, geometry: FieldGeometry) -> tuple[float, float]:
+    if one.x is not None and one.y is not None:
+        return one.x, one.y
+    if one.ra is not None and one.dec is not None:
+        x, y = geometry.from_sky(np.array(one.ra), np.array(one.dec))
+    else:
+        x, y = geometry.to_pixels(np.array(one.east or 0.0), np.array(one.north or 0.0))
+    return float(x), float(y)
+
+
+def _electrons(electrons: float | None, magnitude: float | None, zero: float, time: float) -> float:
+    if electrons is not None:
+        return electrons
+    assert magnitude is not None
+    return float(electrons_from_magnitude(magnitude, zero_point=zero, time=time))
+
+
+def _pair_rows(
+    pair: Pair,
+    label: str,
+    x: float,
+    y: float,
+    geometry: FieldGeometry,
+    row: int,
+    zero: float,
+    time: float,
+) -> list[dict[str, Any]]:
+    """The two stars of a pair; the second stands off in the tangent plane."""
+    east, north = geometry.to_offsets(np.array(x), np.array(y))
+    second = geometry.to_pixels(
+        east + pair.separation * np.sin(pair.position_angle),
+        north + pair.separation * np.cos(pair.position_angle),
+    )
+    magnitudes = pair.magnitudes or (None, None)
+    electrons = pair.electrons or (None, None)
+    places = ((x, y), (float(second[0]), float(second[1])))
+    return [
+        {
+            "label": label,
+            "kind": "pair",
+            "x": places[star][0],
+            "y": places[star][1],
+            "electrons": _electrons(electrons[star], magnitudes[star], zero, time),
+            "magnitude": np.nan if magnitudes[star] is None else magnitudes[star],
+            "separation": pair.separation,
+            "position_angle": pair.position_angle % (2.0 * pi),
+            "partner": row + 1 - star,
+            "keys": {},
+            "shape": None,
+        }
+        for star in (0, 1)
+    ]
+
+
+def _shape(scene: Scene, key: str, one: Placed, geometry: FieldGeometry) -> SkyShape | None:
+    """The shape of an object in the detector's axes; None for a star."""
+    if isinstance(one, Galaxy):
+        angle = geometry.direction(one.position_angle)
+        return SersicShape(one.effective_radius, one.sersic_index, one.axis_ratio, angle)
+    if isinstance(one, Disc):
+        angle = geometry.direction(one.position_angle)
+        if one.phase_angle == 0.0:
+            return DiscShape(one.diameter, one.limb_darkening, one.axis_ratio, angle)
+        return PhaseDiscShape(
+            one.diameter, one.limb_darkening, one.phase_angle, one.axis_ratio, angle
+        )
+    if isinstance(one, Ring):
+        angle = geometry.direction(one.position_angle)
+        return RingShape(one.inner_diameter, one.outer_diameter, one.inclination, angle)
+    if isinstance(one, Picture):
+        source = scene.inputs[one.file]
+        values = read_picture(source.read(), source.name)
+        up = geometry.direction(one.position_angle)
+        try:
+            return PictureShape(
+                values, one.width / values.shape[1], up - pi / 2.0, geometry.mirrored
+            )
+        except ValueError as error:
+            line = mistake(
+                scene.name,
+                f"{key}.file",
+                f"{source.name}: {error}",
+                "give a picture with some light",
+            )
+            raise InputError(line) from error
+    return None
+
+
+def _catalogue_rows(
+    scene: Scene,
+    number: int,
+    catalogue: Catalogue,
+    geometry: FieldGeometry,
+    zero: float,
+    time: float,
+) -> dict[str, AnyArray]:
+    """The stars of a catalogue as columns."""
+    source = scene.inputs[catalogue.file]
+    table = read_catalogue(
+        source.read(), source.name, columns=catalogue.columns, units=catalogue.units
+    )
+    if "x" in table:
+        x, y = table["x"], table["y"]
+    elif "ra" in table:
+        try:
+            x, y = geometry.from_sky(table["ra"], table["dec"])
+        except ValueError as error:
+            line = mistake(
+                scene.name,
+                f"catalogue[{number}].file",
+                f"{source.name}: {error}",
+                "point [pointing] at the catalogue's field",
+            )
+            raise InputError(line) from error
+    else:
+        x, y = geometry.to_pixels(table["east"], table["north"])
+    size = x.size
+    nothing = np.full(size, np.nan)
+    magnitude = table.get("magnitude", nothing)
+    electrons = table.get("electrons")
+    if electrons is None:
+        electrons = electrons_from_magnitude(magnitude, zero_point=zero, time=time)
+    label = table.get("label")
+    if label is None:
+        stem = catalogue.label or f"catalogue-{number + 1}"
+        width = len(str(size))
+        numbers = np.char.zfill(np.arange(1, size + 1).astype(str), width)
+        label = np.char.add(f"{stem}-", numbers)
+    return {
+        "label": np.asarray(label, dtype=str),
+        "kind": np.full(size, "star"),
+        "partner": np.full(size, -1, dtype=np.int64),
+        "x": np.asarray(x, float),
+        "y": np.asarray(y, float),
+        "electrons": np.asarray(electrons, float),
+        "magnitude": np.asarray(magnitude, float),
+        "separation": nothing,
+        "position_angle": nothing,
+    }

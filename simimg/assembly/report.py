@@ -1,0 +1,236 @@
+"""What a scene means, in words: for the person who wants to know before anything is computed.
+
+Derived figures (plate scale, sampling, Fried's parameter, zero point, light a pixel), the defaults
+that were used, what will bite, and the cautions that go with a scene that could hurt someone.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from math import degrees, sqrt
+
+import numpy as np
+
+from simimg.assembly.brightness import (
+    dark_electrons,
+    exposure_time,
+    scene_band,
+    sky_electrons,
+    zero_point,
+)
+from simimg.assembly.train import Train, assemble_train, half_light_width
+from simimg.camera.converter import converter_top
+from simimg.scene.file import defaults_used, scene_id
+from simimg.scene.model import Scene
+
+SIMULATION_NOTE = (
+    "Every frame is a simulation: limits and exposure times are estimates for planning, to be "
+    "confirmed with the observatory."
+)
+SUN_NOTE = (
+    "Never point an unfiltered telescope or eye at or near the Sun; follow the observatory's rules "
+    "and use certified solar filters."
+)
+
+
+@dataclass(frozen=True)
+class Description:
+    """What a scene means.
+
+    Attributes
+    ----------
+    lines : tuple of (str, str, str)
+        Name, value with its unit, and a remark that may be empty.
+    defaults : tuple of (str, str, str)
+        Key, the value used in its absence, and what that means.
+    warnings : tuple of str
+        What will bite.
+    cautions : tuple of str
+        What could hurt someone, and that it is a simulation.
+    values : dict
+        The derived figures for programs; units in the names.
+    """
+
+    lines: tuple[tuple[str, str, str], ...]
+    defaults: tuple[tuple[str, str, str], ...]
+    warnings: tuple[str, ...]
+    cautions: tuple[str, ...]
+    values: dict[str, object]
+
+    def to_dict(self) -> dict[str, object]:
+        """The same for JSON."""
+        return {
+            **self.values,
+            "defaults": [
+                {"key": key, "value": value, "meaning": meaning}
+                for key, value, meaning in self.defaults
+            ],
+            "cautions": list(self.cautions),
+        }
+
+
+def describe(scene: Scene) -> Description:
+    """Work out what a scene means.
+
+    Raises
+    ------
+    InputError
+        A pupil map that cannot serve, or an image quality sharper than diffraction.
+    """
+    train = assemble_train(scene)
+    lines = [*_light_lines(scene, train), *_air_lines(train), *_camera_lines(scene, train)]
+    return Description(
+        lines=tuple(lines),
+        defaults=tuple(defaults_used(scene)),
+        warnings=tuple(_warnings(scene, train)),
+        cautions=cautions(scene),
+        values=_values(scene, train),
+    )
+
+
+def cautions(scene: Scene) -> tuple[str, ...]:
+    """What must be said beside any product of a scene."""
+    if names_the_sun(scene):
+        return (SUN_NOTE, SIMULATION_NOTE)
+    return (SIMULATION_NOTE,)
+
+
+def names_the_sun(scene: Scene) -> bool:
+    """True where a scene speaks of the Sun: its title, an object's label, or sunlight outright.
+
+    The scene does not know where the Sun stands, so that words and brightness must do: nothing but
+    the Sun is brighter than magnitude -14.
+    """
+    texts = [scene.title or "", *[one.label or "" for one in scene.objects]]
+    words = {w.strip(".,;:!?()[]\"'").lower() for text in texts for w in text.split()}
+    bright = any((getattr(one, "magnitude", None) or 0.0) < -14.0 for one in scene.objects)
+    return bright or bool(words & {"sun", "solar", "sunspot", "sunspots", "photosphere"})
+
+
+def _arcsec(angle: float) -> float:
+    return degrees(angle) * 3600.0
+
+
+def _light_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
+    band = scene_band(scene)
+    zero = zero_point(scene, area=train.pupil.area, airmass=train.airmass)
+    what = "electrons" if scene.camera is not None else "photons"
+    return [
+        (
+            "band",
+            f"{band.name or 'by centre and width'}, {band.centre * 1e9:.5g} nm, "
+            f"{band.width * 1e9:.4g} nm wide",
+            f"{scene.band.resolved_system} magnitudes; the PSF is that of the centre",
+        ),
+        ("collecting area", f"{train.pupil.area:.4g} m2", "obstruction and vanes taken off"),
+        (
+            "zero point",
+            f"{zero:.4g} {what}/s",
+            "of magnitude 0 above the air, at the detector",
+        ),
+        (
+            "diffraction FWHM",
+            f"{_arcsec(half_light_width(train.optics)):.4g} arcsec",
+            f"lambda/D is {_arcsec(train.wavelength / scene.telescope.aperture):.4g} arcsec",
+        ),
+    ]
+
+
+def _air_lines(train: Train) -> list[tuple[str, str, str]]:
+    if train.fried is None or train.seeing is None:
+        return [("air", "none", "above the atmosphere")]
+    return [
+        ("airmass", f"{train.airmass:.4g}", ""),
+        (
+            "seeing",
+            f"{_arcsec(train.seeing):.4g} arcsec",
+            "FWHM at 500 nm, at the zenith, for an infinite outer scale",
+        ),
+        ("Fried's r0", f"{train.fried * 100.0:.4g} cm", "in this band, at this airmass"),
+        (
+            "image quality",
+            f"{_arcsec(half_light_width(train.focal)):.4g} arcsec",
+            "FWHM delivered at the focal plane, without pixel",
+        ),
+    ]
+
+
+def _camera_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
+    camera, scale = scene.camera, train.pixel_scale
+    if camera is None:
+        return [("camera", "none", "limits are those of the focal plane")]
+    lines = []
+    if scale is not None:
+        width = half_light_width(train.focal)
+        nyquist = train.wavelength / scene.telescope.aperture / 2.0
+        lines += [
+            ("pixel scale", f"{_arcsec(scale):.4g} arcsec", ""),
+            (
+                "sampling",
+                f"{width / scale:.3g} pixels a FWHM",
+                f"the optics' own detail needs {_arcsec(nyquist):.3g} arcsec (Nyquist)",
+            ),
+        ]
+        if camera.pixels is not None:
+            sides = " x ".join(f"{_arcsec(scale * n) / 60.0:.3g}" for n in camera.pixels)
+            lines.append(("field", f"{sides} arcmin", f"{camera.pixels[0]} x {camera.pixels[1]}"))
+    sky, dark = sky_electrons(scene, area=train.pupil.area), dark_electrons(scene)
+    noise = sqrt(sky + dark + camera.read_noise**2)
+    lines += [
+        ("sky", f"{sky:.4g} electrons", "in a pixel and an exposure"),
+        ("dark signal", f"{dark:.4g} electrons", "in a pixel and an exposure"),
+        (
+            "background noise",
+            f"{noise:.4g} electrons",
+            f"of which the read noise is {camera.read_noise:.4g}",
+        ),
+    ]
+    return lines
+
+
+def _warnings(scene: Scene, train: Train) -> list[str]:
+    camera, found = scene.camera, []
+    if camera is not None:
+        noise_counts = camera.read_noise / camera.gain
+        if camera.bias < 5.0 * noise_counts:
+            found.append(
+                f"camera.bias is {camera.bias:.4g} adu, under five read noises "
+                f"({noise_counts:.3g} adu each): counts will clip at zero"
+            )
+        top = converter_top(camera.bit_depth)
+        if camera.full_well is not None and camera.full_well / camera.gain + camera.bias > top:
+            found.append(
+                f"the converter ends at {top} adu, before the full well: frames saturate at "
+                f"{(top - camera.bias) * camera.gain:.4g} electrons"
+            )
+    scale = train.pixel_scale
+    if scale is not None:
+        width = half_light_width(train.focal)
+        if width / scale < 2.0:
+            found.append(
+                f"undersampled: {width / scale:.2g} pixels a FWHM; the pixel sets the resolution"
+            )
+    if train.airmass is not None and train.airmass > 3.0:
+        found.append(f"airmass {train.airmass:.3g}: extinction and seeing so low are uncertain")
+    if scene.camera is not None and exposure_time(scene) == 0.0:
+        found.append("no exposure time: dark signal and sky brightness count for nothing")
+    return found
+
+
+def _values(scene: Scene, train: Train) -> dict[str, object]:
+    zero = zero_point(scene, area=train.pupil.area, airmass=train.airmass)
+    scale = train.pixel_scale
+    return {
+        "scene_id": scene_id(scene),
+        "wavelength_nm": train.wavelength * 1e9,
+        "collecting_area_m2": train.pupil.area,
+        "zero_point_electrons_per_second": zero,
+        "zero_point_magnitude": 2.5 * float(np.log10(zero)),
+        "airmass": train.airmass,
+        "r0_m": train.fried,
+        "seeing_arcsec": None if train.seeing is None else _arcsec(train.seeing),
+        "image_quality_arcsec": _arcsec(half_light_width(train.focal)),
+        "pixel_scale_arcsec": None if scale is None else _arcsec(scale),
+        "sky_electrons": sky_electrons(scene, area=train.pupil.area),
+        "dark_electrons": dark_electrons(scene),
+    }

@@ -1,0 +1,229 @@
+"""expose: a scene becomes a frame.
+
+The expected electrons of objects and sky are computed once, exactly; the camera then counts them.
+Everything random comes from the scene's seed and the number of the exposure, so that the same
+scene gives the same frame.
+"""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Collection
+from dataclasses import dataclass
+from datetime import datetime, timedelta
+
+import numpy as np
+
+from simimg import __version__
+from simimg.arrays import AnyArray
+from simimg.assembly.brightness import dark_electrons, exposure_time, sky_electrons
+from simimg.assembly.objects import Inventory, inventory
+from simimg.assembly.train import Train, assemble_train
+from simimg.assembly.truth import truth_table
+from simimg.camera.chain import CameraSettings, record
+from simimg.camera.converter import converter_top
+from simimg.errors import InputError
+from simimg.frame import Frame, PsfImage
+from simimg.imaging.profile import sampled_psf
+from simimg.imaging.render import expected_image
+from simimg.scene.file import requirements_to_expose, scene_id, scene_record
+from simimg.scene.model import Scene
+
+PSF_OVERSAMPLING = 4
+_PSF_HALF_WIDTH = 16
+
+
+@dataclass(frozen=True, eq=False)
+class Prepared:
+    """What the exposures of one scene share: everything up to the first random draw."""
+
+    scene: Scene
+    train: Train
+    objects: Inventory
+    expected: AnyArray
+    settings: CameraSettings
+
+
+def prepare(
+    scene: Scene, *, memory_bytes: int | None = None, threads: int | None = None
+) -> Prepared:
+    """Compute what all exposures of a scene have in common.
+
+    Parameters
+    ----------
+    scene : Scene
+    memory_bytes : int, optional
+        Most memory that the image may take; 2 GiB unless given.
+    threads : int, optional
+        All processors unless given; of no effect on the result.
+
+    Raises
+    ------
+    InputError
+        The scene lacks what an exposure needs, or the image cannot fit into the memory.
+    """
+    missing = requirements_to_expose(scene)
+    if missing:
+        raise InputError(*missing)
+    train = assemble_train(scene)
+    objects = inventory(scene, train=train)
+    geometry = objects.geometry
+    expected = expected_image(
+        train.basis,
+        objects.sources,
+        columns=geometry.columns,
+        rows=geometry.rows,
+        pixel_scale=geometry.pixel_scale,
+        memory_bytes=memory_bytes,
+        threads=_threads(threads),
+    )
+    expected += expected.dtype.type(sky_electrons(scene, area=train.pupil.area))
+    camera = scene.camera
+    assert camera is not None
+    settings = CameraSettings(
+        time=exposure_time(scene),
+        gain=camera.gain,
+        read_noise=camera.read_noise,
+        dark_current=camera.dark_current,
+        bias=camera.bias,
+        full_well=camera.full_well,
+        bit_depth=camera.bit_depth,
+        serial=camera.serial,
+    )
+    return Prepared(scene, train, objects, expected, settings)
+
+
+def expose(
+    scene: Scene,
+    *,
+    index: int = 0,
+    keep: Collection[str] = (),
+    memory_bytes: int | None = None,
+    threads: int | None = None,
+) -> Frame:
+    """The frame that a scene's set-up would record.
+
+    Parameters
+    ----------
+    scene : Scene
+    index : int, optional
+        Number of the exposure, from 0; each has its own noise.
+    keep : collection of {"expected", "psf"}, optional
+        What to keep beside the counts.
+    memory_bytes, threads : int, optional
+        As for `prepare`.
+
+    Returns
+    -------
+    Frame
+
+    Raises
+    ------
+    InputError
+        The scene lacks what an exposure needs, or cannot be computed in the memory.
+    ValueError
+        An index below 0 or an unknown word in `keep`.
+    """
+    prepared = prepare(scene, memory_bytes=memory_bytes, threads=threads)
+    return expose_prepared(prepared, index=index, keep=keep, threads=threads)
+
+
+def expose_prepared(
+    prepared: Prepared, *, index: int = 0, keep: Collection[str] = (), threads: int | None = None
+) -> Frame:
+    """One exposure of a prepared scene; arguments as for `expose`."""
+    unknown = set(keep) - {"expected", "psf"}
+    if index < 0 or unknown:
+        raise ValueError(f"index must be 0 or more, got {index}; keep may not hold {unknown}")
+    scene, train = prepared.scene, prepared.train
+    seed = scene.exposure.seed if scene.exposure is not None else 0
+    recorded = record(
+        prepared.expected,
+        settings=prepared.settings,
+        seed=seed,
+        frame=index,
+        threads=_threads(threads),
+    )
+    psf = None
+    if "psf" in keep:
+        assert train.pixel_scale is not None
+        image = sampled_psf(
+            train.effective,
+            pixel_scale=train.pixel_scale,
+            oversampling=PSF_OVERSAMPLING,
+            half_width_pixels=_PSF_HALF_WIDTH,
+        )
+        psf = PsfImage(image, PSF_OVERSAMPLING)
+    return Frame(
+        counts=recorded.counts,
+        header=frame_header(prepared, index),
+        wcs=prepared.objects.geometry.wcs(),
+        truth=truth_table(prepared.objects, train),
+        expected=prepared.expected.astype(np.float32) if "expected" in keep else None,
+        psf=psf,
+        mask=recorded.mask if recorded.mask.any() else None,
+        scene_files=tuple(scene_record(scene)),
+    )
+
+
+def frame_header(prepared: Prepared, index: int) -> dict[str, object]:
+    """Header of an exposure: standard keywords where there is one, values in the trade's units."""
+    scene, train, settings = prepared.scene, prepared.train, prepared.settings
+    seed = scene.exposure.seed if scene.exposure is not None else 0
+    top = float(converter_top(settings.bit_depth))
+    full_well = np.inf if settings.full_well is None else settings.full_well
+    saturation = min(top, full_well / settings.gain + settings.bias)
+    band = scene.band
+    filter_name = band.name or f"{(band.centre or 0) * 1e9:.6g} nm"
+    header: dict[str, object] = {
+        "OBJECT": (scene.title or "", "title of the scene"),
+        "OBSTYPE": ("object", "kind of frame"),
+        "EXPTIME": (settings.time, "[s] exposure time"),
+    }
+    start = scene.exposure.start if scene.exposure is not None else None
+    if start is not None and scene.exposure is not None:
+        header |= _times(start, index * (settings.time + scene.exposure.overhead))
+    header |= {
+        "FILTER": (filter_name, "band"),
+        "WAVELEN": (train.wavelength * 1e9, "[nm] centre of the band"),
+        "GAIN": (settings.gain, "[electron/adu] gain"),
+        "RDNOISE": (settings.read_noise, "[electron] read noise"),
+        "BIASLVL": (settings.bias, "[adu] bias level"),
+        "DARKSIG": (dark_electrons(scene), "[electron] dark signal in a pixel"),
+        "SKYLVL": (sky_electrons(scene, area=train.pupil.area), "[electron] sky in a pixel"),
+        "SATURATE": (saturation, "[adu] saturation level"),
+        "BUNIT": ("adu", "unit of the counts"),
+        "TELESCOP": (scene.telescope.name or "simulated", "telescope (simulated)"),
+        "INSTRUME": (
+            (scene.camera.name if scene.camera else None) or "simulated",
+            "camera (simulated)",
+        ),
+        "PIXSCALE": (np.degrees(train.pixel_scale or 0.0) * 3600.0, "[arcsec] pixel scale"),
+        "SEED": (seed, "seed of the noise"),
+        "EXPNUM": (index, "number of the exposure, from 0"),
+        "SCENEID": (scene_id(scene), "sha256 of the scene"),
+        "CREATOR": (f"simimg {__version__}", "program that made this simulation"),
+    }
+    if train.airmass is not None:
+        header["AIRMASS"] = (train.airmass, "airmass")
+    if train.seeing is not None:
+        header["SEEING"] = (
+            np.degrees(train.seeing) * 3600.0,
+            "[arcsec] FWHM at 500 nm, zenith",
+        )
+    return header | dict(scene.header)
+
+
+def _times(start: str, later: float) -> dict[str, object]:
+    """Date keywords of an exposure that begins `later` seconds after the scene's start."""
+    began = datetime.fromisoformat(start.rstrip("Z")) + timedelta(seconds=later)
+    days = (began - datetime(1858, 11, 17)) / timedelta(days=1)
+    return {
+        "DATE-OBS": (began.isoformat(timespec="milliseconds"), "start of the exposure"),
+        "MJD-OBS": (days, "[d] start of the exposure"),
+        "TIMESYS": ("UTC", "time scale"),
+    }
+
+
+def _threads(threads: int | None) -> int:
+    return threads if threads is not None else (os.cpu_count() or 1)
