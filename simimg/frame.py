@@ -145,6 +145,8 @@ class Frame:
         RunError
             The system refused, for instance because the disk is full; no part is left behind.
         """
+        from simimg.camera.masks import MASK_BITS
+
         write_frame(
             path,
             overwrite=overwrite,
@@ -157,6 +159,7 @@ class Frame:
             expected=self.expected,
             psf=None if self.psf is None else (self.psf.image, self.psf.oversampling),
             mask=self.mask,
+            mask_says=tuple(f"{value}: {meaning}" for value, meaning in MASK_BITS.items()),
         )
 
     @classmethod

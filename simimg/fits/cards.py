@@ -130,10 +130,15 @@ def check_header(extra: Mapping[str, object], where: str, *, table: str = "heade
     lines = []
     for keyword, value in extra.items():
         key = f"{table}.{ascii_text(str(keyword))[:80]}"
-        wrong = _keyword_mistake(str(keyword)) or _value_mistake(str(keyword), value)
+        wrong = card_mistake(str(keyword), value)
         if wrong:
             lines.append(mistake(where, key, *wrong))
     return lines
+
+
+def card_mistake(keyword: str, value: object) -> tuple[str, str] | None:
+    """What is wrong with one keyword that a user adds, and its mend; None when nothing is."""
+    return _keyword_mistake(keyword) or _value_mistake(keyword, value)
 
 
 def _keyword_mistake(keyword: str) -> tuple[str, str] | None:

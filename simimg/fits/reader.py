@@ -161,6 +161,12 @@ def _read_wcs(header: Header, shape: tuple[int, int], where: str) -> WCS | None:
         wcs = WCS(header)
         if not wcs.has_celestial:
             return None
+        for keyword in ("CRPIX1", "CRPIX2", "CRVAL1", "CRVAL2", "CD1_1", "CDELT1", "CDELT2"):
+            if isinstance(header.get(keyword), str):
+                raise ValueError(f"{keyword} is not a number")
+        matrix = wcs.celestial.pixel_scale_matrix
+        if not abs(np.linalg.det(matrix)) > 1e-6 * np.sum(matrix**2):
+            raise ValueError("a pixel has no extent")
         rows, columns = shape
         centre = wcs.all_pix2world([[(columns - 1) / 2, (rows - 1) / 2]], 0)
         if not np.isfinite(centre).all():
@@ -268,5 +274,8 @@ def _damage(where: str, part: str, *, mend: str = _AGAIN) -> Iterator[None]:
     except InputError:
         raise
     except Exception as error:  # libraries raise nearly anything on a damaged file
-        first = ascii_text(str(error).strip().split("\n")[0])[:120] or type(error).__name__
-        raise InputError(mistake(where, part, f"is damaged: {first}", mend)) from error
+        lines = str(error).strip().split("\n")
+        # Some libraries name their own source file first and the trouble last.
+        line = lines[-1] if lines[0].startswith("ERROR") else lines[0]
+        what = ascii_text(line)[:120].rstrip(" .") or type(error).__name__
+        raise InputError(mistake(where, part, f"is damaged: {what}", mend)) from error

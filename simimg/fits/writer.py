@@ -66,6 +66,7 @@ def write_frame(
     expected: AnyArray | None,
     psf: tuple[AnyArray, int] | None,
     mask: AnyArray | None,
+    mask_says: Sequence[str] = (),
 ) -> None:
     """Write the parts of a frame; see `simimg.frame.Frame` for what they are.
 
@@ -79,6 +80,8 @@ def write_frame(
     counts, header, wcs, truth, scene_files, expected, mask
         As the attributes of `simimg.frame.Frame`.
     psf : (image, oversampling) or None
+    mask_says : sequence of str
+        What the bits of the mask mean, a line each.
 
     Raises
     ------
@@ -103,13 +106,7 @@ def write_frame(
             finer = {"OVERSAMP": (oversampling, "samples in the width of a detector pixel")}
             _write_image(handle, image, simulated, "PSF", finer, _PSF_SAYS)
         if mask is not None:
-            _write_image(handle, mask, simulated, "MASK", coordinates, _mask_says())
-
-
-def _mask_says() -> tuple[str, ...]:
-    from simimg.camera.masks import MASK_BITS
-
-    return tuple(f"bit {bit} (value {1 << bit}): {what}" for bit, what in MASK_BITS.items())
+            _write_image(handle, mask, simulated, "MASK", coordinates, mask_says)
 
 
 def _write_image(
