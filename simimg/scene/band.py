@@ -11,6 +11,9 @@ from simimg.scene.table import Fault, Table, key
 STANDARD_NAMES = ("U", "B", "V", "R", "I", "J", "H", "K")
 """Names of the standard bands."""
 
+BLUEST, REDDEST = 359.8e-9, 2190e-9
+"""Wavelengths of U and K (m), between which any band has a Vega zero point."""
+
 
 class Band(Table):
     """The wavelengths that are let through, and the system of the scene's magnitudes."""
@@ -75,4 +78,11 @@ class Band(Table):
                 ("width",),
                 "must be below 1.9 times the centre, or the band reaches down to wavelength 0",
                 "write a smaller width or a larger centre",
+            )
+        beyond = self.centre is not None and not BLUEST <= self.centre <= REDDEST
+        if beyond and self.system == "Vega":
+            yield Fault(
+                ("system",),
+                "has no Vega zero point at this centre, beyond the bands U and K",
+                'write system = "AB" (and AB magnitudes)',
             )

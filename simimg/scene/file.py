@@ -1,7 +1,7 @@
 """A scene in and out: from a TOML file or a frame's record, and back to text, record and hash.
 
 Every mistake is reported at once, one line each, ``FILE: key: what is wrong; what to write
-instead``.
+instead``. Where an override is at fault, the file is followed by ``(--set)``.
 """
 
 from __future__ import annotations
@@ -14,25 +14,11 @@ from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
-from pydantic import ValidationError
-
 from simimg.errors import InputError, mistake
 from simimg.quantities import shown
-from simimg.scene.inputs import (
-    InputFile,
-    UnusableFileError,
-    files_named,
-    read_bounded,
-    read_input,
-)
-from simimg.scene.layers import (
-    MisplacedKeyError,
-    apply_overrides,
-    change,
-    overlay,
-    parse_path,
-    take_away,
-)
+from simimg.scene.build import build, read_layers
+from simimg.scene.inputs import InputFile, UnusableFileError, read_bounded, read_input
+from simimg.scene.layers import MisplacedKeyError, change, parse_path
 from simimg.scene.model import Scene
 from simimg.scene.needs import defaults_used, requirements_to_expose
 from simimg.scene.text import LARGEST_SCENE, parse_toml, to_toml
@@ -48,14 +34,7 @@ __all__ = [
     "scene_text",
 ]
 
-MOST_LINES = 200
-"""Most mistakes that are reported of one scene."""
-
-MOST_BASES = 8
-"""Most scenes that may be laid over one another."""
-
-_Layer = tuple[str, dict[str, Any]]
-_Place = tuple[str | int, ...]
+_RECORD = "use an undamaged frame that simimg wrote"
 
 
 def load_scene(
@@ -83,12 +62,11 @@ def load_scene(
         content = read_bounded(file, LARGEST_SCENE)
     except UnusableFileError as problem:
         raise InputError(mistake(where, "", problem.what, problem.mend)) from None
-    layers = _layers(content, where, file, ())
-    return _build(
-        layers,
+    return build(
+        read_layers(content, where, file),
         name=file.name,
         directory=file.parent,
-        kept={},
+        find=lambda name: read_input(name, file.parent),
         overrides=overrides,
         without=without,
     )
@@ -122,43 +100,54 @@ def scene_from_record(
         One line for each mistake; also where a content does not fit its hash.
     """
     if not files:
-        raise InputError(mistake(name, "SCENE", "is empty", "use a frame that simimg wrote"))
+        raise InputError(mistake(name, "SCENE", "is empty", _RECORD))
     folder = Path(directory)
-    lines: list[str] = []
-    kept: dict[str, InputFile] = {}
-    for index, (file_name, sha256, content) in enumerate(files):
-        digest = hashlib.sha256(content).hexdigest()
-        if digest == sha256 and index > 0:
-            kept[file_name] = InputFile(file_name, sha256, content, None)
-        elif digest != sha256 and index > 0 and not content:
-            try:
-                kept[file_name] = _fetch(file_name, sha256, folder)
-            except UnusableFileError as problem:
-                lines.append(mistake(name, f"SCENE {shown(file_name)}", problem.what, problem.mend))
-        elif digest != sha256:
-            lines.append(
-                mistake(
-                    name,
-                    f"SCENE {shown(file_name)}",
-                    "is damaged: the content does not fit its sha256",
-                    "use an undamaged copy of the frame",
-                )
-            )
+    digests = [hashlib.sha256(content).hexdigest() for _, _, content in files]
+    lines = [
+        mistake(name, f"SCENE {shown(one)}", "is damaged: its sha256 is another", _RECORD)
+        for (one, sha256, content), digest in zip(files, digests, strict=True)
+        if digest != sha256 and (content or one == files[0][0])
+    ]
     if lines:
         raise InputError(*lines)
     document = parse_toml(files[0][2], name)
     if "base" in document:
-        raise InputError(
-            mistake(name, "base", "stands in the scene of a frame", "use a frame that simimg wrote")
-        )
-    return _build(
+        raise InputError(mistake(name, "base", "stands in the scene of a frame", _RECORD))
+    kept = {
+        one: (sha256, content if digest == sha256 else None)
+        for (one, sha256, content), digest in zip(files[1:], digests[1:], strict=True)
+    }
+
+    def find(path: str) -> InputFile:
+        if path not in kept:
+            return read_input(path, folder)
+        sha256, content = kept[path]
+        if content is not None:
+            return InputFile(path, sha256, content, None)
+        return _fetch(path, sha256, folder)
+
+    return build(
         [(name, document)],
         name=Path(files[0][0]).name or "scene.toml",
         directory=folder,
-        kept=kept,
+        find=find,
         overrides=overrides,
         without=without,
     )
+
+
+def _fetch(name: str, sha256: str, folder: Path) -> InputFile:
+    """Read from disk a file that a record holds only by its hash."""
+    mend = f"put the file of sha256 {shown(sha256[:64])} beside the frame"
+    try:
+        found = read_input(name, folder)
+    except UnusableFileError as problem:
+        raise UnusableFileError(
+            f"too large to be kept in the frame, {problem.what}", mend
+        ) from None
+    if found.sha256 != sha256:
+        raise UnusableFileError("too large to be kept in the frame, and changed since", mend)
+    return found
 
 
 def replace(scene: Scene, changes: Mapping[str, Any]) -> Scene:
@@ -167,6 +156,7 @@ def replace(scene: Scene, changes: Mapping[str, Any]) -> Scene:
     Parameters
     ----------
     scene : Scene
+        Stays as it is.
     changes : mapping
         Dotted keys to values as in a scene file: ``{"air.seeing": "0.5 arcsec"}``. None takes a
         key or a table away.
@@ -174,7 +164,7 @@ def replace(scene: Scene, changes: Mapping[str, Any]) -> Scene:
     Raises
     ------
     InputError
-        As `load_scene`.
+        One line for each mistake.
     """
     document = scene.document
     lines: list[str] = []
@@ -182,17 +172,33 @@ def replace(scene: Scene, changes: Mapping[str, Any]) -> Scene:
         try:
             change(document, parse_path(name), _plain_value(value))
         except MisplacedKeyError as error:
-            lines.append(mistake(scene.name, name, error.what, error.mend))
+            lines.append(mistake(scene.where, name, error.what, error.mend))
     if lines:
         raise InputError(*lines)
-    return _build(
-        [(scene.name, document)],
+    return build(
+        [(scene.where, document)],
         name=scene.name,
         directory=scene.directory,
-        kept=dict(scene.inputs),
-        overrides=(),
-        without=(),
+        find=lambda path: scene.inputs.get(path) or read_input(path, scene.directory),
     )
+
+
+def _plain_value(value: Any) -> Any:
+    """A value of Python or NumPy as a document holds it."""
+    if value is None or isinstance(value, str | bool):
+        return value
+    if isinstance(value, numbers.Integral):
+        return int(value)
+    if isinstance(value, numbers.Real):
+        return float(value)
+    if isinstance(value, Mapping):
+        return {str(name): _plain_value(one) for name, one in value.items()}
+    if isinstance(value, Sequence):
+        return [_plain_value(one) for one in value]
+    to_list = getattr(value, "tolist", None)
+    if callable(to_list):
+        return _plain_value(to_list())
+    raise MisplacedKeyError(f"cannot be {shown(value)}", "give text, a number, a list or a table")
 
 
 def scene_text(scene: Scene) -> str:
@@ -225,157 +231,3 @@ def scene_id(scene: Scene) -> str:
     files = sorted((name, one.sha256) for name, one in scene.inputs.items())
     canonical = json.dumps([scene.document, files], sort_keys=True, separators=(",", ":"))
     return hashlib.sha256(canonical.encode()).hexdigest()
-
-
-def _plain_value(value: Any) -> Any:
-    """A value of Python or NumPy as a document holds it."""
-    if value is None or isinstance(value, str | bool):
-        return value
-    if isinstance(value, numbers.Integral):
-        return int(value)
-    if isinstance(value, numbers.Real):
-        return float(value)
-    if isinstance(value, Mapping):
-        return {str(name): _plain_value(one) for name, one in value.items()}
-    if isinstance(value, Sequence):
-        return [_plain_value(one) for one in value]
-    item = getattr(value, "tolist", None)
-    if callable(item):
-        return _plain_value(item())
-    raise MisplacedKeyError(f"cannot be {shown(value)}", "give text, a number, a list or a table")
-
-
-def _fetch(name: str, sha256: str, folder: Path) -> InputFile:
-    """Read from disk a file that a record holds only by its hash."""
-    try:
-        found = read_input(name, folder)
-    except UnusableFileError as problem:
-        raise UnusableFileError(
-            f"is kept in the frame by its hash only, and on disk: {problem.what}",
-            f"put the file of sha256 {sha256[:64]} beside the frame",
-        ) from None
-    if found.sha256 != sha256:
-        raise UnusableFileError(
-            "is kept in the frame by its hash only, and the file on disk is another",
-            f"put the file of sha256 {sha256[:64]} beside the frame",
-        )
-    return found
-
-
-def _layers(content: bytes, where: str, file: Path, above: tuple[Path, ...]) -> list[_Layer]:
-    """The document and those it is laid over, topmost first."""
-    document = parse_toml(content, where)
-    if "base" not in document:
-        return [(where, document)]
-    base = document.pop("base")
-    here = (*above, file.resolve())
-    good = 'write base = "station.toml", a path relative to this file'
-    if not isinstance(base, str) or not base.strip() or not base.isprintable():
-        raise InputError(mistake(where, "base", f"must be a path, got {shown(base)}", good))
-    under = file.parent / base
-    if under.resolve() in here:
-        raise InputError(mistake(where, "base", "leads back to a scene above it", "break the ring"))
-    if len(here) >= MOST_BASES:
-        raise InputError(
-            mistake(
-                where, "base", "too many bases", f"lay at most {MOST_BASES} scenes over another"
-            )
-        )
-    try:
-        below = read_bounded(under, LARGEST_SCENE)
-    except UnusableFileError as problem:
-        raise InputError(
-            mistake(where, "base", f"{problem.what}: {shown(base)}", problem.mend)
-        ) from None
-    lower = _layers(below, str(under), under, here)
-    folder = os.path.dirname(base)
-    if folder:
-        for _, one in lower:
-            _move_files(one, folder)
-    return [(where, document), *lower]
-
-
-def _move_files(document: dict[str, Any], folder: str) -> None:
-    """Make the paths in a base relative to the scene that is laid over it."""
-    for place, name in list(files_named(document)):
-        holder: Any = document
-        for step in place[:-1]:
-            holder = holder[step]
-        holder[place[-1]] = os.path.join(folder, name)
-
-
-def _build(
-    layers: list[_Layer],
-    *,
-    name: str,
-    directory: Path | None,
-    kept: Mapping[str, InputFile],
-    overrides: Sequence[str],
-    without: Sequence[str],
-) -> Scene:
-    """Check the merged document, read its files, and make the scene."""
-    document: dict[str, Any] = {}
-    for _, one in reversed(layers):
-        document = overlay(document, one)
-    lines = take_away(document, without)
-    changed, more = apply_overrides(document, overrides)
-    lines.extend(more)
-
-    def line(place: _Place, what: str, mend: str) -> str:
-        source = _source(place, layers, changed)
-        return mistake(source, _shown_place(place), what, mend)
-
-    scene = None
-    try:
-        scene = Scene.model_validate(document)
-    except ValidationError as error:
-        for detail in error.errors(include_url=False, include_input=False):
-            context = detail["ctx"]
-            lines.append(line(detail["loc"], context["what"], context["mend"]))
-    inputs: dict[str, InputFile] = {}
-    for place, file_name in files_named(document):
-        if file_name in kept or file_name in inputs:
-            inputs[file_name] = kept.get(file_name) or inputs[file_name]
-            continue
-        try:
-            inputs[file_name] = read_input(file_name, directory or Path())
-        except UnusableFileError as problem:
-            if file_name.strip() and file_name.isprintable():
-                lines.append(line(place, f"{problem.what}: {shown(file_name)}", problem.mend))
-    if lines or scene is None:
-        if len(lines) > MOST_LINES:
-            rest = len(lines) - MOST_LINES
-            lines = [*lines[:MOST_LINES], mistake(name, "", f"{rest} more mistakes", "mend these")]
-        raise InputError(*lines)
-    return scene.origin(document, name=name, directory=directory, inputs=inputs)
-
-
-def _source(place: _Place, layers: list[_Layer], changed: Sequence[_Place]) -> str:
-    """Where a mistake stands: an override, or the topmost file that gives the key."""
-    for path in changed:
-        if place[: len(path)] == path:
-            return f"{layers[0][0]} (--set)"
-    for where, document in layers:
-        if _has(document, place):
-            return where
-    return layers[0][0]
-
-
-def _has(document: Any, place: _Place) -> bool:
-    here: Any = document
-    for step in place:
-        known = range(len(here)) if isinstance(here, list) else here
-        if not isinstance(here, Mapping | list) or step not in known:
-            return False
-        here = here[step]
-    return True
-
-
-def _shown_place(place: _Place) -> str:
-    """A place as a dotted key, short and harmless to print."""
-    words = []
-    for step in place:
-        word = str(step)
-        plain = len(word) <= 60 and word.isprintable() and word == word.strip() and word
-        words.append(word if plain else shown(word))
-    return ".".join(words)

@@ -8,28 +8,29 @@ from __future__ import annotations
 
 import copy
 import re
-from collections.abc import Iterator, Mapping, MutableMapping, Sequence
+from collections.abc import Mapping, MutableMapping, Sequence
 from typing import Any
 
 from simimg.errors import mistake
 from simimg.quantities import shown
 from simimg.scene.keys import Choice, FileName, Text, nearest
 from simimg.scene.model import Scene
-from simimg.scene.table import MANY, Table
+from simimg.scene.places import ROUTES
+from simimg.scene.table import MANY, Table, table_types
 from simimg.scene.text import parse_value
 
-_PLACES = (("east", "north"), ("ra", "dec"), ("x", "y"))
 _RIVALS: Mapping[str, tuple[tuple[tuple[str, ...], ...], ...]] = {
     "telescope": ((("pupil",), ("obstruction", "vanes")),),
     "air": ((("seeing",), ("image_quality",)), (("airmass",), ("altitude",))),
     "band": ((("name",), ("centre", "width")),),
     "camera": ((("pixel_scale",), ("pixel_size",)),),
     "sky": ((("surface_brightness",), ("electrons",)),),
-    "pair": ((("magnitudes",), ("electrons",)), _PLACES),
+    "pair": ((("magnitudes",), ("electrons",)), ROUTES),
     **dict.fromkeys(
-        ("star", "galaxy", "disc", "ring", "picture"), ((("magnitude",), ("electrons",)), _PLACES)
+        ("star", "galaxy", "disc", "ring", "picture"), ((("magnitude",), ("electrons",)), ROUTES)
     ),
 }
+_FORM = 'write KEY=VALUE, as telescope.aperture="2 m"'
 _STEP = re.compile(r"[^.\[\]]+|\[\d+\]")
 
 Path = tuple[str | int, ...]
@@ -85,17 +86,13 @@ def parse_path(text: str) -> Path:
     steps = _STEP.findall(text.strip())
     rebuilt = "".join(step if step.startswith("[") else f".{step}" for step in steps).lstrip(".")
     if not steps or rebuilt != text.strip() or len(steps) > 8 or steps[0].startswith("["):
-        raise MisplacedKeyError(
-            f"{shown(text)} is not a key", "write KEY=VALUE, as telescope.aperture=2 m"
-        )
+        raise MisplacedKeyError(f"{shown(text)} is not a key", _FORM)
     path: list[str | int] = []
     for step in steps:
         word = step.strip("[] ")
-        # Only the first step after an array of tables is an index; header keywords may be digits.
-        is_index = word.isascii() and word.isdigit() and len(word) < 10
-        path.append(int(word) if is_index and path and path[-1] in MANY else word)
-        if is_index and len(path) == 3 and not isinstance(path[-1], int):
-            path[-1] = int(word)
+        # A keyword of the header may look like a number.
+        is_index = word.isascii() and word.isdigit() and len(word) < 10 and steps[0] != "header"
+        path.append(int(word) if is_index and path else word)
     return tuple(path)
 
 
@@ -207,16 +204,6 @@ def _wants_text(path: Path) -> bool:
         )
     reader = table.reader(str(path[-1])) if table is not None else None
     return isinstance(reader, Text | FileName | Choice)
-
-
-def table_types() -> Iterator[type[Table]]:
-    """Every kind of table that has a heading."""
-    waiting = list(Table.__subclasses__())
-    while waiting:
-        one = waiting.pop()
-        waiting.extend(one.__subclasses__())
-        if one.heading:
-            yield one
 
 
 _ALIASES: Mapping[str, Path] = {"vanes": ("telescope", "vanes")}

@@ -19,8 +19,9 @@ from simimg.scene.air import Air
 from simimg.scene.band import Band
 from simimg.scene.camera import Camera
 from simimg.scene.exposure import Exposure, Pointing, Sky
+from simimg.scene.header import Header
 from simimg.scene.inputs import InputFile
-from simimg.scene.keys import Header, Text
+from simimg.scene.keys import Text
 from simimg.scene.objects import (
     Catalogue,
     Disc,
@@ -90,7 +91,8 @@ class Scene(Table):
 
     _document: dict[str, Any] = PrivateAttr(default_factory=dict)
     _name: str = PrivateAttr("scene.toml")
-    _directory: Path | None = PrivateAttr(None)
+    _where: str = PrivateAttr("scene.toml")
+    _directory: Path = PrivateAttr(default_factory=Path)
     _inputs: dict[str, InputFile] = PrivateAttr(default_factory=dict)
 
     @property
@@ -104,7 +106,12 @@ class Scene(Table):
         return self._name
 
     @property
-    def directory(self) -> Path | None:
+    def where(self) -> str:
+        """What messages call the scene: the path as given."""
+        return self._where
+
+    @property
+    def directory(self) -> Path:
         """Folder that the paths in the scene are relative to."""
         return self._directory
 
@@ -129,18 +136,20 @@ class Scene(Table):
         """Every object that is written in the scene itself, kind by kind."""
         return (*self.star, *self.pair, *self.galaxy, *self.disc, *self.ring, *self.picture)
 
-    def origin(
+    def made_from(
         self,
         document: Mapping[str, Any],
         *,
         name: str,
-        directory: Path | None,
+        where: str,
+        directory: Path,
         inputs: Mapping[str, InputFile],
     ) -> Self:
         """The same scene, carrying what it was made from."""
         made = self.model_copy()
         made._document = copy.deepcopy(dict(document))
         made._name = name
+        made._where = where
         made._directory = directory
         made._inputs = dict(inputs)
         return made

@@ -20,7 +20,7 @@ def requirements_to_expose(scene: Scene) -> list[str]:
     if scene.camera is None or scene.camera.pixels is None:
         lines.append(
             mistake(
-                scene.name,
+                scene.where,
                 "camera.pixels",
                 "is required to expose and missing",
                 "add pixels = [256, 256] (columns, rows) to [camera]",
@@ -29,7 +29,7 @@ def requirements_to_expose(scene: Scene) -> list[str]:
     if scene.pixel_scale is None:
         lines.append(
             mistake(
-                scene.name,
+                scene.where,
                 "camera.pixel_scale",
                 "a pixel scale is required to expose and missing",
                 'add pixel_scale = "0.12 arcsec", or pixel_size with telescope.focal_length',
@@ -39,7 +39,7 @@ def requirements_to_expose(scene: Scene) -> list[str]:
     if timed is not None and (scene.exposure is None or scene.exposure.time is None):
         lines.append(
             mistake(
-                scene.name,
+                scene.where,
                 "exposure.time",
                 f"is required to expose and missing, because of {timed}",
                 'add time = "30 s" to [exposure], or give every signal in electrons',
@@ -57,8 +57,8 @@ def _signals_by_time(scene: Scene) -> Iterator[str]:
     for kind in MANY:
         for index, one in enumerate(getattr(scene, kind)):
             if kind == "catalogue":
-                if "magnitude" in one.columns:
-                    yield f"catalogue.{index}.columns.magnitude"
+                if "electrons" not in one.columns:
+                    yield f"the magnitudes of catalogue.{index}"
             elif one.electrons is None:
                 yield f"{kind}.{index}.{'magnitudes' if kind == 'pair' else 'magnitude'}"
 

@@ -13,11 +13,9 @@ from pydantic import Field
 
 from simimg.quantities import KINDS, QuantityError, shown, unit_factor
 from simimg.scene.keys import FileName, Quantity, Reader, Several, Text, fault, nearest
+from simimg.scene.places import ROUTES, brightness_faults, place_faults
 from simimg.scene.table import Fault, Table, key
 from simimg.scene.telescope import Angle
-
-ROUTES = (("east", "north"), ("ra", "dec"), ("x", "y"))
-"""The three ways to give a place."""
 
 _Offset = Quantity("angle", at_least="-60 deg", at_most="60 deg", sample="1.5 arcsec")
 _Pixel = Quantity("pixels", at_least=-1e6, at_most=1e6)
@@ -25,52 +23,6 @@ _Magnitude = Quantity("magnitude", at_least=-50.0, at_most=60.0)
 _Electrons = Quantity("signal", above=0.0, at_most=1e18)
 _Size = Quantity("angle", at_least="0.000001 arcsec", at_most="10 deg", sample="2 arcsec")
 _AxisRatio = Quantity("ratio", at_least=0.01, at_most=1.0, sample="0.7")
-
-
-def routes_of(given: Mapping[str, Any]) -> list[tuple[str, str]]:
-    """The ways to a place of which at least one key is given."""
-    return [route for route in ROUTES if route[0] in given or route[1] in given]
-
-
-def place_faults(given: Mapping[str, Any], prefix: tuple[str, ...] = ()) -> Iterator[Fault]:
-    """Mistakes in which keys of a place are given."""
-    routes = routes_of(given)
-    if len(routes) > 1:
-        first, second = (next(k for k in route if k in given) for route in routes[:2])
-        yield Fault(
-            (*prefix, second),
-            f"gives the place a second time, beside {first}",
-            "keep one of east and north, ra and dec, or x and y",
-        )
-        return
-    for one, other in routes:
-        if one == "east" and not prefix:
-            continue
-        for missing, present in ((one, other), (other, one)):
-            if missing not in given:
-                yield Fault(
-                    (*prefix, missing),
-                    f"is required beside {present} and missing",
-                    f"add {missing}",
-                )
-
-
-def brightness_faults(
-    given: Mapping[str, Any], magnitude: str, samples: tuple[str, str], prefix: tuple[str, ...] = ()
-) -> Iterator[Fault]:
-    """Mistakes in which keys of a brightness are given."""
-    if magnitude in given and "electrons" in given:
-        yield Fault(
-            (*prefix, "electrons"),
-            f"gives the brightness a second time, beside {magnitude}",
-            f"leave out {magnitude} or electrons",
-        )
-    elif magnitude not in given and "electrons" not in given:
-        yield Fault(
-            (*prefix, magnitude),
-            "is required and missing",
-            f"add {magnitude} = {samples[0]}, or electrons = {samples[1]}",
-        )
 
 
 class Placed(Table):
@@ -210,7 +162,7 @@ class Disc(Luminous):
         float, Quantity("number", at_least=0.0, at_most=1.0, sample="0.5")
     ] = key("Linear coefficient of limb darkening.", 0.0, absent="0", meaning="evenly bright")
     phase_angle: Annotated[
-        float, Quantity("angle", at_least="0 deg", at_most="175 deg", sample="60 deg")
+        float, Quantity("angle", at_least="0 deg", at_most="179 deg", sample="60 deg")
     ] = key(
         "Angle between the light and the line of sight: 0 full, 90 deg half lit.",
         0.0,
@@ -238,7 +190,7 @@ class Ring(Luminous):
     ] = key("Inner diameter along the longer axis.")
     outer_diameter: Annotated[float, _Size] = key("Outer diameter along the longer axis.")
     inclination: Annotated[
-        float, Quantity("angle", at_least="0 deg", at_most="89.9 deg", sample="60 deg")
+        float, Quantity("angle", at_least="0 deg", at_most="90 deg", sample="60 deg")
     ] = key(
         "Angle between the ring's axis and the line of sight.",
         0.0,
@@ -341,7 +293,11 @@ class Catalogue(Table):
     columns: Annotated[
         dict[str, str],
         Names(COLUMNS, '{ east = "dx", north = "dy", magnitude = "m" }', "the name of a column"),
-    ] = key("Which columns hold the place, the brightness and the labels.")
+    ] = Field(
+        default_factory=dict,
+        description="Which columns hold the place, the brightness and the labels; those of the "
+        "same names where it names none.",
+    )
     units: Annotated[
         dict[str, str], Names(tuple(COLUMN_KINDS), '{ east = "arcsec" }', "a unit")
     ] = Field(
@@ -352,20 +308,10 @@ class Catalogue(Table):
     def agree(self) -> Iterator[Fault]:
         """One place and one brightness; units of the right kind."""
         yield from place_faults(self.columns, ("columns",))
-        if not routes_of(self.columns):
-            yield Fault(
-                ("columns",),
-                "names no place",
-                'write columns = { east = "dx", north = "dy", magnitude = "m" }, say',
-            )
-        yield from brightness_faults(self.columns, "magnitude", ('"m"', '"counts"'), ("columns",))
+        if "magnitude" in self.columns and "electrons" in self.columns:
+            yield from brightness_faults(self.columns, "magnitude", ("", ""), ("columns",))
         for name, unit in self.units.items():
             kind = COLUMN_KINDS[name]
-            if name not in self.columns:
-                yield Fault(
-                    ("units", name), "is the unit of no column", f"name {name} in columns too"
-                )
-                continue
             try:
                 unit_factor(unit, kind)
             except QuantityError as error:

@@ -139,11 +139,11 @@ class Table(BaseModel):
     @classmethod
     def _where_to(cls, name: str) -> str:
         """Mend of an unknown key: the nearest one here, or the table that it belongs to."""
-        mend = nearest(name, sorted(cls.model_fields))
+        mend = nearest(name, list(cls.model_fields))
         if mend.startswith("did you mean"):
             return mend
-        homes = [other.heading for other in Table.__subclasses__() if name in other.model_fields]
-        if 0 < len(homes) <= 2 and cls.heading:
+        homes = sorted(other.heading for other in table_types() if name in other.model_fields)
+        if 0 < len(homes) <= 2:
             return f"it belongs under {' or '.join(homes)}"
         return mend
 
@@ -162,6 +162,16 @@ class Table(BaseModel):
         if reader is not None:
             return f"{name} = {reader.example}"
         return f"[[{name}]]" if name in MANY else f"[{name}]"
+
+
+def table_types() -> Iterator[type[Table]]:
+    """Every kind of table that has a heading."""
+    waiting = list(Table.__subclasses__())
+    while waiting:
+        one = waiting.pop()
+        waiting.extend(one.__subclasses__())
+        if one.heading:
+            yield one
 
 
 MANY = ("star", "pair", "galaxy", "disc", "ring", "picture", "catalogue")
