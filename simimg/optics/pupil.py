@@ -21,7 +21,7 @@ from numpy.typing import ArrayLike
 
 from simimg.arrays import FloatArray, frozen
 
-LARGEST_MAP = 4096
+LARGEST_MAP = 2048
 """Most pixels a side of a pupil map."""
 
 Vanes = tuple[int, float, float]
@@ -154,8 +154,8 @@ def map_pupil(transmission: ArrayLike, diameter: float) -> Pupil:
     Raises
     ------
     ValueError
-        If the map is not square, smaller than 16 or larger than 4096 pixels (whose autocorrelation
-        takes 1.5 GB), not within 0..1 or wholly dark, or the diameter is out of range.
+        If the map is not square, smaller than 16 or larger than 2048 pixels (whose autocorrelation
+        takes 0.6 GB), not within 0..1 or wholly dark, or the diameter is out of range.
     """
     values = np.asarray(transmission, dtype=np.float64)
     if values.ndim != 2 or values.shape[0] != values.shape[1]:
