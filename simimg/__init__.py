@@ -8,6 +8,8 @@ from __future__ import annotations
 from importlib import import_module
 from typing import TYPE_CHECKING, Any
 
+from simimg.version import __version__
+
 if TYPE_CHECKING:
     from simimg.errors import InputError as InputError
     from simimg.errors import RunError as RunError
@@ -18,8 +20,6 @@ if TYPE_CHECKING:
     from simimg.resolving.records import PairMeasurement as PairMeasurement
     from simimg.scene.file import load_scene as load_scene
     from simimg.scene.model import Scene as Scene
-
-__version__ = "0.1.0"
 
 _HOMES = {
     "Frame": "simimg.frame",

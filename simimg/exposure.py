@@ -14,7 +14,6 @@ from datetime import datetime, timedelta
 
 import numpy as np
 
-from simimg import __version__
 from simimg.arrays import AnyArray
 from simimg.assembly.brightness import dark_electrons, exposure_time, sky_electrons
 from simimg.assembly.objects import Inventory, inventory
@@ -28,6 +27,7 @@ from simimg.imaging.profile import sampled_psf
 from simimg.imaging.render import expected_image
 from simimg.scene.file import requirements_to_expose, scene_id, scene_record
 from simimg.scene.model import Scene
+from simimg.version import __version__
 
 PSF_OVERSAMPLING = 4
 _PSF_HALF_WIDTH = 16

@@ -10,7 +10,6 @@ from urllib.parse import quote
 
 import numpy as np
 
-from simimg import __version__
 from simimg.arrays import AnyArray
 from simimg.fits.cards import add_card, add_cards, add_commentary, is_coordinate
 from simimg.fits.hdus import (
@@ -22,6 +21,7 @@ from simimg.fits.hdus import (
     write_hdu,
 )
 from simimg.newfile import new_file
+from simimg.version import __version__
 
 if TYPE_CHECKING:
     from astropy.io.fits import Header

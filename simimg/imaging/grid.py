@@ -128,7 +128,7 @@ def subdivision(basis: PsfBasis, pixel_scale: float) -> int:
     edge = max(band_edge(member) for member in basis.members)
     raise InputError(
         f"the pixel is {pixel_scale * edge * 2:.0f} times as wide as the finest detail of the "
-        f"image (Nyquist); at most {_FINEST / 2:.0f} times can be computed; use a smaller pixel scale"
+        f"image (Nyquist), and at most {_FINEST / 2:.0f} times can be computed; use a smaller pixel"
     )
 
 

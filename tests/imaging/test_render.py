@@ -212,6 +212,9 @@ class Gaussian:
         self.sigma = sigma
         self.radius = 7 * sigma
 
+    def radius_below(self, level):  # noqa: ARG002
+        return self.radius
+
     def transform(self, u, v):
         return np.exp(-2 * (np.pi * self.sigma) ** 2 * (u**2 + v**2))
 
