@@ -1,0 +1,56 @@
+"""simimg check: what a scene means, and every mistake in it."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import click
+from simimg_cli import options
+from simimg_cli.output import document, say, table, warn
+
+
+@click.command("check")
+@options.scene
+@options.as_json
+@options.quiet
+def command(
+    scene: str, overrides: Sequence[str], without: Sequence[str], as_json: bool, quiet: bool
+) -> None:
+    """Say what SCENE means, list the defaults it uses, and find every mistake in it.
+
+    SCENE may be a frame of simimg, which carries its scene. With --quiet nothing is printed of a
+    scene without mistakes.
+    """
+    from simimg_cli.cautions import print_cautions
+    from simimg_cli.scenes import open_scene
+
+    from simimg.assembly.report import describe
+    from simimg.scene.file import requirements_to_expose, scene_id
+
+    opened = open_scene(scene, overrides=overrides, without=without).scene
+    meaning = describe(opened)
+    missing = requirements_to_expose(opened)
+    if as_json:
+        payload = {**meaning.to_dict(), "to_expose": missing}
+        say(document(payload, scene_id=scene_id(opened), warnings=meaning.warnings))
+        return
+    if quiet:
+        print_cautions(opened, quiet=True)
+        return
+    say(f"{scene}: {opened.title or 'without a title'}")
+    say()
+    table(("", "", ""), meaning.lines)
+    if meaning.defaults:
+        say()
+        say("Defaults used:")
+        table(("key", "value", "meaning"), [tuple(map(str, row)) for row in meaning.defaults])
+    if missing:
+        say()
+        say("No mistake; but to expose it, it also needs:")
+        for line in missing:
+            say(f"  {line}")
+    else:
+        say()
+        say("No mistake: ready to expose.")
+    warn(meaning.warnings)
+    print_cautions(opened)

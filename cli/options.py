@@ -1,0 +1,144 @@
+"""Options that several commands share, and how their values are read."""
+
+from __future__ import annotations
+
+import math
+import re
+from collections.abc import Callable
+from typing import Any, TypeVar
+
+import click
+
+_F = TypeVar("_F", bound=Callable[..., Any])
+
+_BYTES = {
+    "b": 1,
+    **{f"{letter}b": 1000**power for power, letter in enumerate("kmgt", start=1)},
+    **{f"{letter}ib": 1024**power for power, letter in enumerate("kmgt", start=1)},
+}
+
+
+class Memory(click.ParamType):
+    """An amount of memory with its unit, such as ``2 GiB``; a whole number of bytes."""
+
+    name = "size"
+
+    def convert(self, value: Any, param: click.Parameter | None, ctx: click.Context | None) -> int:
+        if isinstance(value, int):
+            return value
+        found = re.fullmatch(r"\s*([0-9]*\.?[0-9]+)\s*([A-Za-z]+)\s*", value)
+        factor = _BYTES.get(found[2].lower()) if found else None
+        if found is None or factor is None:
+            self.fail(
+                f'{value!r} is not an amount of memory; write "2 GiB" or "500 MB"', param, ctx
+            )
+        size = float(found[1]) * factor
+        if not 1 <= size <= 2**62:
+            self.fail(f'{value!r} is out of range; write "2 GiB" or "500 MB"', param, ctx)
+        return int(size)
+
+
+class Place(click.ParamType):
+    """A place in a frame, ``X,Y`` in pixels from 0 at the centre of the first pixel."""
+
+    name = "X,Y"
+
+    def convert(
+        self, value: Any, param: click.Parameter | None, ctx: click.Context | None
+    ) -> tuple[float, float]:
+        if isinstance(value, tuple):
+            return value
+        try:
+            x, y = (float(part) for part in value.split(","))
+        except ValueError:
+            x = y = math.nan
+        if not (math.isfinite(x) and math.isfinite(y)):
+            self.fail(
+                f"{value!r} is not a place; write X,Y in pixels, such as 127.5,130", param, ctx
+            )
+        return x, y
+
+
+class Degrees(click.ParamType):
+    """An angle in degrees; radians inside."""
+
+    name = "deg"
+
+    def convert(
+        self, value: Any, param: click.Parameter | None, ctx: click.Context | None
+    ) -> float:
+        if isinstance(value, float):
+            return value
+        text = value.strip().removesuffix("deg")
+        try:
+            angle = float(text)
+        except ValueError:
+            angle = math.nan
+        if not math.isfinite(angle) or abs(angle) > 360.0:
+            self.fail(f"{value!r} is not an angle; write degrees from 0 to 360", param, ctx)
+        return math.radians(angle)
+
+
+class Words(click.ParamType):
+    """Some of a few words, with commas between them."""
+
+    name = "words"
+
+    def __init__(self, *known: str) -> None:
+        self.known = known
+        self.name = ",".join(known)
+
+    def convert(
+        self, value: Any, param: click.Parameter | None, ctx: click.Context | None
+    ) -> tuple[str, ...]:
+        if isinstance(value, tuple):
+            return value
+        words = tuple(word.strip() for word in value.split(","))
+        unknown = [word for word in words if word not in self.known]
+        if unknown:
+            known = ", ".join(self.known)
+            self.fail(f"{unknown[0]!r} is none of {known}; write {value and self.name}", param, ctx)
+        return words
+
+
+def scene(function: _F) -> _F:
+    """The scene argument, and what changes it."""
+    for add in (
+        click.option(
+            "--without",
+            multiple=True,
+            metavar="TABLE",
+            help="Take a table of the scene away: air, sky, vanes, ...",
+        ),
+        click.option(
+            "--set",
+            "overrides",
+            multiple=True,
+            metavar="KEY=VALUE",
+            help='Change a value of the scene: telescope.aperture="4 m", pair.0.separation=...',
+        ),
+        click.argument("scene", type=click.Path()),
+    ):
+        function = add(function)
+    return function
+
+
+as_json = click.option("--json", "as_json", is_flag=True, help="Print JSON, and nothing else.")
+quiet = click.option("--quiet", "-q", is_flag=True, help="Print no progress, warning or summary.")
+overwrite = click.option("--overwrite", is_flag=True, help="Replace files that exist.")
+memory = click.option(
+    "--memory", type=Memory(), metavar="SIZE", help='Memory the image may take, such as "2 GiB".'
+)
+threads = click.option(
+    "--threads",
+    type=click.IntRange(1, 1024),
+    metavar="N",
+    help="Threads to work on; all processors unless given. The result is the same.",
+)
+
+
+def output(help_text: str) -> Callable[[_F], _F]:
+    """The file to write."""
+    return click.option(
+        "--output", "-o", required=True, type=click.Path(), metavar="FILE", help=help_text
+    )
