@@ -3,10 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 import click
 from simimg_cli import options
 from simimg_cli.output import document, say, table, warn
+
+from simimg.errors import InputError
+
+if TYPE_CHECKING:
+    from simimg.assembly.report import Description
+    from simimg.scene.model import Scene
 
 
 @click.command("check")
@@ -24,12 +31,11 @@ def command(
     from simimg_cli.cautions import print_cautions
     from simimg_cli.scenes import open_scene
 
-    from simimg.assembly.report import describe
     from simimg.scene.file import requirements_to_expose, scene_id
 
     opened = open_scene(scene, overrides=overrides, without=without).scene
-    meaning = describe(opened)
     missing = requirements_to_expose(opened)
+    meaning = _understood(opened, objects=not missing)
     if as_json:
         payload = {**meaning.to_dict(), "to_expose": missing}
         say(document(payload, scene_id=scene_id(opened), warnings=meaning.warnings))
@@ -54,3 +60,24 @@ def command(
         say("No mistake: ready to expose.")
     warn(meaning.warnings)
     print_cautions(opened)
+
+
+def _understood(scene: Scene, *, objects: bool) -> Description:
+    """What a scene means; its maps, pictures and catalogues are looked into as well."""
+    from simimg.assembly.objects import inventory
+    from simimg.assembly.report import describe
+
+    mistakes: list[str] = []
+    meaning = None
+    try:
+        meaning = describe(scene)
+    except InputError as error:
+        mistakes += error.lines
+    if objects:
+        try:
+            inventory(scene)
+        except InputError as error:
+            mistakes += [line for line in error.lines if line not in mistakes]
+    if meaning is None or mistakes:
+        raise InputError(*mistakes)
+    return meaning

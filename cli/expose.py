@@ -150,7 +150,7 @@ def _forbidden(source: Source, scene: str, paths: Sequence[str], *, overwrite: b
 
 
 def _of_another_version(source: Source) -> list[str]:
-    from simimg import __version__
+    from simimg.version import __version__
 
     maker = source.frame.value("CREATOR") if source.frame is not None else None
     if isinstance(maker, str) and maker != f"simimg {__version__}":

@@ -1,0 +1,171 @@
+"""simimg limits: what a set-up can resolve, and how well it sees each object."""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Sequence
+from typing import TYPE_CHECKING
+
+import click
+from simimg_cli import options
+from simimg_cli.output import document, say, table, warn
+from simimg_cli.words import arcsec, figures
+
+if TYPE_CHECKING:
+    from simimg.resolving.limits import Limits, ObjectLimits
+
+
+@click.command("limits")
+@options.scene
+@click.option(
+    "--position-angle",
+    type=options.Degrees(),
+    default="90",
+    metavar="DEG",
+    help="Direction in which a PSF that is not round is cut, north through east; 90 unless given.",
+)
+@click.option("--all", "all_stars", is_flag=True, help="List the stars of catalogues, too.")
+@options.as_json
+@options.quiet
+def command(
+    scene: str,
+    overrides: Sequence[str],
+    without: Sequence[str],
+    position_angle: float,
+    all_stars: bool,
+    as_json: bool,
+    quiet: bool,
+) -> None:
+    """Say what the set-up of SCENE can resolve, and how well it sees each object.
+
+    Diffraction limits are those of the pupil alone; delivered limits those of optics, air and
+    pixel together. SCENE may be a frame of simimg, which carries its scene.
+    """
+    from simimg_cli.cautions import print_cautions
+    from simimg_cli.scenes import open_scene
+
+    from simimg.assembly.report import cautions, describe
+    from simimg.resolving.limits import limits
+    from simimg.scene.file import scene_id
+
+    opened = open_scene(scene, overrides=overrides, without=without).scene
+    found = limits(opened, position_angle=position_angle, all_stars=all_stars)
+    warnings = describe(opened).warnings
+    if as_json:
+        payload = {**found.to_dict(), "cautions": cautions(opened)}
+        say(document(payload, scene_id=scene_id(opened), warnings=warnings))
+        return
+    _print(found, f"{scene}: {opened.title or 'without a title'}")
+    if not quiet:
+        warn(warnings)
+    print_cautions(opened, quiet=quiet)
+
+
+def _print(found: Limits, heading: str) -> None:
+    air = "above the air" if found.r0_m is None else f"r0 {figures(found.r0_m * 100, 3)} cm"
+    scale = found.pixel_scale_arcsec
+    pixel = "without a pixel" if scale is None else f"pixel {arcsec(scale)}"
+    say(heading)
+    say(f"{figures(found.wavelength_nm)} nm, {air}, {pixel}")
+    say()
+    angle = figures(found.position_angle_deg, 3)
+    rows = [
+        ("diffraction", found.diffraction, "the pupil alone; Rayleigh is the first dark ring"),
+        ("delivered", found.delivered, "optics, air and pixel; verdicts use these"),
+    ]
+    table(
+        (f"equal pair, along {angle} deg", "FWHM", "Rayleigh", "Sparrow", ""),
+        [
+            (
+                name,
+                arcsec(one.fwhm_arcsec),
+                arcsec(one.rayleigh_arcsec),
+                arcsec(one.sparrow_arcsec),
+                remark,
+            )
+            for name, one, remark in rows
+        ],
+        right=(1, 2, 3),
+    )
+    say()
+    table(
+        ("", "", ""),
+        [
+            ("Dawes", arcsec(found.dawes_arcsec), "observers' custom, for reference"),
+            ("Strehl ratio", figures(found.strehl, 3), "without the pixel"),
+            ("50 % of the light", arcsec(found.ee50_arcsec), "diameter, delivered"),
+            ("80 % of the light", arcsec(found.ee80_arcsec), "diameter, delivered"),
+            (
+                "Nyquist pixel",
+                arcsec(found.nyquist_pixel_arcsec),
+                "lambda/2D, the largest that keeps all detail of the optics",
+            ),
+        ],
+        right=(1,),
+    )
+    if found.objects:
+        _print_objects(found.objects)
+    for text in found.notes:
+        say()
+        say(textwrap.fill(text, 96))
+
+
+def _print_objects(objects: Sequence[ObjectLimits]) -> None:
+    say()
+    table(
+        ("object", "kind", "electrons", "peak pixel", "S/N", "S/N of a fit", ""),
+        [
+            (
+                one.label or NO_LABEL,
+                one.kind,
+                _electrons(one.electrons),
+                figures(one.peak_electrons),
+                figures(one.snr),
+                figures(one.snr_fit),
+                "saturated" if one.saturated else "",
+            )
+            for one in objects
+        ],
+        right=(2, 3, 4, 5),
+    )
+    pairs = [one for one in objects if one.delivered is not None and one.diffraction is not None]
+    if not pairs:
+        return
+    say()
+    table(
+        (
+            "pair",
+            "separation",
+            "angle",
+            "dm",
+            "Rayleigh",
+            "Sparrow",
+            "by diffraction alone:",
+            "Rayleigh",
+            "Sparrow",
+        ),
+        [
+            (
+                one.label or NO_LABEL,
+                arcsec(one.separation_arcsec),
+                f"{figures(one.position_angle_deg)} deg",
+                figures(one.magnitude_difference, 3),
+                arcsec(one.delivered.rayleigh_arcsec if one.delivered else None),
+                arcsec(one.delivered.sparrow_arcsec if one.delivered else None),
+                "",
+                arcsec(one.diffraction.rayleigh_arcsec if one.diffraction else None),
+                arcsec(one.diffraction.sparrow_arcsec if one.diffraction else None),
+            )
+            for one in pairs
+        ],
+        right=(1, 2, 3, 4, 5, 7, 8),
+    )
+
+
+NO_LABEL = "(no label)"
+
+
+def _electrons(value: float | tuple[float, float] | None) -> str:
+    if isinstance(value, tuple):
+        return " + ".join(figures(one) for one in value)
+    return figures(value)
