@@ -28,7 +28,13 @@ from simimg.resolving.cut import (
     fwhm,
     sample_profile,
 )
-from simimg.resolving.scan import SparrowCurve, sparrow, sparrow_curve, sparrow_equal
+from simimg.resolving.scan import (
+    SparrowCurve,
+    sample_far_enough,
+    sparrow,
+    sparrow_curve,
+    sparrow_equal,
+)
 
 __all__ = [
     "SADDLE",
@@ -40,6 +46,7 @@ __all__ = [
     "fwhm",
     "rayleigh_saddle",
     "saddle_ratio",
+    "sample_far_enough",
     "sample_profile",
     "sparrow",
     "sparrow_curve",

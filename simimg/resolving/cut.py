@@ -10,7 +10,7 @@ Lengths come back in the unit of ``t``.
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import isfinite, nan
 
 import numpy as np
@@ -37,12 +37,17 @@ class SampledProfile:
         steepest slope where that lies farther out (PSFs with a flat top).
     symmetric : bool
         True when both sides agree to 1e-6 of the peak.
+    extent : float
+        How far it is sampled on either side.
+    source : callable
+        What it was sampled from.
     """
 
     width: float
     window: float
     symmetric: bool
     extent: float
+    source: Profile
     _peak: float
     _value: BSpline
     _slope: BSpline
@@ -65,16 +70,12 @@ class SampledProfile:
 
     def mirrored(self) -> SampledProfile:
         """The same profile seen from the other side."""
-        return SampledProfile(
-            self.width,
-            self.window,
-            self.symmetric,
-            self.extent,
-            self._peak,
-            self._value,
-            self._slope,
-            not self._mirrored,
-        )
+        return replace(self, _mirrored=not self._mirrored)
+
+    def extended(self, extent: float) -> SampledProfile:
+        """The same profile sampled out to `extent` FWHMs."""
+        wider = sample_profile(self.source, extent=extent)
+        return replace(wider, _mirrored=self._mirrored)
 
 
 def _half_maximum(profile: Profile) -> float:
@@ -137,6 +138,7 @@ def sample_profile(profile: Profile | SampledProfile, *, extent: float = 10.0) -
         window=max(0.5 * width, 1.05 * steepest) if steepest > 0.49 * width else 0.5 * width,
         symmetric=bool(np.abs(height - height[::-1]).max() < 1e-6 * peak),
         extent=count * step,
+        source=profile,
         _peak=peak,
         _value=spline,
         _slope=slope,

@@ -62,7 +62,7 @@ def sparrow(profile: Profile | SampledProfile, magnitude_difference: float) -> f
     if magnitude_difference == 0.0:
         return sparrow_equal(profile)
     ratio = 10.0 ** (-0.4 * abs(magnitude_difference))
-    sampled = _far_enough(profile, ratio)
+    sampled = sample_far_enough(profile, ratio)
     if magnitude_difference < 0.0:
         sampled = sampled.mirrored()
     return float(_scan(sampled, np.array([ratio]))[0])
@@ -106,7 +106,7 @@ def sparrow_curve(
         raise ValueError(f"a table to {largest} magnitudes by steps of {step} cannot be made")
     differences = np.linspace(0.0, largest, int(np.ceil(largest / step)) + 1)
     ratios = 10.0 ** (-0.4 * differences)
-    sampled = _far_enough(profile, float(ratios[-1]))
+    sampled = sample_far_enough(profile, float(ratios[-1]))
     forward = _scan(sampled, ratios, precision=1e-5)
     backward = forward if sampled.symmetric else _scan(sampled.mirrored(), ratios, precision=1e-5)
     # Both stars must show where they are equal.
@@ -117,16 +117,14 @@ def sparrow_curve(
     )
 
 
-def _far_enough(profile: Profile | SampledProfile, ratio: float) -> SampledProfile:
+def sample_far_enough(profile: Profile | SampledProfile, ratio: float) -> SampledProfile:
     """Sample a profile out to where nothing of it can hide a companion of `ratio`."""
-    if isinstance(profile, SampledProfile):
-        return profile
-    extent = 10.0
-    while True:
-        sampled = sample_profile(profile, extent=extent)
-        if extent >= _FARTHEST or _hiding_place(sampled, ratio) < sampled.extent:
-            return sampled
+    sampled = sample_profile(profile)
+    extent = sampled.extent / sampled.width
+    while extent < _FARTHEST and _hiding_place(sampled, ratio) >= sampled.extent:
         extent *= 2.0
+        sampled = sampled.extended(extent)
+    return sampled
 
 
 def _hiding_place(sampled: SampledProfile, ratio: float) -> float:

@@ -1,0 +1,275 @@
+"""How much of an object a detector sees: brightest pixel, saturation, signal to noise.
+
+With S the electrons of an object in an exposure, P the share of it in each pixel, and
+``B = sky + dark + read_noise^2`` the variance that a pixel has without it:
+
+- ``snr = S / sqrt(S + n B)``, ``n = 1 / sum(P^2)`` the equivalent noise area (King 1983, PASP 95,
+  163), which is the photometry of an aperture of n pixels that lost no light (Howell, Handbook of
+  CCD Astronomy, the "CCD equation");
+- ``snr_fit = S sqrt(sum(P^2 / (S P + B)))``, of a fit of the known image weighted by the inverse
+  variance (Naylor 1998, MNRAS 296, 339): the bound for a known place and a known sky.
+
+A star's P is that of a star centred on a pixel; any other object's is its own image, a pair's the
+two stars together. Electrons an exposure and a pixel; places in pixels; angles in radians.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from math import ceil, floor, inf, sqrt
+
+import numpy as np
+from scipy.interpolate import RectBivariateSpline
+
+from simimg.arrays import FloatArray, frozen
+from simimg.assembly.brightness import dark_electrons, sky_electrons
+from simimg.assembly.objects import Entry
+from simimg.assembly.train import Train
+from simimg.camera.converter import converter_top
+from simimg.imaging.basis import PsfBasis, Transfer
+from simimg.imaging.profile import effective_band, peak_place, sampled_psf
+from simimg.imaging.render import expected_image
+from simimg.imaging.sources import PlacedShape, Points, Sources, no_points
+from simimg.scene.model import Scene
+
+_WINDOW = 25.0  # FWHMs from the star to the edge of the sums over its pixels
+_TABLE = 4.0  # FWHMs from the star to the edge of the table of its brightest pixels
+_LARGEST_STAMP = 512  # samples a side of the stamp of an extended object
+_DIRECT = 64  # stars whose weighted sum is made one by one; more are interpolated
+
+
+@dataclass(frozen=True)
+class Detector:
+    """What of a camera decides how well a source is seen.
+
+    Attributes
+    ----------
+    pixel_scale : float
+        Side of a pixel (rad).
+    sky, dark : float
+        Electrons in a pixel and an exposure.
+    read_noise : float
+        Electrons.
+    saturation : float
+        Electrons at which a pixel or its converter is full; infinite where neither ends.
+    columns, rows : int or None
+        Size; None where the scene does not say.
+    """
+
+    pixel_scale: float
+    sky: float
+    dark: float
+    read_noise: float
+    saturation: float
+    columns: int | None
+    rows: int | None
+
+    @property
+    def variance(self) -> float:
+        """Variance of a pixel without an object."""
+        return self.sky + self.dark + self.read_noise**2
+
+    def holds(self, x: float, y: float) -> bool:
+        """True for a place on the detector, or where its size is not known."""
+        if self.columns is None or self.rows is None:
+            return True
+        return -0.5 <= x <= self.columns - 0.5 and -0.5 <= y <= self.rows - 0.5
+
+    def saturates(self, peak: float) -> bool:
+        """Whether the expected brightest pixel is full, sky and dark signal included."""
+        return peak + self.sky + self.dark >= self.saturation
+
+
+def scene_detector(scene: Scene, train: Train) -> Detector | None:
+    """The detector of a scene; None without a camera or a route to its pixel scale."""
+    camera, scale = scene.camera, train.pixel_scale
+    if camera is None or scale is None:
+        return None
+    full_well = inf if camera.full_well is None else camera.full_well
+    columns, rows = camera.pixels if camera.pixels is not None else (None, None)
+    return Detector(
+        pixel_scale=scale,
+        sky=sky_electrons(scene, area=train.pupil.area),
+        dark=dark_electrons(scene),
+        read_noise=camera.read_noise,
+        saturation=min(full_well, (converter_top(camera.bit_depth) - camera.bias) * camera.gain),
+        columns=columns,
+        rows=rows,
+    )
+
+
+@dataclass(frozen=True)
+class Signal:
+    """How well an object is seen.
+
+    Attributes
+    ----------
+    peak : float
+        Electrons of its brightest pixel, from it alone.
+    snr, snr_fit : float
+        As at the head of this module; 0 for an object without light.
+    """
+
+    peak: float
+    snr: float
+    snr_fit: float
+
+
+class StarLight:
+    """Peaks and signal to noise of stars seen through one PSF, for any number of them.
+
+    Parameters
+    ----------
+    transfer : Transfer
+        Effective transfer function, pixel included.
+    detector : Detector
+    width : float
+        FWHM of the PSF (rad), roughly.
+
+    Attributes
+    ----------
+    noise_pixels : float
+        ``1 / sum(P^2)`` of a star centred on a pixel.
+    share : ndarray
+        P of that star, at every `stride`-th pixel.
+    """
+
+    def __init__(self, transfer: Transfer, detector: Detector, *, width: float) -> None:
+        scale = detector.pixel_scale
+        self.detector = detector
+        self.width_pixels = width / scale
+        # A PSF many pixels wide is summed over every so-manieth pixel: it is smooth.
+        self.stride = max(1, floor(width / (8.0 * scale)))
+        half = ceil(max(24.0, _WINDOW * self.width_pixels / self.stride))
+        share = sampled_psf(
+            transfer, pixel_scale=self.stride * scale, oversampling=1, half_width_pixels=half
+        )
+        self.share: FloatArray = frozen(share / self.stride**2)
+        self.noise_pixels = 1.0 / float((self.share**2).sum() * self.stride**2)
+        fine = 0.125 / effective_band(transfer)
+        count = ceil((_TABLE * width + 2.0 * scale) / fine)
+        table = sampled_psf(transfer, pixel_scale=fine, oversampling=1, half_width_pixels=count)
+        axis = np.arange(-count, count + 1) * (fine / scale)
+        self._edge = float(axis[-1])
+        self._table = RectBivariateSpline(axis, axis, table * (scale / fine) ** 2, kx=5, ky=5)
+        place = peak_place(transfer)
+        self._peak = place[0] / scale, place[1] / scale
+
+    def on_pixel(self, dx: FloatArray, dy: FloatArray) -> FloatArray:
+        """Share of a star's light on a pixel at (dx, dy) from it; 0 beyond the table's edge."""
+        inside = (np.abs(dx) <= self._edge) & (np.abs(dy) <= self._edge)
+        value = self._table.ev(np.where(inside, dy, 0.0), np.where(inside, dx, 0.0))
+        return np.asarray(np.where(inside, value, 0.0))
+
+    def peaks(self, x: FloatArray, y: FloatArray, electrons: FloatArray) -> FloatArray:
+        """Electrons of each star's brightest pixel, alone and at its own place."""
+        best = np.zeros(np.shape(x))
+        for across in (-1.0, 0.0, 1.0):
+            for up in (-1.0, 0.0, 1.0):
+                dx = np.rint(x + self._peak[0]) + across - x
+                dy = np.rint(y + self._peak[1]) + up - y
+                best = np.maximum(best, self.on_pixel(dx, dy))
+        return np.asarray(best * electrons)
+
+    def snr(self, electrons: FloatArray) -> FloatArray:
+        """Signal to noise in the equivalent aperture."""
+        noise = np.sqrt(electrons + self.noise_pixels * self.detector.variance)
+        return np.asarray(electrons / np.where(noise > 0.0, noise, 1.0))
+
+    def snr_fit(self, electrons: FloatArray) -> FloatArray:
+        """Signal to noise of a weighted fit."""
+        variance = self.detector.variance
+        if variance == 0.0:
+            return np.sqrt(electrons)
+        nodes = np.asarray(electrons, dtype=np.float64)
+        if nodes.size > _DIRECT:
+            low = max(float(nodes.min()), 1e-12 * float(nodes.max()), 1e-300)
+            nodes = np.geomspace(low, max(float(nodes.max()), 2.0 * low), _DIRECT)
+        square = self.share**2 * self.stride**2
+        sums = np.array([float((square / (s * self.share + variance)).sum()) for s in nodes])
+        if nodes.size != electrons.size:
+            sums = np.exp(np.interp(np.log(electrons.clip(nodes[0])), np.log(nodes), np.log(sums)))
+        return np.asarray(electrons * np.sqrt(sums))
+
+
+def image_signal(share: FloatArray, electrons: float, variance: float, *, area: float) -> Signal:
+    """Signal of an object from its image.
+
+    Parameters
+    ----------
+    share : ndarray
+        Share of its light in a pixel, at samples that each stand for `area` pixels.
+    electrons : float
+        Of the object.
+    variance : float
+        Of a pixel without it.
+    """
+    peak = electrons * float(share.max())
+    if electrons <= 0.0:
+        return Signal(peak, 0.0, 0.0)
+    noise_pixels = 1.0 / float((share**2).sum() * area)
+    snr = electrons / sqrt(electrons + noise_pixels * variance)
+    if variance == 0.0:
+        return Signal(peak, snr, sqrt(electrons))
+    weighted = float((share**2 / (electrons * share + variance)).sum() * area)
+    return Signal(peak, snr, electrons * sqrt(weighted))
+
+
+def pair_signal(basis: PsfBasis, light: StarLight, stars: tuple[Entry, Entry]) -> Signal:
+    """Signal of the two stars of a pair together, at their own places on the pixels."""
+    detector, stride = light.detector, light.stride
+    apart = max(abs(stars[1].x - stars[0].x), abs(stars[1].y - stars[0].y))
+    x = np.array([star.x for star in stars])
+    y = np.array([star.y for star in stars])
+    electrons = np.array([star.electrons for star in stars])
+    total = float(electrons.sum())
+    if apart > max(24.0, 20.0 * light.width_pixels):
+        peak = float(light.peaks(x, y, electrons).max())
+        if total <= 0.0:
+            return Signal(peak, 0.0, 0.0)
+        # Apart, their squares add.
+        noise_pixels = light.noise_pixels * total**2 / float((electrons**2).sum())
+        snr = total / sqrt(total + noise_pixels * detector.variance)
+        return Signal(peak, snr, float(np.sqrt((light.snr_fit(electrons) ** 2).sum())))
+    margin = ceil(max(12.0, 12.0 * light.width_pixels))
+    left, bottom = floor(x.min()) - margin, floor(y.min()) - margin
+    columns = ceil((ceil(x.max()) + margin - left + 1) / stride)
+    rows = ceil((ceil(y.max()) + margin - bottom + 1) / stride)
+    share = electrons / total if total > 0.0 else np.array([0.5, 0.5])
+    points = Points((x - left) / stride, (y - bottom) / stride, share)
+    image = _painted(basis, Sources(points), columns, rows, detector, stride)
+    return image_signal(image, total, detector.variance, area=float(stride**2))
+
+
+def shape_signal(basis: PsfBasis, one: Entry, detector: Detector, *, width: float) -> Signal:
+    """Signal of an extended object, painted alone on a stamp of its own.
+
+    An object of more than 512 pixels a side is sampled more coarsely. `width` is the FWHM of the
+    PSF (rad), roughly.
+    """
+    shape = one.shape
+    if shape is None:
+        raise ValueError("an object without a shape is a star")
+    faint = shape.radius_below(1e-4 / max(shape.radius, width) ** 2)
+    radius = min(shape.radius, faint) + 3.0 * width
+    stride = max(1, ceil(2.0 * radius / detector.pixel_scale / _LARGEST_STAMP))
+    half = ceil(radius / detector.pixel_scale / stride) + 2
+    # The stamp keeps the object's phase on the pixels.
+    x, y = (half + (place - round(place)) / stride for place in (one.x, one.y))
+    sources = Sources(no_points(), (PlacedShape(x, y, 1.0, shape),))
+    image = _painted(basis, sources, 2 * half + 1, 2 * half + 1, detector, stride)
+    return image_signal(image, one.electrons, detector.variance, area=float(stride**2))
+
+
+def _painted(
+    basis: PsfBasis, sources: Sources, columns: int, rows: int, detector: Detector, stride: int
+) -> FloatArray:
+    """Light in a pixel at samples `stride` pixels apart; places in `sources` count samples."""
+    image = expected_image(
+        basis,
+        sources,
+        columns=columns,
+        rows=rows,
+        pixel_scale=stride * detector.pixel_scale,
+    )
+    return np.asarray(image, dtype=np.float64) / stride**2
