@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import textwrap
 from collections.abc import Mapping, Sequence
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import click
 from simimg_cli import options
@@ -13,6 +13,9 @@ from simimg_cli.progress import with_progress
 from simimg_cli.words import arcsec, figures, probability, with_error
 
 from simimg.errors import InputError
+
+if TYPE_CHECKING:
+    from simimg.frame import Frame
 
 
 @click.command("measure")
@@ -56,3 +59,94 @@ def command(
         from simimg.assembly.report import SIMULATION_NOTE
 
         note(f"note: {SIMULATION_NOTE}")
+
+
+def _measured(path: str, near: Sequence[tuple[float, float]]) -> dict[str, Any]:
+    """A frame's answer, for printing and for JSON."""
+    from simimg.resolving.measure import measure_all
+
+    from simimg.frame import Frame
+
+    frame = Frame.read(path)
+    pairs = measure_all(frame, near=list(near) or None)
+    return {
+        "frame": path,
+        "scene_id": frame.scene_id,
+        "simulated": frame.simulated,
+        "warnings": _warnings(frame),
+        "pairs": [{**plain(pair.to_dict()), "advice": pair.advice} for pair in pairs],
+    }
+
+
+def _warnings(frame: Frame) -> list[str]:
+    if frame.wcs is None:
+        return ["no coordinates in the header: north is taken as up and east as left"]
+    return []
+
+
+def _document(answers: Sequence[dict[str, Any]]) -> str:
+    """One frame's answer as it is; of several a list of them."""
+    if len(answers) == 1:
+        own = ("scene_id", "simulated", "warnings")
+        rest = {key: value for key, value in answers[0].items() if key not in own}
+        return document(rest, **{key: answers[0][key] for key in own})
+    ids = {answer.get("scene_id") for answer in answers}
+    return document(
+        {"frames": answers},
+        scene_id=ids.pop() if len(ids) == 1 else None,
+        simulated=all(answer.get("simulated", False) for answer in answers),
+        warnings=[
+            f"{answer['frame']}: {text}"
+            for answer in answers
+            for text in answer.get("warnings", [])
+        ],
+    )
+
+
+def _print(answer: Mapping[str, Any], *, heading: bool, quiet: bool) -> None:
+    if heading:
+        say(f"{answer['frame']}:")
+    if not quiet:
+        warn(answer["warnings"])
+    if not answer["pairs"]:
+        say("nothing to measure: no pair is named, none was found, and no place was given")
+    width = max((len(_name(pair)) for pair in answer["pairs"]), default=0)
+    for pair in answer["pairs"]:
+        _print_pair(pair, width)
+
+
+def _name(pair: Mapping[str, Any]) -> str:
+    return pair["label"] or f"x {figures(pair['x'])}, y {figures(pair['y'])}"
+
+
+def _print_pair(pair: Mapping[str, Any], width: int) -> None:
+    angle = with_error(pair["position_angle_deg"], pair["position_angle_error_deg"])
+    either = " (or 180 deg on)" if pair["ambiguous_180"] else ""
+    first = [
+        f"{with_error(pair['separation_arcsec'], pair['separation_error_arcsec'])} arcsec",
+        f"PA {angle} deg{either}",
+        f"dm {with_error(pair['magnitude_difference'], pair['magnitude_difference_error'])}",
+        f"chance of a single star {probability(pair['probability_single'])}",
+    ]
+    lines = ["   ".join(first)]
+    truth = pair.get("truth")
+    if truth:
+        lines.append(
+            f"truth  {arcsec(truth['separation_arcsec'])}   "
+            f"PA {figures(truth['position_angle_deg'])} deg   "
+            f"dm {figures(truth['magnitude_difference'], 3)}"
+        )
+    for criterion in ("rayleigh", "sparrow"):
+        one = pair[criterion]
+        elongated = "   elongated" if criterion == "sparrow" and pair["elongated"] else ""
+        lines.append(
+            f"{criterion.capitalize():<9}limit {arcsec(one['limit_arcsec'], 3):<8}"
+            f"{one['verdict']:<11}(probability {probability(one['probability'])}){elongated}"
+        )
+    saddle = with_error(pair["saddle_ratio"], pair["saddle_ratio_error"])
+    lines.append(f"saddle between the stars, over their peaks: {saddle}")
+    if pair["advice"]:
+        lines += textwrap.wrap(pair["advice"], 88)
+    for number, line in enumerate(lines):
+        name = _name(pair) if number == 0 else ""
+        say(f"{name:<{width}}  {line}")

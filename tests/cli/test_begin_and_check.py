@@ -108,7 +108,8 @@ class TestCheck:
 
     def test_a_file_that_a_scene_names_is_looked_into(self, run, scene, folder):
         (folder / "stars.csv").write_text("a,b\n1,2\n")
-        more = '\n[[catalogue]]\nfile = "stars.csv"\ncolumns = { east = "dx", north = "dy", magnitude = "m" }\n'
+        columns = '{ east = "dx", north = "dy", magnitude = "m" }'
+        more = f'\n[[catalogue]]\nfile = "stars.csv"\ncolumns = {columns}\n'
         (folder / scene).write_text((folder / scene).read_text() + more)
         result = run("check", scene)
         assert result.code == 2
