@@ -107,7 +107,7 @@ def parse_quantity(text: object, kind: str) -> float:
         return _bare(text, form)
     plain = " ".join(text.translate(_LOOK_ALIKES).split())
     if not plain:
-        raise QuantityError("is empty", f"write {_example(form)}")
+        raise QuantityError("is empty", f"write {_example(form)}, say")
     if len(plain) > LONGEST_TEXT:
         raise QuantityError(
             f"is not {form.noun}: {len(plain)} characters long", f"write {_example(form)}"
@@ -164,7 +164,7 @@ def unit_factor(unit: str, kind: str) -> float:
         what = f"must be {form.noun}, but {shown(unit)} is a unit of {_bare_noun(others[0])}"
     else:
         what = f"unknown unit {shown(unit)} for {form.noun}"
-    near = difflib.get_close_matches(tidy, list(form.units), n=1, cutoff=0.6)
+    near = difflib.get_close_matches(tidy, list(form.units), n=1, cutoff=0.75)
     hint = f'did you mean "{near[0]}"? ' if near and not others else ""
     raise QuantityError(what, f"{hint}write {_example(form)}, say")
 

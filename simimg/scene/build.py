@@ -160,13 +160,13 @@ def build(
 
 def _source(place: Place, layers: Sequence[Layer], changed: Sequence[Place]) -> str:
     """Where a mistake stands: an override, or the topmost file that gives the key."""
-    for path in changed:
-        if place[: len(path)] == path:
-            return f"{layers[0][0]} (--set)"
+    top = layers[0][0]
+    if any(place[: len(path)] == path for path in changed):
+        return f"{top} (--set)"
     for where, document in layers:
         if _has(document, place):
             return where
-    return layers[0][0]
+    return f"{top} (--set)" if any(path[: len(place)] == place for path in changed) else top
 
 
 def _has(document: Any, place: Place) -> bool:

@@ -138,7 +138,8 @@ def scene_from_record(
 
 def _fetch(name: str, sha256: str, folder: Path) -> InputFile:
     """Read from disk a file that a record holds only by its hash."""
-    mend = f"put the file of sha256 {shown(sha256[:64])} beside the frame"
+    digest = sha256 if sha256.isalnum() and len(sha256) == 64 else shown(sha256)
+    mend = f"put the file of sha256 {digest} beside the frame"
     try:
         found = read_input(name, folder)
     except UnusableFileError as problem:

@@ -99,18 +99,9 @@ class Quantity(Reader):
         ):
             if bound is not None and not holds(number, parse_quantity(bound, self.kind)):
                 raise fault(
-                    f"must be {words} {bound}, got {shown(value)}",
-                    f"write {KINDS[self.kind].noun} {self._bounds()}, such as {self.example}",
+                    f"must be {words} {_bound(bound)}, got {shown(value)}",
+                    f"write {self.range}, such as {self.example}",
                 )
-
-    def _bounds(self) -> str:
-        parts = (
-            ("above", self.above),
-            ("of at least", self.at_least),
-            ("below", self.below),
-            ("of at most", self.at_most),
-        )
-        return " and ".join(f"{words} {bound}" for words, bound in parts if bound is not None)
 
     @property
     def example(self) -> str:
@@ -122,7 +113,21 @@ class Quantity(Reader):
     @property
     def range(self) -> str:
         """The kind and its bounds, in words."""
-        return f"{KINDS[self.kind].noun} {self._bounds()}".strip()
+        noun = KINDS[self.kind].noun
+        if self.at_least is not None and self.at_most is not None:
+            return f"{noun} from {_bound(self.at_least)} to {_bound(self.at_most)}"
+        parts = (
+            ("above", self.above),
+            ("of at least", self.at_least),
+            ("below", self.below),
+            ("of at most", self.at_most),
+        )
+        bounds = [f"{words} {_bound(bound)}" for words, bound in parts if bound is not None]
+        return f"{noun} {' and '.join(bounds)}".strip()
+
+
+def _bound(bound: str | float) -> str:
+    return bound if isinstance(bound, str) else f"{bound:g}"
 
 
 @dataclass(frozen=True)

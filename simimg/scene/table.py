@@ -94,9 +94,10 @@ class Table(BaseModel):
         if isinstance(value, cls):
             return value
         if not isinstance(value, Mapping):
-            several = isinstance(value, list | tuple) and not cls.heading.startswith("[[")
+            single = not cls.heading.startswith("[[")
+            several = isinstance(value, list | tuple) and single
             raise fault(
-                f"must be one table, got {shown(value)}",
+                f"must be {'one' if single else 'a'} table, got {shown(value)}",
                 f"write {cls.heading} once" if several else f"write a {cls.heading} table",
             )
         faults = list(cls.together(value))
@@ -129,12 +130,11 @@ class Table(BaseModel):
         if error["type"] == FAULT:
             return Fault(place, context["what"], context["mend"])
         if error["type"] == "missing":
-            return Fault(place, "is required and missing", f"add {cls.sample_line(name)}")
+            return Fault(place, "is required and missing", f"add {cls.sample(name)}")
         if error["type"] == "extra_forbidden":
             what, mend = cls.hints.get(name, ("is not a known key", ""))
             return Fault(place, what, mend or cls._where_to(name))
-        table = cls.sample_line(name)
-        return Fault(place, "must be an array of tables", f"write {table} for each of them")
+        return Fault(place, "must be an array of tables", f"write [[{name}]] for each of them")
 
     @classmethod
     def _where_to(cls, name: str) -> str:
@@ -156,12 +156,13 @@ class Table(BaseModel):
         return next((one for one in field.metadata if isinstance(one, Reader)), None)
 
     @classmethod
-    def sample_line(cls, name: str) -> str:
-        """A line that gives the key a good value."""
+    def sample(cls, name: str) -> str:
+        """What gives a required key a good value."""
         reader = cls.reader(name)
         if reader is not None:
             return f"{name} = {reader.example}"
-        return f"[[{name}]]" if name in MANY else f"[{name}]"
+        lines = {"telescope": 'aperture = "2 m"', "band": 'name = "V"'}
+        return f"a [{name}] table with {lines[name]}" if name in lines else f"a [{name}] table"
 
 
 def table_types() -> Iterator[type[Table]]:

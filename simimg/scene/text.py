@@ -19,7 +19,7 @@ LARGEST_SCENE = 4 * 2**20
 """Largest scene file, in bytes."""
 
 _DEEPEST = 12
-_MOST_DOTS = 2000
+_MOST_DOTS = 200
 _BARE_KEY = re.compile(r"[A-Za-z0-9_-]+")
 _AT = re.compile(r"\s*\(at (?:line (\d+), column \d+|end of document)\)\s*$")
 _ASSIGNMENT = re.compile(r"\s*([A-Za-z0-9_.-]+)\s*=\s*(.*?)\s*(?:#.*)?$")
@@ -104,6 +104,8 @@ def _syntax(text: str, message: str, where: str) -> str:
         inner = value.strip("\"'")
         if not value:
             mend = f'write {name} = "text" or {name} = 1.5'
+        elif not isinstance(parse_value(value), str) or value != parse_value(value):
+            mend = "close the bracket or the quotes that are open above this line"
         elif '"' not in inner and "'" not in inner:
             mend = f'write {name} = "{inner}" if text or a quantity is meant'
     reason = reason[:1].lower() + reason[1:120]

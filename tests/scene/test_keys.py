@@ -1,0 +1,148 @@
+"""Every key has its description and range, and every reader keeps to its range."""
+
+import tomllib
+
+import pytest
+from pydantic_core import PydanticCustomError
+
+from simimg.light.bands import STANDARD_BANDS
+from simimg.scene.band import BLUEST, REDDEST, STANDARD_NAMES
+from simimg.scene.header import Header
+from simimg.scene.keys import (
+    Choice,
+    FileName,
+    Flag,
+    Instant,
+    Quantity,
+    Reader,
+    Several,
+    Text,
+    Whole,
+    nearest,
+)
+from simimg.scene.model import Scene
+from simimg.scene.table import MANY, table_types
+
+TABLES = [Scene, *table_types()]
+FIELDS = [
+    pytest.param(table, name, id=f"{table.heading or 'scene'} {name}")
+    for table in TABLES
+    for name in table.model_fields
+]
+
+
+@pytest.mark.parametrize(("table", "name"), FIELDS)
+def test_each_key_is_documented(table, name):
+    field = table.model_fields[name]
+    assert field.description.endswith(".")
+    reader = table.reader(name)
+    headings = [one.heading for one in table_types()]
+    if reader is None:
+        assert {f"[{name}]", f"[[{name}]]", f"{table.heading[:-1]}.{name}]"} & set(headings)
+        return
+    assert isinstance(reader, Reader)
+    assert reader.range
+    # The example is valid TOML that the reader takes.
+    reader.read(tomllib.loads(f"x = {reader.example}")["x"])
+
+
+@pytest.mark.parametrize(("table", "name"), FIELDS)
+def test_a_written_default_is_the_default(table, name):
+    extra = table.model_fields[name].json_schema_extra
+    reader = table.reader(name)
+    if not extra or not extra["absent"]:
+        return
+    assert extra["meaning"]
+    default = table.model_fields[name].default
+    if (
+        isinstance(reader, Quantity | Whole)
+        and default is not None
+        and extra["absent"][0].isdigit()
+    ):
+        assert reader.read(_plain(extra["absent"])) == default
+
+
+def _plain(text):
+    try:
+        return tomllib.loads(f"x = {text}")["x"]
+    except tomllib.TOMLDecodeError:
+        return text
+
+
+def test_many_are_the_tables_in_double_brackets():
+    assert {f"[[{name}]]" for name in MANY} == {
+        one.heading for one in table_types() if one.heading.startswith("[[")
+    }
+
+
+def test_standard_bands_are_those_with_a_zero_point():
+    assert tuple(STANDARD_BANDS) == STANDARD_NAMES
+    centres = [band.centre for band in STANDARD_BANDS.values()]
+    assert min(centres) == pytest.approx(BLUEST, rel=1e-12)  # the same decimal number
+    assert max(centres) == pytest.approx(REDDEST, rel=1e-12)
+
+
+@pytest.mark.parametrize(
+    ("reader", "good", "bad"),
+    [
+        (Quantity("ratio", at_least=0, below=1), [0, 0.0, 0.999], [-1e-9, 1, 1.0, "1 %%", True]),
+        (Quantity("ratio", above=0, at_most=1), [1e-9, 1], [0, 1.0000001]),
+        (Quantity("length", above="0 m"), ["1 nm"], ["0 m", "-1 nm", 1, "1e-400 m"]),
+        (Whole(1, 3, 2), [1, 3, 2.0], [0, 4, 1.5, "2", True, float("nan"), float("inf"), [1]]),
+        (Text(3), ["abc", " a "], ["", "  ", "abcd", "\u00e9", "a\nb", 3]),
+        (Choice(("near", "far")), ["near"], ["Near", "", 3, None]),
+        (Flag(), [True, False], [0, 1, "true"]),
+        (FileName(), ["a.fits", "../b c.png"], ["", "  ", "a\n", "a\0", "x" * 1001, 3]),
+        (Several(Whole(1, 3, 2), 2), [[1, 2], (3, 3)], [[1], [1, 2, 3], [0, 1], 1, "12"]),
+        (
+            Instant(),
+            ["2026-04-12", "1900-01-01T00:00:00"],
+            ["", "x", "2101-01-01", "1899-12-31", 3],
+        ),
+        (
+            Instant(),
+            ["1900-01-01T01:00:00+01:00"],
+            ["1900-01-01T00:30:00+01:00", "0001-01-01T00:00Z"],
+        ),
+        (Header(1), [{}, {"A": 1}], [{"A": 1, "B": 2}, 3, []]),
+    ],
+)
+def test_reader(reader, good, bad):
+    for value in good:
+        reader.read(value)
+    for value in bad:
+        with pytest.raises(PydanticCustomError):
+            reader.read(value)
+
+
+@pytest.mark.parametrize(
+    "keyword",
+    ["SIMPLE", "NAXIS1", "BZERO", "CRVAL1", "CD1_1", "DATE-OBS", "MJD-OBS", "SIMULATE", "SCENEID",
+     "SEED", "TELESCOP", "INSTRUME", "GAIN", "CHECKSUM", "END", "COMMENT", "CONTINUE", "LONPOLE"],
+)  # fmt: skip
+def test_keywords_that_simimg_writes_are_kept_free(keyword):
+    assert "itself" in Header.check(keyword, "x")[0]
+    assert "itself" in Header.check(keyword.lower(), "x")[0]
+
+
+@pytest.mark.parametrize(
+    ("keyword", "value"),
+    [("OBSERVER", "it's"), ("DOME", 3.5), ("NIGHT", 4), ("CLOUDY", False), ("A-B_9", "x" * 68)],
+)
+def test_good_keywords(keyword, value):
+    assert Header.check(keyword, value) is None
+
+
+@pytest.mark.parametrize(
+    ("keyword", "value"),
+    [("OBSERVER", 3), ("DOME", "'" * 35), ("DOME", 2**63), ("DOME", {}), ("", 1), ("A B", 1)],
+)
+def test_bad_keywords(keyword, value):
+    assert Header.check(keyword, value) is not None
+
+
+def test_nearest_word():
+    assert nearest("apperture", ["aperture", "angle"]) == 'did you mean "aperture"?'
+    assert nearest("v", ["U", "V"]) == 'did you mean "V"?'
+    assert nearest("zzz", ["U", "V"]) == "write one of U, V"
+    assert len(nearest("x" * 10**6, ["U", "V"])) < 100
