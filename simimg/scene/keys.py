@@ -164,7 +164,10 @@ class Whole(Reader):
 
 @dataclass(frozen=True)
 class Text(Reader):
-    """Text that can stand in a FITS header or table: printable ASCII of bounded length."""
+    """One line of printable text of bounded length.
+
+    FITS holds plain ASCII only: what writes a frame takes the accents off.
+    """
 
     longest: int = 68
     sample: str = "Saltmarsh 2 m"
@@ -180,12 +183,9 @@ class Text(Reader):
             raise fault(
                 f"is {len(text)} characters long", f"write at most {self.longest} characters"
             )
-        if not (text.isascii() and text.isprintable()):
-            bad = next(c for c in text if not (c.isascii() and c.isprintable()))
-            raise fault(
-                f"holds {bad!a}, which FITS cannot store",
-                "write plain ASCII letters, digits and signs",
-            )
+        if not text.isprintable():
+            bad = next(c for c in text if not c.isprintable())
+            raise fault(f"holds {bad!a}, which cannot be printed", "write one line of plain text")
         return text
 
     @property
@@ -196,7 +196,7 @@ class Text(Reader):
     @property
     def range(self) -> str:
         """The length, in words."""
-        return f"text of 1 to {self.longest} printable ASCII characters"
+        return f"text of 1 to {self.longest} printable characters"
 
 
 @dataclass(frozen=True)
