@@ -46,7 +46,7 @@ class CameraSettings:
     full_well : float or None
         Electrons that a pixel holds, above 0; None without end.
     bit_depth : int
-        Bits of the converter, 1 to 32.
+        Bits of the converter, 1 to 31.
     serial : int
         Which camera of its kind: fixes what is constant from frame to frame, 0 or above.
 
@@ -78,8 +78,8 @@ class CameraSettings:
             math.isfinite(self.full_well) and self.full_well > 0.0
         ):
             raise ValueError(f"full_well must be above 0, got {self.full_well!r}")
-        if not 1 <= self.bit_depth <= 32:
-            raise ValueError(f"bit_depth must be 1 to 32, got {self.bit_depth!r}")
+        if not 1 <= self.bit_depth <= 31:
+            raise ValueError(f"bit_depth must be 1 to 31, got {self.bit_depth!r}")
         if self.serial < 0:
             raise ValueError(f"serial must not be negative, got {self.serial!r}")
 

@@ -3,7 +3,7 @@
 Rounding leaves the mean where the noise exceeds about half a count and adds 1/12 count squared to
 the variance (Widrow 1956); below zero and above the top the counts are cut. The top of a converter
 of ``bits`` bits is ``2**bits - 1``; counts of more than 16 bits are kept in signed 32-bit integers,
-so that 32 bits reach no further than 31.
+which hold 31.
 """
 
 from __future__ import annotations
@@ -15,8 +15,8 @@ from simimg.arrays import AnyArray
 
 
 def converter_top(bit_depth: int) -> int:
-    """Highest count of a converter of 1 to 32 bits (2**31 - 1 for 32)."""
-    return int(2 ** min(bit_depth, 31) - 1)
+    """Highest count of a converter of 1 to 31 bits."""
+    return int(2**bit_depth - 1)
 
 
 def counts_type(bit_depth: int) -> type[np.uint16] | type[np.int32]:
@@ -32,7 +32,7 @@ def digitise(level: AnyArray, bit_depth: int, *, out: AnyArray) -> NDArray[np.bo
     level : ndarray of float
         Level in counts; changed. Above 16 bits it must be float64 to keep every count apart.
     bit_depth : int
-        Bits of the converter, 1 to 32.
+        Bits of the converter, 1 to 31.
     out : ndarray of int, same shape
         Where the counts go, of `counts_type`.
 

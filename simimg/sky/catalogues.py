@@ -106,12 +106,19 @@ def _match(wanted: str, names: Sequence[str]) -> str | None:
     return alike[0] if len(alike) == 1 else None
 
 
+def _near(wanted: str, names: Sequence[str]) -> str | None:
+    """The name that was most likely meant: a near spelling, or an abbreviation."""
+    lowered = {one.lower(): one for one in names}
+    near = difflib.get_close_matches(wanted.lower(), lowered, n=1, cutoff=0.7)
+    short = [one for one in lowered if len(one) > 2 and wanted.lower().startswith(one)]
+    return next((lowered[one] for one in (*near, *short)), None)
+
+
 def _nearest(wanted: str, names: Sequence[str]) -> str:
     """Hint: the nearest name, or all of them."""
-    lowered = {one.lower(): one for one in names}
-    near = difflib.get_close_matches(wanted.lower(), lowered, n=1, cutoff=0.6)
-    if near:
-        return f"did you mean {lowered[near[0]]!r}?"
+    near = _near(wanted, names)
+    if near is not None:
+        return f"did you mean {near!r}?"
     shown = ", ".join(names[:12]) + (", ..." if len(names) > 12 else "")
     return f"there are: {shown}" if names else "the table has no columns"
 
@@ -145,9 +152,8 @@ def _choose(
 
 def _mend(absent: Sequence[str], table: RawTable) -> str:
     """Hint for columns that are not there: the mapping to the nearest name, or all names."""
-    lowered = {one.lower(): one for one in table.names}
     for key in absent:
-        near = difflib.get_close_matches(key, lowered, n=1, cutoff=0.6)
-        if near:
-            return f'did you mean columns = {{ {key} = "{lowered[near[0]]}" }}?'
+        near = _near(key, table.names)
+        if near is not None:
+            return f'did you mean columns = {{ {key} = "{near}" }}?'
     return f'name it with columns = {{ {absent[0]} = "..." }}; {_nearest("", table.names)}'

@@ -8,14 +8,17 @@ radian.
 from __future__ import annotations
 
 import math
+from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 from numpy.typing import ArrayLike
 
-from simimg.arrays import AnyArray, ComplexArray, FloatArray, frozen
+from simimg.arrays import ComplexArray, FloatArray
 from simimg.sky.geometry import points_transform, require, require_positive
 
 
+@dataclass(frozen=True, eq=False)
 class PictureShape:
     """A picture of unit light.
 
@@ -37,49 +40,36 @@ class PictureShape:
         No light, NaN or infinity in the values, or an argument outside its range.
     """
 
-    __slots__ = ("angle", "mirrored", "pixel_side", "values")
-
     values: FloatArray
     pixel_side: float
-    angle: float
-    mirrored: bool
+    angle: float = 0.0
+    mirrored: bool = False
 
-    def __init__(
-        self, values: AnyArray, pixel_side: float, angle: float = 0.0, mirrored: bool = False
-    ) -> None:
-        light = np.asarray(values, dtype=np.float64)
-        require(light.ndim == 2 and light.size > 0, "values must be a 2-D array that is not empty")
-        require(bool(np.isfinite(light).all()), "values must be finite")
-        light = np.maximum(light, 0.0)
+    def __post_init__(self) -> None:
+        given = np.asarray(self.values, dtype=np.float64)
+        require(given.ndim == 2 and given.size > 0, "values must be a 2-D array that is not empty")
+        require(bool(np.isfinite(given).all()), "values must be finite")
+        light = np.maximum(given, 0.0)
         brightest = float(light.max())
         require(brightest > 0.0, "values must hold some light")
         light /= brightest
         light /= light.sum()
-        require_positive("pixel_side", pixel_side)
-        require(math.isfinite(angle), f"angle must be finite, got {angle!r}")
-        object.__setattr__(self, "values", frozen(light))
-        object.__setattr__(self, "pixel_side", float(pixel_side))
-        object.__setattr__(self, "angle", float(angle))
-        object.__setattr__(self, "mirrored", bool(mirrored))
-
-    def __setattr__(self, name: str, value: object) -> None:
-        raise AttributeError(f"a PictureShape is fixed: cannot set {name}")
-
-    def __delattr__(self, name: str) -> None:
-        raise AttributeError(f"a PictureShape is fixed: cannot delete {name}")
+        light.setflags(write=False)
+        object.__setattr__(self, "values", light)
+        require_positive("pixel_side", self.pixel_side)
+        require(math.isfinite(self.angle), f"angle must be finite, got {self.angle!r}")
 
     @property
     def pixel_angle(self) -> float:
         """Turn of the pixels' sides from the detector's +x towards +y, radians."""
         return self.angle
 
-    def _lit(self) -> tuple[FloatArray, FloatArray, FloatArray]:
-        """Places in the picture's own axes (radians from its middle) and light of lit pixels."""
+    def _axes(self) -> tuple[FloatArray, FloatArray]:
+        """Places of the columns and of the rows from the middle, in the picture's axes, radians."""
         rows, columns = self.values.shape
-        j, i = np.nonzero(self.values)
-        right = (i - 0.5 * (columns - 1)) * self.pixel_side
-        up = (j - 0.5 * (rows - 1)) * self.pixel_side
-        return (-right if self.mirrored else right), up, self.values[j, i]
+        right = (np.arange(columns) - 0.5 * (columns - 1)) * self.pixel_side
+        up = (np.arange(rows) - 0.5 * (rows - 1)) * self.pixel_side
+        return (-right if self.mirrored else right), up
 
     def points(self, max_frequency: float = 0.0) -> tuple[FloatArray, FloatArray, FloatArray]:  # noqa: ARG002 (same call as for discs)
         """Centres of the lit pixels and their light.
@@ -95,9 +85,12 @@ class PictureShape:
             Places from the picture's middle along the detector's axes, radians, and light; the
             weights sum to 1.
         """
-        right, up, weight = self._lit()
+        right, up = self._axes()
         cosine, sine = math.cos(self.angle), math.sin(self.angle)
-        return cosine * right - sine * up, sine * right + cosine * up, weight
+        lit = self.values > 0.0
+        dx = np.subtract.outer(-sine * up, -cosine * right)[lit]
+        dy = np.add.outer(cosine * up, sine * right)[lit]
+        return dx, dy, self.values[lit]
 
     def point_count(self, max_frequency: float = 0.0) -> int:  # noqa: ARG002 (same call as for discs)
         """How many points `points` will give."""
@@ -115,12 +108,13 @@ class PictureShape:
         )
         return np.asarray(points_transform(*self.points(), fx, fy) * square)
 
-    @property
+    @cached_property
     def radius(self) -> float:
         """Radius about the middle, radians, outside which there is no light."""
-        right, up, _ = self._lit()
+        right, up = self._axes()
         half = 0.5 * self.pixel_side
-        return float(np.hypot(np.abs(right) + half, np.abs(up) + half).max())
+        corner = np.hypot.outer(np.abs(up) + half, np.abs(right) + half)
+        return float(corner[self.values > 0.0].max())
 
     def radius_for(self, fraction: float) -> float:
         """Radius, radians, outside which at most `fraction` is left: that of the lit pixels."""

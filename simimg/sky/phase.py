@@ -18,6 +18,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import ArrayLike
+from scipy.special import roots_legendre
 
 from simimg.arrays import ComplexArray, FloatArray
 from simimg.sky.geometry import (
@@ -29,12 +30,12 @@ from simimg.sky.geometry import (
 
 
 def _count(phase: float) -> int:
-    """Gauss-Legendre points for ``exp(i phase t)``, t in [-1, 1], to 1e-8.
+    """Gauss-Legendre points for ``exp(i phase t)``, t in [-1, 1], to 1e-6.
 
     An n-point rule is exact to degree 2n - 1; the Chebyshev coefficients of the exponential are
-    Bessel functions of the phase, which vanish beyond an order of about phase + 5 phase^(1/3).
+    Bessel functions of the phase, which vanish beyond an order of about phase + 7 phase^(1/3).
     """
-    return math.ceil(0.5 * phase + 3.0 * math.cbrt(phase) + 10.0)
+    return math.ceil(0.5 * phase + 3.5 * math.cbrt(phase) + 7.0)
 
 
 @dataclass(frozen=True)
@@ -123,8 +124,8 @@ class PhaseDiscShape:
             the weights sum to 1.
         """
         latitudes, longitudes = self._counts(max_frequency)
-        t, wt = np.polynomial.legendre.leggauss(latitudes)
-        s, ws = np.polynomial.legendre.leggauss(longitudes)
+        t, wt = roots_legendre(latitudes)
+        s, ws = roots_legendre(longitudes)
         latitude = 0.5 * math.pi * t[:, np.newaxis]
         theta = 0.5 * (math.pi - self.phase_angle) * (s + 1.0)
         mu = np.cos(latitude) * np.sin(theta)

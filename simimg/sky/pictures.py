@@ -88,8 +88,9 @@ def _from_fits(content: bytes, name: str) -> FloatArray:
                             continue
                         columns, rows = int(header["NAXIS1"]), int(header["NAXIS2"])
                         _check_size(columns, rows, name)
-                        needed = columns * rows * abs(int(header["BITPIX"])) // 8
-                        if not isinstance(hdu, fits.CompImageHDU) and needed > len(content):
+                        end = columns * rows * abs(int(header["BITPIX"])) // 8
+                        end += hdu.fileinfo()["datLoc"]
+                        if not isinstance(hdu, fits.CompImageHDU) and end > len(content):
                             what = "the file ends before its picture does"
                             raise InputError(mistake(name, "", what, "get the whole file"))
                         return np.array(hdu.data, dtype=np.float64)
@@ -144,4 +145,6 @@ def _luminance(image: Any) -> FloatArray:
 
 def _first_line(error: Exception) -> str:
     text = " ".join(str(error).split())
-    return text[:120] or type(error).__name__
+    if not text or "object at 0x" in text:
+        return "damaged or cut short"
+    return text[:120]

@@ -95,8 +95,8 @@ def _from_fits(content: bytes, name: str) -> RawTable:
         for hdu in hdus:
             if isinstance(hdu, (fits.BinTableHDU, fits.TableHDU)):
                 header: Any = hdu.header
-                needed = int(header["NAXIS1"]) * int(header["NAXIS2"])
-                if needed > len(content):
+                end = hdu.fileinfo()["datLoc"] + int(header["NAXIS1"]) * int(header["NAXIS2"])
+                if end > len(content):
                     what = "the file ends before its table does"
                     raise InputError(mistake(name, "", what, "get the whole file"))
                 data = hdu.data
