@@ -68,6 +68,8 @@ def command(
     frames = _numbered(output, indices)
     pictures = _numbered(preview, indices) if preview else [None] * len(indices)
     mistakes = _forbidden(source, scene, [*frames, *filter(None, pictures)], overwrite=overwrite)
+    if preview and not preview.lower().endswith(".png"):
+        mistakes.append(mistake(preview, "", "a preview is a PNG", "end its name in .png"))
     mistakes += requirements_to_expose(source.scene)
     if mistakes:
         raise InputError(*mistakes)

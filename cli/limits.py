@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING
 import click
 from simimg_cli import options
 from simimg_cli.output import document, say, table, warn
-from simimg_cli.words import arcsec, figures
+from simimg_cli.words import arcsec, figures, short
 
 if TYPE_CHECKING:
     from simimg.resolving.limits import Limits, ObjectLimits
@@ -64,11 +64,11 @@ def command(
 def _print(found: Limits, heading: str) -> None:
     air = "above the air" if found.r0_m is None else f"r0 {figures(found.r0_m * 100, 3)} cm"
     scale = found.pixel_scale_arcsec
-    pixel = "without a pixel" if scale is None else f"pixel {arcsec(scale)}"
+    pixel = "without a pixel" if scale is None else f'pixel {short(scale)}"'
     say(heading)
-    say(f"{figures(found.wavelength_nm)} nm, {air}, {pixel}")
+    say(f"{short(found.wavelength_nm)} nm, {air}, {pixel}")
     say()
-    angle = figures(found.position_angle_deg, 3)
+    angle = short(found.position_angle_deg)
     rows = [
         ("diffraction", found.diffraction, "the pupil alone; Rayleigh is the first dark ring"),
         ("delivered", found.delivered, "optics, air and pixel; verdicts use these"),
@@ -148,8 +148,8 @@ def _print_objects(objects: Sequence[ObjectLimits]) -> None:
             (
                 one.label or NO_LABEL,
                 arcsec(one.separation_arcsec),
-                f"{figures(one.position_angle_deg)} deg",
-                figures(one.magnitude_difference, 3),
+                f"{short(one.position_angle_deg)} deg",
+                short(one.magnitude_difference),
                 arcsec(one.delivered.rayleigh_arcsec if one.delivered else None),
                 arcsec(one.delivered.sparrow_arcsec if one.delivered else None),
                 "",

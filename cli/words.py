@@ -24,6 +24,11 @@ def figures(value: float | None, digits: int = 4) -> str:
     return f"{value:.{digits - 1}e}"
 
 
+def short(value: float | None) -> str:
+    """A number as a person would have written it, to four figures at most."""
+    return NONE if value is None or not math.isfinite(value) else f"{value:.4g}"
+
+
 def with_error(value: float | None, error: float | None) -> str:
     """A value and its error, both to two figures of the error."""
     if value is None or not math.isfinite(value):

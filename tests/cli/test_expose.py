@@ -124,6 +124,7 @@ class TestAllOrNothing:
             (["-o", "tiny.toml", "--overwrite"], "the scene reads"),
             (["-o", "a.fits", "--preview", "tiny.toml", "--overwrite"], "the scene reads"),
             (["-o", "a.fits", "--preview", "./a.fits"], "written twice"),
+            (["-o", "a.fits", "--preview", "a.jpg"], "end its name in .png"),
             (["-o", "a.fits", "--preview", "nowhere/a.png"], "does not exist"),
             (["-o", "a.fits", "--without", "exposure"], "exposure.time"),
             (["-o", "a.fits", "--without", "camera"], "camera.pixels"),

@@ -1,0 +1,81 @@
+"""simimg figure: a frame and its pair's profile, drawn for a proposal."""
+
+from __future__ import annotations
+
+import textwrap
+from typing import TYPE_CHECKING
+
+import click
+from simimg_cli import options
+from simimg_cli.output import document, say
+
+from simimg.errors import InputError
+
+if TYPE_CHECKING:
+    from simimg.resolving.records import PairMeasurement
+
+    from simimg.frame import Frame
+
+
+@click.command("figure")
+@click.argument("frame", type=click.Path())
+@options.output("The figure to write; its ending says PNG, PDF or SVG.")
+@click.option(
+    "--pair",
+    metavar="LABEL",
+    help="The pair to show, by its label or its number from 0; the first unless given.",
+)
+@click.option(
+    "--near",
+    type=options.Place(),
+    metavar="X,Y",
+    help="Show what is measured at this place: pixels from 0 at the centre of the first pixel.",
+)
+@options.overwrite
+@options.as_json
+@options.quiet
+def command(
+    frame: str,
+    output: str,
+    pair: str | None,
+    near: tuple[float, float] | None,
+    overwrite: bool,
+    as_json: bool,
+    quiet: bool,
+) -> None:
+    """Draw FRAME beside the profile along its pair's axis, and print a caption.
+
+    A frame without pairs is shown with the profile of its brightest object.
+    """
+    if pair is not None and near is not None:
+        raise click.UsageError("--pair and --near name two subjects; give one of them")
+    from simimg.frame import Frame
+    from simimg.newfile import check_new_file
+
+    mistakes = check_new_file(output, overwrite=overwrite)
+    if mistakes:
+        raise InputError(*mistakes)
+    read = Frame.read(frame)
+
+    from simimg.show.figure import write_figure
+
+    chosen, measurement = _subject(read, pair, near)
+    caption = write_figure(read, output, overwrite=overwrite, pair=chosen, measurement=measurement)
+    if as_json:
+        payload = {"frame": frame, "figure": output, "caption": caption}
+        say(document(payload, scene_id=read.scene_id, simulated=read.simulated))
+    elif not quiet:
+        say(textwrap.fill(caption, 96))
+
+
+def _subject(
+    frame: Frame, pair: str | None, near: tuple[float, float] | None
+) -> tuple[str | int | None, PairMeasurement | None]:
+    """What the figure is about: a label, a number, or what is measured at a place."""
+    if near is not None:
+        from simimg.resolving.measure import measure
+
+        return None, measure(frame, near=[near])[0]
+    if pair is None or frame.truth is None or pair in list(frame.truth["label"]):
+        return pair, None
+    return (int(pair) if pair.isdecimal() and len(pair) < 9 else pair), None
