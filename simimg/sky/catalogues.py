@@ -87,9 +87,11 @@ def read_catalogue(
     ]
     result: dict[str, AnyArray] = {}
     for key in chosen:
-        column = table.column(found[key])
         try:
+            column = table.column(found[key])
             result[key] = labels(column) if key == "label" else numbers(key, column, units.get(key))
+        except InputError as error:
+            lines.extend(error.lines)
         except ColumnError as error:
             where = key if found[key] == key else f"{key} (column {found[key]})"
             lines.append(mistake(name, where, error.what, error.mend))

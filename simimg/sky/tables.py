@@ -8,7 +8,8 @@ from __future__ import annotations
 
 import io
 import warnings
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
 from dataclasses import dataclass
 from typing import Any
 
@@ -43,7 +44,7 @@ class Column:
 
 @dataclass(frozen=True)
 class RawTable:
-    """Names of the columns, number of rows, and the way to a column."""
+    """Names of the columns, number of rows, and the way to a column (InputError if damaged)."""
 
     names: tuple[str, ...]
     rows: int
@@ -74,17 +75,29 @@ def read_table(content: bytes, name: str) -> RawTable:
         kind, reader = "VOTable", _from_votable
     else:
         kind, reader = "text", _from_text
+    with _blamed_on_the_file(name, "", f"the {kind} table"):
+        table = reader(content, name)
+
+    def column(wanted: str) -> Column:
+        with _blamed_on_the_file(name, wanted, "the column"):
+            return table.column(wanted)
+
+    return RawTable(table.names, table.rows, column)
+
+
+@contextmanager
+def _blamed_on_the_file(name: str, key: str, part: str) -> Iterator[None]:
+    """Turn whatever a reader makes of a damaged file into one line about the file."""
     try:
         with warnings.catch_warnings():
             warnings.simplefilter("ignore")
-            return reader(content, name)
+            yield
     except InputError:
         raise
-    # A damaged file can make a reader fail in any way; each of them is the file's fault.
+    # There is no end of the ways in which readers fail; each of them is the file's fault.
     except Exception as error:
         reason = " ".join(str(error).split())[:120] or type(error).__name__
-        what = f"the {kind} table cannot be read ({reason})"
-        raise InputError(mistake(name, "", what, _USE)) from error
+        raise InputError(mistake(name, key, f"{part} cannot be read ({reason})", _USE)) from error
 
 
 def _from_fits(content: bytes, name: str) -> RawTable:

@@ -1,4 +1,5 @@
 import io
+from contextlib import suppress
 
 import numpy as np
 import pytest
@@ -116,6 +117,43 @@ def test_masked_values_are_missing(kind):
     made["m"] = MaskedColumn(made["m"], mask=[False, True, False, True, False])
     with pytest.raises(InputError, match=r"magnitude \(column m\): row 2 \(and 1 more\) is"):
         read_catalogue(saved(made, kind), "a", columns=MAPPING)
+
+
+def ascii_fits():
+    from astropy.io import fits
+
+    columns = [
+        fits.Column(name=name, format="E15.7", ascii=True, array=np.array([1.0, 2.0]))
+        for name in ("x", "y", "electrons")
+    ]
+    stream = io.BytesIO()
+    fits.HDUList([fits.PrimaryHDU(), fits.TableHDU.from_columns(columns)]).writeto(stream)
+    return stream.getvalue()
+
+
+def test_text_tables_of_fits():
+    assert read_catalogue(ascii_fits(), "a")["y"].tolist() == [1.0, 2.0]
+
+
+def test_a_column_that_cannot_be_read():
+    content = ascii_fits()
+    place = content.index(b"1.0000000E+00")
+    with pytest.raises(InputError, match="x: the column cannot be read"):
+        read_catalogue(content[:place] + b"?" + content[place + 1 :], "a")
+
+
+@pytest.mark.parametrize("kind", ["fits", "votable", "ascii.ecsv", "ascii.csv"])
+def test_random_damage_gives_lines_or_stars(kind):
+    whole = saved(table(), kind)
+    rng = np.random.default_rng(4)
+    for _ in range(60):
+        content = bytearray(whole)
+        for _ in range(int(rng.integers(1, 5))):
+            place = int(rng.integers(len(content)))
+            content[place : place + int(rng.integers(0, 40))] = rng.bytes(int(rng.integers(0, 3)))
+        # Nothing but an InputError may come out.
+        with suppress(InputError):
+            assert np.isfinite(read_catalogue(bytes(content), "a", columns=MAPPING)["east"]).all()
 
 
 def test_a_million_rows_of_fits():

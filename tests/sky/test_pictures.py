@@ -1,6 +1,7 @@
 import io
 import struct
 import zlib
+from contextlib import suppress
 
 import numpy as np
 import pytest
@@ -156,6 +157,20 @@ def test_refuses_in_one_line(content, says):
     assert says in line
     # No address in memory, which would change from run to run.
     assert "0x" not in line
+
+
+@pytest.mark.parametrize("kind", ["png", "tiff", "fits"])
+def test_random_damage_gives_a_line_or_a_picture(kind):
+    values = RAMP.astype(np.uint8)
+    whole = fits_image(values) if kind == "fits" else saved(values, kind.upper())
+    rng = np.random.default_rng(4)
+    for _ in range(60):
+        content = bytearray(whole)
+        for _ in range(int(rng.integers(1, 5))):
+            content[int(rng.integers(len(content)))] = int(rng.integers(256))
+        # Nothing but an InputError may come out.
+        with suppress(InputError):
+            assert np.isfinite(read_picture(bytes(content), "a")).all()
 
 
 def test_the_largest_picture_is_let_through_to_the_decoder():
