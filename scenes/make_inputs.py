@@ -23,6 +23,7 @@ BRIGHTEST, FAINTEST = 13.2, 23.2
 SLOPE = 0.26  # of the logarithm of the number per magnitude
 
 PICTURE_SIDE = 256  # pixels
+CLUMPS = 60
 TILT = np.radians(58.0)
 
 
@@ -72,26 +73,29 @@ def spiral() -> bytes:
     y, x = (np.indices((PICTURE_SIDE, PICTURE_SIDE)) + 0.5 - half) / half
     across = y / np.cos(TILT)
     radius, angle = np.hypot(x, across), np.arctan2(across, x)
-    disc = np.exp(-radius / 0.23)
     # Phase of the arms' crests: it turns by 2 pi from one crest to the next.
-    wound = np.log(np.maximum(radius, 1e-3) / 0.1) / np.tan(np.radians(17.0))
-    phase = 2.0 * (angle - wound)
+    phase = 2.0 * (angle - _crest(np.maximum(radius, 1e-3)))
     strength = np.clip((radius - 0.08) / 0.15, 0.0, 1.0)
-    arms = 1.0 + strength * (2.6 * np.exp(2.2 * (np.cos(phase) - 1.0)) - 0.35)
-    dust = 1.0 - 0.55 * strength * np.exp(7.0 * (np.cos(phase + 1.1) - 1.0))
+    arms = 0.65 + strength * 2.6 * np.exp(2.6 * (np.cos(phase) - 1.0))
+    dust = 1.0 - 0.6 * strength * np.exp(6.0 * (np.cos(phase + 1.1) - 1.0))
+    edge = np.clip((0.97 - radius) / 0.2, 0.0, 1.0)
+    light = np.exp(-radius / 0.30) * arms * dust * edge
     # The bulge is rounder than the disc, and less tilted.
-    bulge = 1.6 * np.exp(-np.hypot(x, y / 0.75) / 0.045)
-    edge = np.clip((0.97 - radius) / 0.15, 0.0, 1.0)
-    light = disc * arms * dust * edge + bulge
-    for _ in range(90):
+    light += 3.0 * np.exp(-np.hypot(x, y / 0.75) / 0.05)
+    for _ in range(CLUMPS):
         r, turn, spread, bright = rng.random(4)
-        r = 0.2 + 0.62 * r
-        crest = np.log(r / 0.1) / np.tan(np.radians(17.0))
-        turn = crest + np.pi * np.floor(2.0 * turn) + 0.24 * (2.0 * turn % 1.0 - 0.5)
-        size = 0.010 + 0.014 * spread
-        offset = np.hypot(x - r * np.cos(turn), across - r * np.sin(turn))
-        light += 1.2 * bright**2 * np.exp(-r / 0.3) * np.exp(-((offset / size) ** 2) / 2.0)
+        r = 0.22 + 0.62 * r
+        arm = np.floor(2.0 * turn)
+        turn = _crest(r) + np.pi * arm + 0.3 * (2.0 * turn - arm - 0.5)
+        size = 0.008 + 0.008 * spread
+        offset = np.hypot(x - r * np.cos(turn), (across - r * np.sin(turn)) * np.cos(TILT))
+        light += 7.0 * bright**4 * np.exp(-r / 0.45) * np.exp(-((offset / size) ** 2) / 2.0)
     return _fits(np.rint(light / light.max() * 32000.0).astype(">i2"))
+
+
+def _crest(radius: np.ndarray) -> np.ndarray:
+    """Angle at which an arm of a 17 deg pitch stands at a radius."""
+    return np.log(radius / 0.1) / np.tan(np.radians(17.0))
 
 
 def _fits(values: np.ndarray) -> bytes:

@@ -1,0 +1,173 @@
+"""What stands under and over a figure: the set-up, what is drawn, the verdict, in words."""
+
+from __future__ import annotations
+
+from math import degrees, isfinite
+from typing import TYPE_CHECKING, Any
+
+from simimg.assembly.report import SIMULATION_NOTE, cautions
+from simimg.frame import Frame
+from simimg.show.canvas import drawable
+from simimg.show.profile import Profile
+from simimg.show.setup import Setup
+from simimg.show.signal import header_number, header_text
+from simimg.show.subject import Subject
+
+if TYPE_CHECKING:
+    from simimg.resolving.records import PairMeasurement
+
+_ARCSEC, _DEG, _PLUS_MINUS = "\N{DOUBLE PRIME}", "\N{DEGREE SIGN}", "\N{PLUS-MINUS SIGN}"
+_LEAST_CHANCE = 1e-6
+_NAMES = {"star": "the star", "source": "the brightest pixel"}
+
+
+def panel_titles(frame: Frame, subject: Subject) -> tuple[str, str]:
+    """Titles of the two panels: the frame's set-up in brief, and what the profile is of."""
+    time = header_number(frame, "EXPTIME")
+    parts = [
+        drawable(header_text(frame, "TELESCOP"), longest=24),
+        drawable(header_text(frame, "FILTER"), longest=14),
+        "" if time is None else f"{time:.6g} s",
+    ]
+    left = ", ".join(part for part in parts if part)
+    label = drawable(subject.label, longest=24)
+    measured = subject.measurement
+    if measured is None or subject.second is None:
+        return left, label
+    separation = with_error(measured.separation_arcsec, measured.separation_error_arcsec)
+    verdicts = {"Rayleigh": measured.rayleigh.verdict, "Sparrow": measured.sparrow.verdict}
+    if len(set(verdicts.values())) == 1:
+        words = f"{measured.rayleigh.verdict} (Rayleigh, Sparrow)"
+    else:
+        words = ", ".join(f"{verdict} ({name})" for name, verdict in verdicts.items())
+    return left, f"{label}: {separation}{_ARCSEC}\n{words}"
+
+
+def figure_caption(frame: Frame, subject: Subject, profile: Profile, setup: Setup | None) -> str:
+    """The caption of a figure, one paragraph.
+
+    Parameters
+    ----------
+    frame : Frame
+    subject : Subject
+    profile : Profile
+    setup : Setup or None
+        None where the frame carries no scene.
+    """
+    sentences = [
+        _of_what(frame),
+        *_setup_sentences(frame, setup),
+        *_panel_sentences(frame, subject, profile),
+    ]
+    if subject.measurement is not None:
+        sentences += _verdict_sentences(subject.measurement)
+    if setup is not None:
+        sentences += cautions(setup.scene)
+    elif frame.simulated:
+        sentences.append(SIMULATION_NOTE)
+    return " ".join(sentences)
+
+
+def _of_what(frame: Frame) -> str:
+    title = drawable(header_text(frame, "OBJECT"), longest=200)
+    kind = "Simulated frame" if frame.simulated else "Frame"
+    return f"{kind}: {title}." if title else f"{kind}."
+
+
+def _setup_sentences(frame: Frame, setup: Setup | None) -> list[str]:
+    time, scale = header_number(frame, "EXPTIME"), header_number(frame, "PIXSCALE")
+    parts = [
+        drawable(header_text(frame, "TELESCOP")),
+        drawable(header_text(frame, "INSTRUME")),
+        drawable(header_text(frame, "FILTER")),
+    ]
+    if time is not None:
+        parts.append(f"{time:.6g} s")
+    if scale:
+        parts.append(f"pixels of {scale:.3g}{_ARCSEC}")
+    if setup is not None:
+        scene, train = setup.scene, setup.train
+        telescope = scene.telescope
+        parts.insert(1, f"aperture {telescope.aperture:.4g} m")
+        if telescope.obstruction:
+            parts.insert(2, f"obstruction {telescope.obstruction:.3g}")
+        if train.seeing is None:
+            parts.append("above the atmosphere")
+        else:
+            seeing = degrees(train.seeing) * 3600.0
+            parts.append(f"seeing {seeing:.3g}{_ARCSEC} (500 nm, zenith)")
+            parts.append(f"airmass {train.airmass:.3g}")
+    stated = [part for part in parts if part]
+    return [", ".join(stated) + "."] if stated else []
+
+
+def _panel_sentences(frame: Frame, subject: Subject, profile: Profile) -> list[str]:
+    left_edge, right_edge, bottom, top = subject.window
+    whole = (top - bottom, right_edge - left_edge) == frame.counts.shape
+    part = "the frame" if whole else "part of the frame"
+    left = f"Left: {part}, asinh stretch"
+    if profile.fit is not None:
+        left += ", crosses at the fitted stars"
+    left += "." if subject.compass.known else "; it carries no directions."
+    if profile.offsets.size == 0:
+        return [left]
+    scale = subject.compass.scale
+    width = f"{profile.width * (scale or 1.0):.2g}" + (_ARCSEC if scale else " pixels")
+    along = (
+        "along x"
+        if subject.position_angle is None
+        else f"along position angle {subject.position_angle:.1f}{_DEG}"
+    )
+    through = _NAMES.get(subject.kind, drawable(subject.label))
+    if subject.kind == "star":
+        through = drawable(subject.label)
+    if subject.kind == "pair":
+        through = "the pair"
+    right = f"Right: mean over a strip {width} wide through {through} {along}, with 1-sigma errors"
+    if profile.fit is not None:
+        stars = "two stars" if len(profile.fit.places) > 1 else "one star"
+        right += f"; {stars} of the frame's own PSF fitted to the pixels"
+    elif profile.curves:
+        right += "; the curve is the scene without noise"
+    if profile.fwhm is not None:
+        fwhm = f"{profile.fwhm * (scale or 1.0):.3g}" + (_ARCSEC if scale else " pixels")
+        right += f"; the PSF's FWHM is {fwhm}"
+    return [left, right + "."]
+
+
+def _verdict_sentences(measured: PairMeasurement) -> list[str]:
+    label = drawable(str(measured.label))
+    separation = with_error(measured.separation_arcsec, measured.separation_error_arcsec)
+    angle = with_error(measured.position_angle_deg, measured.position_angle_error_deg)
+    difference = with_error(measured.magnitude_difference, measured.magnitude_difference_error)
+    chance = measured.probability_single
+    found = (
+        f"{label}: separation {separation}{_ARCSEC}, position angle {angle}{_DEG}, "
+        f"magnitude difference {difference}, chance of a single star {_chance(chance)}."
+    )
+    if not isfinite(measured.separation_arcsec):
+        found = f"{label}: no second star found, chance of a single star {_chance(chance)}."
+    criteria = [_criterion("Rayleigh", measured.rayleigh), _criterion("Sparrow", measured.sparrow)]
+    sentence = "; ".join(criteria) + "."
+    if measured.elongated:
+        sentence += " Two stars are certain here, but they are not resolved."
+    return [found, sentence]
+
+
+def _criterion(name: str, outcome: Any) -> str:
+    limit = f"{outcome.limit_arcsec:.3g}{_ARCSEC}"
+    return f"{name} (limit {limit}): {outcome.verdict}, probability {outcome.probability:.2f}"
+
+
+def _chance(value: float) -> str:
+    return "below 1e-6" if value < _LEAST_CHANCE else f"{value:.2g}"
+
+
+def with_error(value: float, error: float) -> str:
+    """A number and its error to two digits of the error: ``0.352 +/- 0.011``."""
+    if not isfinite(value):
+        return "unknown"
+    if not isfinite(error) or error <= 0.0:
+        return f"{value:.4g}"
+    digits = min(max(-int(f"{error:.1e}".split("e")[1]) + 1, 0), 12)
+    return f"{value:.{digits}f} {_PLUS_MINUS} {error:.{digits}f}"

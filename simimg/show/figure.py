@@ -1,0 +1,135 @@
+"""The proposal figure: a frame, the profile along its pair's axis, and a caption with the verdict.
+
+Sized for two columns of a page (180 mm), as PNG, PDF or SVG; the same frame gives the same bytes.
+"""
+
+from __future__ import annotations
+
+import os
+from typing import TYPE_CHECKING, Any
+
+from simimg.frame import Frame
+from simimg.show.canvas import MILLIMETRE, drawable, figure_format, look, save
+from simimg.show.caption import figure_caption, panel_titles
+from simimg.show.framepanel import draw_frame
+from simimg.show.profile import Profile, subject_profile
+from simimg.show.profilepanel import draw_profile
+from simimg.show.setup import Setup, frame_setup
+from simimg.show.signal import Light, frame_light
+from simimg.show.subject import (
+    Subject,
+    brightest_subject,
+    choose_pair,
+    has_pairs,
+    pair_subject,
+)
+
+if TYPE_CHECKING:
+    from simimg.resolving.records import PairMeasurement
+
+_WIDTH, _HEIGHT = 180.0, 83.0  # mm
+_PANEL = (13.0, 11.0, 62.0, 62.0)  # left, bottom, width, height, mm
+_PROFILE = (113.0, 11.0, 65.0, 62.0)
+_RESIDUAL = 13.0  # of the profile's height, mm
+
+
+def write_figure(
+    frame: Frame,
+    path: str | os.PathLike[str],
+    *,
+    overwrite: bool = False,
+    pair: str | int | None = None,
+    measurement: PairMeasurement | None = None,
+) -> str:
+    """Draw a frame and the profile along its pair's axis, and write the figure to a file.
+
+    Parameters
+    ----------
+    frame : Frame
+    path : path
+        Ends in .png, .pdf or .svg.
+    overwrite : bool, optional
+        Whether a file of that name may be replaced.
+    pair : str or int, optional
+        Label or number (from 0) of the measured pair to show; the first unless given. A frame
+        whose truth names no pair is shown whole, with a profile of its brightest object.
+    measurement : PairMeasurement, optional
+        What `simimg.measure` said of the pair; measured here unless given.
+
+    Returns
+    -------
+    str
+        The caption: the set-up, what is drawn, and the verdict.
+
+    Raises
+    ------
+    InputError
+        Another ending, a file that exists or cannot be written, no such pair.
+    RunError
+        The system refused; no part of the file is left behind.
+    """
+    file_format = figure_format(path, overwrite=overwrite)
+    setup, light = frame_setup(frame), frame_light(frame)
+    subject = _subject(frame, light, setup, pair=pair, measurement=measurement)
+    profile = subject_profile(frame, light, subject, setup)
+    caption = figure_caption(frame, subject, profile, setup)
+    with look():
+        figure = draw_figure(frame, light, subject, profile)
+        title = ("Simulated: " if frame.simulated else "") + (str(frame.value("OBJECT") or "frame"))
+        save(
+            figure,
+            path,
+            format=file_format,
+            title=drawable(title, longest=200),
+            description=caption,
+            overwrite=overwrite,
+        )
+    return caption
+
+
+def _subject(
+    frame: Frame,
+    light: Light,
+    setup: Setup | None,
+    *,
+    pair: str | int | None,
+    measurement: PairMeasurement | None,
+) -> Subject:
+    """The pair that is measured, or the frame's brightest object."""
+    if measurement is None and (pair is not None or has_pairs(frame)):
+        from simimg.resolving.measure import measure
+
+        measurement = choose_pair(measure(frame), pair)
+    fwhm = None if setup is None else setup.psf_fwhm(0.0)
+    if measurement is not None:
+        return pair_subject(frame, measurement, fwhm=fwhm)
+    return brightest_subject(frame, light, fwhm=fwhm)
+
+
+def draw_figure(frame: Frame, light: Light, subject: Subject, profile: Profile) -> Any:
+    """The figure as a matplotlib object; to be called within `simimg.show.canvas.look`."""
+    from matplotlib.backends.backend_agg import FigureCanvasAgg
+    from matplotlib.figure import Figure
+
+    figure = Figure(figsize=(_WIDTH * MILLIMETRE, _HEIGHT * MILLIMETRE))
+    FigureCanvasAgg(figure)
+
+    def panel(left: float, bottom: float, width: float, height: float) -> Any:
+        place = (left / _WIDTH, bottom / _HEIGHT, width / _WIDTH, height / _HEIGHT)
+        return figure.add_axes(place)
+
+    left_title, right_title = panel_titles(frame, subject)
+    plate = panel(*_PANEL)
+    plate.set_anchor("W")
+    draw_frame(plate, light, subject, profile, simulated=frame.simulated)
+    plate.set_title(left_title, loc="left", parse_math=False)
+    left, bottom, width, height = _PROFILE
+    if profile.residuals is None:
+        upper, below = panel(left, bottom, width, height), None
+    else:
+        below = panel(left, bottom, width, _RESIDUAL)
+        gap = 1.5
+        upper = panel(left, bottom + _RESIDUAL + gap, width, height - _RESIDUAL - gap)
+    draw_profile(upper, below, profile, subject, unit=light.unit)
+    upper.set_title(right_title, loc="left", parse_math=False)
+    return figure

@@ -1,0 +1,221 @@
+"""The left panel of a figure: the frame itself, with scale, directions and a colour bar."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from math import cos, sin
+from typing import Any
+
+import numpy as np
+
+from simimg.arrays import AnyArray
+from simimg.show.canvas import grouped
+from simimg.show.compass import Compass, round_length, shown_length
+from simimg.show.profile import Profile
+from simimg.show.signal import Light
+from simimg.show.stretch import choose_stretch
+from simimg.show.subject import Subject
+
+COLOUR_MAP = "magma"  # its lightness rises evenly: it survives grey print and colour blindness
+_INK = "white"
+_MOST_SHOWN = 1200  # pixels in the side of a drawn image; more are averaged in blocks
+_ARROW = 0.11  # of the panel's shorter side
+
+
+@dataclass(frozen=True)
+class Plate:
+    """The panel in numbers: what a reader measures on it.
+
+    Attributes
+    ----------
+    bar_pixels, bar_arcsec : float
+        Length of the scale bar; the angle is NaN where the frame has no scale.
+    north, east : (float, float)
+        Directions of the arrows (dx, dy), unit length; those of the compass.
+    """
+
+    bar_pixels: float
+    bar_arcsec: float
+    north: tuple[float, float]
+    east: tuple[float, float]
+
+
+def draw_frame(
+    axes: Any, light: Light, subject: Subject, profile: Profile, *, simulated: bool
+) -> Plate:
+    """Draw the window of a frame about a subject.
+
+    Parameters
+    ----------
+    axes : matplotlib.axes.Axes
+    light : Light
+    subject : Subject
+    profile : Profile
+        Its strip is marked.
+    simulated : bool
+        Whether the panel says so.
+    """
+    from matplotlib.colors import AsinhNorm
+
+    left, right, bottom, top = subject.window
+    values = light.values[bottom:top, left:right]
+    shown = _averaged(values)
+    stretch = choose_stretch(shown, noise=light.noise, field=subject.kind in ("star", "source"))
+    picture = axes.imshow(
+        shown,
+        origin="lower",
+        extent=(left - 0.5, right - 0.5, bottom - 0.5, top - 0.5),
+        cmap=COLOUR_MAP,
+        norm=AsinhNorm(stretch.softening, vmin=stretch.low, vmax=stretch.high),
+        interpolation="nearest",
+        gid="frame",
+    )
+    axes.set_facecolor("0.5")
+    axes.set_xlabel("x (pixel)")
+    axes.set_ylabel("y (pixel)")
+    axes.locator_params(nbins=5, integer=True)
+    _colour_bar(axes, picture, stretch.ticks(), light.unit)
+    if simulated:
+        axes.text(0.03, 0.97, "simulated", va="top", transform=axes.transAxes, gid="simulated")
+        _inked(axes.texts[-1])
+    _mark_strip(axes, subject, profile)
+    if profile.fit is not None:
+        _mark_stars(axes, profile.fit.places)
+    plate = _scale_bar(axes, subject.compass, right - left, top - bottom, subject.window)
+    _arrows(axes, subject.compass, subject.window)
+    axes.set_xlim(left - 0.5, right - 0.5)
+    axes.set_ylim(bottom - 0.5, top - 0.5)
+    return plate
+
+
+def _averaged(values: AnyArray) -> AnyArray:
+    """The image, or means over square blocks where it has more pixels than a page can show."""
+    block = -(-max(values.shape) // _MOST_SHOWN)
+    if block == 1:
+        return values
+    rows, columns = (max(side // block, 1) * block for side in values.shape)
+    if min(values.shape) < block:
+        return values
+    blocks = values[:rows, :columns].reshape(rows // block, block, columns // block, block)
+    return np.asarray(blocks.mean(axis=(1, 3)))
+
+
+def _colour_bar(axes: Any, picture: Any, ticks: list[float], unit: str) -> None:
+    bar_axes = axes.inset_axes((1.03, 0.0, 0.045, 1.0))
+    bar = axes.figure.colorbar(picture, cax=bar_axes)
+    bar.set_ticks(ticks, labels=[grouped(tick) for tick in ticks])
+    bar.ax.minorticks_off()
+    bar.set_label(f"{unit}s per pixel above background" if unit == "electron" else "adu per pixel")
+    bar.outline.set_linewidth(0.6)
+
+
+def _inked(artist: Any) -> None:
+    """White on a dark rim: legible on any shade."""
+    from matplotlib.patheffects import Normal, withStroke
+
+    artist.set_color(_INK)
+    rim = withStroke(linewidth=1.6, foreground="black")
+    artist.set_path_effects([rim] if hasattr(artist, "get_text") else [rim, Normal()])
+
+
+def _mark_strip(axes: Any, subject: Subject, profile: Profile) -> None:
+    """A short line where the strip enters and leaves the picture, clear of the subject itself."""
+    if profile.offsets.size < 2:
+        return
+    c, s = cos(subject.angle), sin(subject.angle)
+    first, last = float(profile.offsets[0]), float(profile.offsets[-1])
+    length = 0.16 * (last - first)
+    for near, far in ((first, first + length), (last - length, last)):
+        (line,) = axes.plot(
+            [subject.x + near * c, subject.x + far * c],
+            [subject.y + near * s, subject.y + far * s],
+            linewidth=0.8,
+            gid="strip",
+        )
+        _inked(line)
+
+
+def _mark_stars(axes: Any, places: AnyArray) -> None:
+    """Small crosses at the fitted stars."""
+    from matplotlib.patheffects import Normal, withStroke
+
+    axes.plot(
+        places[:, 0],
+        places[:, 1],
+        linestyle="none",
+        marker="+",
+        markersize=4.0,
+        markeredgewidth=0.8,
+        color="black",
+        path_effects=[withStroke(linewidth=1.8, foreground="white"), Normal()],
+        gid="fitted stars",
+    )
+
+
+def _scale_bar(
+    axes: Any, compass: Compass, columns: int, rows: int, window: tuple[int, int, int, int]
+) -> Plate:
+    """A bar of round length in the lower left corner."""
+    left, _, bottom, _ = window
+    longest = 0.33 * min(columns, rows)
+    if compass.scale is None:
+        arcsec, pixels = float("nan"), round_length(max(longest, 1.0))
+        words = f"{pixels:.6g} pixels"
+    else:
+        arcsec = round_length(longest * compass.scale)
+        pixels = arcsec / compass.scale
+        words = shown_length(arcsec)
+    x, y = left - 0.5 + 0.05 * columns, bottom - 0.5 + 0.05 * rows
+    (bar,) = axes.plot(
+        [x, x + pixels], [y, y], linewidth=1.4, solid_capstyle="butt", gid="scale bar"
+    )
+    _inked(bar)
+    _inked(
+        axes.annotate(
+            words,
+            (x + 0.5 * pixels, y),
+            (0, 3),
+            textcoords="offset points",
+            ha="center",
+            va="bottom",
+        )
+    )
+    return Plate(pixels, arcsec, compass.north, compass.east)
+
+
+def _arrows(axes: Any, compass: Compass, window: tuple[int, int, int, int]) -> None:
+    """North and east in the upper right corner; none where the frame does not know them."""
+    if not compass.known:
+        return
+    left, right, bottom, top = window
+    size = min(right - left, top - bottom)
+    length = _ARROW * size
+    # Arrows and letters keep to a box in the corner, whichever way they point.
+    tips = np.array([(0.0, 0.0), compass.north, compass.east]) * 1.45 * length
+    x = right - 0.5 - 0.05 * size - tips[:, 0].max()
+    y = top - 0.5 - 0.05 * size - tips[:, 1].max()
+    for name, (dx, dy) in (("N", compass.north), ("E", compass.east)):
+        arrow = axes.annotate(
+            "",
+            (x + dx * length, y + dy * length),
+            (x, y),
+            arrowprops={
+                "arrowstyle": "-|>,head_width=0.16,head_length=0.32",
+                "shrinkA": 0.0,
+                "shrinkB": 0.0,
+                "linewidth": 0.9,
+                "color": _INK,
+            },
+            gid=name,
+        )
+        _rimmed(arrow.arrow_patch)
+        letter = axes.text(
+            x + dx * 1.35 * length, y + dy * 1.35 * length, name, ha="center", va="center"
+        )
+        _inked(letter)
+
+
+def _rimmed(patch: Any) -> None:
+    from matplotlib.patheffects import Normal, withStroke
+
+    patch.set_path_effects([withStroke(linewidth=2.0, foreground="black"), Normal()])
