@@ -63,11 +63,13 @@ def command(
 
 def _measured(path: str, near: Sequence[tuple[float, float]]) -> dict[str, Any]:
     """A frame's answer, for printing and for JSON."""
-    from simimg.resolving.measure import measure_all
-
     from simimg.frame import Frame
 
+    # Nothing slow is loaded for a frame that cannot be read.
     frame = Frame.read(path)
+
+    from simimg.resolving.measure import measure_all
+
     pairs = measure_all(frame, near=list(near) or None)
     return {
         "frame": path,

@@ -165,3 +165,25 @@ class TestAllOrNothing:
         assert result.code == 1
         assert "frame.fits: could not be written: No space left on device" in result.err
         assert files() == [scene]
+
+
+class TestPreview:
+    def test_a_picture_beside_the_frame(self, run, scene, files):
+        result = run("expose", scene, "-o", "frame.fits", "--preview", "frame.png")
+        assert result.code == 0
+        assert files() == ["frame.fits", "frame.png", scene]
+        assert "preview frame.png" in result.out
+
+    def test_one_for_each_exposure(self, run, scene, files):
+        arguments = ["-o", "f.fits", "--preview", "p.png", "--set", "exposure.count=2"]
+        assert run("expose", scene, *arguments).code == 0
+        assert files() == ["f-000.fits", "f-001.fits", "p-000.png", "p-001.png", scene]
+
+    def test_a_picture_that_exists(self, run, scene, folder, files):
+        (folder / "frame.png").write_bytes(b"precious")
+        arguments = ["expose", scene, "-o", "frame.fits", "--preview", "frame.png"]
+        assert run(*arguments).code == 2
+        assert files() == ["frame.png", scene]
+        assert (folder / "frame.png").read_bytes() == b"precious"
+        assert run(*arguments, "--overwrite").code == 0
+        assert (folder / "frame.png").read_bytes().startswith(b"\x89PNG")

@@ -1,0 +1,107 @@
+"""limits: every figure that is promised, as text and as JSON."""
+
+import math
+
+import pytest
+
+KEYS = {
+    "version",
+    "scene_id",
+    "simulated",
+    "warnings",
+    "wavelength_nm",
+    "pixel_scale_arcsec",
+    "r0_m",
+    "diffraction",
+    "delivered",
+    "dawes_arcsec",
+    "strehl",
+    "ee50_arcsec",
+    "ee80_arcsec",
+    "nyquist_pixel_arcsec",
+    "objects",
+}
+OBJECT_KEYS = {"label", "kind", "electrons", "peak_electrons", "saturated", "snr", "snr_fit"}
+PAIR_KEYS = {"separation_arcsec", "position_angle_deg", "diffraction", "delivered"}
+RESOLUTION_KEYS = {"fwhm_arcsec", "rayleigh_arcsec", "sparrow_arcsec"}
+
+
+def test_json_holds_what_is_promised(run, scene):
+    result = run("limits", scene, "--json")
+    assert (result.code, result.err) == (0, "")
+    found = result.json
+    assert set(found) >= KEYS
+    for name in ("diffraction", "delivered"):
+        assert set(found[name]) >= RESOLUTION_KEYS
+    by_label = {one["label"]: one for one in found["objects"]}
+    assert set(by_label) == {"SR-1", "far off"}
+    assert set(by_label["far off"]) >= OBJECT_KEYS
+    pair = by_label["SR-1"]
+    assert set(pair) >= OBJECT_KEYS | PAIR_KEYS
+    assert set(pair["delivered"]) >= RESOLUTION_KEYS
+    assert len(pair["electrons"]) == 2
+    assert pair["electrons"][0] > pair["electrons"][1]
+
+
+def test_figures_that_a_hand_can_check(run, scene):
+    found = run("limits", scene, "--json").json
+    # lambda/2D in arcsec, and 116 mm / D.
+    half = found["wavelength_nm"] * 1e-9 / (2 * 0.5) * math.degrees(1) * 3600
+    assert found["nyquist_pixel_arcsec"] == pytest.approx(half, rel=1e-9)
+    assert found["dawes_arcsec"] == pytest.approx(116 / 500, rel=1e-12)
+    # First dark ring at an obstruction of 0.3: 1.1145 lambda/D, published to four digits.
+    assert found["diffraction"]["rayleigh_arcsec"] == pytest.approx(1.1145 * 2 * half, rel=1e-4)
+    assert found["delivered"]["fwhm_arcsec"] > found["diffraction"]["fwhm_arcsec"]
+
+
+def test_above_the_air_and_without_a_pixel(run, scene):
+    arguments = ["--without", "air", "--without", "camera", "--without", "sky", "--json"]
+    found = run("limits", scene, *arguments).json
+    assert found["r0_m"] is None
+    assert found["pixel_scale_arcsec"] is None
+    assert found["strehl"] == pytest.approx(1)
+    assert found["delivered"]["fwhm_arcsec"] == pytest.approx(found["diffraction"]["fwhm_arcsec"])
+
+
+def test_as_text(run, scene):
+    result = run("limits", scene)
+    assert result.code == 0
+    for word in ("Rayleigh", "Sparrow", "Dawes", "Strehl", "Nyquist", "SR-1", "2.400", "62 deg"):
+        assert word in result.out
+    assert "confirmed with the observatory" in result.err
+
+
+def test_direction(run, scene):
+    vanes = "telescope.vanes={count=2, width='60 mm', angle='0 deg'}"
+    arguments = ["limits", scene, "--set", vanes, "--without", "air", "--json"]
+    found = [
+        run(*arguments, "--position-angle", angle).json["diffraction"]["fwhm_arcsec"]
+        for angle in ("0", "90", "180 deg")
+    ]
+    # Two vanes broaden the pattern along one direction; it is the same the other way round.
+    assert abs(found[0] - found[1]) > 0.005 * found[0]
+    assert found[2] == pytest.approx(found[0], rel=1e-6)
+
+
+def test_stars_of_a_catalogue(run, scene, folder):
+    (folder / "stars.csv").write_text("dx,dy,m,who\n1,2,14,A\n3,-2,15,B\n")
+    columns = '{ east = "dx", north = "dy", magnitude = "m", label = "who" }'
+    units = '{ east = "arcsec", north = "arcsec" }'
+    more = f'\n[[catalogue]]\nfile = "stars.csv"\ncolumns = {columns}\nunits = {units}\n'
+    (folder / scene).write_text((folder / scene).read_text() + more)
+    assert len(run("limits", scene, "--json").json["objects"]) == 2
+    labels = [one["label"] for one in run("limits", scene, "--json", "--all").json["objects"]]
+    assert sorted(labels) == ["A", "B", "SR-1", "far off"]
+
+
+def test_of_a_frame(run, scene):
+    run("expose", scene, "-o", "frame.fits", "--quiet")
+    assert run("limits", "frame.fits", "--json").json == run("limits", scene, "--json").json
+
+
+def test_quiet_holds_back_the_notes_alone(run, scene):
+    arguments = ["limits", scene, "--set", "camera.bias=0 adu"]
+    loud, still = run(*arguments), run(*arguments, "--quiet")
+    assert loud.out == still.out
+    assert "warning: camera.bias" in loud.err
+    assert still.err == ""
