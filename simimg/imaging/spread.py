@@ -18,6 +18,8 @@ from simimg.imaging.sources import PlacedShape
 
 # Stars a chunk: their 64 cells each stay in the processor's cache.
 _CHUNK = 8192
+# Modulus of the highest frequency of a grid, at the corner of the square (cycles a cell).
+HIGHEST = 0.7072
 
 
 def spread_points(grid: AnyArray, x: FloatArray, y: FloatArray, electrons: FloatArray) -> None:
@@ -96,7 +98,7 @@ def shape_stamp(
         spectrum *= np.exp(-2j * np.pi * k_y * (y - bottom))[:, None]
         spectrum *= kernel_transform(k_y)[:, None]
         return placed.electrons * scipy.fft.irfft2(spectrum, s=(n, n)), left, bottom
-    dx, dy, weight = shape.points(0.5 / cell)
+    dx, dy, weight = shape.points(HIGHEST / cell)
     stamp = np.zeros((n, n))
     spread_points(stamp, x - left + dx / cell, y - bottom + dy / cell, placed.electrons * weight)
     side = getattr(shape, "pixel_side", 0.0) / cell
