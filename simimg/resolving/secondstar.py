@@ -84,12 +84,12 @@ class _Whitened:
         roots, residuals = [], []
         nuisance = np.zeros((likelihood.size, sum(c.electrons.size for c in self.cutouts)))
         begin = 0
-        for index, cutout in enumerate(self.cutouts):
+        for index in range(len(self.cutouts)):
             expectation, derivatives = likelihood.jacobian(vector, index)
-            expectation = np.maximum(expectation, 1e-3 * max(cutout.variance, 1.0))
-            root = cutout.used.ravel() / np.sqrt(expectation)
+            _, slope, weight = likelihood.noise[index].judge(expectation)
+            root = np.sqrt(weight)
             roots.append(root)
-            residuals.append(((cutout.electrons + cutout.variance).ravel() - expectation) * root)
+            residuals.append(-slope / np.where(root > 0.0, root, 1.0))
             span = slice(begin, begin + root.size)
             stars = 3 * likelihood.stars
             nuisance[:stars, span] = derivatives[:stars] * root

@@ -1,16 +1,9 @@
 """Maximum-likelihood fits of point sources to cutouts of a frame, under the frame's own noise.
 
-A pixel holds a Poisson number of electrons (objects, sky and dark signal together) plus Gaussian
-read noise and the rounding of the converter. Adding the variance of the Gaussian part to both the
-datum and the expectation makes a quantity whose mean and variance agree, as a Poisson variable's
-do; the fit maximises the Poisson likelihood of that shifted quantity (Snyder, Helstrom, Lanterman,
-Faisal & White 1995, J. Opt. Soc. Am. A 12, 272). Its score has zero mean at any light level, so it
-stays unbiased down to a fraction of an electron a pixel, where weights taken from the data would
-not.
-
-The maximum is sought by Fisher scoring (the expected information takes the place of the Hessian)
-with Levenberg-Marquardt damping. Any number of stars, one free constant background for each
-cutout, any number of cutouts: several exposures of the same stars are fitted together.
+The likelihood of a pixel is that of `simimg.resolving.pixelnoise`; its maximum is sought by Fisher
+scoring (the expected information takes the place of the Hessian) with Levenberg-Marquardt damping.
+Any number of stars, one free constant background for each cutout, any number of cutouts: several
+exposures of the same stars are fitted together.
 
 Electrons and detector pixels; places are counted from 0 at the centre of the frame's first pixel.
 """
@@ -21,13 +14,14 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from scipy import ndimage
 
-from simimg.arrays import FloatArray, frozen
+from simimg.arrays import AnyArray, FloatArray, frozen
+from simimg.resolving.pixelnoise import PixelNoise
 from simimg.resolving.psfmodel import PsfModel
 
 _MOST_STEPS = 60
 _CONVERGED = 1e-5  # deviance still to be won: far below the unit that an error stands for
-_LEAST_EXPECTATION = 1e-3  # of the Gaussian variance (or of one electron): keeps the logarithm real
 
 
 @dataclass(frozen=True, eq=False)
@@ -37,9 +31,9 @@ class Cutout:
     Attributes
     ----------
     electrons : ndarray, shape (rows, columns)
-        Electrons above the bias. Values where `used` is False are ignored.
-    used : ndarray of bool, shape (rows, columns)
-        False for saturated, bad and missing pixels.
+        Electrons above the bias; 0 where `used` is 0.
+    used : ndarray, shape (rows, columns)
+        1 for pixels that count, 0 for saturated, bad and missing ones.
     variance : float
         Variance of the Gaussian part: read noise squared and the rounding, electrons squared.
     x0, y0 : float
@@ -61,13 +55,13 @@ class Cutout:
     @classmethod
     def of(
         cls,
-        electrons: FloatArray,
+        electrons: AnyArray,
         *,
         variance: float,
         psf: PsfModel,
         x0: float = 0.0,
         y0: float = 0.0,
-        used: FloatArray | None = None,
+        used: AnyArray | None = None,
         known: FloatArray | None = None,
     ) -> Cutout:
         """Make a cutout; pixels that are not finite are left out.
@@ -113,7 +107,7 @@ class StarFit:
         Inverse Fisher information, in the order x1, y1, electrons1, x2, ..., backgrounds; infinite
         where the information matrix is singular.
     deviance : float
-        Twice the negative log-likelihood, less that of a model equal to the data.
+        Minus twice the log-likelihood, up to a constant that the data fix.
     pixels : int
         Pixels used.
     converged : bool
@@ -153,7 +147,7 @@ class Expansion:
 
 
 class Likelihood:
-    """The shifted-Poisson likelihood of ``stars`` point sources in the cutouts.
+    """The likelihood of ``stars`` point sources in the cutouts.
 
     Parameters
     ----------
@@ -166,33 +160,18 @@ class Likelihood:
         self.stars = stars
         self.size = 3 * stars + len(self.cutouts)
         self.pixels = int(sum(cutout.used.sum() for cutout in self.cutouts))
-        self._shifted = [(c.electrons + c.variance).ravel() for c in self.cutouts]
-        self._used = [c.used.ravel() for c in self.cutouts]
-        self._known = [(c.known + c.variance).ravel() for c in self.cutouts]
-        self._least = [_LEAST_EXPECTATION * max(c.variance, 1.0) for c in self.cutouts]
-        # y log y - y of each datum, so that the deviance is a sum of small terms.
-        self._own = [
-            np.where(y > 0, y * np.log(np.where(y > 0, y, 1.0)), 0.0) - y for y in self._shifted
+        self.noise = [
+            PixelNoise(
+                cutout.electrons.ravel(),
+                cutout.used.ravel(),
+                cutout.variance,
+                ndimage.uniform_filter(cutout.electrons, 3).ravel(),
+            )
+            for cutout in self.cutouts
         ]
 
-    def expectation(self, vector: FloatArray, index: int = 0) -> FloatArray:
-        """Return the expected electrons of a cutout, the Gaussian variance not added."""
-        cutout = self.cutouts[index]
-        rows, columns = cutout.electrons.shape
-        total = cutout.known + vector[3 * self.stars + index]
-        for star in range(self.stars):
-            x, y, electrons = vector[3 * star : 3 * star + 3]
-            total = (
-                total
-                + electrons
-                * cutout.psf.evaluate(
-                    x - cutout.x0, y - cutout.y0, columns=columns, rows=rows, order=0
-                )[0]
-            )
-        return total
-
     def jacobian(self, vector: FloatArray, index: int) -> tuple[FloatArray, FloatArray]:
-        """Return the shifted expectation of a cutout and its derivatives.
+        """Return the expectation of a cutout and its derivatives.
 
         Returns
         -------
@@ -204,7 +183,7 @@ class Likelihood:
         rows, columns = cutout.electrons.shape
         derivatives = np.empty((3 * self.stars + 1, rows * columns))
         derivatives[-1] = 1.0
-        expectation = self._known[index] + vector[3 * self.stars + index]
+        expectation = cutout.known.ravel() + vector[3 * self.stars + index]
         for star in range(self.stars):
             x, y, electrons = vector[3 * star : 3 * star + 3]
             planes = cutout.psf.evaluate(
@@ -220,18 +199,13 @@ class Likelihood:
         deviance = 0.0
         slope = np.zeros(self.size)
         information = np.zeros((self.size, self.size))
-        for index, shifted in enumerate(self._shifted):
+        for index, noise in enumerate(self.noise):
             expectation, derivatives = self.jacobian(vector, index)
-            np.maximum(expectation, self._least[index], out=expectation)
-            used = self._used[index]
-            terms = self._own[index] + expectation
-            terms -= shifted * np.log(expectation)
-            deviance += 2.0 * float(used @ terms)
-            weight = used / expectation
-            weighted = derivatives * weight
-            chosen = np.r_[: 3 * self.stars, 3 * self.stars + index]
-            slope[chosen] += weighted @ (expectation - shifted)
-            information[np.ix_(chosen, chosen)] += weighted @ derivatives.T
+            part, by_pixel, weight = noise.judge(expectation)
+            deviance += part
+            chosen = [*range(3 * self.stars), 3 * self.stars + index]
+            slope[chosen] += derivatives @ by_pixel
+            information[np.ix_(chosen, chosen)] += (derivatives * weight) @ derivatives.T
         return Expansion(deviance, slope, information)
 
 
@@ -267,7 +241,7 @@ def damped_step(expansion: Expansion, damping: float) -> tuple[FloatArray, float
 
 
 def next_damping(damping: float, fall: float, promised: float) -> float:
-    """Return the damping after a step whose deviance fell by ``fall`` where ``promised`` was due."""
+    """Return the damping after a step that lowered the deviance by ``fall``, not ``promised``."""
     if fall < 0.0:
         return max(8.0 * damping, 1e-3)
     if fall > 0.7 * promised:
@@ -374,8 +348,9 @@ def _linear_start(
         right = right - normal[:, fixed] @ result[fixed]
     solution = np.linalg.lstsq(normal[np.ix_(wanted, wanted)], right[wanted], rcond=1e-12)[0]
     result[wanted] = solution
-    fluxes = result[: 3 * stars].reshape(-1, 3)[:, 2]
-    np.maximum(fluxes, max(1.0, 1e-3 * float(fluxes.max(initial=0.0))), out=fluxes)
+    fluxes: FloatArray = result[: 3 * stars].reshape(-1, 3)[:, 2]
+    least = max(1.0, 1e-3 * float(fluxes.max(initial=0.0)))
+    fluxes[:] = np.maximum(fluxes, least)
     return result
 
 
