@@ -10,6 +10,7 @@ import io
 import os
 from collections.abc import Iterator
 from contextlib import contextmanager
+from math import inf
 from pathlib import Path
 from typing import Any
 
@@ -118,11 +119,12 @@ def save(
         handle.write(held.getvalue())
 
 
-def drawable(text: str, *, longest: int = 60) -> str:
+def drawable(text: str, *, longest: int = 60, ems: float = inf) -> str:
     """Text from a stranger's file as it may stand in a figure.
 
-    Controls become blanks, what the font cannot draw a question mark; cut at `longest`. To be drawn
-    with ``parse_math=False``, so that no sign in it is taken for a formula.
+    Controls become blanks, what the font cannot draw a question mark; cut at `longest` characters
+    and at a width of `ems` font sizes. To be drawn with ``parse_math=False``, so that no sign in it
+    is taken for a formula.
     """
     from matplotlib.font_manager import FontProperties, findfont, get_font
 
@@ -130,7 +132,13 @@ def drawable(text: str, *, longest: int = 60) -> str:
     letters = [c if c.isprintable() else " " for c in text]
     known = "".join(c if font.get_char_index(ord(c)) else "?" for c in letters)
     known = " ".join(known.split())
-    return known if len(known) <= longest else known[: longest - 1] + "\N{HORIZONTAL ELLIPSIS}"
+    font.set_size(10.0, 72)
+    widths = [font.load_char(ord(c)).linearHoriAdvance / 65536.0 / 10.0 for c in known]
+    if len(known) <= longest and sum(widths) <= ems:
+        return known
+    while known and (len(known) > longest - 1 or sum(widths[: len(known)]) > ems - 1.0):
+        known = known[:-1]
+    return known + "\N{HORIZONTAL ELLIPSIS}"
 
 
 def grouped(value: float) -> str:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from math import degrees, isfinite
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING
 
 from simimg.assembly.report import SIMULATION_NOTE, cautions
 from simimg.frame import Frame
@@ -14,23 +14,23 @@ from simimg.show.signal import header_number, header_text
 from simimg.show.subject import Subject
 
 if TYPE_CHECKING:
-    from simimg.resolving.records import PairMeasurement
+    from simimg.resolving.records import CriterionVerdict, PairMeasurement
 
 _ARCSEC, _DEG, _PLUS_MINUS = "\N{DOUBLE PRIME}", "\N{DEGREE SIGN}", "\N{PLUS-MINUS SIGN}"
 _LEAST_CHANCE = 1e-6
-_NAMES = {"star": "the star", "source": "the brightest pixel"}
+_THROUGH = {"pair": "the pair", "source": "the brightest pixel"}
 
 
 def panel_titles(frame: Frame, subject: Subject) -> tuple[str, str]:
     """Titles of the two panels: the frame's set-up in brief, and what the profile is of."""
     time = header_number(frame, "EXPTIME")
     parts = [
-        drawable(header_text(frame, "TELESCOP"), longest=24),
-        drawable(header_text(frame, "FILTER"), longest=14),
+        drawable(header_text(frame, "TELESCOP"), ems=12.0),
+        drawable(header_text(frame, "FILTER"), ems=6.0),
         "" if time is None else f"{time:.6g} s",
     ]
     left = ", ".join(part for part in parts if part)
-    label = drawable(subject.label, longest=24)
+    label = drawable(subject.label, ems=10.0)
     measured = subject.measurement
     if measured is None or subject.second is None:
         return left, label
@@ -60,7 +60,7 @@ def figure_caption(frame: Frame, subject: Subject, profile: Profile, setup: Setu
         *_panel_sentences(frame, subject, profile),
     ]
     if subject.measurement is not None:
-        sentences += _verdict_sentences(subject.measurement)
+        sentences += _verdict_sentences(subject.measurement, drawable(subject.label))
     if setup is not None:
         sentences += cautions(setup.scene)
     elif frame.simulated:
@@ -118,11 +118,7 @@ def _panel_sentences(frame: Frame, subject: Subject, profile: Profile) -> list[s
         if subject.position_angle is None
         else f"along position angle {subject.position_angle:.1f}{_DEG}"
     )
-    through = _NAMES.get(subject.kind, drawable(subject.label))
-    if subject.kind == "star":
-        through = drawable(subject.label)
-    if subject.kind == "pair":
-        through = "the pair"
+    through = _THROUGH.get(subject.kind) or drawable(subject.label)
     right = f"Right: mean over a strip {width} wide through {through} {along}, with 1-sigma errors"
     if profile.fit is not None:
         stars = "two stars" if len(profile.fit.places) > 1 else "one star"
@@ -135,31 +131,35 @@ def _panel_sentences(frame: Frame, subject: Subject, profile: Profile) -> list[s
     return [left, right + "."]
 
 
-def _verdict_sentences(measured: PairMeasurement) -> list[str]:
-    label = drawable(str(measured.label))
+def _verdict_sentences(measured: PairMeasurement, name: str) -> list[str]:
+    chance = f"chance of a single star {_chance(measured.probability_single)}"
+    if not isfinite(measured.separation_arcsec):
+        return [f"{name}: no second star found, {chance}."]
     separation = with_error(measured.separation_arcsec, measured.separation_error_arcsec)
     angle = with_error(measured.position_angle_deg, measured.position_angle_error_deg)
     difference = with_error(measured.magnitude_difference, measured.magnitude_difference_error)
-    chance = measured.probability_single
+    turned = " or half a turn from it" if measured.ambiguous_180 else ""
     found = (
-        f"{label}: separation {separation}{_ARCSEC}, position angle {angle}{_DEG}, "
-        f"magnitude difference {difference}, chance of a single star {_chance(chance)}."
+        f"{name}: separation {separation}{_ARCSEC}, position angle {angle}{_DEG}{turned}, "
+        f"magnitude difference {difference}, {chance}."
     )
-    if not isfinite(measured.separation_arcsec):
-        found = f"{label}: no second star found, chance of a single star {_chance(chance)}."
     criteria = [_criterion("Rayleigh", measured.rayleigh), _criterion("Sparrow", measured.sparrow)]
-    sentence = "; ".join(criteria) + "."
-    if measured.elongated:
-        sentence += " Two stars are certain here, but they are not resolved."
-    return [found, sentence]
+    if not measured.advice:
+        return [found, "; ".join(criteria) + "."]
+    return [found, "; ".join(criteria) + ".", measured.advice]
 
 
-def _criterion(name: str, outcome: Any) -> str:
-    limit = f"{outcome.limit_arcsec:.3g}{_ARCSEC}"
-    return f"{name} (limit {limit}): {outcome.verdict}, probability {outcome.probability:.2f}"
+def _criterion(name: str, outcome: CriterionVerdict) -> str:
+    limit = f"{outcome.limit_arcsec:.3g}{_ARCSEC}" if isfinite(outcome.limit_arcsec) else "none"
+    words = f"{name} (limit {limit}): {outcome.verdict}"
+    if not isfinite(outcome.probability):
+        return words
+    return f"{words}, probability {outcome.probability:.2f}"
 
 
 def _chance(value: float) -> str:
+    if not isfinite(value):
+        return "unknown"
     return "below 1e-6" if value < _LEAST_CHANCE else f"{value:.2g}"
 
 

@@ -69,9 +69,7 @@ def write_figure(
         The system refused; no part of the file is left behind.
     """
     file_format = figure_format(path, overwrite=overwrite)
-    setup, light = frame_setup(frame), frame_light(frame)
-    subject = _subject(frame, light, setup, pair=pair, measurement=measurement)
-    profile = subject_profile(frame, light, subject, setup)
+    light, subject, profile, setup = figure_parts(frame, pair=pair, measurement=measurement)
     caption = figure_caption(frame, subject, profile, setup)
     with look():
         figure = draw_figure(frame, light, subject, profile)
@@ -87,23 +85,24 @@ def write_figure(
     return caption
 
 
-def _subject(
+def figure_parts(
     frame: Frame,
-    light: Light,
-    setup: Setup | None,
     *,
-    pair: str | int | None,
-    measurement: PairMeasurement | None,
-) -> Subject:
-    """The pair that is measured, or the frame's brightest object."""
+    pair: str | int | None = None,
+    measurement: PairMeasurement | None = None,
+) -> tuple[Light, Subject, Profile, Setup | None]:
+    """What a figure shows, worked out: arguments as for `write_figure`."""
+    setup, light = frame_setup(frame), frame_light(frame)
     if measurement is None and (pair is not None or has_pairs(frame)):
         from simimg.resolving.measure import measure
 
         measurement = choose_pair(measure(frame), pair)
     fwhm = None if setup is None else setup.psf_fwhm(0.0)
     if measurement is not None:
-        return pair_subject(frame, measurement, fwhm=fwhm)
-    return brightest_subject(frame, light, fwhm=fwhm)
+        subject = pair_subject(frame, measurement, fwhm=fwhm)
+    else:
+        subject = brightest_subject(frame, light, fwhm=fwhm)
+    return light, subject, subject_profile(frame, light, subject, setup), setup
 
 
 def draw_figure(frame: Frame, light: Light, subject: Subject, profile: Profile) -> Any:

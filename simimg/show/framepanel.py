@@ -125,12 +125,13 @@ def _mark_strip(axes: Any, subject: Subject, profile: Profile) -> None:
     c, s = cos(subject.angle), sin(subject.angle)
     first, last = float(profile.offsets[0]), float(profile.offsets[-1])
     length = 0.16 * (last - first)
-    for near, far in ((first, first + length), (last - length, last)):
+    ends = ((first, first + length), (last - length, last))
+    for number, (near, far) in enumerate(ends, start=1):
         (line,) = axes.plot(
             [subject.x + near * c, subject.x + far * c],
             [subject.y + near * s, subject.y + far * s],
             linewidth=0.8,
-            gid="strip",
+            gid=f"strip-{number}",
         )
         _inked(line)
 
@@ -148,7 +149,7 @@ def _mark_stars(axes: Any, places: AnyArray) -> None:
         markeredgewidth=0.8,
         color="black",
         path_effects=[withStroke(linewidth=1.8, foreground="white"), Normal()],
-        gid="fitted stars",
+        gid="fitted-stars",
     )
 
 
@@ -167,7 +168,7 @@ def _scale_bar(
         words = shown_length(arcsec)
     x, y = left - 0.5 + 0.05 * columns, bottom - 0.5 + 0.05 * rows
     (bar,) = axes.plot(
-        [x, x + pixels], [y, y], linewidth=1.4, solid_capstyle="butt", gid="scale bar"
+        [x, x + pixels], [y, y], linewidth=1.4, solid_capstyle="butt", gid="scale-bar"
     )
     _inked(bar)
     _inked(
@@ -206,7 +207,7 @@ def _arrows(axes: Any, compass: Compass, window: tuple[int, int, int, int]) -> N
                 "linewidth": 0.9,
                 "color": _INK,
             },
-            gid=name,
+            gid=f"arrow-{name}",
         )
         _rimmed(arrow.arrow_patch)
         letter = axes.text(

@@ -86,7 +86,7 @@ def preview_shades(frame: Frame) -> AnyArray:
     light = frame_light(frame)
     # A fraction of the pixels settles the stretch of a large frame, but for its brightest.
     step = max(1, light.values.size // 4_000_000)
-    sample = np.append(light.values.ravel()[::step], np.nanmax(light.values))
+    sample = np.append(light.values.ravel()[::step], np.fmax.reduce(light.values, axis=None))
     stretch = choose_stretch(sample, noise=light.noise, field=shows_field(frame))
     shades = np.rint(255.0 * stretch.shades(light.values)).astype(np.uint8)
     factor = max(1, _SMALL // max(shades.shape))

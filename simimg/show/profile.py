@@ -14,9 +14,11 @@ import numpy as np
 
 from simimg.arrays import AnyArray, FloatArray, frozen
 from simimg.frame import Frame
-from simimg.resolving.starfit import Cutout, StarFit, fit_stars
+from simimg.resolving.observation import observe
+from simimg.resolving.psfmodel import PsfModel
+from simimg.resolving.starfit import StarFit, fit_stars
 from simimg.show.setup import Setup, light_without_noise
-from simimg.show.signal import Light, header_number
+from simimg.show.signal import Light
 from simimg.show.strip import Strip, strip_along
 from simimg.show.subject import Subject
 
@@ -31,6 +33,11 @@ class Curve:
 
     name: str
     values: FloatArray
+
+    @property
+    def key(self) -> str:
+        """The name as one word."""
+        return "-".join(self.name.replace(",", "").split())
 
 
 @dataclass(frozen=True, eq=False)
@@ -142,63 +149,49 @@ def _models(
         return [], None
     left, right, bottom, top = box
     if subject.kind == "pair":
-        return _fitted(frame, light, subject, setup, box)
+        return _fitted(frame, light, subject, box)
     expected = light_without_noise(frame, setup)
     if expected is None:
         return [], None
     models = [("scene, without noise", expected[bottom:top, left:right] - light.background)]
     if subject.kind == "star" and frame.truth is not None:
-        psf = setup.psf_model(_farthest(box, [(subject.x, subject.y)]))
-        alone = psf.evaluate(
-            subject.x - left, subject.y - bottom, columns=right - left, rows=top - bottom, order=0
-        )[0]
         electrons = float(frame.truth["electrons"][subject.row])
-        models.append(("this star alone", electrons * alone))
+        place = (subject.x, subject.y)
+        models.append(("this star alone", _alone(observe(frame).psf, place, electrons, box)))
     return models, None
 
 
-def _farthest(box: tuple[int, int, int, int], stars: list[tuple[float, float]]) -> float:
-    """Greatest distance along x or y from a star to the edge of a box, and half a pixel more."""
+def _alone(
+    psf: PsfModel, place: tuple[float, float], electrons: float, box: tuple[int, int, int, int]
+) -> FloatArray:
+    """One star over a box."""
     left, right, bottom, top = box
-    sides = [(x - left, right - x, y - bottom, top - y) for x, y in stars]
-    return max(max(side) for side in sides) + 0.5
+    x, y = place[0] - left, place[1] - bottom
+    image = psf.evaluate(x, y, columns=right - left, rows=top - bottom, order=0)[0]
+    return np.asarray(electrons * image)
 
 
 def _fitted(
-    frame: Frame, light: Light, subject: Subject, setup: Setup, box: tuple[int, int, int, int]
+    frame: Frame, light: Light, subject: Subject, box: tuple[int, int, int, int]
 ) -> tuple[list[tuple[str, FloatArray]], StarFit | None]:
-    """The stars of a pair fitted to the pixels of a box."""
+    """The stars of a pair fitted to the pixels about them, over a box."""
     left, right, bottom, top = box
     if min(right - left, top - bottom) < _FEWEST:
         return [], None
-    electrons = light.values[bottom:top, left:right] + light.background
-    read_noise, gain = header_number(frame, "RDNOISE") or 0.0, header_number(frame, "GAIN") or 0.0
-    used = np.ones(electrons.shape, dtype=bool)
-    if frame.mask is not None:
-        used = frame.mask[bottom:top, left:right] == 0
     places = [(subject.x, subject.y)]
     if subject.second is not None:
         places.append(subject.second)
-    # The fit moves the stars a little: room for that.
-    psf = setup.psf_model(_farthest(box, places) + 2.0)
-    cutout = Cutout.of(
-        electrons,
-        variance=read_noise**2 + gain**2 / 12.0,
-        psf=psf,
-        x0=float(left),
-        y0=float(bottom),
-        used=used,
-    )
+    middle = np.mean(places, axis=0)
+    seen = observe(frame)
+    cutout = seen.cutout(float(middle[0]), float(middle[1]), 0.5 * max(right - left, top - bottom))
     fit = fit_stars([cutout], places=places)
     if not np.isfinite(fit.vector).all():
         return [], None
     stars = [
-        strength
-        * psf.evaluate(x - left, y - bottom, columns=right - left, rows=top - bottom, order=0)[0]
-        for (x, y), strength in zip(fit.places, fit.electrons, strict=True)
+        _alone(seen.psf, (float(x), float(y)), float(electrons), box)
+        for (x, y), electrons in zip(fit.places, fit.electrons, strict=True)
     ]
-    total = sum(stars, start=np.zeros(electrons.shape)) + fit.background[0] - light.background
+    total = sum(stars, start=np.zeros(stars[0].shape)) + fit.background[0] - light.background
     if len(stars) == 1:
         return [("one star", total)], fit
-    models = [("two stars", total), ("first star", stars[0]), ("second star", stars[1])]
-    return models, fit
+    return [("two stars", total), ("first star", stars[0]), ("second star", stars[1])], fit

@@ -41,7 +41,7 @@ def draw_profile(
         return
     scale = subject.compass.scale or 1.0
     for curve, style in zip(profile.curves, _STYLES, strict=False):
-        axes.plot(profile.fine * scale, curve.values, label=curve.name, gid=curve.name, **style)
+        axes.plot(profile.fine * scale, curve.values, label=curve.name, gid=curve.key, **style)
     offsets = profile.offsets * scale
     points = _points(offsets.size)
     axes.errorbar(offsets, profile.values, profile.errors, label="data", **points)
@@ -93,9 +93,14 @@ def _along(subject: Subject) -> str:
 
 def _mark_stars(axes: Any, profile: Profile, scale: float) -> None:
     """The places of the stars as ticks on the base line."""
-    for offset in profile.marks:
+    for number, offset in enumerate(profile.marks, start=1):
         axes.axvline(
-            offset * scale, color="0.55", linewidth=0.7, linestyle=":", zorder=0, gid="star"
+            offset * scale,
+            color="0.55",
+            linewidth=0.7,
+            linestyle=":",
+            zorder=0,
+            gid=f"star-{number}",
         )
 
 
@@ -115,7 +120,7 @@ def _mark_fwhm(axes: Any, profile: Profile, scale: float, *, known: bool) -> Non
         marker="|",
         markersize=5.0,
         transform=across,
-        gid="PSF FWHM",
+        gid="psf-fwhm",
     )
     words = f"{width:.3g}" + ("\N{DOUBLE PRIME}" if known else " pixels")
     axes.annotate(

@@ -1,4 +1,4 @@
-"""What a frame knows of its making: its scene, the PSF it was imaged with, the light without noise.
+"""What a frame knows of its making: its scene, the width of its PSF, its light without noise.
 
 All come from the scene that the frame carries. A frame that carries none, or one that cannot be
 read (a large file that it named is gone), has no models; it is shown all the same.
@@ -7,7 +7,6 @@ read (a large file that it named is gone), has no models; it is shown all the sa
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import ceil
 from pathlib import Path
 
 import numpy as np
@@ -17,15 +16,13 @@ from simimg.assembly.train import Train, assemble_train
 from simimg.errors import InputError
 from simimg.exposure import prepare
 from simimg.frame import Frame
-from simimg.imaging.profile import effective_band, psf_cut, sampled_psf
+from simimg.imaging.profile import psf_cut
 from simimg.resolving.criteria import fwhm
-from simimg.resolving.psfmodel import PsfModel
 from simimg.scene.file import scene_from_record
 from simimg.scene.model import Scene
 from simimg.show.signal import header_number
 
 _MOST_PIXELS = 1 << 22  # of a frame whose light without noise is worth computing for a figure
-_MOST_SAMPLES = 1600  # in the side of a sampled PSF
 
 
 @dataclass(frozen=True, eq=False)
@@ -46,18 +43,6 @@ class Setup:
     def psf_fwhm(self, angle: float) -> float:
         """FWHM of the effective PSF (pixels) along a direction of the detector (rad)."""
         return float(fwhm(psf_cut(self.train.effective, angle))) / self.pixel_scale
-
-    def psf_model(self, half_width: float) -> PsfModel:
-        """The effective PSF as a function, out to `half_width` pixels from the star."""
-        transfer, scale = self.train.effective, self.pixel_scale
-        # A quintic spline follows a PSF to 1e-6 of the peak from eight samples a cycle.
-        fine = ceil(8.0 * effective_band(transfer) * scale)
-        oversampling = min(max(2, fine), 16)
-        half = min(half_width, _MOST_SAMPLES / 2.0 / oversampling)
-        image = sampled_psf(
-            transfer, pixel_scale=scale, oversampling=oversampling, half_width_pixels=max(half, 4.0)
-        )
-        return PsfModel.from_image(image, oversampling=oversampling)
 
 
 def frame_setup(frame: Frame) -> Setup | None:

@@ -86,7 +86,7 @@ def choose_pair(pairs: Sequence[PairMeasurement], pair: str | int | None) -> Pai
     """
     if pair is None:
         return pairs[0] if pairs else None
-    labels = [str(one.label) for one in pairs]
+    labels = [one.label for one in pairs]
     if isinstance(pair, int) and 0 <= pair < len(pairs):
         return pairs[pair]
     if isinstance(pair, str) and pair in labels:
@@ -120,7 +120,7 @@ def pair_subject(frame: Frame, measurement: PairMeasurement, *, fwhm: float | No
     half = max(reach, 6.0) + (0.5 * separation if double else 0.0)
     return Subject(
         kind="pair",
-        label=str(measurement.label),
+        label=measurement.label or f"pair at {x:.1f}, {y:.1f}",
         x=x,
         y=y,
         second=second,
@@ -129,7 +129,7 @@ def pair_subject(frame: Frame, measurement: PairMeasurement, *, fwhm: float | No
         reach=max(reach, 6.0),
         compass=compass,
         window=_window(frame, centre, half),
-        row=_truth_row(frame, str(measurement.label)),
+        row=_truth_row(frame, measurement.label),
         measurement=measurement,
     )
 
