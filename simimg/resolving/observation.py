@@ -77,7 +77,7 @@ class Observation:
     def holds(self, x: float, y: float) -> bool:
         """Whether a place lies on the detector."""
         rows, columns = self.frame.counts.shape
-        return -0.5 <= x <= columns - 0.5 and -0.5 <= y <= rows - 0.5
+        return bool(-0.5 <= x <= columns - 0.5 and -0.5 <= y <= rows - 0.5)
 
     def electrons(self, box: tuple[slice, slice] = (slice(None), slice(None))) -> FloatArray:
         """Electrons above the bias of a box of the frame (rows, columns)."""
@@ -91,7 +91,7 @@ class Observation:
             good &= (self.frame.mask[box] & _UNFIT) == 0
         return np.asarray(good)
 
-    def cutout(self, x: float, y: float, half: float, *, known: FloatArray | None = None) -> Cutout:
+    def cutout(self, x: float, y: float, half: float) -> Cutout:
         """Cut out the square of half side ``half`` about a place, as far as it is on the detector.
 
         Parameters
@@ -99,8 +99,6 @@ class Observation:
         x, y : float
         half : float
             Pixels.
-        known : ndarray, optional
-            Expected electrons over the whole frame of what is not to be fitted.
         """
         rows, columns = self.frame.counts.shape
         left, right = max(0, floor(x - half)), min(columns - 1, ceil(x + half))
@@ -113,7 +111,6 @@ class Observation:
             x0=left,
             y0=bottom,
             used=self.usable(box),
-            known=None if known is None else known[box],
         )
 
     def cutouts(
@@ -212,4 +209,4 @@ def spline_oversampling(transfer: Transfer, pixel_scale: float) -> int:
     strength = np.abs(transfer(radius * np.cos(angle), radius * np.sin(angle))).max(axis=0) * radius
     waves = (radius * pixel_scale) ** 6
     error = 2.0 * float((strength * waves).sum() / strength.sum())
-    return max(1, ceil((error / _SPLINE_ERROR) ** (1.0 / 6.0)))
+    return int(max(1, ceil((error / _SPLINE_ERROR) ** (1.0 / 6.0))))

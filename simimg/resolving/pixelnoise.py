@@ -24,6 +24,7 @@ from __future__ import annotations
 
 from functools import lru_cache
 from math import ceil, lgamma, log, pi, sqrt
+from typing import Any
 
 import numpy as np
 
@@ -69,7 +70,7 @@ class PixelNoise:
                 self._sums.append(_FullSum(chosen, electrons[chosen], variance, high))
             low = high
         bright = guess >= low
-        self._bright: AnyArray = slice(None) if bright.all() else np.flatnonzero(bright)
+        self._bright: Any = slice(None) if bright.all() else np.flatnonzero(bright)
         self._any_bright = bool(bright.any())
 
     def judge(self, expectation: FloatArray) -> tuple[float, FloatArray, FloatArray]:

@@ -38,7 +38,7 @@ def saddle_seen(
     Returns
     -------
     ratio, error : float
-        Background taken off. 1 without error where the model has no saddle; NaN where masked
+        Background taken off. Where the model has no saddle the ratio is 1; NaN where masked
         pixels or the cutout's edge are in the way.
     """
     likelihood = Likelihood([cutout], len(fit.places))
@@ -54,41 +54,59 @@ def saddle_seen(
     reach = min(0.5, 0.5 * cutout.psf.fwhm / length)
     count = max(8, int((1.0 + 2.0 * reach) * length / cutout.psf.fwhm * _STEPS)) + 1
     share = np.linspace(-reach, 1.0 + reach, count)
-    weights = [_weights(*(start + t * along), cutout) for t in share]
-    if any(weight is None for weight in weights):
+    points = start + share[:, None] * along
+    if not all(_readable(cutout, x, y) for x, y in points):
         return float("nan"), float("nan")
-    matrix = np.array(weights)
-    base = background + cutout.known.ravel()
-    seen = matrix @ (model.ravel() - base)
+    base = background + cutout.known
+    light = model - base
+    seen = np.array([_weights(x, y) @ _patch(light, x, y) for x, y in points])
     middle = share <= 0.5
     one = int(np.argmax(np.where(middle, seen, -np.inf)))
     two = int(np.argmax(np.where(middle, -np.inf, seen)))
     low = one + int(np.argmin(seen[one : two + 1]))
-    if low in (one, two):
-        return 1.0, 0.0
     lower = one if seen[one] < seen[two] else two
-    values = matrix[[low, lower]] @ (cutout.electrons.ravel() - base)
-    variance = np.maximum(model.ravel(), 0.0) + cutout.variance
-    covariance = (matrix[[low, lower]] * variance) @ matrix[[low, lower]].T
+    shown = low not in (one, two)
+    if not shown:
+        # No saddle: the noise is that of the midpoint against the fainter star's own place.
+        fainter = 1.0 if fit.electrons[second] < fit.electrons[first] else 0.0
+        low, lower = (int(np.argmin(np.abs(share - place))) for place in (0.5, fainter))
+    matrix = np.array([_row(cutout, *points[low]), _row(cutout, *points[lower])])
+    values = matrix @ (cutout.electrons - base).ravel()
+    covariance = (matrix * (np.maximum(model.ravel(), 0.0) + cutout.variance)) @ matrix.T
     if values[1] <= 0.0:
         return float("nan"), float("nan")
     ratio = float(values[0] / values[1])
     slope = np.array([1.0, -ratio]) / values[1]
-    return ratio, sqrt(max(0.0, float(slope @ covariance @ slope)))
+    error = sqrt(max(0.0, float(slope @ covariance @ slope)))
+    return (ratio if shown else 1.0), error
 
 
-def _weights(x: float, y: float, cutout: Cutout) -> FloatArray | None:
-    """Weights of all pixels in the brightness at a point; None when it cannot be read."""
+def _readable(cutout: Cutout, x: float, y: float) -> bool:
+    """Whether the sixteen pixels about a point are there and count."""
     rows, columns = cutout.electrons.shape
     left, bottom = floor(x) - 1, floor(y) - 1
     if left < 0 or bottom < 0 or left + 4 > columns or bottom + 4 > rows:
-        return None
-    if not cutout.used[bottom : bottom + 4, left : left + 4].all():
-        return None
-    result = np.zeros((rows, columns))
-    result[bottom : bottom + 4, left : left + 4] = np.outer(
-        _cubic(y - bottom - np.arange(4)), _cubic(x - left - np.arange(4))
-    )
+        return False
+    return bool(cutout.used[bottom : bottom + 4, left : left + 4].all())
+
+
+def _patch(image: FloatArray, x: float, y: float) -> FloatArray:
+    left, bottom = floor(x) - 1, floor(y) - 1
+    return image[bottom : bottom + 4, left : left + 4].ravel()
+
+
+def _weights(x: float, y: float) -> FloatArray:
+    """Weights of the sixteen pixels in the brightness at a point, row by row."""
+    across = _cubic(x - (floor(x) - 1) - np.arange(4))
+    along = _cubic(y - (floor(y) - 1) - np.arange(4))
+    return np.outer(along, across).ravel()
+
+
+def _row(cutout: Cutout, x: float, y: float) -> FloatArray:
+    """Weights of all pixels of a cutout in the brightness at a point."""
+    left, bottom = floor(x) - 1, floor(y) - 1
+    result = np.zeros(cutout.electrons.shape)
+    result[bottom : bottom + 4, left : left + 4] = _weights(x, y).reshape(4, 4)
     return result.ravel()
 
 

@@ -11,7 +11,7 @@ Electrons and detector pixels; places are counted from 0 at the centre of the fr
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy import ndimage
@@ -90,6 +90,10 @@ class Cutout:
             psf=psf,
             known=frozen(other),
         )
+
+    def with_known(self, known: FloatArray) -> Cutout:
+        """The same cutout with other expected electrons of what is not fitted."""
+        return replace(self, known=frozen(np.asarray(known, dtype=np.float64)))
 
 
 @dataclass(frozen=True, eq=False)
@@ -275,7 +279,7 @@ def fit_stars(
     """
     start = np.asarray(places, dtype=np.float64).reshape(-1, 2)
     likelihood = Likelihood(cutouts, len(start))
-    vector = np.zeros(likelihood.size)
+    vector: FloatArray = np.zeros(likelihood.size)
     vector[: 3 * len(start)].reshape(-1, 3)[:, :2] = start
     vector = _linear_start(likelihood, vector, electrons)
     reach = 0.5 * cutouts[0].psf.fwhm if most_shift is None else most_shift
@@ -346,11 +350,11 @@ def _linear_start(
         fixed = [*range(2, 3 * stars, 3)]
         wanted = [*range(3 * stars, likelihood.size)]
         right = right - normal[:, fixed] @ result[fixed]
-    solution = np.linalg.lstsq(normal[np.ix_(wanted, wanted)], right[wanted], rcond=1e-12)[0]
-    result[wanted] = solution
-    fluxes: FloatArray = result[: 3 * stars].reshape(-1, 3)[:, 2]
-    least = max(1.0, 1e-3 * float(fluxes.max(initial=0.0)))
-    fluxes[:] = np.maximum(fluxes, least)
+    result[wanted] = np.linalg.lstsq(normal[np.ix_(wanted, wanted)], right[wanted], rcond=1e-12)[0]
+    fluxes = range(2, 3 * stars, 3)
+    least = max([1.0, *(1e-3 * float(result[i]) for i in fluxes)])
+    for i in fluxes:
+        result[i] = max(float(result[i]), least)
     return result
 
 

@@ -1,0 +1,211 @@
+"""From a sighting to the record of a pair: geometry on the sky, limits, verdicts, saddle.
+
+Arcseconds and degrees in the record; detector pixels before.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from math import degrees, inf, nan
+
+import numpy as np
+
+from simimg.arrays import FloatArray
+from simimg.resolving.criteria import rayleigh_saddle, sparrow, sparrow_curve
+from simimg.resolving.observation import Observation
+from simimg.resolving.pairfit import PairGeometry, pair_geometry
+from simimg.resolving.records import CriterionVerdict, PairMeasurement, PairTruth
+from simimg.resolving.resolution import BRIGHTEST_DIFFERENCE, to_arcsec
+from simimg.resolving.saddle import saddle_seen
+from simimg.resolving.sighting import Sighting
+from simimg.resolving.starfit import StarFit
+from simimg.resolving.verdict import SURELY_DOUBLE, probability_beyond, verdict
+
+_REST = 6.0  # standard errors of the magnitude difference over which Sparrow's limit is tabulated
+_STEPS = 120
+
+
+@dataclass(frozen=True)
+class NamedPair:
+    """A pair as TRUTH names it: where its two stars are, and what they are to each other."""
+
+    label: str
+    first: tuple[float, float]
+    second: tuple[float, float]
+    truth: PairTruth
+
+
+@dataclass(frozen=True, eq=False)
+class Judgement:
+    """A pair's record and what advice needs beside it.
+
+    Attributes
+    ----------
+    record : PairMeasurement
+        Without advice.
+    sighting : Sighting
+    geometry : PairGeometry or None
+        Pixels and radians; None without a second star.
+    """
+
+    record: PairMeasurement
+    sighting: Sighting
+    geometry: PairGeometry | None
+
+
+def judge(
+    observation: Observation, sighting: Sighting, *, named: NamedPair | None = None
+) -> Judgement:
+    """Turn a sighting into a record.
+
+    Parameters
+    ----------
+    observation : Observation
+    sighting : Sighting
+    named : NamedPair, optional
+        The pair of TRUTH that stands here: it settles which star is first, and nothing else.
+    """
+    fit = sighting.double
+    if fit is None or sighting.empty:
+        return Judgement(_single(observation, sighting, named), sighting, None)
+    first, second = _order(fit, named)
+    geometry = pair_geometry(fit, first=first, second=second)
+    errors = geometry.errors
+    scale = observation.arcsec
+    dx, dy = fit.places[second] - fit.places[first]
+    chance = sighting.probability_single
+    rayleigh, sparrow_verdict = _criteria(observation, geometry, chance)
+    resolved = "resolved" in (rayleigh.verdict, sparrow_verdict.verdict)
+    saddle, saddle_error = _saddle(sighting, fit, first, second)
+    x, y = (float(value) for value in fit.places[first])
+    difference, spread = geometry.magnitude_difference, errors[2]
+    ra, dec = _sky(observation, x, y)
+    record = PairMeasurement(
+        label="" if named is None else named.label,
+        x=x,
+        y=y,
+        ra_deg=ra,
+        dec_deg=dec,
+        separation_arcsec=geometry.separation * scale,
+        separation_error_arcsec=errors[0] * scale,
+        position_angle_deg=degrees(observation.geometry.position_angle(float(dx), float(dy))),
+        position_angle_error_deg=degrees(errors[1]),
+        magnitude_difference=difference,
+        magnitude_difference_error=spread,
+        probability_single=chance,
+        elongated=chance < SURELY_DOUBLE and not resolved,
+        ambiguous_180=named is None and not abs(difference) >= 2.0 * spread,
+        saddle_ratio=saddle,
+        saddle_ratio_error=saddle_error,
+        rayleigh=rayleigh,
+        sparrow=sparrow_verdict,
+        truth=None if named is None else named.truth,
+    )
+    return Judgement(record, sighting, geometry)
+
+
+def _order(fit: StarFit, named: NamedPair | None) -> tuple[int, int]:
+    """Which fitted star is the first: by place where TRUTH names them, else the brighter."""
+    if named is None:
+        return (0, 1) if fit.electrons[0] >= fit.electrons[1] else (1, 0)
+    wanted = np.array([named.first, named.second])
+    straight = float(((fit.places - wanted) ** 2).sum())
+    crossed = float(((fit.places[::-1] - wanted) ** 2).sum())
+    return (0, 1) if straight <= crossed else (1, 0)
+
+
+def _sky(observation: Observation, x: float, y: float) -> tuple[float, float]:
+    """Right ascension and declination of a place, degrees."""
+    ra, dec = observation.geometry.to_sky(np.array(x), np.array(y))
+    return degrees(float(ra)), degrees(float(dec))
+
+
+def _criteria(
+    observation: Observation, geometry: PairGeometry, chance: float
+) -> tuple[CriterionVerdict, CriterionVerdict]:
+    """Both delivered limits along the pair's own line, with probabilities and verdicts."""
+    scale = observation.geometry.pixel_scale
+    difference = float(
+        np.clip(geometry.magnitude_difference, -BRIGHTEST_DIFFERENCE, BRIGHTEST_DIFFERENCE)
+    )
+    spread = geometry.errors[2]
+    reach = abs(difference) + _REST * (spread if np.isfinite(spread) else 0.0)
+    largest = float(np.clip(reach, 0.1, BRIGHTEST_DIFFERENCE))
+    profile = observation.delivered.profile(geometry.angle, largest)
+    covariance = [geometry.covariance[i][::2] for i in (0, 2)]
+    curve = sparrow_curve(profile, largest=largest, step=largest / _STEPS)
+
+    def limit_for(differences: FloatArray) -> FloatArray:
+        limits = curve(differences) / scale
+        return np.where(np.abs(differences) > BRIGHTEST_DIFFERENCE, inf, limits)
+
+    answers = []
+    for value, limit in (
+        (rayleigh_saddle(profile), rayleigh_saddle(profile) / scale),
+        (sparrow(profile, difference), limit_for),
+    ):
+        probability = probability_beyond(
+            limit,
+            separation=geometry.separation,
+            magnitude_difference=geometry.magnitude_difference,
+            covariance=covariance,
+        )
+        answers.append(
+            CriterionVerdict(
+                limit_arcsec=to_arcsec(value),
+                probability=probability,
+                verdict=verdict(probability, probability_single=chance),
+            )
+        )
+    return answers[0], answers[1]
+
+
+def _saddle(sighting: Sighting, fit: StarFit, first: int, second: int) -> tuple[float, float]:
+    """The saddle in the first cutout that holds both stars; NaN when none does."""
+    for index, cutout in enumerate(sighting.cutouts):
+        rows, columns = cutout.electrons.shape
+        inside = [
+            0 <= x - cutout.x0 <= columns - 1 and 0 <= y - cutout.y0 <= rows - 1
+            for x, y in fit.places[[first, second]]
+        ]
+        if all(inside):
+            return saddle_seen(cutout, fit, first=first, second=second, index=index)
+    return nan, nan
+
+
+def _single(
+    observation: Observation, sighting: Sighting, named: NamedPair | None
+) -> PairMeasurement:
+    """The record of a place where the fit wants no second star."""
+    x, y = (float(value) for value in sighting.single.places[0])
+    if sighting.empty or not observation.holds(x, y):
+        x, y = sighting.place
+    profile = observation.delivered.profile(0.0)
+
+    def unresolved(limit: float) -> CriterionVerdict:
+        return CriterionVerdict(
+            limit_arcsec=to_arcsec(limit), probability=0.0, verdict="unresolved"
+        )
+
+    ra, dec = _sky(observation, x, y)
+    return PairMeasurement(
+        label="" if named is None else named.label,
+        x=x,
+        y=y,
+        ra_deg=ra,
+        dec_deg=dec,
+        separation_arcsec=nan,
+        separation_error_arcsec=nan,
+        position_angle_deg=nan,
+        position_angle_error_deg=nan,
+        magnitude_difference=nan,
+        magnitude_difference_error=nan,
+        probability_single=1.0,
+        elongated=False,
+        ambiguous_180=False,
+        saddle_ratio=nan,
+        saddle_ratio_error=nan,
+        rayleigh=unresolved(rayleigh_saddle(profile)),
+        sparrow=unresolved(sparrow(profile, 0.0)),
+        truth=None if named is None else named.truth,
+    )
