@@ -93,9 +93,14 @@ def round_length(longest: float) -> float:
     Both in arcseconds; from an arcminute on the number is round in arcminutes, then in degrees.
     """
     unit = 3600.0 if longest >= 3600.0 else 60.0 if longest >= 60.0 else 1.0
-    power = 10.0 ** floor(log10(longest / unit * 1.000001))
-    most = longest / unit * 1.000001
-    return unit * max(factor * power for factor in (1.0, 2.0, 5.0) if factor * power <= most)
+    return unit * round_number(longest / unit)
+
+
+def round_number(most: float) -> float:
+    """The greatest of 1, 2 and 5 times a power of ten that is at most `most`, above 0."""
+    most *= 1.000001  # what is round but for its rounding counts as round
+    power = 10.0 ** floor(log10(most))
+    return max(factor * power for factor in (1.0, 2.0, 5.0) if factor * power <= most)
 
 
 def shown_length(arcsec: float) -> str:

@@ -10,7 +10,7 @@ import numpy as np
 
 from simimg.arrays import AnyArray
 from simimg.show.canvas import grouped
-from simimg.show.compass import Compass, round_length, shown_length
+from simimg.show.compass import Compass, round_length, round_number, shown_length
 from simimg.show.profile import Profile
 from simimg.show.signal import Light
 from simimg.show.stretch import choose_stretch
@@ -20,6 +20,7 @@ COLOUR_MAP = "magma"  # its lightness rises evenly: it survives grey print and c
 _INK = "white"
 _MOST_SHOWN = 1200  # pixels in the side of a drawn image; more are averaged in blocks
 _ARROW = 0.11  # of the panel's shorter side
+_CORNER = 0.3  # of the same: a corner with the arrows in it
 
 
 @dataclass(frozen=True)
@@ -78,11 +79,11 @@ def draw_frame(
     if simulated:
         axes.text(0.03, 0.97, "simulated", va="top", transform=axes.transAxes, gid="simulated")
         _inked(axes.texts[-1])
-    _mark_strip(axes, subject, profile)
+    strip_ends = _mark_strip(axes, subject, profile)
     if profile.fit is not None:
         _mark_stars(axes, profile.fit.places)
     plate = _scale_bar(axes, subject.compass, right - left, top - bottom, subject.window)
-    _arrows(axes, subject.compass, subject.window)
+    _arrows(axes, subject.compass, subject.window, strip_ends)
     axes.set_xlim(left - 0.5, right - 0.5)
     axes.set_ylim(bottom - 0.5, top - 0.5)
     return plate
@@ -118,12 +119,13 @@ def _inked(artist: Any) -> None:
     artist.set_path_effects([rim] if hasattr(artist, "get_text") else [rim, Normal()])
 
 
-def _mark_strip(axes: Any, subject: Subject, profile: Profile) -> None:
-    """A short line where the strip enters and leaves the picture, clear of the subject itself."""
+def _mark_strip(axes: Any, subject: Subject, profile: Profile) -> list[tuple[float, float]]:
+    """A short line at either end of the strip, clear of the subject itself; where they end."""
     if profile.offsets.size < 2:
-        return
+        return []
     c, s = cos(subject.angle), sin(subject.angle)
-    first, last = float(profile.offsets[0]), float(profile.offsets[-1])
+    # Not to the very end, where the corners' texts begin.
+    first, last = 0.95 * float(profile.offsets[0]), 0.95 * float(profile.offsets[-1])
     length = 0.16 * (last - first)
     ends = ((first, first + length), (last - length, last))
     for number, (near, far) in enumerate(ends, start=1):
@@ -134,6 +136,7 @@ def _mark_strip(axes: Any, subject: Subject, profile: Profile) -> None:
             gid=f"strip-{number}",
         )
         _inked(line)
+    return [(subject.x + end * c, subject.y + end * s) for end in (first, last)]
 
 
 def _mark_stars(axes: Any, places: AnyArray) -> None:
@@ -160,8 +163,8 @@ def _scale_bar(
     left, _, bottom, _ = window
     longest = 0.33 * min(columns, rows)
     if compass.scale is None:
-        arcsec, pixels = float("nan"), round_length(max(longest, 1.0))
-        words = f"{pixels:.6g} pixels"
+        arcsec, pixels = float("nan"), round_number(max(longest, 1.0))
+        words = f"{pixels:.6g} pixel" + ("s" if pixels > 1.0 else "")
     else:
         arcsec = round_length(longest * compass.scale)
         pixels = arcsec / compass.scale
@@ -184,8 +187,16 @@ def _scale_bar(
     return Plate(pixels, arcsec, compass.north, compass.east)
 
 
-def _arrows(axes: Any, compass: Compass, window: tuple[int, int, int, int]) -> None:
-    """North and east in the upper right corner; none where the frame does not know them."""
+def _arrows(
+    axes: Any,
+    compass: Compass,
+    window: tuple[int, int, int, int],
+    taken: list[tuple[float, float]],
+) -> None:
+    """North and east in the upper right corner, or the lower where the upper is taken.
+
+    None where the frame does not know them.
+    """
     if not compass.known:
         return
     left, right, bottom, top = window
@@ -195,6 +206,8 @@ def _arrows(axes: Any, compass: Compass, window: tuple[int, int, int, int]) -> N
     tips = np.array([(0.0, 0.0), compass.north, compass.east]) * 1.45 * length
     x = right - 0.5 - 0.05 * size - tips[:, 0].max()
     y = top - 0.5 - 0.05 * size - tips[:, 1].max()
+    if any(px > right - _CORNER * size and py > top - _CORNER * size for px, py in taken):
+        y = bottom - 0.5 + 0.05 * size - tips[:, 1].min()
     for name, (dx, dy) in (("N", compass.north), ("E", compass.east)):
         arrow = axes.annotate(
             "",

@@ -343,6 +343,9 @@ class TestAnyFrame:
             figure.findobj(lambda one: one.get_gid() in ("simulated", "arrow-N", "arrow-E")) == []
         )
         assert drawn.outside(figure) == []
+        bar = drawn.artist(figure, "scale-bar").get_xdata()
+        words = f"{bar[1] - bar[0]:.6g} pixel"
+        assert any(text.get_text().startswith(words) for text in figure.axes[0].texts)
 
     def test_a_scene_that_cannot_be_read_leaves_no_model(self, stars, tmp_path):
         made = stars[0]
