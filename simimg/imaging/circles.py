@@ -10,6 +10,7 @@ Angles in radians, frequencies in cycles per radian.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from math import pi
 
 import numpy as np
@@ -81,26 +82,38 @@ def encircled(transfer: Transfer, radii: FloatArray | float) -> FloatArray:
     return np.array([_light_within(rings, float(r)) for r in radii.ravel()]).reshape(radii.shape)
 
 
-def encircled_diameter(transfer: Transfer, fraction: float) -> float:
-    """Diameter (rad) of the circle about the centre of light that holds `fraction` of it.
+def encircled_diameters(transfer: Transfer, fractions: Sequence[float]) -> tuple[float, ...]:
+    """Diameters (rad) of the circles about the centre of light that hold given fractions of it.
 
     Raises
     ------
     ValueError
         For a fraction outside 0 to 0.99: the last percent of a PSF lies in far wings.
     """
-    if not 0.0 < fraction <= 0.99:
-        raise ValueError(f"fraction of the light must lie between 0 and 0.99, got {fraction}")
+    for fraction in fractions:
+        if not 0.0 < fraction <= 0.99:
+            raise ValueError(f"fraction of the light must lie between 0 and 0.99, got {fraction}")
     band = effective_band(transfer)
     outer = 0.25 / band
-    rings = _rings(transfer, 0.0)
     reach = 16.0 / band
-    while _light_within(rings, outer) < fraction:
-        outer *= 1.5
-        if outer > reach:
-            reach *= 2.0
-            rings = _rings(transfer, reach)
-    radius = optimize.brentq(
-        lambda r: _light_within(rings, r) - fraction, 0.0, outer, xtol=1e-7 * outer
-    )
-    return 2.0 * float(radius)
+    rings = _rings(transfer, 0.0)
+    diameters = []
+    for fraction in fractions:
+        while _light_within(rings, outer) < fraction:
+            outer *= 1.5
+            if outer > reach:
+                reach *= 2.0
+                rings = _rings(transfer, reach)
+        radius = optimize.brentq(
+            lambda r, rings=rings, fraction=fraction: _light_within(rings, r) - fraction,
+            0.0,
+            outer,
+            xtol=1e-7 * outer,
+        )
+        diameters.append(2.0 * float(radius))
+    return tuple(diameters)
+
+
+def encircled_diameter(transfer: Transfer, fraction: float) -> float:
+    """Diameter (rad) of the circle that holds one fraction: see `encircled_diameters`."""
+    return encircled_diameters(transfer, (fraction,))[0]

@@ -52,7 +52,7 @@ def half_lattice(transfer: Transfer, band: float) -> int:
     that the period must grow.
     """
     wide = int(np.ceil(160.0 * (transfer.box * band) ** (2.0 / 3.0)))
-    return min(max(_NODES // 2, wide), 2 * _NODES)
+    return min(max(_NODES // 2, wide), 3 * _NODES // 2)
 
 
 @dataclass(frozen=True, eq=False)
@@ -285,8 +285,9 @@ def sampled_psf(
     band = effective_band(transfer)
     fine = pixel_scale / oversampling
     half = int(np.ceil(half_width_pixels * oversampling - 1e-9))
-    # The copies, one period apart, must stay far from the window's corners.
-    period = max(half_lattice(transfer, band) / band, 4.0 * half * fine)
+    # The copies, one period apart, must stay far from the window and each other.
+    far = max(abs(centre[0]), abs(centre[1])) + half * fine
+    period = max(half_lattice(transfer, band) / band + far, 2.0 * far)
     size = int(fft.next_fast_len(int(np.ceil(period / fine)), real=False))
     spacing = 1.0 / (size * fine)
     top = int(np.floor(band / spacing))
@@ -295,7 +296,7 @@ def sampled_psf(
     # Half the plane is enough: the other half is its conjugate.
     columns = np.arange(0, top + 1, dtype=np.int64)
     rows_done = np.empty((window.size, columns.size), dtype=np.complex128)
-    step = max(1, CHUNK // order.size)
+    step = max(1, CHUNK // max(order.size, size))
     for first in range(0, columns.size, step):
         part = columns[first : first + step]
         u = np.asarray(spacing * part[None, :], dtype=np.float64)
@@ -305,8 +306,12 @@ def sampled_psf(
             value = value * np.exp(2j * pi * (u * centre[0] + v * centre[1]))
         rows_done[:, first : first + step] = _folded_sum(value, order, size)[window]
     rows_done[:, 0] *= 0.5
-    image = 2.0 * _folded_sum(rows_done.T, columns, size)[window].real
-    return np.ascontiguousarray(image.T) * (spacing * pixel_scale) ** 2
+    image = np.empty((window.size, window.size))
+    step = max(1, CHUNK // size)
+    for first in range(0, window.size, step):
+        line = _folded_sum(rows_done[first : first + step].T, columns, size)[window]
+        image[first : first + step] = 2.0 * line.real.T
+    return image * (spacing * pixel_scale) ** 2
 
 
 def _folded_sum(value: AnyArray, order: AnyArray, size: int) -> AnyArray:

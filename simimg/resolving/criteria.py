@@ -115,10 +115,14 @@ def saddle_ratio(
     """
     if not (isfinite(separation) and separation > 0.0):
         raise ValueError(f"separation must be above 0, got {separation}")
-    sampled = sample_profile(profile)
     ratio = 10.0 ** (-0.4 * magnitude_difference)
+    return _saddle(sample_profile(profile), separation, ratio, 1201)
+
+
+def _saddle(sampled: SampledProfile, separation: float, ratio: float, count: int) -> float:
+    """`saddle_ratio` by the light at `count` places on the line."""
     reach = sampled.window
-    t = np.linspace(-reach, separation + reach, 1201)
+    t = np.linspace(-reach, separation + reach, count)
     first, second = sampled.value(t), ratio * sampled.value(t - separation)
     total = first + second
     near_first = np.flatnonzero((np.abs(t) <= reach) & (first >= second))
@@ -152,13 +156,17 @@ def rayleigh_saddle(profile: Profile | SampledProfile) -> float:
     higher out to 4 FWHM.
     """
     sampled = sample_profile(profile)
-
-    def excess(s: float) -> float:
-        return saddle_ratio(sampled, s) - SADDLE
-
-    grid = sampled.width * np.arange(0.4, 4.0, 1.0 / 48.0)
-    above = np.flatnonzero(np.array([excess(float(s)) for s in grid]) > 0.0)
+    grid = sampled.width * np.arange(0.4, 4.0, 1.0 / 32.0)
+    ratios = np.array([_saddle(sampled, float(s), 1.0, 241) for s in grid])
+    above = np.flatnonzero(ratios > SADDLE)
     if above.size == 0 or above[-1] == grid.size - 1:
         return nan
-    low, high = float(grid[above[-1]]), float(grid[above[-1] + 1])
+
+    def excess(s: float) -> float:
+        return _saddle(sampled, s, 1.0, 1201) - SADDLE
+
+    # A step of room on either side: the coarse scan is right to less than that.
+    low, high = float(grid[max(above[-1] - 1, 0)]), float(grid[min(above[-1] + 2, grid.size - 1)])
+    if not excess(low) > 0.0 > excess(high):
+        return nan
     return float(optimize.brentq(excess, low, high, xtol=1e-9 * sampled.width))

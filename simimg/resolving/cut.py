@@ -37,8 +37,8 @@ class SampledProfile:
         steepest slope where that lies farther out (PSFs with a flat top).
     symmetric : bool
         True when both sides agree to 1e-6 of the peak.
-    extent : float
-        How far it is sampled on either side.
+    step, extent : float
+        How finely it is sampled, and how far on either side.
     source : callable
         What it was sampled from.
     """
@@ -46,6 +46,7 @@ class SampledProfile:
     width: float
     window: float
     symmetric: bool
+    step: float
     extent: float
     source: Profile
     _peak: float
@@ -137,6 +138,7 @@ def sample_profile(profile: Profile | SampledProfile, *, extent: float = 10.0) -
         width=width,
         window=max(0.5 * width, 1.05 * steepest) if steepest > 0.49 * width else 0.5 * width,
         symmetric=bool(np.abs(height - height[::-1]).max() < 1e-6 * peak),
+        step=step,
         extent=count * step,
         source=profile,
         _peak=peak,

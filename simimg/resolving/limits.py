@@ -16,11 +16,10 @@ from typing import Any
 from simimg.assembly.brightness import exposure_time
 from simimg.assembly.objects import inventory
 from simimg.assembly.train import Train, assemble_train
-from simimg.imaging.circles import encircled_diameter
-from simimg.imaging.profile import strehl
+from simimg.imaging.circles import encircled_diameters
 from simimg.resolving.criteria import first_dark_ring
 from simimg.resolving.listing import Listing, ObjectLimits
-from simimg.resolving.resolution import Directions, Resolution, to_arcsec
+from simimg.resolving.resolution import Directions, Resolution, computable, to_arcsec
 from simimg.resolving.signal import scene_detector
 from simimg.scene.model import Scene
 
@@ -114,7 +113,7 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
     Returns
     -------
     Limits
-        Lengths are right to 1e-4 for a pupil without a map.
+        Lengths are right to 1e-4 for a pupil without a map and a pixel below 32 lambda/D.
 
     Raises
     ------
@@ -137,7 +136,8 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
     found = inventory(scene, train=train)
     angle = found.geometry.direction(position_angle)
     diffraction = Directions(train.optics, dark_ring=_dark_ring(train), saddle=False)
-    delivered = Directions(train.effective)
+    effective = computable(train.effective)
+    delivered, focal = Directions(effective), Directions(train.focal)
     of_optics, of_all = diffraction.resolution(angle), delivered.resolution(angle)
     listing = Listing(
         train=train,
@@ -147,6 +147,7 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
         delivered=delivered,
         width=delivered.profile(angle).width,
     )
+    half_light, most_light = encircled_diameters(effective, (0.5, 0.8))
     scale = train.pixel_scale
     return Limits(
         wavelength_nm=train.wavelength * 1e9,
@@ -156,12 +157,12 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
         diffraction=of_optics,
         delivered=of_all,
         dawes_arcsec=DAWES / (train.pupil.diameter * 1e3),
-        strehl=1.0 if train.fried is None else strehl(train.focal, train.optics),
-        ee50_arcsec=to_arcsec(encircled_diameter(train.effective, 0.5)),
-        ee80_arcsec=to_arcsec(encircled_diameter(train.effective, 0.8)),
+        strehl=1.0 if train.fried is None else focal.peak(angle) / diffraction.peak(angle),
+        ee50_arcsec=to_arcsec(half_light),
+        ee80_arcsec=to_arcsec(most_light),
         nyquist_pixel_arcsec=to_arcsec(_nyquist(train)),
         objects=listing.objects(found),
-        notes=tuple(_notes(scene, train, diffraction, angle, of_optics, of_all)),
+        notes=tuple(_notes(scene, train, diffraction, focal, angle, of_optics, of_all)),
     )
 
 
@@ -181,6 +182,7 @@ def _notes(
     scene: Scene,
     train: Train,
     diffraction: Directions,
+    focal: Directions,
     angle: float,
     of_optics: Resolution,
     of_all: Resolution,
@@ -215,7 +217,7 @@ def _notes(
         )
         return notes
     scale = to_arcsec(train.pixel_scale)
-    without = Directions(train.focal).resolution(angle)
+    without = focal.resolution(angle)
     notes.append(
         f"There are {of_all.fwhm_arcsec / scale:.2g} pixels to the delivered FWHM; the pixel "
         f"widens it from {without.fwhm_arcsec:.4g} to {of_all.fwhm_arcsec:.4g} arcsec and "

@@ -94,7 +94,7 @@ class Listing:
         """Every object of an inventory, a pair once, in its order."""
         light = None
         if self.detector is not None and len(found):
-            light = StarLight(self.train.effective, self.detector, width=self.width)
+            light = StarLight(self.delivered.transfer, self.detector, width=self.width)
         known = np.isnan(found.magnitude) | self.timed
         peaks, snr, snr_fit = _of_stars(light, found, known)
         pairs = int(np.count_nonzero(found.partner[: found.written] >= 0)) // 2
@@ -160,7 +160,7 @@ class Listing:
     ) -> ObjectLimits:
         signal = None
         if light is not None and known:
-            signal = pair_signal(self.train.basis, light, stars)
+            signal = pair_signal(light, stars)
         first = stars[0]
         difference = magnitude_difference(stars)
         angle = found.geometry.direction(first.position_angle)

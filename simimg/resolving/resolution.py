@@ -6,9 +6,12 @@ What the words mean stands in `simimg.resolving.criteria`.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import degrees, nan, pi
 
+import numpy as np
+
+from simimg.arrays import FloatArray
 from simimg.imaging.basis import Transfer
 from simimg.imaging.profile import PsfCut, peak_place, psf_cut
 from simimg.resolving.criteria import (
@@ -22,6 +25,8 @@ from simimg.resolving.criteria import (
 
 BRIGHTEST_DIFFERENCE = 12.0
 """Magnitude difference beyond which Sparrow's limit is not worked out."""
+
+_WIDEST = 32.0  # pixels in wavelengths over diameters from which the optics' detail is smoothed
 
 
 @dataclass(frozen=True)
@@ -45,6 +50,22 @@ class Resolution:
 def to_arcsec(angle: float) -> float:
     """Radians to arcseconds."""
     return degrees(angle) * 3600.0
+
+
+def computable(transfer: Transfer) -> Transfer:
+    """The same PSF, its finest detail smoothed where a pixel is very much wider.
+
+    A pixel of 32 lambda/D and more leaves of the optics nothing but sharp edges; smoothed over a
+    hundredth of the pixel they keep the sums over frequencies short.
+    """
+    if transfer.box * transfer.band_limit <= _WIDEST:
+        return transfer
+    edge = _WIDEST / transfer.box
+
+    def taper(f: FloatArray) -> FloatArray:
+        return np.asarray(np.cos(0.5 * pi * np.minimum(f / edge, 1.0)) ** 2)
+
+    return replace(transfer, band_limit=edge, radial=(*transfer.radial, taper))
 
 
 class Directions:
@@ -105,6 +126,10 @@ class Directions:
         rayleigh = self._dark_ring if self._dark_ring is not None else self._rayleigh(sampled)
         closest = sparrow(sampled, magnitude_difference) if wanted else nan
         return Resolution(to_arcsec(fwhm(sampled)), to_arcsec(rayleigh), to_arcsec(closest))
+
+    def peak(self, angle: float) -> float:
+        """Height of the PSF at its peak (per steradian), read from the cut along `angle`."""
+        return float(self.cut(angle)(0.0))
 
     def saddle_limit(self, angle: float) -> float:
         """Separation (arcsec) of an equal pair whose saddle is 0.735 of its peaks."""

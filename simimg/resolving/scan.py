@@ -22,6 +22,7 @@ from simimg.resolving.cut import SAMPLES, Profile, SampledProfile, sample_profil
 
 _FARTHEST = 256.0  # FWHMs: a companion lost farther out than this is called never resolved
 _FINE = 257  # places within the window where a maximum is looked for
+_CLEAR = 1.2  # ratio of their light from which one star clearly outshines the other
 _MARGIN = 1e-5  # by which a star must outshine the other at its maximum: above rounding
 
 
@@ -32,9 +33,30 @@ def sparrow_equal(profile: Profile | SampledProfile) -> float:
     """
     sampled = sample_profile(profile)
     limit = float(_scan(sampled, np.ones(1))[0])
-    if sampled.symmetric:
+    if not sampled.symmetric:
+        limit = max(limit, float(_scan(sampled.mirrored(), np.ones(1))[0]))
+    # Stars with flat tops that overlap keep small maxima of their own beside a bright middle.
+    step = sampled.width / 48.0
+    grid = limit + step * np.arange(1, 96)
+    merged = np.flatnonzero([_merged(sampled, float(s), 481) for s in grid])
+    if merged.size == 0 or merged[-1] == grid.size - 1:
         return limit
-    return max(limit, float(_scan(sampled.mirrored(), np.ones(1))[0]))
+    low = float(grid[merged[-1]])
+    high = low + step
+    while high - low > 1e-5 * sampled.width:
+        middle = 0.5 * (low + high)
+        low, high = (middle, high) if _merged(sampled, middle, 4801) else (low, middle)
+    return 0.5 * (low + high)
+
+
+def _merged(sampled: SampledProfile, separation: float, count: int) -> bool:
+    """Whether an equal pair is nowhere brighter than where its stars give equal light."""
+    t = np.linspace(-sampled.window, separation + sampled.window, count)
+    first, second = sampled.value(t), sampled.value(t - separation)
+    total = first + second
+    equal = total[np.flatnonzero(np.diff(np.sign(first - second)))]
+    left, right = total[first >= second].max(initial=0.0), total[second >= first].max(initial=0.0)
+    return bool(equal.size and min(left, right) <= equal.max() * (1.0 + 1e-9))
 
 
 def sparrow(profile: Profile | SampledProfile, magnitude_difference: float) -> float:
@@ -110,7 +132,7 @@ def sparrow_curve(
     forward = _scan(sampled, ratios, precision=1e-5)
     backward = forward if sampled.symmetric else _scan(sampled.mirrored(), ratios, precision=1e-5)
     # Both stars must show where they are equal.
-    forward[0] = backward[0] = max(forward[0], backward[0])
+    forward[0] = backward[0] = sparrow_equal(sampled)
     return SparrowCurve(
         magnitude_differences=frozen(np.concatenate([-differences[:0:-1], differences])),
         separations=frozen(np.concatenate([backward[:0:-1], forward])),
@@ -146,7 +168,7 @@ def _scan(sampled: SampledProfile, ratios: FloatArray, *, precision: float = 1e-
 
     A scan over all separations finds the last that fails, bisection (to `precision` FWHM) the edge.
     """
-    step = min(sampled.width / SAMPLES, sampled.window / 32.0)
+    step = sampled.step
     half = int(np.ceil(sampled.window / step))
     top = int(sampled.extent / step)
     place = step * np.arange(-half, top + half + 1)
@@ -157,10 +179,19 @@ def _scan(sampled: SampledProfile, ratios: FloatArray, *, precision: float = 1e-
     lost = np.empty(ratios.size)
     for i, ratio in enumerate(ratios):
         last = int(np.ceil(_hiding_place(sampled, float(ratio)) / step))
-        row, column, part = _maxima(ratio * own_slope + slopes[: min(last, top)])
+        count = min(last, top)
+        slope_here = ratio * own_slope + slopes[:count]
+        row, column, part = _maxima(slope_here)
         ours = ratio * _between(own_value[None], np.zeros_like(row), column, part)
-        ahead = ours > 1.001 * _between(values, row, column, part)
-        shown = np.zeros(min(last, top), dtype=bool)
+        theirs = _between(values, row, column, part)
+        shown = np.zeros(count, dtype=bool)
+        shown[row[ours > _CLEAR * theirs]] = True
+        # Where neither star clearly wins, the maximum must be placed exactly.
+        close = (ours <= _CLEAR * theirs) & (_CLEAR * ours > theirs)
+        row, column, part = row[close], column[close], part[close]
+        crossing = slope_here[row, column] > 0.0
+        cell = (column - half) * step
+        ahead = _ahead(sampled, np.full(row.size, ratio), row * step, cell, step, part, crossing)
         shown[row[ahead]] = True
         lost[i] = step * float(np.flatnonzero(~shown)[-1]) if last <= top else inf
     known = np.isfinite(lost)
@@ -175,25 +206,45 @@ def _scan(sampled: SampledProfile, ratios: FloatArray, *, precision: float = 1e-
 
 
 def _shown(sampled: SampledProfile, ratios: FloatArray, separations: FloatArray) -> AnyArray:
-    """Whether each companion shows at its separation, its maximum placed exactly."""
-    offset = np.linspace(-sampled.window, sampled.window, _FINE)
+    """Whether each companion shows at its separation."""
+    count = max(_FINE, 4 * int(np.ceil(sampled.window / sampled.step)) + 1)
+    offset = np.linspace(-sampled.window, sampled.window, count)
     slope = ratios[:, None] * sampled.slope(offset) + sampled.slope(separations[:, None] + offset)
     row, column, part = _maxima(slope)
     spacing = float(offset[1] - offset[0])
-    ratio, apart = ratios[row], separations[row]
-    place = offset[0] + spacing * (column + part)
-    # Only a crossing that the whole interval brackets can be bisected; a short rise stays put.
     crossing = slope[row, column] > 0.0
-    low = np.where(crossing, offset[column], place)
-    high = np.where(crossing, offset[column] + spacing, place)
+    ahead = _ahead(sampled, ratios[row], separations[row], offset[column], spacing, part, crossing)
+    shown = np.zeros(separations.size, dtype=bool)
+    shown[row[ahead]] = True
+    return shown
+
+
+def _ahead(
+    sampled: SampledProfile,
+    ratio: FloatArray,
+    apart: FloatArray,
+    cell: FloatArray,
+    spacing: float,
+    part: FloatArray,
+    crossing: AnyArray,
+) -> AnyArray:
+    """Whether the companion outshines the other star at each maximum, placed by bisection.
+
+    Parameters
+    ----------
+    ratio, apart : ndarray, shape (n,)
+        Companion's light over the other star's, and their separation.
+    cell, spacing, part, crossing : ndarray, shape (n,), and float
+        The maximum lies `part` of `spacing` beyond `cell` (from the companion); the slope falls
+        through zero within that cell where `crossing`, is only close to it elsewhere.
+    """
+    place = cell + spacing * part
+    low, high = np.where(crossing, cell, place), np.where(crossing, cell + spacing, place)
     for _ in range(16):
         place = 0.5 * (low + high)
         rising = ratio * sampled.slope(place) + sampled.slope(apart + place) > 0.0
         low, high = np.where(rising & crossing, place, low), np.where(rising, high, place)
-    ahead = ratio * sampled.value(place) > (1.0 + _MARGIN) * sampled.value(apart + place)
-    shown = np.zeros(separations.size, dtype=bool)
-    shown[row[ahead]] = True
-    return shown
+    return ratio * sampled.value(place) > (1.0 + _MARGIN) * sampled.value(apart + place)
 
 
 def _maxima(slope: FloatArray) -> tuple[AnyArray, AnyArray, FloatArray]:

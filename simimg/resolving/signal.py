@@ -29,11 +29,11 @@ from simimg.camera.converter import converter_top
 from simimg.imaging.basis import PsfBasis, Transfer
 from simimg.imaging.profile import effective_band, peak_place, sampled_psf
 from simimg.imaging.render import expected_image
-from simimg.imaging.sources import PlacedShape, Points, Sources, no_points
+from simimg.imaging.sources import PlacedShape, Sources, no_points
 from simimg.scene.model import Scene
 
-_WINDOW = 25.0  # FWHMs from the star to the edge of the sums over its pixels
-_TABLE = 4.0  # FWHMs from the star to the edge of the table of its brightest pixels
+_WINDOW = 25.0  # FWHMs, without pixel, from the star to the edge of the sums over its pixels
+_TABLE = 400  # most samples from the peak to the edge of the table of its brightest pixels
 _LARGEST_STAMP = 512  # samples a side of the stamp of an extended object
 _DIRECT = 64  # stars whose weighted sum is made one by one; more are interpolated
 
@@ -140,35 +140,52 @@ class StarLight:
         self.width_pixels = width / scale
         # A PSF many pixels wide is summed over every so-manieth pixel: it is smooth.
         self.stride = max(1, floor(width / (8.0 * scale)))
-        half = ceil(max(24.0, _WINDOW * self.width_pixels / self.stride))
-        share = sampled_psf(
-            transfer, pixel_scale=self.stride * scale, oversampling=1, half_width_pixels=half
-        )
-        self.share: FloatArray = frozen(share / self.stride**2)
+        band = effective_band(transfer)
+        blur = max(1.0 / band, sqrt(max(width**2 - (0.9 * scale) ** 2, 0.0)))
+        half = ceil((_WINDOW * blur / scale + 4.0) / self.stride)
+        self._transfer = transfer
+        self.share: FloatArray = frozen(self.image(0.0, 0.0, half))
         self.noise_pixels = 1.0 / float((self.share**2).sum() * self.stride**2)
-        fine = 0.125 / effective_band(transfer)
-        count = ceil((_TABLE * width + 2.0 * scale) / fine)
-        table = sampled_psf(transfer, pixel_scale=fine, oversampling=1, half_width_pixels=count)
+        # The brightest pixel is the one at the peak or its neighbour: a small table serves.
+        reach = 2.0 * scale
+        fine = max(0.125 / band, reach / _TABLE)
+        count = max(8, ceil(reach / fine))
+        place = peak_place(transfer)
+        table = sampled_psf(
+            transfer, pixel_scale=fine, oversampling=1, half_width_pixels=count, centre=place
+        )
         axis = np.arange(-count, count + 1) * (fine / scale)
         self._edge = float(axis[-1])
         self._table = RectBivariateSpline(axis, axis, table * (scale / fine) ** 2, kx=5, ky=5)
-        place = peak_place(transfer)
         self._peak = place[0] / scale, place[1] / scale
 
-    def on_pixel(self, dx: FloatArray, dy: FloatArray) -> FloatArray:
-        """Share of a star's light on a pixel at (dx, dy) from it; 0 beyond the table's edge."""
+    def image(self, dx: float, dy: float, half: int) -> FloatArray:
+        """Share of a star's light on pixels every `stride`, the middle one (dx, dy) from it."""
+        scale = self.detector.pixel_scale
+        image = sampled_psf(
+            self._transfer,
+            pixel_scale=self.stride * scale,
+            oversampling=1,
+            half_width_pixels=half,
+            centre=(dx * scale, dy * scale),
+        )
+        return image / self.stride**2
+
+    def _on_pixel(self, dx: FloatArray, dy: FloatArray) -> FloatArray:
+        """Share of a star's light on a pixel at (dx, dy) from its peak; 0 beyond the table."""
         inside = (np.abs(dx) <= self._edge) & (np.abs(dy) <= self._edge)
         value = self._table.ev(np.where(inside, dy, 0.0), np.where(inside, dx, 0.0))
         return np.asarray(np.where(inside, value, 0.0))
 
     def peaks(self, x: FloatArray, y: FloatArray, electrons: FloatArray) -> FloatArray:
         """Electrons of each star's brightest pixel, alone and at its own place."""
+        place_x, place_y = x + self._peak[0], y + self._peak[1]
         best = np.zeros(np.shape(x))
         for across in (-1.0, 0.0, 1.0):
             for up in (-1.0, 0.0, 1.0):
-                dx = np.rint(x + self._peak[0]) + across - x
-                dy = np.rint(y + self._peak[1]) + up - y
-                best = np.maximum(best, self.on_pixel(dx, dy))
+                dx = np.rint(place_x) + across - place_x
+                dy = np.rint(place_y) + up - place_y
+                best = np.maximum(best, self._on_pixel(dx, dy))
         return np.asarray(best * electrons)
 
     def snr(self, electrons: FloatArray) -> FloatArray:
@@ -204,7 +221,7 @@ def image_signal(share: FloatArray, electrons: float, variance: float, *, area: 
     variance : float
         Of a pixel without it.
     """
-    peak = electrons * float(share.max())
+    peak = electrons * (float(share.max()) if area == 1.0 else _vertex(share))
     if electrons <= 0.0:
         return Signal(peak, 0.0, 0.0)
     noise_pixels = 1.0 / float((share**2).sum() * area)
@@ -215,9 +232,22 @@ def image_signal(share: FloatArray, electrons: float, variance: float, *, area: 
     return Signal(peak, snr, electrons * sqrt(weighted))
 
 
-def pair_signal(basis: PsfBasis, light: StarLight, stars: tuple[Entry, Entry]) -> Signal:
+def _vertex(image: FloatArray) -> float:
+    """Peak of a smooth image between its samples: parabolas along both axes."""
+    row, column = np.unravel_index(int(np.argmax(image)), image.shape)
+    top = float(image[row, column])
+    peak = top
+    for line, i in ((image[row], int(column)), (image[:, column], int(row))):
+        if 0 < i < line.size - 1:
+            bend = float(line[i - 1] - 2.0 * top + line[i + 1])
+            if bend < 0.0:
+                peak -= float(line[i - 1] - line[i + 1]) ** 2 / (8.0 * bend)
+    return peak
+
+
+def pair_signal(light: StarLight, stars: tuple[Entry, Entry]) -> Signal:
     """Signal of the two stars of a pair together, at their own places on the pixels."""
-    detector, stride = light.detector, light.stride
+    variance, stride = light.detector.variance, light.stride
     apart = max(abs(stars[1].x - stars[0].x), abs(stars[1].y - stars[0].y))
     x = np.array([star.x for star in stars])
     y = np.array([star.y for star in stars])
@@ -229,16 +259,17 @@ def pair_signal(basis: PsfBasis, light: StarLight, stars: tuple[Entry, Entry]) -
             return Signal(peak, 0.0, 0.0)
         # Apart, their squares add.
         noise_pixels = light.noise_pixels * total**2 / float((electrons**2).sum())
-        snr = total / sqrt(total + noise_pixels * detector.variance)
+        snr = total / sqrt(total + noise_pixels * variance)
         return Signal(peak, snr, float(np.sqrt((light.snr_fit(electrons) ** 2).sum())))
-    margin = ceil(max(12.0, 12.0 * light.width_pixels))
-    left, bottom = floor(x.min()) - margin, floor(y.min()) - margin
-    columns = ceil((ceil(x.max()) + margin - left + 1) / stride)
-    rows = ceil((ceil(y.max()) + margin - bottom + 1) / stride)
-    share = electrons / total if total > 0.0 else np.array([0.5, 0.5])
-    points = Points((x - left) / stride, (y - bottom) / stride, share)
-    image = _painted(basis, Sources(points), columns, rows, detector, stride)
-    return image_signal(image, total, detector.variance, area=float(stride**2))
+    parts = electrons / total if total > 0.0 else np.array([0.5, 0.5])
+    half = ceil(apart / stride) + (light.share.shape[0] - 1) // 2
+    share = np.zeros((2 * half + 1, 2 * half + 1))
+    # A pixel near the brighter star in the middle, so that its brightest pixel is a sample.
+    brighter = int(np.argmax(electrons))
+    middle = np.rint(x[brighter]), np.rint(y[brighter])
+    for part, at_x, at_y in zip(parts, x, y):
+        share += part * light.image(middle[0] - at_x, middle[1] - at_y, half)
+    return image_signal(share, total, variance, area=float(stride**2))
 
 
 def shape_signal(basis: PsfBasis, one: Entry, detector: Detector, *, width: float) -> Signal:
@@ -257,19 +288,12 @@ def shape_signal(basis: PsfBasis, one: Entry, detector: Detector, *, width: floa
     # The stamp keeps the object's phase on the pixels.
     x, y = (half + (place - round(place)) / stride for place in (one.x, one.y))
     sources = Sources(no_points(), (PlacedShape(x, y, 1.0, shape),))
-    image = _painted(basis, sources, 2 * half + 1, 2 * half + 1, detector, stride)
-    return image_signal(image, one.electrons, detector.variance, area=float(stride**2))
-
-
-def _painted(
-    basis: PsfBasis, sources: Sources, columns: int, rows: int, detector: Detector, stride: int
-) -> FloatArray:
-    """Light in a pixel at samples `stride` pixels apart; places in `sources` count samples."""
     image = expected_image(
         basis,
         sources,
-        columns=columns,
-        rows=rows,
+        columns=2 * half + 1,
+        rows=2 * half + 1,
         pixel_scale=stride * detector.pixel_scale,
     )
-    return np.asarray(image, dtype=np.float64) / stride**2
+    share = np.asarray(image, dtype=np.float64) / stride**2
+    return image_signal(share, one.electrons, detector.variance, area=float(stride**2))
