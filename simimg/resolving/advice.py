@@ -30,13 +30,15 @@ _MOST_EXPOSURES = 1000
 _ARCSEC = 180.0 / 3.141592653589793 * 3600.0
 
 
-def advise(observation: Observation, judgement: Judgement) -> str:
+def advise(observation: Observation, judgement: Judgement, *, brief: bool = False) -> str:
     """Say what the answer means and what would change it.
 
     Parameters
     ----------
     observation : Observation
     judgement : Judgement
+    brief : bool, optional
+        Leave out what takes time: which seeing, aperture or pixel would resolve the pair.
     """
     record = judgement.record
     if judgement.sighting.empty:
@@ -55,12 +57,15 @@ def advise(observation: Observation, judgement: Judgement) -> str:
         )
     opening = (
         "Two stars are certain here, and farther apart than Rayleigh's limit, which is that of an "
-        "equal pair; but by Sparrow the fainter does not show as a peak of its own: "
+        "equal pair; but by Sparrow the fainter does not show as a peak of its own"
         if verdicts[0] == "resolved"
-        else "Two stars are certain here but not resolved: "
+        else "Two stars are certain here but not resolved"
         if verdicts[1] == "unresolved"
-        else "Two stars are certain here, and it is open whether they are resolved: "
+        else "Two stars are certain here, and it is open whether they are resolved"
     )
+    if brief:
+        return opening + "."
+    opening += ": "
     return opening + _what_would(observation, record, judgement.geometry.angle)
 
 

@@ -3,8 +3,8 @@
 photutils finds what stands out; brightest first, each is fitted as a single star with the light of
 those already fitted taken off (which also drops the rings and spikes of bright stars that a finder
 takes for stars), twice over. What then shows a second star within two delivered FWHM, so good that
-no single star of the whole frame is likely to look that double, and two stars within three FWHM of
-each other, are pairs. What two stars do not explain, a galaxy say, is left out.
+no single star of the whole frame is likely to look that double, is a pair; what two stars do not
+explain, a galaxy say, is left out.
 
 Electrons and detector pixels.
 """
@@ -22,7 +22,7 @@ from simimg.resolving.doubles import probability_single
 from simimg.resolving.neighbours import CLEAR, PlacedStar, star_light
 from simimg.resolving.observation import Observation
 from simimg.resolving.secondstar import scan_second_star
-from simimg.resolving.sighting import NEXT, Sighting, look
+from simimg.resolving.sighting import Sighting, look
 from simimg.resolving.starfit import Cutout, Likelihood, StarFit, fit_stars
 
 _THRESHOLD = 5.0  # standard deviations of the background at which a star is looked at
@@ -63,7 +63,7 @@ def find_pairs(
     for index, star in enumerate(stars):
         if taken[index]:
             continue
-        close = [i for i in tree.query_ball_point(star[:2], NEXT * fwhm) if i != index]
+        close = [i for i in tree.query_ball_point(star[:2], CLEAR * fwhm) if i != index]
         around = tree.query_ball_point(star[:2], (_LIGHT + 4.0) * fwhm)
         sighting = _pair_at(observation, stars, index, close, around)
         if sighting is None or sighting.double is None:
@@ -163,18 +163,14 @@ def _pair_at(
 ) -> Sighting | None:
     """The pair that a star belongs to, or None."""
     star = stars[index]
-    fwhm = observation.fwhm
-    companion = max(close, key=lambda i: stars[i].electrons, default=None)
-    known = [stars[i] for i in around if i != index and i != companion]
-    if companion is None:
-        if not _looks_double(observation, star, known, len(stars)):
-            return None
-        sighting = look(observation, star[:2], known=known)
-    else:
-        other = stars[companion][:2]
-        near = hypot(other[0] - star.x, other[1] - star.y) <= CLEAR * fwhm
-        sighting = look(observation, star[:2], other=None if near else other, known=known)
+    known = [stars[i] for i in around if i != index and i not in close]
+    if not close and not _looks_double(observation, star, known, len(stars)):
+        return None
+    sighting = look(observation, star[:2], known=known)
     if sighting.double is None or not sighting.probability_single < _FALSE / len(stars):
+        return None
+    apart = hypot(*(sighting.double.places[1] - sighting.double.places[0]))
+    if apart > 0.999 * CLEAR * observation.fwhm:
         return None
     return sighting if _explained(sighting) else None
 

@@ -6,23 +6,21 @@ Arcseconds and degrees in the record; detector pixels before.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import degrees, inf, nan
+from math import degrees, nan
 
 import numpy as np
 
-from simimg.arrays import FloatArray
-from simimg.resolving.criteria import rayleigh_saddle, sparrow, sparrow_curve
 from simimg.resolving.observation import Observation
 from simimg.resolving.pairfit import PairGeometry, pair_geometry
+from simimg.resolving.pairlimits import PairLimits
 from simimg.resolving.records import CriterionVerdict, PairMeasurement, PairTruth
-from simimg.resolving.resolution import BRIGHTEST_DIFFERENCE, to_arcsec
+from simimg.resolving.resolution import to_arcsec
 from simimg.resolving.saddle import saddle_seen
 from simimg.resolving.sighting import Sighting
 from simimg.resolving.starfit import StarFit
-from simimg.resolving.verdict import SURELY_DOUBLE, probability_beyond, verdict
+from simimg.resolving.verdict import SURELY_DOUBLE, Limit, probability_beyond, verdict
 
 _REST = 6.0  # standard errors of the magnitude difference over which Sparrow's limit is tabulated
-_STEPS = 120
 
 
 @dataclass(frozen=True)
@@ -54,7 +52,11 @@ class Judgement:
 
 
 def judge(
-    observation: Observation, sighting: Sighting, *, named: NamedPair | None = None
+    observation: Observation,
+    sighting: Sighting,
+    limits: PairLimits,
+    *,
+    named: NamedPair | None = None,
 ) -> Judgement:
     """Turn a sighting into a record.
 
@@ -62,19 +64,21 @@ def judge(
     ----------
     observation : Observation
     sighting : Sighting
+    limits : PairLimits
+        Of the observation's PSF.
     named : NamedPair, optional
         The pair of TRUTH that stands here: it settles which star is first, and nothing else.
     """
     fit = sighting.double
     if fit is None or sighting.empty:
-        return Judgement(_single(observation, sighting, named), sighting, None)
+        return Judgement(_single(observation, sighting, limits, named), sighting, None)
     first, second = _order(fit, named)
     geometry = pair_geometry(fit, first=first, second=second)
     errors = geometry.errors
     scale = observation.arcsec
     dx, dy = fit.places[second] - fit.places[first]
     chance = sighting.probability_single
-    rayleigh, sparrow_verdict = _criteria(observation, geometry, chance)
+    rayleigh, sparrow_verdict = _criteria(observation, limits, geometry, chance)
     resolved = "resolved" in (rayleigh.verdict, sparrow_verdict.verdict)
     saddle, saddle_error = _saddle(sighting, fit, first, second)
     x, y = (float(value) for value in fit.places[first])
@@ -121,43 +125,32 @@ def _sky(observation: Observation, x: float, y: float) -> tuple[float, float]:
 
 
 def _criteria(
-    observation: Observation, geometry: PairGeometry, chance: float
+    observation: Observation, limits: PairLimits, geometry: PairGeometry, chance: float
 ) -> tuple[CriterionVerdict, CriterionVerdict]:
     """Both delivered limits along the pair's own line, with probabilities and verdicts."""
     scale = observation.geometry.pixel_scale
-    difference = float(
-        np.clip(geometry.magnitude_difference, -BRIGHTEST_DIFFERENCE, BRIGHTEST_DIFFERENCE)
-    )
     spread = geometry.errors[2]
-    reach = abs(difference) + _REST * (spread if np.isfinite(spread) else 0.0)
-    largest = float(np.clip(reach, 0.1, BRIGHTEST_DIFFERENCE))
-    profile = observation.delivered.profile(geometry.angle, largest)
+    reach = _REST * spread if np.isfinite(spread) else 0.0
+    limit = limits.of(geometry.angle, geometry.magnitude_difference, reach)
     covariance = [geometry.covariance[i][::2] for i in (0, 2)]
-    curve = sparrow_curve(profile, largest=largest, step=largest / _STEPS)
 
-    def limit_for(differences: FloatArray) -> FloatArray:
-        limits = curve(differences) / scale
-        return np.where(np.abs(differences) > BRIGHTEST_DIFFERENCE, inf, limits)
-
-    answers = []
-    for value, limit in (
-        (rayleigh_saddle(profile), rayleigh_saddle(profile) / scale),
-        (sparrow(profile, difference), limit_for),
-    ):
+    def answer(value: float, beyond: float | Limit) -> CriterionVerdict:
         probability = probability_beyond(
-            limit,
+            beyond,
             separation=geometry.separation,
             magnitude_difference=geometry.magnitude_difference,
             covariance=covariance,
         )
-        answers.append(
-            CriterionVerdict(
-                limit_arcsec=to_arcsec(value),
-                probability=probability,
-                verdict=verdict(probability, probability_single=chance),
-            )
+        return CriterionVerdict(
+            limit_arcsec=to_arcsec(value),
+            probability=probability,
+            verdict=verdict(probability, probability_single=chance),
         )
-    return answers[0], answers[1]
+
+    return (
+        answer(limit.rayleigh, limit.rayleigh / scale),
+        answer(limit.sparrow, lambda differences: limit.sparrow_for(differences) / scale),
+    )
 
 
 def _saddle(sighting: Sighting, fit: StarFit, first: int, second: int) -> tuple[float, float]:
@@ -174,13 +167,13 @@ def _saddle(sighting: Sighting, fit: StarFit, first: int, second: int) -> tuple[
 
 
 def _single(
-    observation: Observation, sighting: Sighting, named: NamedPair | None
+    observation: Observation, sighting: Sighting, limits: PairLimits, named: NamedPair | None
 ) -> PairMeasurement:
     """The record of a place where the fit wants no second star."""
     x, y = (float(value) for value in sighting.single.places[0])
     if sighting.empty or not observation.holds(x, y):
         x, y = sighting.place
-    profile = observation.delivered.profile(0.0)
+    limit = limits.of(0.0, 0.0, 0.0)
 
     def unresolved(limit: float) -> CriterionVerdict:
         return CriterionVerdict(
@@ -205,7 +198,7 @@ def _single(
         ambiguous_180=False,
         saddle_ratio=nan,
         saddle_ratio_error=nan,
-        rayleigh=unresolved(rayleigh_saddle(profile)),
-        sparrow=unresolved(sparrow(profile, 0.0)),
+        rayleigh=unresolved(limit.rayleigh),
+        sparrow=unresolved(limit.sparrow),
         truth=None if named is None else named.truth,
     )

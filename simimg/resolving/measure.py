@@ -15,12 +15,15 @@ from typing import Any
 from simimg.errors import InputError, mistake
 from simimg.frame import Frame
 from simimg.resolving.advice import advise
-from simimg.resolving.judging import Judgement, NamedPair, judge
+from simimg.resolving.judging import NamedPair, judge
 from simimg.resolving.observation import Observation, observe
+from simimg.resolving.pairlimits import PairLimits
 from simimg.resolving.records import PairMeasurement, PairTruth
-from simimg.resolving.sighting import look
+from simimg.resolving.sighting import Sighting, look
 
 Place = tuple[float, float]
+_Seen = tuple[Sighting, NamedPair | None]
+_ADVISED = 16  # pairs for which it is worked out what would resolve them
 
 
 def measure(frame: Frame, *, near: Sequence[Place] | None = None) -> list[PairMeasurement]:
@@ -46,13 +49,9 @@ def measure(frame: Frame, *, near: Sequence[Place] | None = None) -> list[PairMe
     """
     named = [] if near is not None else named_pairs(frame)
     observation = _observe(frame, near or (), named)
-    if near is not None:
-        judged = [judge(observation, look(observation, place)) for place in near]
-    elif named:
-        judged = [_of_truth(observation, pair) for pair in named]
-    else:
-        judged = _found(observation)
-    return [_advised(observation, one) for one in judged]
+    if near is None and not named:
+        return _records(observation, _found(observation))
+    return _records(observation, [*_named(observation, named), *_placed(observation, near or ())])
 
 
 def measure_all(frame: Frame, *, near: Sequence[Place] | None = None) -> list[PairMeasurement]:
@@ -63,11 +62,15 @@ def measure_all(frame: Frame, *, near: Sequence[Place] | None = None) -> list[Pa
     places = list(near or ())
     named = named_pairs(frame)
     observation = _observe(frame, places, named)
-    judged = [_of_truth(observation, pair) for pair in named]
-    judged += [judge(observation, look(observation, place)) for place in places]
     besides = [*places, *(place for pair in named for place in (pair.first, pair.second))]
-    judged += _found(observation, besides)
-    return [_advised(observation, one) for one in judged]
+    return _records(
+        observation,
+        [
+            *_named(observation, named),
+            *_placed(observation, places),
+            *_found(observation, besides),
+        ],
+    )
 
 
 def named_pairs(frame: Frame) -> list[NamedPair]:
@@ -126,15 +129,26 @@ def _observe(frame: Frame, places: Sequence[Place], named: Sequence[NamedPair]) 
     return observation
 
 
-def _of_truth(observation: Observation, pair: NamedPair) -> Judgement:
-    return judge(observation, look(observation, pair.first, other=pair.second), named=pair)
+def _named(observation: Observation, named: Sequence[NamedPair]) -> list[_Seen]:
+    return [(look(observation, pair.first, other=pair.second), pair) for pair in named]
 
 
-def _found(observation: Observation, besides: Sequence[Place] = ()) -> list[Judgement]:
+def _placed(observation: Observation, places: Sequence[Place]) -> list[_Seen]:
+    return [(look(observation, place), None) for place in places]
+
+
+def _found(observation: Observation, besides: Sequence[Place] = ()) -> list[_Seen]:
     from simimg.resolving.finding import find_pairs
 
-    return [judge(observation, one) for one in find_pairs(observation, besides=besides)]
+    return [(sighting, None) for sighting in find_pairs(observation, besides=besides)]
 
 
-def _advised(observation: Observation, one: Judgement) -> PairMeasurement:
-    return replace(one.record, advice=advise(observation, one))
+def _records(observation: Observation, seen: Sequence[_Seen]) -> list[PairMeasurement]:
+    """Judge what was seen; where there is much of it, with brief advice."""
+    limits = PairLimits(observation.delivered, pairs=len(seen))
+    records = []
+    for sighting, pair in seen:
+        judgement = judge(observation, sighting, limits, named=pair)
+        advice = advise(observation, judgement, brief=len(seen) > _ADVISED)
+        records.append(replace(judgement.record, advice=advice))
+    return records

@@ -60,9 +60,9 @@ def saddle_seen(
     base = background + cutout.known
     light = model - base
     seen = np.array([_weights(x, y) @ _patch(light, x, y) for x, y in points])
-    middle = share <= 0.5
-    one = int(np.argmax(np.where(middle, seen, -np.inf)))
-    two = int(np.argmax(np.where(middle, -np.inf, seen)))
+    near = min(0.5, reach)
+    one = int(np.argmax(np.where(share <= near, seen, -np.inf)))
+    two = int(np.argmax(np.where(share >= 1.0 - near, seen, -np.inf)))
     low = one + int(np.argmin(seen[one : two + 1]))
     lower = one if seen[one] < seen[two] else two
     shown = low not in (one, two)

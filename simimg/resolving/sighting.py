@@ -8,7 +8,7 @@ around are found in what is left and allowed for. Detector pixels and electrons.
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import hypot
 
 import numpy as np
@@ -112,7 +112,7 @@ def look(
     neighbours: list[PlacedStar] = list(known or ())
     sighting = _look_once(observation, place, radius, neighbours)
     if known is not None:
-        return sighting
+        return _let_go(observation, sighting, radius)
     for _ in range(_ROUNDS):
         found = _around(observation, sighting, radius)
         if _same(found, neighbours):
@@ -121,7 +121,22 @@ def look(
         sighting = _look_once(observation, place, radius, neighbours)
     if other is None and sighting.probability_single >= SURELY_DOUBLE:
         return _beside(observation, sighting) or sighting
-    return sighting
+    return _let_go(observation, sighting, radius)
+
+
+def _let_go(observation: Observation, sighting: Sighting, radius: float) -> Sighting:
+    """A certain second star held back by the rim of its disc is allowed beyond it."""
+    double = sighting.double
+    if double is None or not sighting.probability_single < SURELY_DOUBLE:
+        return sighting
+    if hypot(*(double.places[1] - double.places[0])) < 0.999 * radius:
+        return sighting
+    free = fit_stars(sighting.cutouts, places=double.places, electrons=double.electrons)
+    wide = hypot(*(free.places[1] - free.places[0])) > max(radius, NEXT * observation.fwhm)
+    if wide or free.deviance > double.deviance or free.electrons.min() <= 0.0:
+        return sighting
+    gain = max(0.0, sighting.single.deviance - free.deviance)
+    return replace(sighting, double=free, gain=gain)
 
 
 def _around(observation: Observation, sighting: Sighting, radius: float) -> list[PlacedStar]:
