@@ -65,8 +65,9 @@ class TestPanels:
         assert "0" in ticks
         assert any("\N{THIN SPACE}000" in tick for tick in ticks)
 
-    @pytest.mark.parametrize("rotation", [0.0, 35.0, 160.0, 271.0])
-    @pytest.mark.parametrize("mirrored", [False, True])
+    @pytest.mark.parametrize(
+        ("rotation", "mirrored"), [(0.0, False), (35.0, True), (160.0, False), (271.0, True)]
+    )
     def test_arrows_follow_the_coordinates(self, rotation, mirrored):
         made = frames.frame(frames.STARS, rotation=rotation, mirrored=mirrored)
         figure = drawn.figure(made)
