@@ -8,13 +8,13 @@ from typing import TYPE_CHECKING
 import click
 from simimg_cli import options
 from simimg_cli.output import document, say
+from simimg_cli.scenes import named
 
 from simimg.errors import InputError
 
 if TYPE_CHECKING:
-    from simimg.resolving.records import PairMeasurement
-
     from simimg.frame import Frame
+    from simimg.resolving.records import PairMeasurement
 
 
 @click.command("figure")
@@ -59,7 +59,8 @@ def command(
 
     from simimg.show.figure import write_figure
 
-    chosen, measurement = _subject(read, pair, near)
+    with named(frame):
+        chosen, measurement = _subject(read, pair, near)
     caption = write_figure(read, output, overwrite=overwrite, pair=chosen, measurement=measurement)
     if as_json:
         payload = {"frame": frame, "figure": output, "caption": caption}

@@ -8,14 +8,18 @@ from typing import TYPE_CHECKING, Any
 
 import click
 from simimg_cli import options
-from simimg_cli.output import document, note, plain, say, warn
+from simimg_cli.output import document, note, plain, say, table, warn
 from simimg_cli.progress import with_progress
-from simimg_cli.words import arcsec, figures, probability, with_error
+from simimg_cli.scenes import named
+from simimg_cli.words import arcsec, probability, short, with_error
 
 from simimg.errors import InputError
 
 if TYPE_CHECKING:
     from simimg.frame import Frame
+
+
+MANY = 8  # pairs: of more, a table with a line for each
 
 
 @click.command("measure")
@@ -70,13 +74,14 @@ def _measured(path: str, near: Sequence[tuple[float, float]]) -> dict[str, Any]:
 
     from simimg.resolving.measure import measure_all
 
-    pairs = measure_all(frame, near=list(near) or None)
+    with named(path):
+        pairs = measure_all(frame, near=list(near) or None)
     return {
         "frame": path,
         "scene_id": frame.scene_id,
         "simulated": frame.simulated,
         "warnings": _warnings(frame),
-        "pairs": [{**plain(pair.to_dict()), "advice": pair.advice} for pair in pairs],
+        "pairs": [plain(pair.to_dict()) for pair in pairs],
     }
 
 
@@ -112,43 +117,74 @@ def _print(answer: Mapping[str, Any], *, heading: bool, quiet: bool) -> None:
         warn(answer["warnings"])
     if not answer["pairs"]:
         say("nothing to measure: no pair is named, none was found, and no place was given")
+    if len(answer["pairs"]) > MANY:
+        _print_table(answer["pairs"])
+        return
     width = max((len(_name(pair)) for pair in answer["pairs"]), default=0)
     for pair in answer["pairs"]:
         _print_pair(pair, width)
 
 
+def _print_table(pairs: Sequence[Mapping[str, Any]]) -> None:
+    """A line for each of many pairs."""
+    columns = ("pair", "separation", "PA", "", "dm", "single star", "Rayleigh", "", "Sparrow", "")
+    rows = []
+    for pair in pairs:
+        separation, angle, difference = _geometry(pair)
+        row = [_name(pair), separation, angle, "*" if pair["ambiguous_180"] else "", difference]
+        row.append(probability(pair["probability_single"]))
+        for criterion in ("rayleigh", "sparrow"):
+            row += [pair[criterion]["verdict"], _chance(pair[criterion])]
+        rows.append(row)
+    table(columns, rows)
+    if any(pair["ambiguous_180"] for pair in pairs):
+        say("* the position angle may be half a turn off")
+    say("single star: the chance that one star would look so double; (): the probability that")
+    say("the pair lies beyond the criterion's limit. Limits, saddles and advice: --near or --json")
+
+
+def _chance(verdict: Mapping[str, Any], word: str = "") -> str:
+    chance = verdict["probability"]
+    return "" if chance is None else f"({word}{chance:.2f})"
+
+
 def _name(pair: Mapping[str, Any]) -> str:
-    return pair["label"] or f"x {figures(pair['x'])}, y {figures(pair['y'])}"
+    return pair["label"] or f"x {pair['x']:.6g}, y {pair['y']:.6g}"
 
 
 def _print_pair(pair: Mapping[str, Any], width: int) -> None:
-    angle = with_error(pair["position_angle_deg"], pair["position_angle_error_deg"])
-    either = " (or 180 deg on)" if pair["ambiguous_180"] else ""
-    first = [
-        f"{with_error(pair['separation_arcsec'], pair['separation_error_arcsec'])} arcsec",
-        f"PA {angle} deg{either}",
-        f"dm {with_error(pair['magnitude_difference'], pair['magnitude_difference_error'])}",
-        f"chance of a single star {probability(pair['probability_single'])}",
-    ]
-    lines = ["   ".join(first)]
-    truth = pair.get("truth")
+    single = f"chance of a single star {probability(pair['probability_single'])}"
+    if pair["separation_arcsec"] is None:
+        lines = [f"no second star   {single}"]
+    else:
+        separation, angle, difference = _geometry(pair)
+        either = " or half a turn on" if pair["ambiguous_180"] else ""
+        lines = [f"{separation}   PA {angle}{either}   dm {difference}   {single}"]
+    truth = pair["truth"]
     if truth:
         lines.append(
-            f"truth  {arcsec(truth['separation_arcsec'])}   "
-            f"PA {figures(truth['position_angle_deg'])} deg   "
-            f"dm {figures(truth['magnitude_difference'], 3)}"
+            f'truth    {short(truth["separation_arcsec"])}"'
+            f"   PA {short(truth['position_angle_deg'])} deg"
+            f"   dm {short(truth['magnitude_difference'])}"
         )
+    word = "probability "
     for criterion in ("rayleigh", "sparrow"):
         one = pair[criterion]
+        words = f"{criterion.capitalize():<8} {'limit ' + arcsec(one['limit_arcsec'], 3):<13}"
         elongated = "   elongated" if criterion == "sparrow" and pair["elongated"] else ""
-        lines.append(
-            f"{criterion.capitalize():<9}limit {arcsec(one['limit_arcsec'], 3):<8}"
-            f"{one['verdict']:<11}(probability {probability(one['probability'])}){elongated}"
-        )
-    saddle = with_error(pair["saddle_ratio"], pair["saddle_ratio_error"])
-    lines.append(f"saddle between the stars, over their peaks: {saddle}")
-    if pair["advice"]:
-        lines += textwrap.wrap(pair["advice"], 88)
+        lines.append(f"{words} {one['verdict']:<11} {_chance(one, word)}{elongated}".rstrip())
+    if pair["saddle_ratio"] is not None:
+        saddle = with_error(pair["saddle_ratio"], pair["saddle_ratio_error"])
+        lines.append(f"saddle   {saddle} of the fainter peak")
+    lines += textwrap.wrap(pair["advice"], 88)
     for number, line in enumerate(lines):
         name = _name(pair) if number == 0 else ""
         say(f"{name:<{width}}  {line}")
+
+
+def _geometry(pair: Mapping[str, Any]) -> tuple[str, str, str]:
+    """Separation, position angle and magnitude difference with their errors."""
+    separation = with_error(pair["separation_arcsec"], pair["separation_error_arcsec"])
+    angle = with_error(pair["position_angle_deg"], pair["position_angle_error_deg"])
+    difference = with_error(pair["magnitude_difference"], pair["magnitude_difference_error"])
+    return f'{separation}"', f"{angle} deg", difference

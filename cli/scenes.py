@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -56,6 +57,16 @@ def open_scene(
         without=without,
     )
     return Source(where, scene, frame)
+
+
+@contextmanager
+def named(path: str) -> Iterator[None]:
+    """Give a frame's mistakes the name of its file, which a frame in memory does not know."""
+    try:
+        yield
+    except InputError as error:
+        lines = [f"{path}: {line.removeprefix('frame: ')}" for line in error.lines]
+        raise InputError(*lines) from error
 
 
 def _is_frame(path: str) -> bool:

@@ -1,0 +1,192 @@
+"""measure prints what a frame says of its pairs; figure draws it."""
+
+import numpy as np
+import pytest
+from astropy.io import fits
+
+PAIR_KEYS = {
+    "label",
+    "x",
+    "y",
+    "ra_deg",
+    "dec_deg",
+    "separation_arcsec",
+    "separation_error_arcsec",
+    "position_angle_deg",
+    "position_angle_error_deg",
+    "magnitude_difference",
+    "magnitude_difference_error",
+    "probability_single",
+    "elongated",
+    "ambiguous_180",
+    "saddle_ratio",
+    "saddle_ratio_error",
+    "rayleigh",
+    "sparrow",
+    "truth",
+}
+
+
+@pytest.fixture
+def frame(run, scene):
+    assert run("expose", scene, "-o", "frame.fits", "--quiet").code == 0
+    return "frame.fits"
+
+
+class TestMeasure:
+    def test_json_holds_what_is_promised(self, run, frame):
+        result = run("measure", frame, "--json")
+        assert (result.code, result.err) == (0, "")
+        found = result.json
+        assert set(found) >= {"version", "scene_id", "simulated", "warnings", "pairs", "frame"}
+        assert found["simulated"] is True
+        assert found["frame"] == frame
+        (pair,) = found["pairs"]
+        assert set(pair) >= PAIR_KEYS
+        assert pair["label"] == "SR-1"
+        assert set(pair["rayleigh"]) >= {"limit_arcsec", "probability", "verdict"}
+        assert set(pair["truth"]) == {
+            "separation_arcsec",
+            "position_angle_deg",
+            "magnitude_difference",
+        }
+        # Five errors: the test is of the way from the frame to the page, not of the fit.
+        error = abs(pair["separation_arcsec"] - 2.4)
+        assert error < 5 * pair["separation_error_arcsec"]
+        assert pair["truth"]["separation_arcsec"] == pytest.approx(2.4)
+
+    def test_as_text(self, run, frame):
+        result = run("measure", frame)
+        assert result.code == 0
+        lines = result.out.splitlines()
+        assert lines[0].startswith("SR-1  2.4")
+        for word in ("+/-", "PA 6", "dm 0.", "chance of a single star"):
+            assert word in lines[0]
+        assert any(line.startswith("      truth    2.4") for line in lines)
+        for criterion in ("Rayleigh", "Sparrow"):
+            (line,) = [line for line in lines if f"      {criterion}" in line]
+            assert "limit" in line
+            assert "(probability " in line
+        assert "confirmed with the observatory" in result.err
+
+    def test_places_come_after_the_pairs_in_their_order(self, run, frame):
+        arguments = ["measure", frame, "--near", "43,36", "--near", "24,20", "--json"]
+        pairs = run(*arguments).json["pairs"]
+        assert [pair["label"] for pair in pairs] == ["SR-1", "", ""]
+        # Nothing is at the first place, the pair at the second.
+        assert pairs[1]["separation_arcsec"] is None
+        assert pairs[1]["probability_single"] > 0.01
+        assert pairs[1]["truth"] is None
+        assert pairs[2]["separation_arcsec"] == pytest.approx(2.4, abs=0.1)
+
+    def test_a_single_star_is_said_to_be_one(self, run, frame):
+        out = run("measure", frame, "--near", "43,36").out
+        (line,) = [line for line in out.splitlines() if line.startswith("x 43, y 36")]
+        assert "no second star" in line
+
+    def test_a_place_off_the_frame(self, run, frame):
+        result = run("measure", frame, "--near", "999,2")
+        assert result.code == 2
+        assert result.out == ""
+        assert result.err.startswith("frame.fits: near: ")
+
+    def test_many_frames(self, run, scene):
+        run("expose", scene, "-o", "n.fits", "--quiet", "--set", "exposure.count=2")
+        result = run("measure", "n-000.fits", "n-001.fits")
+        assert result.code == 0
+        assert [line for line in result.out.splitlines() if line.startswith("n-")] == [
+            "n-000.fits:",
+            "n-001.fits:",
+        ]
+        found = run("measure", "n-000.fits", "n-001.fits", "--json").json
+        assert [one["frame"] for one in found["frames"]] == ["n-000.fits", "n-001.fits"]
+        assert found["scene_id"] == found["frames"][0]["scene_id"]
+        assert found["simulated"] is True
+        assert found["warnings"] == []
+        assert len(found["frames"][1]["pairs"]) == 1
+
+    def test_one_bad_frame_of_two(self, run, frame):
+        result = run("measure", frame, "missing.fits", "--json")
+        assert result.code == 2
+        assert result.err == "missing.fits: no such file; check its name\n"
+        found = result.json
+        assert len(found["frames"][0]["pairs"]) == 1
+        assert found["frames"][1] == {
+            "frame": "missing.fits",
+            "error": ["missing.fits: no such file; check its name"],
+        }
+
+    def test_a_frame_of_another_program(self, run, files):
+        image = np.random.default_rng(1).poisson(100, (30, 30)).astype("i2")
+        fits.PrimaryHDU(image).writeto("foreign.fits")
+        result = run("measure", "foreign.fits")
+        assert result.code in (0, 2)
+        assert "internal error" not in result.err
+        assert files() == ["foreign.fits"]
+
+    def test_of_many_pairs_a_line_for_each(self, run, scene, folder):
+        pair = (
+            '\n[[pair]]\nlabel = "P{0}"\nx = {1}\ny = {2}\nmagnitudes = [13, 13.2]\n'
+            'separation = "2.4 arcsec"\nposition_angle = "{0} deg"\n'
+        )
+        more = "".join(pair.format(i, 10 + 14 * (i % 3), 4 + 13 * (i // 3)) for i in range(9))
+        text = (folder / scene).read_text()
+        (folder / scene).write_text(text[: text.index("[[pair]]")] + more)
+        run("expose", scene, "-o", "many.fits", "--quiet")
+        lines = run("measure", "many.fits").out.splitlines()
+        assert lines[0].split()[:3] == ["pair", "separation", "PA"]
+        assert [line.split()[0] for line in lines[1:10]] == [f"P{i}" for i in range(9)]
+
+
+class TestFigure:
+    @pytest.mark.parametrize(
+        ("ending", "start"), [("png", b"\x89PNG"), ("pdf", b"%PDF"), ("svg", b"<?xml")]
+    )
+    def test_a_figure_and_its_caption(self, run, frame, folder, ending, start):
+        result = run("figure", frame, "-o", f"figure.{ending}")
+        assert result.code == 0
+        assert (folder / f"figure.{ending}").read_bytes().startswith(start)
+        assert "imulated" in result.out
+        assert "SR-1" in result.out
+        assert max(len(line) for line in result.out.splitlines()) <= 96
+
+    def test_as_json(self, run, frame):
+        result = run("figure", frame, "-o", "figure.png", "--json")
+        assert result.err == ""
+        found = result.json
+        assert found["figure"] == "figure.png"
+        assert "SR-1" in found["caption"]
+        assert found["simulated"] is True
+
+    @pytest.mark.parametrize(
+        "arguments", [["--pair", "SR-1"], ["--pair", "0"], ["--near", "24,20"]]
+    )
+    def test_what_it_is_about(self, run, frame, arguments):
+        result = run("figure", frame, "-o", "figure.png", "--quiet", *arguments)
+        assert (result.code, result.out, result.err) == (0, "", "")
+
+    @pytest.mark.parametrize(
+        ("arguments", "said"),
+        [
+            (["-o", "f.png", "--pair", "SR-9"], "SR-9"),
+            (["-o", "f.png", "--pair", "7"], "7"),
+            (["-o", "f.png", "--near", "999,1"], "999"),
+            (["-o", "f.png", "--near", "1,1", "--pair", "SR-1"], "give one of them"),
+            (["-o", "f.jpg"], "end it in .png, .pdf or .svg"),
+            (["-o", "nowhere/f.png"], "does not exist"),
+            (["-o", "frame.fits", "--overwrite"], "end it in"),
+        ],
+    )
+    def test_nothing_is_written(self, run, frame, scene, files, folder, arguments, said):
+        before = (folder / frame).read_bytes()
+        result = run("figure", frame, *arguments)
+        assert result.code == 2
+        assert said in result.err
+        assert files() == [frame, scene]
+        assert (folder / frame).read_bytes() == before
+
+    def test_refuses_to_overwrite(self, run, frame, folder):
+        (folder / "figure.png").write_bytes(b"precious")
+        assert run("figure", frame, "-o", "figure.png").code == 2
+        assert (folder / "figure.png").read_bytes() == b"precious"
+        assert run("figure", frame, "-o", "figure.png", "--overwrite").code == 0
