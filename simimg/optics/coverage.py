@@ -12,6 +12,8 @@ from numpy.typing import ArrayLike
 
 from simimg.arrays import FloatArray
 
+_ROUNDING = 1e-12
+
 
 def disc_coverage(x: FloatArray, y: FloatArray, radius: float) -> FloatArray:
     """Part of each square within a disc about the origin.
@@ -105,7 +107,10 @@ def polygon_coverage(x: FloatArray, y: FloatArray, vertices: ArrayLike) -> Float
         area = np.diff(area, axis=1) * np.diff(edges)[:, np.newaxis]
         part[low - first_row : high - first_row] += area if start[1] < stop[1] else -area
     square = (x[1] - x[0]) * (y[1] - y[0])
-    result[first_row:last_row, first_column:last_column] = np.clip(np.abs(part) / square, 0.0, 1.0)
+    part = np.abs(part) / square
+    # What rounding leaves beside the polygon would count as light.
+    part[part < _ROUNDING] = 0.0
+    result[first_row:last_row, first_column:last_column] = np.minimum(part, 1.0)
     return result
 
 

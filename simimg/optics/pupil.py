@@ -56,6 +56,8 @@ class Pupil:
     transmission : (n, n) ndarray of float64
         Part of the light that each square passes; the amplitude itself, the open part, unless
         given.
+    grey : bool
+        True where edges are grey by area, False where the values are samples, as in a map.
     """
 
     amplitude: FloatArray
@@ -67,6 +69,7 @@ class Pupil:
     enveloped: bool
     reach: float
     transmission: FloatArray = field(default_factory=lambda: np.empty(0))
+    grey: bool = True
 
     def __post_init__(self) -> None:
         amplitude = frozen(self.amplitude)
@@ -196,6 +199,7 @@ def map_pupil(transmission: ArrayLike, diameter: float, *, hard_edges: bool = Fa
         enveloped=False,
         reach=2.0 * pitch * float(np.hypot(outer_x, outer_y).max()),
         transmission=values,
+        grey=hard_edges,
     )
 
 

@@ -19,7 +19,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 from scipy import fft, ndimage, sparse
 
-from simimg.arrays import FloatArray, frozen
+from simimg.arrays import AnyArray, FloatArray, frozen
 from simimg.optics.pupil import Pupil, annular_pupil
 
 _CHUNK = 16384
@@ -145,7 +145,7 @@ class PupilTransfer:
         radius = np.hypot(x, y)
         rest: FloatArray = np.zeros(())
         if self.coefficients is not None:
-            rest = _spline(self.coefficients, x / self.pupil.pitch, y / self.pupil.pitch)
+            rest = evaluate_spline(self.coefficients, x / self.pupil.pitch, y / self.pupil.pitch)
             side = self.pupil.pitch * self.pupil.amplitude.shape[0]
             rest *= (radius < self.reach) & (np.abs(x) < side) & (np.abs(y) < side)
         if self.envelope_weight == 0.0:
@@ -157,14 +157,34 @@ class PupilTransfer:
         return np.asarray(np.maximum(self.envelope_weight * envelope + rest, 0.0))
 
 
-def _spline(coefficients: FloatArray, x: FloatArray, y: FloatArray) -> FloatArray:
-    """Value of a cubic B-spline at ``(x, y)`` pixels from its middle; zero out of the lattice."""
+def evaluate_spline(coefficients: AnyArray, x: FloatArray, y: FloatArray) -> AnyArray:
+    """Value of a cubic B-spline at ``(x, y)`` pixels from its middle; zero out of the lattice.
+
+    Parameters
+    ----------
+    coefficients : (n, n) ndarray, real or complex
+        Cubic B-spline coefficients, those of the middle in the middle.
+    x, y : ndarray
+        Places; they broadcast. The shapes ``(1, k)`` and ``(m, 1)`` take a separable path.
+
+    Returns
+    -------
+    ndarray, real or complex
+    """
     middle = coefficients.shape[0] // 2
     column, row = x + middle, y + middle
     if x.ndim == 2 and y.ndim == 2 and x.shape[0] == 1 and y.shape[1] == 1:
         count = coefficients.shape[0]
-        along_y = _spline_rows(row[:, 0], count) @ coefficients
-        return np.asarray((_spline_rows(column[0], count) @ along_y.T).T)
+        by_row, by_column = _spline_rows(row[:, 0], count), _spline_rows(column[0], count)
+        if np.iscomplexobj(coefficients):
+            # As pairs of real numbers, which the real weights need not be made complex for.
+            part = coefficients.real.dtype
+            rows = by_row.astype(part) @ coefficients.view(part)
+            turned = np.ascontiguousarray(rows.view(coefficients.dtype).T)
+            columns = by_column.astype(part) @ turned.view(part)
+            return np.ascontiguousarray(columns.view(coefficients.dtype).T)
+        along_y = by_row @ coefficients
+        return np.asarray((by_column @ along_y.T).T)
     row, column = np.broadcast_arrays(row, column)
     points = np.stack([row.ravel(), column.ravel()])
     values = ndimage.map_coordinates(

@@ -213,7 +213,7 @@ def map_wavefront(values: ArrayLike, pupil: Pupil) -> FloatArray:
     Returns
     -------
     (n, n) ndarray of float64
-        Optical path (m), 0 where no light passes and the map says nothing.
+        Optical path (m); where the map says nothing, its nearest value.
 
     Raises
     ------
@@ -252,7 +252,7 @@ def map_wavefront(values: ArrayLike, pupil: Pupil) -> FloatArray:
             f"the wavefront map is not finite at {int(lacking.sum())} places that let light "
             f"through, the first at row {row}, column {column} of {count}"
         )
-    return np.where(known | (pupil.transmission > 0.0), given, 0.0)
+    return np.asarray(given)
 
 
 def rms_over_pupil(path: FloatArray, pupil: Pupil) -> float:

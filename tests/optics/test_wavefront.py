@@ -159,7 +159,11 @@ def test_a_map_on_the_lattice_is_taken_as_it_is(pupil):
     path = zernike_wavefront(pupil, {8: 2e-8})
     assert np.array_equal(map_wavefront(path, pupil), path)
     dark = np.where(pupil.transmission > 0.0, path, np.nan)
-    assert_allclose(map_wavefront(dark, pupil), np.where(pupil.transmission > 0, path, 0.0), atol=0)
+    got = map_wavefront(dark, pupil)
+    assert np.array_equal(got[pupil.transmission > 0.0], path[pupil.transmission > 0.0])
+    # The nearest value goes on, so that the rim meets no step.
+    assert got[0, 0] in path
+    assert np.isfinite(got).all()
 
 
 @pytest.mark.parametrize("samples", [100, 700])
