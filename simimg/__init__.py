@@ -15,6 +15,8 @@ if TYPE_CHECKING:
     from simimg.errors import RunError as RunError
     from simimg.exposure import expose as expose
     from simimg.frame import Frame as Frame
+    from simimg.resolving.bound import PairPrecision as PairPrecision
+    from simimg.resolving.bound import precision as precision
     from simimg.resolving.limits import limits as limits
     from simimg.resolving.measure import measure as measure
     from simimg.resolving.records import PairMeasurement as PairMeasurement
@@ -25,12 +27,14 @@ _HOMES = {
     "Frame": "simimg.frame",
     "InputError": "simimg.errors",
     "PairMeasurement": "simimg.resolving.records",
+    "PairPrecision": "simimg.resolving.bound",
     "RunError": "simimg.errors",
     "Scene": "simimg.scene.model",
     "expose": "simimg.exposure",
     "limits": "simimg.resolving.limits",
     "load_scene": "simimg.scene.file",
     "measure": "simimg.resolving.measure",
+    "precision": "simimg.resolving.bound",
 }
 
 __all__ = ["__version__", *_HOMES]
