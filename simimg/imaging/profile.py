@@ -218,11 +218,9 @@ def peak_place(transfer: Transfer) -> tuple[float, float]:
     if transfer.even:
         return (0.0, 0.0)
     x, y = centroid(transfer)
-    # Coarse over the core, then fine about the brightest sample, then a parabola.
-    for fine, half in (
-        (0.25 / effective_band(transfer), 64),
-        (0.02 / effective_band(transfer), 16),
-    ):
+    # Coarse over the core, then finer about the brightest sample, then a parabola.
+    step = 1.0 / effective_band(transfer)
+    for fine, half in ((0.25 * step, 64), (0.02 * step, 16), (0.002 * step, 16)):
         image = sampled_psf(
             transfer, pixel_scale=fine, oversampling=1, half_width_pixels=half, centre=(x, y)
         )

@@ -16,6 +16,7 @@ from dataclasses import dataclass
 from math import inf
 
 import numpy as np
+from scipy import optimize
 
 from simimg.arrays import AnyArray, FloatArray, frozen
 from simimg.resolving.cut import SAMPLES, Profile, SampledProfile, sample_profile
@@ -35,9 +36,25 @@ def sparrow_equal(profile: Profile | SampledProfile) -> float:
     limit = float(_scan(sampled, np.ones(1))[0])
     if not sampled.symmetric:
         limit = max(limit, float(_scan(sampled.mirrored(), np.ones(1))[0]))
+    else:
+        # There the middle turns from a peak into a dip: two inflexions meet.
+        near = 0.002 * sampled.width
+        if (
+            float(sampled.bend(0.5 * (limit - near)))
+            < 0.0
+            < float(sampled.bend(0.5 * (limit + near)))
+        ):
+            limit = float(
+                optimize.brentq(
+                    lambda s: float(sampled.bend(0.5 * s)),
+                    limit - near,
+                    limit + near,
+                    xtol=1e-6 * near,
+                )
+            )
     # Stars with flat tops that overlap keep small maxima of their own beside a bright middle.
     step = sampled.width / 48.0
-    grid = limit + step * np.arange(1, 96)
+    grid = limit + step * np.arange(1, 49)
     merged = np.flatnonzero([_merged(sampled, float(s), 481) for s in grid])
     if merged.size == 0 or merged[-1] == grid.size - 1:
         return limit
@@ -54,7 +71,8 @@ def _merged(sampled: SampledProfile, separation: float, count: int) -> bool:
     t = np.linspace(-sampled.window, separation + sampled.window, count)
     first, second = sampled.value(t), sampled.value(t - separation)
     total = first + second
-    equal = total[np.flatnonzero(np.diff(np.sign(first - second)))]
+    even = np.flatnonzero(np.diff(np.sign(first - second)))
+    equal = np.maximum(total[even], total[even + 1])
     left, right = total[first >= second].max(initial=0.0), total[second >= first].max(initial=0.0)
     return bool(equal.size and min(left, right) <= equal.max() * (1.0 + 1e-9))
 
