@@ -86,7 +86,7 @@ def command(
     prepared = prepare(source.scene, memory_bytes=memory, threads=threads)
     written = []
     jobs = list(zip(indices, frames, pictures))
-    for index, path, picture in with_progress(jobs, "exposures", quiet=quiet or as_json):
+    for index, path, picture in with_progress(jobs, "exposures", quiet=quiet, lines=not as_json):
         frame = expose_prepared(prepared, index=index, keep=kept, threads=threads)
         frame.write(path, overwrite=overwrite)
         if picture is not None:

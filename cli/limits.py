@@ -9,10 +9,10 @@ from typing import TYPE_CHECKING
 import click
 from simimg_cli import options
 from simimg_cli.output import document, say, table, warn
-from simimg_cli.words import arcsec, figures, short
+from simimg_cli.words import NONE, arcsec, figures, short
 
 if TYPE_CHECKING:
-    from simimg.resolving.limits import Limits, ObjectLimits
+    from simimg.resolving.limits import Limits, ObjectLimits, Resolution
 
 
 @click.command("limits")
@@ -68,13 +68,14 @@ def _print(found: Limits, heading: str) -> None:
     say(heading)
     say(f"{short(found.wavelength_nm)} nm, {air}, {pixel}")
     say()
+    say("Limits for an equal pair (Rayleigh by diffraction: the first dark ring)")
     angle = short(found.position_angle_deg)
     rows = [
-        ("diffraction", found.diffraction, "the pupil alone; Rayleigh is the first dark ring"),
-        ("delivered", found.delivered, "optics, air and pixel; verdicts use these"),
+        ("diffraction", found.diffraction, "of the pupil alone"),
+        ("delivered", found.delivered, "of optics, air and pixel"),
     ]
     table(
-        (f"equal pair, along {angle} deg", "FWHM", "Rayleigh", "Sparrow", ""),
+        (f"along {angle} deg", "FWHM", "Rayleigh", "Sparrow", ""),
         [
             (
                 name,
@@ -98,7 +99,7 @@ def _print(found: Limits, heading: str) -> None:
             (
                 "Nyquist pixel",
                 arcsec(found.nyquist_pixel_arcsec),
-                "lambda/2D, the largest that keeps all detail of the optics",
+                "lambda/2D, the largest without loss of detail",
             ),
         ],
         right=(1,),
@@ -128,38 +129,33 @@ def _print_objects(objects: Sequence[ObjectLimits]) -> None:
         ],
         right=(2, 3, 4, 5),
     )
-    pairs = [one for one in objects if one.delivered is not None and one.diffraction is not None]
+    pairs = [one for one in objects if one.kind == "pair"]
     if not pairs:
         return
     say()
-    table(
-        (
-            "pair",
-            "separation",
-            "angle",
-            "dm",
-            "Rayleigh",
-            "Sparrow",
-            "by diffraction alone:",
-            "Rayleigh",
-            "Sparrow",
-        ),
-        [
+    rows = []
+    for one in pairs:
+        rows.append(
             (
                 one.label or NO_LABEL,
-                arcsec(one.separation_arcsec),
+                f'{short(one.separation_arcsec)}"',
                 f"{short(one.position_angle_deg)} deg",
                 short(one.magnitude_difference),
-                arcsec(one.delivered.rayleigh_arcsec if one.delivered else None),
-                arcsec(one.delivered.sparrow_arcsec if one.delivered else None),
-                "",
-                arcsec(one.diffraction.rayleigh_arcsec if one.diffraction else None),
-                arcsec(one.diffraction.sparrow_arcsec if one.diffraction else None),
+                *_own("delivered", one.delivered),
             )
-            for one in pairs
-        ],
-        right=(1, 2, 3, 4, 5, 7, 8),
+        )
+        rows.append(("", "", "", "", *_own("diffraction", one.diffraction)))
+    table(
+        ("pair", "separation", "angle", "dm", "its own", "Rayleigh", "Sparrow"),
+        rows,
+        right=(1, 2, 3, 5, 6),
     )
+
+
+def _own(name: str, limits: Resolution | None) -> tuple[str, str, str]:
+    if limits is None:
+        return name, NONE, NONE
+    return name, arcsec(limits.rayleigh_arcsec), arcsec(limits.sparrow_arcsec)
 
 
 NO_LABEL = "(no label)"

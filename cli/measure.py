@@ -45,7 +45,7 @@ def command(
     """
     answers: list[dict[str, Any]] = []
     mistakes: list[str] = []
-    for path in with_progress(frames, "frames", quiet=quiet or as_json):
+    for path in with_progress(frames, "frames", quiet=quiet, lines=not as_json):
         try:
             answer = _measured(path, near)
         except InputError as error:

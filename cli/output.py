@@ -9,7 +9,7 @@ import json
 import math
 import sys
 from collections.abc import Iterable, Mapping, Sequence
-from typing import Any
+from typing import Any, Literal
 
 import click
 
@@ -105,9 +105,13 @@ def _ruled(columns: Sequence[str], cells: Sequence[Sequence[str]], right: Sequen
     from rich.table import Table
     from rich.text import Text
 
-    ruled = Table(box=box.SIMPLE_HEAD, show_header=any(columns), pad_edge=False)
+    ruled = Table(
+        box=box.SIMPLE_HEAD, show_header=any(columns), pad_edge=False, padding=(0, 1, 0, 0)
+    )
     for i, heading in enumerate(columns):
-        ruled.add_column(Text(heading), justify="right" if i in right else "left")
+        # On a narrow terminal words are wrapped, numbers never.
+        justify: Literal["left", "right"] = "right" if i in right else "left"
+        ruled.add_column(Text(heading), justify=justify, no_wrap=i in right, overflow="fold")
     for row in cells:
         ruled.add_row(*(Text(cell) for cell in row))
     Console().print(ruled)

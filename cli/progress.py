@@ -9,9 +9,15 @@ from typing import TypeVar
 _T = TypeVar("_T")
 
 
-def with_progress(items: Sequence[_T], what: str, *, quiet: bool = False) -> Iterator[_T]:
-    """The items one by one, with a bar where there are several and a terminal."""
-    if quiet or len(items) < 2 or not sys.stderr.isatty():
+def with_progress(
+    items: Sequence[_T], what: str, *, quiet: bool = False, lines: bool = False
+) -> Iterator[_T]:
+    """The items one by one, with a bar where there are several and a terminal.
+
+    `lines` says that each item prints lines of its own; on a terminal they are progress enough.
+    """
+    spoken = lines and sys.stdout.isatty()
+    if quiet or spoken or len(items) < 2 or not sys.stderr.isatty():
         yield from items
         return
     from rich.console import Console
