@@ -16,9 +16,10 @@ from simimg.fits.cards import ascii_text
 BLOCK = 2880
 CARD = 80
 
-FILE_LIMIT = 2**33  # bytes of a file to be read
+FILE_LIMIT = 2**34  # bytes of a file to be read
 UNPACKED_LIMIT = 2**31  # bytes of a gzipped file, which is unpacked into memory
-PIXEL_LIMIT = 2**28  # pixels of an image to be read: 16384 x 16384
+PIXEL_LIMIT = 2**30  # pixels of an image to be read: 32768 x 32768, as many as a scene may ask for
+PACKED_LIMIT = 2**28  # pixels of a compressed image, which the length of the file does not bound
 HEADER_LIMIT = 1000  # blocks of one header
 HDU_LIMIT = 1000
 
@@ -124,15 +125,13 @@ def _data_length(cards: dict[str, str], where: str, number: int) -> int:
         claimed = 1
         for axis in range(1, min(whole("ZNAXIS"), 999) + 1):
             claimed *= whole(f"ZNAXIS{axis}")
-        _bound(claimed, where, number)
+        _bound(claimed, PACKED_LIMIT, where, number)
     if cards.get("XTENSION", "'IMAGE").startswith("'IMAGE"):
-        _bound(pixels, where, number)
+        _bound(pixels, PIXEL_LIMIT, where, number)
     return abs(bitpix) // 8 * whole("GCOUNT", 1) * (whole("PCOUNT", 0) + pixels)
 
 
-def _bound(pixels: int, where: str, number: int) -> None:
-    if pixels > PIXEL_LIMIT:
+def _bound(pixels: int, most: int, where: str, number: int) -> None:
+    if pixels > most:
         what = f"its HDU {number} claims an image of {pixels} pixels"
-        raise InputError(
-            mistake(where, "", what, f"simimg reads at most {PIXEL_LIMIT}; cut out a part")
-        )
+        raise InputError(mistake(where, "", what, f"simimg reads at most {most}; cut out a part"))

@@ -66,7 +66,7 @@ def test_above_the_air_and_without_a_pixel(run, scene):
 def test_as_text(run, scene):
     result = run("limits", scene)
     assert result.code == 0
-    for word in ("Rayleigh", "Sparrow", "Dawes", "Strehl", "Nyquist", "SR-1", "2.400", "62 deg"):
+    for word in ("Rayleigh", "Sparrow", "Dawes", "Strehl", "Nyquist", "SR-1", '2.4"', "62 deg"):
         assert word in result.out
     assert "confirmed with the observatory" in result.err
 
