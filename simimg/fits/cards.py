@@ -67,6 +67,13 @@ FILLED = {
     "AIRMASS": "set air.airmass or air.altitude",
     "BUNIT": "a frame is in adu",
     "OBSTYPE": "it follows from what is made",
+    "WAVELEN": "set band.name or band.centre",
+    "BIASLVL": "set camera.bias",
+    "DARKSIG": "set camera.dark_current",
+    "SKYLVL": "set sky.surface_brightness",
+    "PIXSCALE": "set camera.pixel_scale",
+    "SEEING": "set air.seeing",
+    "EXPNUM": "it is counted",
     "TELESCOP": "set telescope.name",
     "INSTRUME": "set camera.name",
 }

@@ -187,3 +187,12 @@ class TestPreview:
         assert (folder / "frame.png").read_bytes() == b"precious"
         assert run(*arguments, "--overwrite").code == 0
         assert (folder / "frame.png").read_bytes().startswith(b"\x89PNG")
+
+
+def test_no_keyword_that_simimg_fills_can_be_overruled(run, scene, folder):
+    run("expose", scene, "-o", "frame.fits", "--set", "exposure.start=2026-04-12T03:00:00")
+    # What the scene's own header may say, the frame's title, is no part of the rule.
+    for keyword in set(fits.getheader("frame.fits")) - {"OBJECT"}:
+        text = (folder / scene).read_text().replace("[sky]", f"[header]\n{keyword} = 'x'\n\n[sky]")
+        (folder / "other.toml").write_text(text)
+        assert run("check", "other.toml").code == 2, keyword
