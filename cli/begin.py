@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import click
+
 from simimg_cli import options
 from simimg_cli.output import say
 
@@ -16,9 +17,8 @@ def command(file: str, overwrite: bool, quiet: bool) -> None:
 
     It runs as it is; edit it, and ask simimg check what it means.
     """
-    from simimg_cli.starter import STARTER
-
     from simimg.newfile import new_file
+    from simimg_cli.starter import STARTER
 
     with new_file(file, overwrite=overwrite) as handle:
         handle.write(STARTER.encode())

@@ -6,10 +6,10 @@ from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
 import click
-from simimg_cli import options
-from simimg_cli.output import document, say, table, warn
 
 from simimg.errors import InputError
+from simimg_cli import options
+from simimg_cli.output import document, say, table, warn
 
 if TYPE_CHECKING:
     from simimg.assembly.report import Description
@@ -28,10 +28,9 @@ def command(
     SCENE may be a frame of simimg, which carries its scene. With --quiet nothing is printed of a
     scene without mistakes.
     """
+    from simimg.scene.file import requirements_to_expose, scene_id
     from simimg_cli.cautions import print_cautions
     from simimg_cli.scenes import open_scene
-
-    from simimg.scene.file import requirements_to_expose, scene_id
 
     opened = open_scene(scene, overrides=overrides, without=without).scene
     missing = requirements_to_expose(opened)

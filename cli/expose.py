@@ -8,15 +8,14 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import click
+
+from simimg.errors import InputError, mistake
 from simimg_cli import options
 from simimg_cli.output import document, note, say
 
-from simimg.errors import InputError, mistake
-
 if TYPE_CHECKING:
-    from simimg_cli.scenes import Source
-
     from simimg.frame import Frame
+    from simimg_cli.scenes import Source
 
 _PACKED = (".gz", ".fz", ".bz2", ".xz", ".zip", ".Z")
 
@@ -56,12 +55,11 @@ def command(
 
     SCENE may be a frame of simimg: it carries its scene, and the same exposure is made again.
     """
+    from simimg.assembly.report import cautions, describe
+    from simimg.scene.file import requirements_to_expose, scene_id
     from simimg_cli.cautions import print_cautions
     from simimg_cli.progress import with_progress
     from simimg_cli.scenes import open_scene
-
-    from simimg.assembly.report import cautions, describe
-    from simimg.scene.file import requirements_to_expose, scene_id
 
     source = open_scene(scene, overrides=overrides, without=without)
     indices = _indices(source)

@@ -6,11 +6,11 @@ import textwrap
 from typing import TYPE_CHECKING
 
 import click
+
+from simimg.errors import InputError
 from simimg_cli import options
 from simimg_cli.output import document, say
 from simimg_cli.scenes import named
-
-from simimg.errors import InputError
 
 if TYPE_CHECKING:
     from simimg.frame import Frame

@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
 import click
+
 from simimg_cli import options
 from simimg_cli.output import document, say, table, warn
 from simimg_cli.words import NONE, arcsec, figures, short
@@ -41,12 +42,11 @@ def command(
     Diffraction limits are those of the pupil alone; delivered limits those of optics, air and
     pixel together. SCENE may be a frame of simimg, which carries its scene.
     """
-    from simimg_cli.cautions import print_cautions
-    from simimg_cli.scenes import open_scene
-
     from simimg.assembly.report import cautions, describe
     from simimg.resolving.limits import limits
     from simimg.scene.file import scene_id
+    from simimg_cli.cautions import print_cautions
+    from simimg_cli.scenes import open_scene
 
     opened = open_scene(scene, overrides=overrides, without=without).scene
     found = limits(opened, position_angle=position_angle, all_stars=all_stars)

@@ -16,10 +16,10 @@ from importlib import import_module
 from typing import Any, NoReturn
 
 import click
-from simimg_cli.output import printable
 
 from simimg.errors import SimimgError
 from simimg.version import __version__
+from simimg_cli.output import printable
 
 COMMANDS = {
     "begin": "Write a commented starter scene.",

@@ -7,13 +7,13 @@ from collections.abc import Mapping, Sequence
 from typing import TYPE_CHECKING, Any
 
 import click
+
+from simimg.errors import InputError
 from simimg_cli import options
 from simimg_cli.output import document, note, plain, say, table, warn
 from simimg_cli.progress import with_progress
 from simimg_cli.scenes import named
 from simimg_cli.words import arcsec, probability, short, with_error
-
-from simimg.errors import InputError
 
 if TYPE_CHECKING:
     from simimg.frame import Frame

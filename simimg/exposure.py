@@ -27,7 +27,6 @@ from simimg.imaging.profile import sampled_psf
 from simimg.imaging.render import expected_image
 from simimg.scene.file import requirements_to_expose, scene_id, scene_record
 from simimg.scene.model import Scene
-from simimg.version import __version__
 
 PSF_OVERSAMPLING = 4
 _PSF_HALF_WIDTH = 16
@@ -193,17 +192,15 @@ def frame_header(prepared: Prepared, index: int) -> dict[str, object]:
         "SKYLVL": (sky_electrons(scene, area=train.pupil.area), "[electron] sky in a pixel"),
         "SATURATE": (saturation, "[adu] saturation level"),
         "BUNIT": ("adu", "unit of the counts"),
-        "TELESCOP": (scene.telescope.name or "simulated", "telescope (simulated)"),
-        "INSTRUME": (
-            (scene.camera.name if scene.camera else None) or "simulated",
-            "camera (simulated)",
-        ),
         "PIXSCALE": (np.degrees(train.pixel_scale or 0.0) * 3600.0, "[arcsec] pixel scale"),
         "SEED": (seed, "seed of the noise"),
         "EXPNUM": (index, "number of the exposure, from 0"),
         "SCENEID": (scene_id(scene), "sha256 of the scene"),
-        "CREATOR": (f"simimg {__version__}", "program that made this simulation"),
     }
+    if scene.telescope.name is not None:
+        header["TELESCOP"] = (scene.telescope.name, "telescope (simulated)")
+    if scene.camera is not None and scene.camera.name is not None:
+        header["INSTRUME"] = (scene.camera.name, "camera (simulated)")
     if train.airmass is not None:
         header["AIRMASS"] = (train.airmass, "airmass")
     if train.seeing is not None:

@@ -18,8 +18,11 @@ from simimg.assembly.brightness import (
     sky_electrons,
     zero_point,
 )
+from simimg.assembly.objects import inventory
 from simimg.assembly.train import Train, assemble_train, half_light_width
 from simimg.camera.converter import converter_top
+from simimg.imaging.grid import peak_share
+from simimg.scene.camera import Camera
 from simimg.scene.file import defaults_used, scene_id
 from simimg.scene.model import Scene
 
@@ -204,6 +207,8 @@ def _warnings(scene: Scene, train: Train) -> list[str]:
                 f"{(top - camera.bias) * camera.gain:.4g} electrons"
             )
     scale = train.pixel_scale
+    if camera is not None and scale is not None:
+        found += _saturating(scene, train, camera, scale)
     if scale is not None:
         width = half_light_width(train.focal)
         if width / scale < 2.0:
@@ -215,6 +220,26 @@ def _warnings(scene: Scene, train: Train) -> list[str]:
     if scene.camera is not None and exposure_time(scene) == 0.0:
         found.append("no exposure time: dark signal and sky brightness count for nothing")
     return found
+
+
+def _saturating(scene: Scene, train: Train, camera: Camera, scale: float) -> list[str]:
+    """A warning where stars fill the well or reach the end of the converter."""
+    objects = inventory(scene, train=train)
+    points = objects.sources.points
+    room = (converter_top(camera.bit_depth) - camera.bias) * camera.gain
+    if camera.full_well is not None:
+        room = min(room, camera.full_well)
+    flat = sky_electrons(scene, area=train.pupil.area) + dark_electrons(scene)
+    peaks = points.electrons * peak_share(train.effective, scale) + flat
+    count = int((peaks > room).sum())
+    if count == 0:
+        return []
+    times = float(peaks.max()) / room
+    stars = "1 star saturates" if count == 1 else f"{count} stars saturate"
+    return [
+        f"{stars}: a peak of up to {peaks.max():.3g} electrons, {times:.2g} times what a pixel can "
+        "record; measure cannot use saturated pixels"
+    ]
 
 
 def _values(scene: Scene, train: Train) -> dict[str, object]:

@@ -66,3 +66,9 @@ def test_every_scene_is_called_a_simulation_and_the_sun_brings_its_caution(tmp_p
     )
     bright = scene(tmp_path, TEXT.replace("magnitude = 17", "magnitude = -26.7"))
     assert "unfiltered" in " ".join(cautions(bright))
+
+
+def test_a_star_that_saturates_is_warned_of(tmp_path):
+    bright = scene(tmp_path, star__0__magnitude=9)
+    assert any(w.startswith("1 star saturates") for w in describe(bright).warnings)
+    assert not any("saturate" in w for w in describe(scene(tmp_path)).warnings)

@@ -5,6 +5,7 @@ from dataclasses import dataclass
 
 import pytest
 from click.testing import CliRunner
+
 from simimg_cli.main import simimg
 
 TINY = """\

@@ -3,6 +3,7 @@
 import re
 
 import pytest
+
 from simimg_cli.starter import STARTER
 
 

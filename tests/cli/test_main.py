@@ -8,11 +8,11 @@ import time
 
 import click
 import pytest
-import simimg_cli.main
-from simimg_cli.main import COMMANDS, Commands, simimg
 
+import simimg_cli.main
 from simimg import __version__
 from simimg.errors import InputError, RunError
+from simimg_cli.main import COMMANDS, Commands, simimg
 
 COMMAND = [sys.executable, "-m", "simimg_cli"]
 

@@ -6,6 +6,7 @@ import sys
 
 import numpy as np
 import pytest
+
 from simimg_cli import output
 from simimg_cli.options import Memory, Place
 from simimg_cli.progress import with_progress
