@@ -7,8 +7,9 @@ broad bands here, for the pivot wavelength is defined by the same ratio of integ
 transmission peaks at 1: what glass, mirrors, detector and air take is the caller's.
 
 UBVRI are Johnson-Cousins after the transmission tables of Bessell (1990), JHK after Bessell & Brett
-(1988). Wavelengths in metres, flux densities in jansky, photon rates per second and square metre
-above the atmosphere.
+(1988); u g r i z are the survey bands of Fukugita et al. (1996) as measured by Doi et al. (2010),
+with AB magnitudes. A band from a table keeps its curve beside the box. Wavelengths in metres, flux
+densities in jansky, photon rates per second and square metre above the atmosphere.
 
 References
 ----------
@@ -16,20 +17,23 @@ Bessell, M. S. 1979, PASP 91, 589.
 Bessell, M. S. & Brett, J. M. 1988, PASP 100, 1134.
 Bessell, M. S. 1990, PASP 102, 1181.
 Bessell, M. S., Castelli, F. & Plez, B. 1998, A&A 333, 231.
+Doi, M. et al. 2010, AJ 139, 1628.
+Fukugita, M. et al. 1996, AJ 111, 1748.
 Oke, J. B. & Gunn, J. E. 1983, ApJ 266, 713.
 """
 
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field, replace
 from types import MappingProxyType
 
 import numpy as np
 from numpy.typing import ArrayLike
 
-PLANCK = 6.62607015e-34
-"""Planck's constant (J s), exact in the SI."""
+from simimg.arrays import FloatArray
+from simimg.light.curves import Curve
+from simimg.light.spectra import PLANCK
 
 JANSKY = 1e-26
 """W / m2 / Hz."""
@@ -52,12 +56,15 @@ class Band:
         Equivalent width (m), the width of the box.
     zero_flux_jy : mapping of str to float
         For each magnitude system, "Vega" or "AB", the flux density (Jy) of magnitude 0.
+    curve : Curve or None
+        Transmission as tabulated; None where the box is all there is.
     """
 
     name: str
     centre: float
     width: float
     zero_flux_jy: Mapping[str, float]
+    curve: Curve | None = field(default=None, compare=False)
 
     def __post_init__(self) -> None:
         for key, value in (("centre", self.centre), ("width", self.width)):
@@ -78,6 +85,23 @@ class Band:
     def upper(self) -> float:
         """Long-wave edge of the box (m)."""
         return self.centre + 0.5 * self.width
+
+    @property
+    def support(self) -> tuple[float, float]:
+        """Wavelengths (m) between which light passes: of the curve, or else of the box."""
+        return (self.lower, self.upper) if self.curve is None else self.curve.support
+
+    @property
+    def bends(self) -> FloatArray:
+        """Wavelengths (m) where the curve's lines meet."""
+        return np.empty(0) if self.curve is None else self.curve.wavelength
+
+    def transmission(self, wavelength: ArrayLike) -> FloatArray:
+        """Transmission at wavelengths (m): the curve, or else 1 within the box and 0 without."""
+        if self.curve is not None:
+            return self.curve(wavelength)
+        place = np.asarray(wavelength, dtype=np.float64)
+        return np.where((place >= self.lower) & (place <= self.upper), 1.0, 0.0)
 
 
 def _standard(name: str, centre_nm: float, width_nm: float, vega_jy: float) -> Band:
@@ -101,7 +125,23 @@ STANDARD_BANDS: Mapping[str, Band] = MappingProxyType(
         )
     }
 )
-"""The standard bands by name, from short to long wavelengths."""
+"""The standard bands of the Vega system by name, from short to long wavelengths."""
+
+# Pivot wavelength and equivalent width computed from the responses of Doi et al. (2010, table 4)
+# without the air, over their peak.
+AB_BANDS: Mapping[str, Band] = MappingProxyType(
+    {
+        name: Band(name, centre_nm * 1e-9, width_nm * 1e-9, {"AB": AB_ZERO_FLUX})
+        for name, centre_nm, width_nm in (
+            ("u", 355.1, 57.0),
+            ("g", 467.7, 123.0),
+            ("r", 616.9, 113.0),
+            ("i", 749.5, 112.3),
+            ("z", 892.8, 116.6),
+        )
+    }
+)
+"""The standard bands of the AB system by name, from short to long wavelengths."""
 
 
 def standard_band(name: str) -> Band:
@@ -110,19 +150,18 @@ def standard_band(name: str) -> Band:
     Parameters
     ----------
     name : str
-        One of U, B, V, R, I, J, H, K.
+        One of U, B, V, R, I, J, H, K (Vega and AB zero fluxes) and u, g, r, i, z (AB alone).
 
     Raises
     ------
     KeyError
         For any other name; the message lists the known ones.
     """
+    known = {**STANDARD_BANDS, **AB_BANDS}
     try:
-        return STANDARD_BANDS[name]
+        return known[name]
     except KeyError:
-        raise KeyError(
-            f"no standard band {name!r}; known are {', '.join(STANDARD_BANDS)}"
-        ) from None
+        raise KeyError(f"no standard band {name!r}; known are {', '.join(known)}") from None
 
 
 def custom_band(centre: float, width: float, *, name: str = "") -> Band:
@@ -155,7 +194,7 @@ def custom_band(centre: float, width: float, *, name: str = "") -> Band:
 
 
 def tabulated_band(wavelength: ArrayLike, transmission: ArrayLike, *, name: str = "") -> Band:
-    """The box that stands for a tabulated transmission.
+    """A band from a tabulated transmission, with the box that stands for it.
 
     Parameters
     ----------
@@ -170,7 +209,7 @@ def tabulated_band(wavelength: ArrayLike, transmission: ArrayLike, *, name: str 
     Returns
     -------
     Band
-        Pivot wavelength and equivalent width.
+        Pivot wavelength and equivalent width, and the curve itself.
 
     Raises
     ------
@@ -188,7 +227,7 @@ def tabulated_band(wavelength: ArrayLike, transmission: ArrayLike, *, name: str 
     if not width > 0.0:
         raise ValueError("the band lets no light through")
     pivot = float(np.sqrt(np.trapezoid(y * x, x) / np.trapezoid(y / x, x)))
-    return custom_band(pivot, width, name=name)
+    return replace(custom_band(pivot, width, name=name), curve=Curve(x, y))
 
 
 def photon_zero_point(band: Band, system: str) -> float:

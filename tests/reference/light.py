@@ -44,3 +44,17 @@ EFFECTIVE_WAVELENGTHS_RTOL = 0.03
 # Photon rates through the pass-bands that the package speclite tabulates (Bessell 1990), by band:
 # tolerance of the box that stands for each.
 SPECLITE_RTOL = {"V": 0.01, "R": 0.03, "I": 0.03, "B": 0.06, "U": 0.06}
+
+# M. Fukugita et al. 1996, table 2a: effective wavelengths (nm) of the primed bands, which lie some
+# per cent redward of those of the survey camera (Doi et al. 2010).
+FUKUGITA_EFFECTIVE_NM = {"u": 355.7, "g": 482.5, "r": 626.1, "i": 767.2, "z": 909.7}
+FUKUGITA_RTOL = 0.035
+
+# P. A flux density of 1 Jy is 1.51e7 photons / s / m2 for each unit of d(lambda)/lambda: the
+# jansky over Planck's constant, by hand. Half a unit of the last digit.
+PHOTONS_PER_JANSKY = 1.51e7
+PHOTONS_PER_JANSKY_RTOL = 0.0034
+
+# T. A blackbody's peak in f_lambda: wavelength times temperature, m K (Wien 1893).
+WIEN = 2.897772e-3
+WIEN_RTOL = 1e-6
