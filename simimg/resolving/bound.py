@@ -23,13 +23,12 @@ from math import degrees, hypot, inf, isfinite, sqrt
 import numpy as np
 
 from simimg.arrays import FloatArray, frozen
-from simimg.assembly.objects import Entry, Inventory, inventory
+from simimg.assembly.objects import Inventory, inventory
 from simimg.assembly.train import Train, assemble_train
 from simimg.errors import InputError
-from simimg.resolving.expectation import Expectation
+from simimg.resolving.expectation import Expectation, StarPair, pairs_of
 from simimg.resolving.pairfit import pair_geometry
 from simimg.resolving.resolution import to_arcsec
-from simimg.resolving.signal import scene_detector
 from simimg.resolving.starfit import Cutout, Likelihood, StarFit, covariance_of, fit_stars
 from simimg.scene.file import requirements_to_expose
 from simimg.scene.model import Scene
@@ -124,26 +123,15 @@ def precision(scene: Scene, *, exposures: int = 1) -> list[PairPrecision]:
 def scene_bounds(
     scene: Scene, train: Train, found: Inventory, *, exposures: int = 1
 ) -> list[PairPrecision]:
-    """The same where a scene's train and inventory are at hand; empty without a camera.
-
-    The size of the detector is not needed: without it no pixel is off it.
-    """
-    pairs = [
-        (found.entry(row), found.entry(int(partner)))
-        for row, partner in enumerate(found.partner[: found.written])
-        if partner > row
-    ]
-    detector = scene_detector(scene, train)
-    if not pairs or detector is None or scene.camera is None:
-        return []
-    exact = scene.camera.read_noise == 0.0 and scene.camera.gain == 1.0
-    rounding = 0.0 if exact else scene.camera.gain**2 / 12.0
-    view = Expectation.of(train, found, detector, variance=detector.read_noise**2 + rounding)
-    return [_bound(view, pair, exposures) for pair in pairs]
+    """The same where a scene's train and inventory are at hand; empty without a camera."""
+    view, pairs = None, pairs_of(found)
+    if pairs:
+        view = Expectation.of(scene, train, found)
+    return [] if view is None else [pair_precision(view, one, exposures=exposures) for one in pairs]
 
 
-def _bound(view: Expectation, pair: tuple[Entry, Entry], exposures: int) -> PairPrecision:
-    """The bounds of one pair, whose first star has the place that is reported."""
+def pair_precision(view: Expectation, pair: StarPair, *, exposures: int = 1) -> PairPrecision:
+    """The bounds of one pair of a scene; see `precision`."""
     first = pair[0]
     separation = angle = difference = inf
     significance = 0.0

@@ -21,12 +21,24 @@ from simimg.imaging.sources import PlacedShape, Sources, no_points
 from simimg.resolving.neighbours import PlacedStar, star_light
 from simimg.resolving.observation import spline_oversampling
 from simimg.resolving.psfmodel import PsfModel
-from simimg.resolving.signal import Detector
+from simimg.resolving.signal import Detector, scene_detector
 from simimg.resolving.starfit import Cutout
+from simimg.scene.model import Scene
 
 _MARGIN = 4.0  # FWHM of sky about the stars
 _APART = 3.0 * _MARGIN  # FWHM beyond which each star has a square of its own
 _REACH = 12.0  # FWHM from a star beyond which its light is not modelled
+
+StarPair = tuple[Entry, Entry]
+
+
+def pairs_of(found: Inventory) -> list[StarPair]:
+    """The pairs of an inventory, first star and second, in its order."""
+    return [
+        (found.entry(row), found.entry(int(partner)))
+        for row, partner in enumerate(found.partner[: found.written])
+        if partner > row
+    ]
 
 
 @dataclass(frozen=True, eq=False)
@@ -53,10 +65,28 @@ class Expectation:
     shapes: tuple[PlacedShape, ...]
 
     @classmethod
-    def of(
-        cls, train: Train, found: Inventory, detector: Detector, *, variance: float
-    ) -> Expectation:
-        """Prepare the view of an inventory."""
+    def of(cls, scene: Scene, train: Train, found: Inventory) -> Expectation | None:
+        """Prepare the view of a scene.
+
+        Parameters
+        ----------
+        scene : Scene
+        train : Train
+            Of the scene.
+        found : Inventory
+            Of the scene.
+
+        Returns
+        -------
+        Expectation or None
+            None without a camera or a route to its pixel scale. The size of the detector is not
+            needed: without it no pixel is off it.
+        """
+        detector = scene_detector(scene, train)
+        if detector is None or scene.camera is None:
+            return None
+        exact = scene.camera.read_noise == 0.0 and scene.camera.gain == 1.0
+        rounding = 0.0 if exact else scene.camera.gain**2 / 12.0
         scale = detector.pixel_scale
         width = hypot(half_light_width(train.focal) / scale, 0.8)
         apart = found.separation[: found.written] / scale
@@ -74,7 +104,7 @@ class Expectation:
             train=train,
             detector=detector,
             psf=PsfModel.from_image(image, oversampling=oversampling),
-            variance=variance,
+            variance=detector.read_noise**2 + rounding,
             points=frozen(
                 np.column_stack([sources.points.x, sources.points.y, sources.points.electrons])
             ),
@@ -86,7 +116,7 @@ class Expectation:
         """Electrons of sky and dark signal in a pixel."""
         return self.detector.sky + self.detector.dark
 
-    def cutouts(self, pair: tuple[Entry, Entry]) -> list[Cutout]:
+    def cutouts(self, pair: StarPair) -> list[Cutout]:
         """The expected image about a pair: one square about both stars, or one about each."""
         first, second = pair
         fwhm = self.psf.fwhm
@@ -99,7 +129,7 @@ class Expectation:
         images = [self._cutout(pair, *square) for square in squares]
         return [image for image in images if image is not None]
 
-    def _cutout(self, pair: tuple[Entry, Entry], x: float, y: float, half: float) -> Cutout | None:
+    def _cutout(self, pair: StarPair, x: float, y: float, half: float) -> Cutout | None:
         """A square of the expected image, as far as it is on the detector; None off it."""
         left, right = floor(x - half), ceil(x + half)
         bottom, top = floor(y - half), ceil(y + half)

@@ -1,0 +1,89 @@
+"""The test stand: one noise draw after another, each measured.
+
+A stand holds what all trials of a scene share and can be set up in any process from a `Setup`.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from simimg.arrays import FloatArray
+from simimg.resolving.judging import judge
+from simimg.resolving.observation import Observation
+from simimg.resolving.pairlimits import PairLimits
+from simimg.study.exposures import Exposures, Recipe
+from simimg.study.knownpair import KnownPair
+from simimg.study.tally import FIGURES, kept
+
+_MANY = 10_000  # pairs: limits of neighbouring directions are shared
+
+
+@dataclass(frozen=True, eq=False)
+class Setup:
+    """What a stand is set up from; can be sent to another process.
+
+    Attributes
+    ----------
+    recipe : Recipe
+    alone : tuple of bool
+        For each of its pairs, whether no other object shines in.
+    exposures : int
+        How many are fitted together, besides each alone; 1 for none.
+    """
+
+    recipe: Recipe
+    alone: tuple[bool, ...]
+    exposures: int
+
+
+class Stand:
+    """Draws exposures and measures the pairs in them.
+
+    Parameters
+    ----------
+    setup : Setup
+    """
+
+    def __init__(self, setup: Setup) -> None:
+        self._draws = Exposures(setup.recipe)
+        self._limits = PairLimits(self._draws.delivered, pairs=_MANY)
+        self._count = setup.exposures
+        counts = [1] if self._count == 1 else [1, self._count]
+        self._pairs = [
+            [
+                KnownPair.prepare(self._draws.noiseless(count), pair, alone=alone)
+                for pair, alone in zip(setup.recipe.pairs, setup.alone)
+            ]
+            for count in counts
+        ]
+
+    def run(self, number: int) -> FloatArray:
+        """Make one trial.
+
+        Parameters
+        ----------
+        number : int
+            Of the trial, from 0.
+
+        Returns
+        -------
+        ndarray, shape (1 or 2, pairs, 9)
+            For one frame, and for those fitted together, what `kept` keeps of each pair.
+        """
+        results = np.empty((len(self._pairs), len(self._pairs[0]), FIGURES))
+        for kind, pairs in enumerate(self._pairs):
+            if kind == 0:
+                observation = self._draws.one(number)
+            else:
+                begin = number * self._count
+                observation = self._draws.together(range(begin, begin + self._count))
+            for index, pair in enumerate(pairs):
+                results[kind, index] = self._measured(observation, pair)
+        return results
+
+    def _measured(self, observation: Observation, pair: KnownPair) -> FloatArray:
+        # Without its cutouts a sighting is judged without the saddle, which nothing here asks for.
+        sighting = replace(pair.look(observation), cutouts=())
+        return kept(judge(observation, sighting, self._limits, named=pair.named).record)
