@@ -3,11 +3,13 @@ import pytest
 from numpy.testing import assert_allclose
 
 from simimg.air.refraction import (
-    MMHG,
     airmass_from_altitude,
     altitude_from_airmass,
     band_dispersion,
     differential_refraction,
+)
+from simimg.air.refractivity import (
+    MMHG,
     refractivity_ciddor,
     refractivity_edlen,
     saturation_vapour_pressure,
