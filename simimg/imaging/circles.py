@@ -1,6 +1,6 @@
 """Light in circles: how much of a PSF's light falls within a radius, from its transfer function.
 
-The sum runs over the same square lattice of frequencies as in `simimg.imaging.profile`, here
+The sum runs over the same square lattice of frequencies as in `simimg.imaging.lattice`, here
 offset by half a step in both components: the squared moduli are then whole numbers of a unit, so
 that equal moduli can be summed first, without approximation, and each circle costs one short sum.
 The error is the light that copies of the PSF, one period apart, put into the circle.
@@ -18,7 +18,8 @@ from scipy import optimize, special
 
 from simimg.arrays import FloatArray
 from simimg.imaging.basis import Transfer
-from simimg.imaging.profile import CHUNK, centroid, effective_band, half_lattice
+from simimg.imaging.lattice import CHUNK, effective_band, half_lattice
+from simimg.imaging.profile import centroid
 
 
 def _rings(transfer: Transfer, reach: float) -> tuple[FloatArray, FloatArray]:

@@ -1,13 +1,9 @@
-"""The shape of one PSF, taken straight from its transfer function: cuts, peak, samples.
+"""The shape of one PSF, taken straight from its transfer function: cuts, peak, centre.
 
-A PSF is the Fourier integral of its transfer function. Along a line through the origin that
-integral separates (projection-slice theorem, Bracewell 1956, Aust. J. Phys. 9, 198): the transfer
-function summed across the direction is the one-dimensional transform of the cut. All sums here run
-over a square lattice of frequencies whose spacing is one over a period P. By Poisson's summation
-formula the result is then the PSF plus its own copies, P apart: the error is what the wings hold
-at a distance P, whatever kinks the transfer function has inside, and with `_NODES` nodes across
-the band it stays below 1e-7 of the peak for round, obstructed and turbulent PSFs (a spike of a
-thin vane, which falls slowly, can leave 1e-6 along itself).
+Along a line the Fourier integral of a PSF separates (projection-slice theorem, Bracewell 1956,
+Aust. J. Phys. 9, 198): the transfer function summed across the direction is the one-dimensional
+transform of the cut. The sums run over the lattice of `simimg.imaging.lattice`, which also says how
+exact they are.
 
 Angles in radians, frequencies in cycles per radian, PSFs per steradian at unit total light.
 """
@@ -18,41 +14,22 @@ from dataclasses import dataclass
 from math import cos, isfinite, pi, sin
 
 import numpy as np
-from scipy import fft
 
 from simimg.arrays import AnyArray, FloatArray, frozen
 from simimg.imaging.basis import Transfer
+from simimg.imaging.lattice import CHUNK, effective_band, half_lattice
+from simimg.imaging.samples import sampled_psf
 
-_NODES = 1024  # lattice points across the band
-_NEGLIGIBLE = 1e-12  # transfer that cannot show at 1e-7 of the peak
-CHUNK = 1 << 19  # lattice points handled at once
-
-
-def effective_band(transfer: Transfer) -> float:
-    """Frequency (cycles/rad) beyond which the transfer function is everywhere below 1e-12.
-
-    Never above ``transfer.band_limit``; far below it when turbulence sets the limit.
-    """
-    count = 2048
-    radii = transfer.band_limit * (np.arange(count) + 0.5) / count
-    angles = np.zeros(1) if transfer.round else np.pi * np.arange(24) / 24
-    values = np.abs(transfer(np.cos(angles)[:, None] * radii, np.sin(angles)[:, None] * radii)).max(
-        axis=0
-    )
-    seen = np.flatnonzero(values > _NEGLIGIBLE)
-    if seen.size == 0:
-        raise ValueError("the transfer function vanishes everywhere")
-    return float(min(transfer.band_limit, transfer.band_limit * (seen[-1] + 2) / count))
-
-
-def half_lattice(transfer: Transfer, band: float) -> int:
-    """Lattice points from the origin to the edge of the band.
-
-    A pixel wider than the diffraction pattern lowers the peak but not the wings that fold in, so
-    that the period must grow.
-    """
-    wide = int(np.ceil(160.0 * (transfer.box * band) ** (2.0 / 3.0)))
-    return min(max(_NODES // 2, wide), 3 * _NODES // 2)
+__all__ = [
+    "PsfCut",
+    "centroid",
+    "effective_band",
+    "peak_place",
+    "psf_cut",
+    "psf_peak",
+    "sampled_psf",
+    "strehl",
+]
 
 
 @dataclass(frozen=True, eq=False)
@@ -238,85 +215,3 @@ def _vertex(values: FloatArray) -> float:
     """Place of a parabola's peak through three samples, in steps from the middle one."""
     bend = float(values[0] - 2.0 * values[1] + values[2])
     return 0.5 * float(values[0] - values[2]) / bend if bend < 0.0 else 0.0
-
-
-def sampled_psf(
-    transfer: Transfer,
-    *,
-    pixel_scale: float,
-    oversampling: int,
-    half_width_pixels: float,
-    centre: tuple[float, float] = (0.0, 0.0),
-) -> FloatArray:
-    """PSF on a grid of ``oversampling`` samples to the pixel, the star at the middle sample.
-
-    Parameters
-    ----------
-    transfer : Transfer
-        Transfer function of the effective PSF, pixel included.
-    pixel_scale : float
-        Side of a pixel (rad).
-    oversampling : int
-        Samples to the pixel, 1 or more.
-    half_width_pixels : float
-        Half the side of the sampled square (pixels); rounded up to whole samples.
-    centre : (float, float), optional
-        Place of the middle sample (x, y; rad from the star's place).
-
-    Returns
-    -------
-    ndarray, shape (n, n), ``n = 2 ceil(half_width_pixels * oversampling) + 1``
-        Fraction of the star's light on a pixel centred at each sample (``[y, x]``), to 1e-7 of the
-        peak. The same bits for any number of threads.
-
-    Raises
-    ------
-    ValueError
-        For a scale or width that is not positive, or an oversampling below 1.
-    """
-    if not (isfinite(pixel_scale) and pixel_scale > 0.0):
-        raise ValueError(f"pixel_scale must be above 0, got {pixel_scale}")
-    if oversampling != int(oversampling) or oversampling < 1:
-        raise ValueError(f"oversampling must be a whole number above 0, got {oversampling}")
-    if not (isfinite(half_width_pixels) and half_width_pixels > 0.0):
-        raise ValueError(f"half_width_pixels must be above 0, got {half_width_pixels}")
-    band = effective_band(transfer)
-    fine = pixel_scale / oversampling
-    half = int(np.ceil(half_width_pixels * oversampling - 1e-9))
-    # The copies, one period apart, must stay far from the window and each other.
-    far = max(abs(centre[0]), abs(centre[1])) + half * fine
-    period = max(half_lattice(transfer, band) / band + far, 2.0 * far)
-    size = int(fft.next_fast_len(int(np.ceil(period / fine)), real=False))
-    spacing = 1.0 / (size * fine)
-    top = int(np.floor(band / spacing))
-    order = np.arange(-top, top + 1, dtype=np.int64)
-    window = np.arange(-half, half + 1) % size
-    # Half the plane is enough: the other half is its conjugate.
-    columns = np.arange(0, top + 1, dtype=np.int64)
-    rows_done = np.empty((window.size, columns.size), dtype=np.complex128)
-    step = max(1, CHUNK // max(order.size, size))
-    for first in range(0, columns.size, step):
-        part = columns[first : first + step]
-        u = np.asarray(spacing * part[None, :], dtype=np.float64)
-        v = np.asarray(spacing * order[:, None], dtype=np.float64)
-        value = np.asarray(transfer(u, v), dtype=np.complex128)
-        if centre != (0.0, 0.0):
-            value = value * np.exp(2j * pi * (u * centre[0] + v * centre[1]))
-        rows_done[:, first : first + step] = _folded_sum(value, order, size)[window]
-    rows_done[:, 0] *= 0.5
-    image = np.empty((window.size, window.size))
-    step = max(1, CHUNK // size)
-    for first in range(0, window.size, step):
-        line = _folded_sum(rows_done[first : first + step].T, columns, size)[window]
-        image[first : first + step] = 2.0 * line.real.T
-    return image * (spacing * pixel_scale) ** 2
-
-
-def _folded_sum(value: AnyArray, order: AnyArray, size: int) -> AnyArray:
-    """Sum over axis 0 of ``value exp(2 pi i order j / size)`` for j = 0 ... size - 1."""
-    folded = np.zeros((size, value.shape[1]), dtype=np.complex128)
-    for first in range(0, order.size, size):
-        part = slice(first, min(first + size, order.size))
-        # Frequencies a whole sampling rate apart fall on the same sample values.
-        folded[order[part] % size] += value[part]
-    return np.asarray(fft.ifft(folded, axis=0, norm="forward"))

@@ -17,7 +17,8 @@ from simimg.assembly.train import Train
 from simimg.resolving.resolution import Directions, Resolution, to_arcsec
 from simimg.resolving.signal import Detector, Signal, StarLight, pair_signal, shape_signal
 
-_MANY = 64  # pairs whose directions are all taken exactly; of more, to the degree
+_MANY = 16  # pairs whose directions are all taken exactly; those of more share them
+_SHARED = radians(5.0)
 
 
 @dataclass(frozen=True)
@@ -165,7 +166,7 @@ class Listing:
         difference = magnitude_difference(stars)
         angle = found.geometry.direction(first.position_angle)
         if coarse:
-            angle = radians(round(degrees(angle)))
+            angle = _SHARED * round(angle / _SHARED)
         return ObjectLimits(
             first.label,
             first.kind,

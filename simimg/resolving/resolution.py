@@ -90,6 +90,7 @@ class Directions:
         self._peak = peak_place(transfer)
         self._cuts: dict[float, PsfCut] = {}
         self._samples: dict[float, SampledProfile] = {}
+        self._saddles: dict[float, float] = {}
 
     def cut(self, angle: float) -> PsfCut:
         """The PSF along `angle` (rad, from the detector's +x towards +y), through its peak."""
@@ -123,9 +124,14 @@ class Directions:
         """
         wanted = abs(magnitude_difference) <= BRIGHTEST_DIFFERENCE
         sampled = self.profile(angle, magnitude_difference if wanted else 0.0)
-        rayleigh = self._dark_ring if self._dark_ring is not None else self._rayleigh(sampled)
+        key = self._key(angle)
+        if key not in self._saddles:
+            ring = self._dark_ring
+            self._saddles[key] = self._rayleigh(sampled) if ring is None else ring
         closest = sparrow(sampled, magnitude_difference) if wanted else nan
-        return Resolution(to_arcsec(fwhm(sampled)), to_arcsec(rayleigh), to_arcsec(closest))
+        return Resolution(
+            to_arcsec(fwhm(sampled)), to_arcsec(self._saddles[key]), to_arcsec(closest)
+        )
 
     def peak(self, angle: float) -> float:
         """Height of the PSF at its peak (per steradian), read from the cut along `angle`."""

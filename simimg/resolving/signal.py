@@ -29,6 +29,7 @@ from simimg.camera.converter import converter_top
 from simimg.imaging.basis import PsfBasis, Transfer
 from simimg.imaging.profile import effective_band, peak_place, sampled_psf
 from simimg.imaging.render import expected_image
+from simimg.imaging.samples import PsfSampler
 from simimg.imaging.sources import PlacedShape, Sources, no_points
 from simimg.scene.model import Scene
 
@@ -143,8 +144,15 @@ class StarLight:
         band = effective_band(transfer)
         blur = max(1.0 / band, sqrt(max(width**2 - (0.9 * scale) ** 2, 0.0)))
         half = ceil((_WINDOW * blur / scale + 4.0) / self.stride)
-        self._transfer = transfer
-        self.share: FloatArray = frozen(self.image(0.0, 0.0, half))
+        self._sampler = PsfSampler(
+            transfer,
+            pixel_scale=scale,
+            step=self.stride * scale,
+            half=half,
+            reach=half * self.stride * scale,
+        )
+        self.reach_pixels = float(half * self.stride)
+        self.share: FloatArray = frozen(self.image(0.0, 0.0))
         self.noise_pixels = 1.0 / float((self.share**2).sum() * self.stride**2)
         # The brightest pixel is the one at the peak or its neighbour: a small table serves.
         reach = 2.0 * scale
@@ -159,17 +167,10 @@ class StarLight:
         self._table = RectBivariateSpline(axis, axis, table * (scale / fine) ** 2, kx=5, ky=5)
         self._peak = place[0] / scale, place[1] / scale
 
-    def image(self, dx: float, dy: float, half: int) -> FloatArray:
-        """Share of a star's light on pixels every `stride`, the middle one (dx, dy) from it."""
+    def image(self, dx: float, dy: float) -> FloatArray:
+        """Share of a star's light on every `stride`-th pixel, the middle one (dx, dy) from it."""
         scale = self.detector.pixel_scale
-        image = sampled_psf(
-            self._transfer,
-            pixel_scale=self.stride * scale,
-            oversampling=1,
-            half_width_pixels=half,
-            centre=(dx * scale, dy * scale),
-        )
-        return image / self.stride**2
+        return self._sampler((dx * scale, dy * scale))
 
     def _on_pixel(self, dx: FloatArray, dy: FloatArray) -> FloatArray:
         """Share of a star's light on a pixel at (dx, dy) from its peak; 0 beyond the table."""
@@ -253,7 +254,7 @@ def pair_signal(light: StarLight, stars: tuple[Entry, Entry]) -> Signal:
     y = np.array([star.y for star in stars])
     electrons = np.array([star.electrons for star in stars])
     total = float(electrons.sum())
-    if apart > max(24.0, 20.0 * light.width_pixels):
+    if apart > 0.5 * light.reach_pixels:
         peak = float(light.peaks(x, y, electrons).max())
         if total <= 0.0:
             return Signal(peak, 0.0, 0.0)
@@ -262,13 +263,12 @@ def pair_signal(light: StarLight, stars: tuple[Entry, Entry]) -> Signal:
         snr = total / sqrt(total + noise_pixels * variance)
         return Signal(peak, snr, float(np.sqrt((light.snr_fit(electrons) ** 2).sum())))
     parts = electrons / total if total > 0.0 else np.array([0.5, 0.5])
-    half = ceil(apart / stride) + (light.share.shape[0] - 1) // 2
-    share = np.zeros((2 * half + 1, 2 * half + 1))
+    share = np.zeros(light.share.shape)
     # A pixel near the brighter star in the middle, so that its brightest pixel is a sample.
     brighter = int(np.argmax(electrons))
     middle = np.rint(x[brighter]), np.rint(y[brighter])
     for part, at_x, at_y in zip(parts, x, y):
-        share += part * light.image(middle[0] - at_x, middle[1] - at_y, half)
+        share += part * light.image(float(middle[0] - at_x), float(middle[1] - at_y))
     return image_signal(share, total, variance, area=float(stride**2))
 
 
