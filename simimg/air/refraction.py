@@ -6,8 +6,9 @@ the two formulae here there is 0.1 % at 15 degrees and 0.3 % at 5 degrees; the h
 real air varies by more, is out of reach of both.
 
 Air of refractivity n - 1 lifts a star towards the zenith by (n - 1) tan z, more in blue light than
-in red (Filippenko 1982). Plane layers of air are assumed: beyond a zenith distance of 75 degrees the
-curvature of the earth takes more than a per cent off. Wavelengths are in vacuum and in metres.
+in red (Filippenko 1982). Plane layers of air are assumed: beyond a zenith distance of 70 degrees
+the curvature of the earth takes more than a per cent off (Stone 1996, PASP 108, 1051). Wavelengths
+are in vacuum and in metres.
 """
 
 from __future__ import annotations
@@ -129,7 +130,7 @@ def differential_refraction(
     reference : float
         Wavelength (m) that defines zero.
     zenith_distance : float
-        Apparent (rad), from 0 to below pi/2; good to a per cent up to 75 degrees.
+        Apparent (rad), from 0 to below pi/2; good to a per cent up to 70 degrees.
     pressure, temperature, relative_humidity
         Of the air at the telescope, as for `refractivity_ciddor`.
 
