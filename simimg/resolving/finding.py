@@ -11,6 +11,7 @@ Electrons and detector pixels.
 
 from __future__ import annotations
 
+import warnings
 from collections.abc import Sequence
 from math import hypot
 
@@ -110,16 +111,22 @@ def _detect(observation: Observation) -> FloatArray:
     """Places that stand out, brightest first, shape (n, 2)."""
     from astropy.stats import sigma_clipped_stats
     from photutils.detection import DAOStarFinder
+    from photutils.utils.exceptions import NoDetectionsWarning
 
     electrons, good = observation.electrons(), observation.usable()
     _, background, noise = sigma_clipped_stats(electrons, mask=~good, sigma=3.0, maxiters=5)
     # A frame without noise of its own still has that of counting.
     noise = max(float(noise), float(np.sqrt(max(background, 0.0) + observation.variance)), 0.3)
     finder = DAOStarFinder(
-        fwhm=max(observation.fwhm, 1.2), threshold=_THRESHOLD * noise, n_brightest=_MOST
+        fwhm=max(observation.fwhm, 1.2),
+        threshold=_THRESHOLD * noise,
+        n_brightest=_MOST,
+        min_separation=0.5 * observation.fwhm,
     )
     filled = np.where(good, electrons - background, _bright(electrons - background, good))
-    table = finder(filled)
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", NoDetectionsWarning)
+        table = finder(filled)
     if table is None:
         return np.empty((0, 2))
     x, y = (
@@ -202,9 +209,7 @@ def _explained(sighting: Sighting) -> bool:
 
 def _chi_square(cutout: Cutout, fit: StarFit, index: int) -> tuple[float, int]:
     """Pearson's chi-square of the pixels within a FWHM of a fitted star, and their number."""
-    stars = 3 * len(fit.places)
-    vector = np.concatenate([fit.vector[:stars], fit.background[index : index + 1]])
-    model = Likelihood([cutout], len(fit.places)).jacobian(vector, 0)[0]
+    model = Likelihood([cutout], len(fit.places)).jacobian(fit.own(index), 0)[0]
     rows, columns = cutout.electrons.shape
     x = cutout.x0 + np.arange(columns)
     y = cutout.y0 + np.arange(rows)[:, None]

@@ -156,6 +156,8 @@ def _criteria(
 def _saddle(sighting: Sighting, fit: StarFit, first: int, second: int) -> tuple[float, float]:
     """The saddle in the first cutout that holds both stars; NaN when none does."""
     for index, cutout in enumerate(sighting.cutouts):
+        if cutout.view.number:
+            continue
         rows, columns = cutout.electrons.shape
         inside = [
             0 <= x - cutout.x0 <= columns - 1 and 0 <= y - cutout.y0 <= rows - 1

@@ -33,7 +33,7 @@ def saddle_seen(
     first, second : int
         Which of its stars.
     index : int
-        Which of the fit's cutouts.
+        Which of the fit's cutouts it is; of the first frame.
 
     Returns
     -------
@@ -42,8 +42,7 @@ def saddle_seen(
         pixels or the cutout's edge are in the way.
     """
     likelihood = Likelihood([cutout], len(fit.places))
-    background = float(fit.background[index])
-    vector = np.concatenate([fit.vector[: 3 * likelihood.stars], fit.background[index : index + 1]])
+    vector = fit.own(index)
     model = likelihood.jacobian(vector, 0)[0].reshape(cutout.electrons.shape)
     start = fit.places[first] - (cutout.x0, cutout.y0)
     along = fit.places[second] - fit.places[first]
@@ -57,7 +56,8 @@ def saddle_seen(
     points = start + share[:, None] * along
     if not all(_readable(cutout, x, y) for x, y in points):
         return float("nan"), float("nan")
-    base = background + cutout.known
+    vector[2 : 3 * likelihood.stars : 3] = 0.0
+    base = likelihood.jacobian(vector, 0)[0].reshape(cutout.electrons.shape)
     light = model - base
     seen = np.array([_weights(x, y) @ _patch(light, x, y) for x, y in points])
     near = min(0.5, reach)

@@ -78,22 +78,20 @@ class _Whitened:
 
     def __init__(self, cutouts: Sequence[Cutout], fit: StarFit) -> None:
         likelihood = Likelihood(cutouts, len(fit.places))
-        self.cutouts = likelihood.cutouts
+        self.likelihood = likelihood
         self.star = fit.places[0]
-        vector = fit.vector
+        vector = self.vector = fit.vector
         roots, residuals = [], []
-        nuisance = np.zeros((likelihood.size, sum(c.electrons.size for c in self.cutouts)))
+        nuisance = np.zeros((likelihood.size, sum(c.electrons.size for c in cutouts)))
         begin = 0
-        for index in range(len(self.cutouts)):
+        for index in range(len(cutouts)):
             expectation, derivatives = likelihood.jacobian(vector, index)
             _, slope, weight = likelihood.noise[index].judge(expectation)
             root = np.sqrt(weight)
             roots.append(root)
             residuals.append(-slope / np.where(root > 0.0, root, 1.0))
             span = slice(begin, begin + root.size)
-            stars = 3 * likelihood.stars
-            nuisance[:stars, span] = derivatives[:stars] * root
-            nuisance[stars + index, span] = root
+            nuisance[list(likelihood.layout.own[index]), span] = derivatives * root
             begin += root.size
         self.roots = roots
         self.residual = np.concatenate(residuals)
@@ -103,15 +101,9 @@ class _Whitened:
     def planes(self, dx: float, dy: float, order: int) -> FloatArray:
         """Whitened PSF and derivatives for a star at an offset, shape (planes, pixels)."""
         parts = []
-        for cutout, root in zip(self.cutouts, self.roots):
-            rows, columns = cutout.electrons.shape
-            planes = cutout.psf.evaluate(
-                self.star[0] + dx - cutout.x0,
-                self.star[1] + dy - cutout.y0,
-                columns=columns,
-                rows=rows,
-                order=order,
-            )
+        place = self.star[0] + dx, self.star[1] + dy
+        for index, root in enumerate(self.roots):
+            planes = self.likelihood.star(self.vector, index, place, order=order)
             flat = planes.reshape(len(planes), -1)
             flat *= root
             parts.append(flat)

@@ -2,8 +2,9 @@
 
 The likelihood of a pixel is that of `simimg.resolving.pixelnoise`; its maximum is sought by Fisher
 scoring (the expected information takes the place of the Hessian) with Levenberg-Marquardt damping.
-Any number of stars, one free constant background for each cutout, any number of cutouts: several
-exposures of the same stars are fitted together.
+Any number of stars, any number of cutouts, each with a free background (one level, or a plane):
+several frames of the same stars are fitted together, each through its own air and, where it is not
+the first, with a small free shift and transparency (`simimg.resolving.layout`).
 
 Electrons and detector pixels; places are counted from 0 at the centre of the frame's first pixel.
 """
@@ -11,89 +12,31 @@ Electrons and detector pixels; places are counted from 0 at the centre of the fr
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field
 
 import numpy as np
 from scipy import ndimage
 
-from simimg.arrays import AnyArray, FloatArray, frozen
+from simimg.arrays import FloatArray, frozen
+from simimg.resolving.cutout import Cutout
+from simimg.resolving.descent import Expansion, covariance_of, damped_step, next_damping
+from simimg.resolving.layout import Layout, plane, turned
 from simimg.resolving.pixelnoise import PixelNoise
-from simimg.resolving.psfmodel import PsfModel
+
+__all__ = [
+    "Cutout",
+    "Expansion",
+    "Likelihood",
+    "StarFit",
+    "covariance_of",
+    "damped_step",
+    "finished",
+    "fit_stars",
+    "next_damping",
+]
 
 _MOST_STEPS = 60
 _CONVERGED = 1e-5  # deviance still to be won: far below the unit that an error stands for
-
-
-@dataclass(frozen=True, eq=False)
-class Cutout:
-    """A piece of a frame, in electrons, with all that its likelihood needs.
-
-    Attributes
-    ----------
-    electrons : ndarray, shape (rows, columns)
-        Electrons above the bias; 0 where `used` is 0.
-    used : ndarray, shape (rows, columns)
-        1 for pixels that count, 0 for saturated, bad and missing ones.
-    variance : float
-        Variance of the Gaussian part: read noise squared and the rounding, electrons squared.
-    x0, y0 : float
-        Place of the first pixel's centre in the frame.
-    psf : PsfModel
-        The effective PSF here.
-    known : ndarray, shape (rows, columns)
-        Expected electrons of whatever is not fitted (other stars); zeros for an isolated object.
-    """
-
-    electrons: FloatArray
-    used: FloatArray
-    variance: float
-    x0: float
-    y0: float
-    psf: PsfModel
-    known: FloatArray
-
-    @classmethod
-    def of(
-        cls,
-        electrons: AnyArray,
-        *,
-        variance: float,
-        psf: PsfModel,
-        x0: float = 0.0,
-        y0: float = 0.0,
-        used: AnyArray | None = None,
-        known: FloatArray | None = None,
-    ) -> Cutout:
-        """Make a cutout; pixels that are not finite are left out.
-
-        Raises
-        ------
-        ValueError
-            When shapes differ or the variance is negative or not finite.
-        """
-        values = np.array(electrons, dtype=np.float64)
-        finite = np.isfinite(values)
-        if used is not None:
-            finite &= np.asarray(used, dtype=bool)
-        values[~finite] = 0.0
-        other = np.zeros(values.shape) if known is None else np.asarray(known, dtype=np.float64)
-        if values.ndim != 2 or other.shape != values.shape:
-            raise ValueError(f"cutout arrays differ in shape: {values.shape}, {other.shape}")
-        if not (np.isfinite(variance) and variance >= 0):
-            raise ValueError(f"variance must be finite and not negative, got {variance}")
-        return cls(
-            electrons=frozen(values),
-            used=frozen(finite.astype(np.float64)),
-            variance=float(variance),
-            x0=float(x0),
-            y0=float(y0),
-            psf=psf,
-            known=frozen(other),
-        )
-
-    def with_known(self, known: FloatArray) -> Cutout:
-        """The same cutout with other expected electrons of what is not fitted."""
-        return replace(self, known=frozen(np.asarray(known, dtype=np.float64)))
 
 
 @dataclass(frozen=True, eq=False)
@@ -106,15 +49,19 @@ class StarFit:
         x and y of each star, pixels of the frame.
     electrons : ndarray, shape (n,)
     background : ndarray, shape (cutouts,)
-        Electrons a pixel of sky and dark signal in each cutout.
-    covariance : ndarray, shape (3 n + cutouts, 3 n + cutouts)
-        Inverse Fisher information, in the order x1, y1, electrons1, x2, ..., backgrounds; infinite
-        where the information matrix is singular.
+        Electrons a pixel of sky and dark signal in each cutout (in the middle of a tilted one).
+    covariance : ndarray, shape (p, p), p = 3 n + cutouts + extras
+        Inverse Fisher information, in the order x1, y1, electrons1, x2, ..., backgrounds, extras;
+        infinite where the information matrix is singular.
     deviance : float
         Minus twice the log-likelihood, up to a constant that the data fix.
     pixels : int
         Pixels used.
     converged : bool
+    extras : ndarray
+        Rises of tilted backgrounds, shifts and transparencies of frames: see `Layout`.
+    layout : Layout or None
+        Where everything stands; None for stars and one level a cutout.
     """
 
     places: FloatArray
@@ -124,30 +71,21 @@ class StarFit:
     deviance: float
     pixels: int
     converged: bool
+    extras: FloatArray = field(default_factory=lambda: frozen(np.zeros(0)))
+    layout: Layout | None = None
 
     @property
     def vector(self) -> FloatArray:
         """The parameters as one array, in the order of the covariance."""
         stars = np.column_stack([self.places, self.electrons]).ravel()
-        return np.concatenate([stars, self.background])
+        return np.concatenate([stars, self.background, self.extras])
 
-
-@dataclass(frozen=True, eq=False)
-class Expansion:
-    """The likelihood at one set of parameters, to second order.
-
-    Attributes
-    ----------
-    deviance : float
-    slope : ndarray, shape (p,)
-        Half the gradient of the deviance.
-    information : ndarray, shape (p, p)
-        Fisher information (half the expected Hessian of the deviance).
-    """
-
-    deviance: float
-    slope: FloatArray
-    information: FloatArray
+    def own(self, index: int) -> FloatArray:
+        """The parameters of one cutout as it were the only one: stars, background, extras."""
+        if self.layout is not None:
+            return self.vector[list(self.layout.own[index])]
+        stars = 3 * len(self.places)
+        return np.concatenate([self.vector[:stars], self.background[index : index + 1]])
 
 
 class Likelihood:
@@ -162,7 +100,10 @@ class Likelihood:
     def __init__(self, cutouts: Sequence[Cutout], stars: int) -> None:
         self.cutouts = tuple(cutouts)
         self.stars = stars
-        self.size = 3 * stars + len(self.cutouts)
+        self.layout = Layout(
+            stars, [one.tilted for one in cutouts], [one.view.number for one in cutouts]
+        )
+        self.size = self.layout.size
         self.pixels = int(sum(cutout.used.sum() for cutout in self.cutouts))
         self.noise = [
             PixelNoise(
@@ -174,28 +115,71 @@ class Likelihood:
             for cutout in self.cutouts
         ]
 
+    def star(
+        self, vector: FloatArray, index: int, place: Sequence[float] | FloatArray, *, order: int
+    ) -> FloatArray:
+        """One electron of a star on the pixels of a cutout, and its derivatives by its place.
+
+        Parameters
+        ----------
+        vector : ndarray, shape (p,)
+            Tells the shift and transparency of the cutout's frame.
+        index : int
+            Of the cutout.
+        place : (x, y)
+            Of the star, pixels of the first frame.
+        order : {0, 1, 2}
+
+        Returns
+        -------
+        ndarray, shape (1, rows, columns), (3, ...) or (6, ...)
+            As `PsfModel.evaluate`.
+        """
+        cutout = self.cutouts[index]
+        view, (x, y) = cutout.view, (float(place[0]), float(place[1]))
+        rows, columns = cutout.electrons.shape
+        across, along, factor = self.layout.shift(vector, index)
+        if view.number:
+            x, y = view.place(x, y)
+        planes = cutout.psf.evaluate(
+            x + across - cutout.x0, y + along - cutout.y0, columns=columns, rows=rows, order=order
+        )
+        if not view.number:
+            return planes
+        return turned(planes, view.turn) * (view.factor * factor)
+
     def jacobian(self, vector: FloatArray, index: int) -> tuple[FloatArray, FloatArray]:
         """Return the expectation of a cutout and its derivatives.
 
         Returns
         -------
         expectation : ndarray, shape (pixels,)
-        derivatives : ndarray, shape (3 stars + 1, pixels)
-            By x, y and electrons of each star, then by this cutout's background.
+        derivatives : ndarray, shape (q, pixels)
+            By the parameters of ``layout.own[index]``: x, y and electrons of each star, this
+            cutout's background, its rises, the shift and transparency of its frame.
         """
-        cutout = self.cutouts[index]
+        cutout, layout = self.cutouts[index], self.layout
         rows, columns = cutout.electrons.shape
-        derivatives = np.empty((3 * self.stars + 1, rows * columns))
-        derivatives[-1] = 1.0
-        expectation = cutout.known.ravel() + vector[3 * self.stars + index]
+        background = 3 * self.stars
+        derivatives = np.empty((len(layout.own[index]), rows * columns))
+        derivatives[background] = 1.0
+        expectation = cutout.known.ravel() + vector[layout.level[index]]
+        rise = layout.rise[index]
+        if rise is not None:
+            derivatives[background + 1 : background + 3] = plane(rows, columns)
+            expectation += vector[rise : rise + 2] @ derivatives[background + 1 : background + 3]
+        if layout.view[index] is not None:
+            derivatives[-3:] = 0.0
+            back = np.linalg.inv(cutout.view.turn)
         for star in range(self.stars):
             x, y, electrons = vector[3 * star : 3 * star + 3]
-            planes = cutout.psf.evaluate(
-                x - cutout.x0, y - cutout.y0, columns=columns, rows=rows, order=1
-            ).reshape(3, -1)
+            planes = self.star(vector, index, (x, y), order=1).reshape(3, -1)
             np.multiply(planes[1:], electrons, out=derivatives[3 * star : 3 * star + 2])
             derivatives[3 * star + 2] = planes[0]
             expectation += electrons * planes[0]
+            if layout.view[index] is not None:
+                derivatives[-3:-1] += back.T @ derivatives[3 * star : 3 * star + 2]
+                derivatives[-1] += electrons * planes[0]
         return expectation, derivatives
 
     def expand(self, vector: FloatArray) -> Expansion:
@@ -207,50 +191,10 @@ class Likelihood:
             expectation, derivatives = self.jacobian(vector, index)
             part, by_pixel, weight = noise.judge(expectation)
             deviance += part
-            chosen = [*range(3 * self.stars), 3 * self.stars + index]
+            chosen = list(self.layout.own[index])
             slope[chosen] += derivatives @ by_pixel
             information[np.ix_(chosen, chosen)] += (derivatives * weight) @ derivatives.T
         return Expansion(deviance, slope, information)
-
-
-def covariance_of(information: FloatArray) -> FloatArray:
-    """Invert a Fisher information; infinite variances where it is singular.
-
-    Parameters
-    ----------
-    information : ndarray, shape (p, p)
-    """
-    scale = np.sqrt(np.diag(information))
-    result = np.full(information.shape, np.inf)
-    if not (np.isfinite(scale).all() and (scale > 0).all()):
-        return result
-    unit = information / np.outer(scale, scale)
-    values, vectors = np.linalg.eigh(unit)
-    if values[0] < 1e-13 * values[-1]:
-        return result
-    inverse: FloatArray = (vectors / values) @ vectors.T / np.outer(scale, scale)
-    return inverse
-
-
-def damped_step(expansion: Expansion, damping: float) -> tuple[FloatArray, float]:
-    """Return a Levenberg-Marquardt step and the fall of the deviance that it promises."""
-    diagonal = np.diag(expansion.information)
-    floor = 1e-14 * float(diagonal.max(initial=0.0)) + 1e-300
-    scale = 1.0 / np.sqrt(np.maximum(diagonal, floor))
-    unit = expansion.information * np.outer(scale, scale)
-    unit[np.diag_indices_from(unit)] += damping + 1e-13
-    step = -scale * np.linalg.solve(unit, scale * expansion.slope)
-    promised = -(2.0 * expansion.slope @ step + step @ expansion.information @ step)
-    return step, float(promised)
-
-
-def next_damping(damping: float, fall: float, promised: float) -> float:
-    """Return the damping after a step that lowered the deviance by ``fall``, not ``promised``."""
-    if fall < 0.0:
-        return max(8.0 * damping, 1e-3)
-    if fall > 0.7 * promised:
-        return max(damping / 10.0, 1e-9)
-    return damping if fall > 0.2 * promised else max(3.0 * damping, 1e-3)
 
 
 def fit_stars(
@@ -290,7 +234,7 @@ def fit_stars(
         if promised < _CONVERGED and damping < 0.1:
             converged = True
             break
-        trial = vector + _shortened(step, len(start), reach)
+        trial = vector + _shortened(step, likelihood.layout, reach)
         stars = trial[: 3 * len(start)].reshape(-1, 3)
         old = vector[: 3 * len(start)].reshape(-1, 3)
         stars[:, 2] = np.maximum(stars[:, 2], 0.1 * old[:, 2])
@@ -308,15 +252,19 @@ def finished(
     likelihood: Likelihood, vector: FloatArray, expansion: Expansion, *, converged: bool
 ) -> StarFit:
     """Put a solution into a `StarFit`."""
-    stars = vector[: 3 * likelihood.stars].reshape(-1, 3)
+    begin = 3 * likelihood.stars
+    levels = begin + len(likelihood.cutouts)
+    stars = vector[:begin].reshape(-1, 3)
     return StarFit(
         places=frozen(stars[:, :2]),
         electrons=frozen(stars[:, 2]),
-        background=frozen(vector[3 * likelihood.stars :]),
+        background=frozen(vector[begin:levels]),
         covariance=frozen(covariance_of(expansion.information)),
         deviance=expansion.deviance,
         pixels=likelihood.pixels,
         converged=converged,
+        extras=frozen(vector[levels:]),
+        layout=likelihood.layout,
     )
 
 
@@ -326,40 +274,42 @@ def _linear_start(
     electrons: FloatArray | Sequence[float] | None,
 ) -> FloatArray:
     """Fill in electrons and backgrounds by least squares at the starting places."""
-    stars = likelihood.stars
+    stars, layout = likelihood.stars, likelihood.layout
     result = vector.copy()
     if electrons is not None:
         result[: 3 * stars].reshape(-1, 3)[:, 2] = electrons
     normal = np.zeros((likelihood.size, likelihood.size))
     right = np.zeros(likelihood.size)
     for index, cutout in enumerate(likelihood.cutouts):
-        rows, columns = cutout.electrons.shape
-        planes = np.ones((stars + 1, rows * columns))
+        rise = layout.rise[index]
+        chosen = [*range(2, 3 * stars, 3), layout.level[index]]
+        planes = np.ones((stars + 1, cutout.electrons.size))
         for star in range(stars):
-            x, y = vector[3 * star : 3 * star + 2]
-            planes[star] = cutout.psf.evaluate(
-                x - cutout.x0, y - cutout.y0, columns=columns, rows=rows, order=0
-            ).ravel()
-        chosen = [*range(2, 3 * stars, 3), 3 * stars + index]
+            place = vector[3 * star : 3 * star + 2]
+            planes[star] = likelihood.star(vector, index, place, order=0).ravel()
+        if rise is not None:
+            planes = np.concatenate([planes, plane(*cutout.electrons.shape)])
+            chosen += [rise, rise + 1]
         data = (cutout.electrons - cutout.known).ravel()
         weighted = planes * cutout.used.ravel()
         normal[np.ix_(chosen, chosen)] += weighted @ planes.T
         right[chosen] += weighted @ data
-    wanted = [*range(2, 3 * stars, 3), *range(3 * stars, likelihood.size)]
+    rises = [first + i for first in layout.rise if first is not None for i in (0, 1)]
+    fluxes = [*range(2, 3 * stars, 3)]
+    wanted = [*fluxes, *layout.level, *rises]
     if electrons is not None:
-        fixed = [*range(2, 3 * stars, 3)]
-        wanted = [*range(3 * stars, likelihood.size)]
-        right = right - normal[:, fixed] @ result[fixed]
+        wanted = [*layout.level, *rises]
+        right = right - normal[:, fluxes] @ result[fluxes]
     result[wanted] = np.linalg.lstsq(normal[np.ix_(wanted, wanted)], right[wanted], rcond=1e-12)[0]
-    fluxes = range(2, 3 * stars, 3)
     least = max([1.0, *(1e-3 * float(result[i]) for i in fluxes)])
     for i in fluxes:
         result[i] = max(float(result[i]), least)
     return result
 
 
-def _shortened(step: FloatArray, stars: int, reach: float) -> FloatArray:
-    """Scale a step down until no star moves farther than ``reach``."""
-    moves = step[: 3 * stars].reshape(-1, 3)[:, :2]
-    longest = float(np.hypot(moves[:, 0], moves[:, 1]).max(initial=0.0))
-    return step if longest <= reach else step * (reach / longest)
+def _shortened(step: FloatArray, layout: Layout, reach: float) -> FloatArray:
+    """Scale a step down until no star and no frame moves farther than ``reach``."""
+    moves = step[: 3 * layout.stars].reshape(-1, 3)[:, :2]
+    longest = float(np.hypot(moves[:, 0], moves[:, 1]).max(initial=0.0)) / reach
+    longest = max(longest, layout.longest(step, reach))
+    return step if longest <= 1.0 else step / longest
