@@ -183,7 +183,11 @@ def observe(frame: Frame, *, widest: float = 0.0) -> Observation:
         psf=PsfModel.from_image(image, oversampling=oversampling),
         gain=camera.gain,
         bias=camera.bias,
-        saturation=min(top, np.floor(full_well / camera.gain + camera.bias)),
+        # Read noise may bring a full pixel's count below the level of the full well.
+        saturation=min(
+            top,
+            camera.bias + max(full_well - 6.0 * camera.read_noise, 0.5 * full_well) / camera.gain,
+        ),
         variance=camera.read_noise**2 + rounding,
     )
 

@@ -34,10 +34,11 @@ from simimg.resolving.starfit import (
 
 _MOST_STEPS = 80
 _FIRST_STEPS = 3  # taken from every start before the best are chosen
-_ENOUGH = 3e-3  # deviance that may be left to win: a false-alarm probability is then right to 1 %
+_ENOUGH = 1e-2  # deviance that may be left to win: half a per cent of a false-alarm probability
 _CONVERGED = 1e-5  # where a second star is certain, for the sake of its place
 _CERTAIN = 15.0
 _FINALISTS = 3
+_GAP = 30.0  # deviance behind the best after the first steps at which a start is given up
 _MOST_RATIO = 14.0  # of the ratio's natural logarithm: fainter than that is no star
 _MOST_STARTS = 3
 _UNEQUAL = 1.7  # natural logarithm of the ratio of the unequal splits tried
@@ -160,7 +161,7 @@ def refine_pair(cutouts: Sequence[Cutout], single: StarFit, scan: SecondStarScan
     states.sort(key=lambda state: state.now.deviance)
     finals: list[_State] = []
     for state in states[:_FINALISTS]:
-        if finals and state.now.deviance > finals[0].now.deviance + 30.0:
+        if state.now.deviance > states[0].now.deviance + _GAP:
             continue
         finals.append(search.run(state, _MOST_STEPS, _ENOUGH))
     if not finals:

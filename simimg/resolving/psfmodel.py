@@ -41,7 +41,7 @@ _QUINTIC = (
     )
     / 120.0
 )
-_EDGE = 3  # mirrored samples beyond the edge, so that every place inside has its six coefficients
+_EDGE = 8  # samples made up beyond the edge: six coefficients for every place, no kink at the edge
 _RANK_TOLERANCE = 3e-8  # of the peak: what the dropped singular values may change at most
 
 
@@ -104,7 +104,7 @@ class PsfModel:
 
         Parameters
         ----------
-        image : array_like, shape (n, n), n odd and at least 5
+        image : array_like, shape (n, n), n odd and at least 9
             Fraction of the light on a detector pixel centred at each sample, the star in the
             middle. Finite, with a positive peak. A PSF of band limit ``f`` (cycles per detector
             pixel) is interpolated to about 1e-6 of its peak when ``oversampling >= 8 f``.
@@ -119,13 +119,13 @@ class PsfModel:
         samples = np.array(image, dtype=np.float64)
         if samples.ndim != 2 or samples.shape[0] != samples.shape[1]:
             raise ValueError(f"a PSF image must be square, got shape {samples.shape}")
-        if samples.shape[0] % 2 == 0 or samples.shape[0] < 5:
-            raise ValueError(f"a PSF image must have an odd side of 5 or more, got {samples.shape}")
+        if samples.shape[0] % 2 == 0 or samples.shape[0] < 9:
+            raise ValueError(f"a PSF image must have an odd side of 9 or more, got {samples.shape}")
         if oversampling != int(oversampling) or oversampling < 1:
             raise ValueError(f"oversampling must be a whole number above 0, got {oversampling}")
         if not np.isfinite(samples).all() or samples.max() <= 0:
             raise ValueError("a PSF image must be finite and have a positive peak")
-        coefficients = np.pad(samples, _EDGE, mode="reflect")
+        coefficients = np.pad(samples, _EDGE, mode="reflect", reflect_type="odd")
         for axis in (0, 1):
             coefficients = ndimage.spline_filter1d(coefficients, order=5, axis=axis, mode="mirror")
         left, values, right = linalg.svd(coefficients, full_matrices=False)

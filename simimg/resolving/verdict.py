@@ -15,7 +15,9 @@ from scipy.special import log_ndtr, ndtr
 from simimg.arrays import FloatArray
 
 CERTAIN = 0.95
-"""Probability above which a pair is resolved; below one minus it, unresolved."""
+"""Probability above which a pair is resolved."""
+UNLIKELY = 0.05
+"""Probability below which it is unresolved."""
 SURELY_DOUBLE = 0.01
 """Probability of a single star below which there is a second star."""
 
@@ -69,7 +71,7 @@ def probability_beyond(
     centre = separation + slope * steps
     narrow = np.sqrt(max(sigma**2 - slope**2, (1e-6 * sigma) ** 2))
     limits = limit(differences) if callable(limit) else np.full(steps.size, float(limit))
-    limits = np.maximum(np.nan_to_num(limits, nan=np.inf), 0.0)
+    limits = np.where(np.isnan(limits), np.inf, np.maximum(limits, 0.0))
     beyond = float(weights @ ndtr((centre - limits) / narrow))
     allowed = float(weights @ ndtr(centre / narrow))
     if allowed <= 0.0:
@@ -94,4 +96,4 @@ def verdict(probability: float, *, probability_single: float) -> str:
         return "unresolved"
     if probability > CERTAIN:
         return "resolved"
-    return "unresolved" if probability < 1.0 - CERTAIN else "borderline"
+    return "unresolved" if probability < UNLIKELY else "borderline"
