@@ -168,7 +168,9 @@ def _spread(
     )
     used = ((tile.rows + bottom + top) * count, (tile.columns + left + right) * count)
     for placed in sources.shapes:
-        weight = basis.weights(one_point(placed.x, placed.y, placed.electrons))[0, member]
+        weight = basis.weights(one_point(placed.x, placed.y, placed.electrons, placed.kind))[
+            0, member
+        ]
         stamp, stamp_left, stamp_bottom = shape_stamp(
             placed,
             x=(placed.x - origin_x) * count,

@@ -7,7 +7,7 @@ its own Fourier transform or its own quadrature points in radians about its cent
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Protocol
 
 import numpy as np
@@ -17,11 +17,23 @@ from simimg.arrays import AnyArray, FloatArray, frozen
 
 @dataclass(frozen=True)
 class Points:
-    """Point sources: `x`, `y` in pixels and `electrons`, each of shape ``(N,)``."""
+    """Point sources, each array of shape ``(N,)``.
+
+    Attributes
+    ----------
+    x, y : ndarray
+        Places in pixels.
+    electrons : ndarray
+        Of one exposure, over the whole PSF.
+    kind : ndarray of int
+        Which kind of source each is (spectrum, tracked or not), as the PSFs' rule understands it;
+        0 unless given.
+    """
 
     x: FloatArray
     y: FloatArray
     electrons: FloatArray
+    kind: AnyArray = field(default_factory=lambda: np.zeros(0, dtype=np.int64))
 
     def __post_init__(self) -> None:
         for name in ("x", "y", "electrons"):
@@ -30,13 +42,18 @@ class Points:
             )
         if not self.x.shape == self.y.shape == self.electrons.shape:
             raise ValueError("x, y and electrons of points must have one shape")
+        kind = np.asarray(self.kind, dtype=np.int64)
+        kind = np.zeros(self.x.shape, dtype=np.int64) if kind.size == 0 else kind
+        if kind.shape != self.x.shape:
+            raise ValueError("kind of points must have the shape of x")
+        object.__setattr__(self, "kind", frozen(kind))
 
     def __len__(self) -> int:
         return int(self.x.size)
 
     def chosen(self, rows: AnyArray) -> Points:
         """The points picked by a boolean mask or indices `rows`."""
-        return Points(self.x[rows], self.y[rows], self.electrons[rows])
+        return Points(self.x[rows], self.y[rows], self.electrons[rows], self.kind[rows])
 
 
 def no_points() -> Points:
@@ -44,9 +61,9 @@ def no_points() -> Points:
     return Points(np.empty(0), np.empty(0), np.empty(0))
 
 
-def one_point(x: float, y: float, electrons: float) -> Points:
+def one_point(x: float, y: float, electrons: float, kind: int = 0) -> Points:
     """A single point."""
-    return Points(np.array([x]), np.array([y]), np.array([electrons]))
+    return Points(np.array([x]), np.array([y]), np.array([electrons]), np.array([kind]))
 
 
 class SkyShape(Protocol):
@@ -73,12 +90,13 @@ class SkyShape(Protocol):
 
 @dataclass(frozen=True)
 class PlacedShape:
-    """A shape with its place (pixels) and its electrons."""
+    """A shape with its place (pixels), its electrons and its kind (as of points)."""
 
     x: float
     y: float
     electrons: float
     shape: SkyShape
+    kind: int = 0
 
 
 @dataclass(frozen=True)
