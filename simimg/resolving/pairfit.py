@@ -176,9 +176,9 @@ def refine_pair(cutouts: Sequence[Cutout], single: StarFit, scan: SecondStarScan
 
 
 def _starts(single: StarFit, scan: SecondStarScan, fwhm: float) -> list[FloatArray]:
-    """Inner vectors to start from: photocentre x, y, total, dx, dy, log ratio, backgrounds."""
+    """Inner vectors to start from: photocentre x, y, total, dx, dy, log ratio, the rest."""
     (x, y), total = single.places[0], float(single.electrons[0])
-    rest = single.background
+    rest = np.concatenate([single.background, single.extras])
     starts: list[FloatArray] = []
     best = int(np.argmax(scan.direction_scores))
     if scan.direction_scores[best] > 0:
@@ -225,7 +225,7 @@ class _PairSearch:
         self.reach = 0.5 * cutouts[0].psf.fwhm
 
     def outer(self, inner: FloatArray) -> FloatArray:
-        """From the inner coordinates to x1, y1, electrons1, x2, y2, electrons2, backgrounds."""
+        """From the inner coordinates to x1, y1, electrons1, x2, y2, electrons2, the rest."""
         result = inner.copy()
         share = 1.0 / (1.0 + np.exp(-inner[5]))
         result[0:2] = inner[0:2] - share * inner[3:5]
@@ -286,6 +286,7 @@ class _PairSearch:
             float(np.hypot(step[3], step[4])) / self.reach,
             abs(float(step[5])) / 1.5,
             -float(step[2]) / (0.7 * vector[2]),
+            self.likelihood.layout.longest(step, self.reach),
         )
         return (step / longest if longest > 1.0 else step), promised
 
