@@ -9,16 +9,34 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 from math import inf, pi
+from typing import Protocol
 
 import numpy as np
 
 from simimg.arrays import FloatArray
-from simimg.resolving.criteria import SparrowCurve, rayleigh_saddle, sparrow, sparrow_curve
-from simimg.resolving.resolution import BRIGHTEST_DIFFERENCE, Directions
+from simimg.resolving.criteria import (
+    SampledProfile,
+    SparrowCurve,
+    rayleigh_saddle,
+    sparrow,
+    sparrow_curve,
+)
+from simimg.resolving.resolution import BRIGHTEST_DIFFERENCE
 
 _MANY = 16
 _SHARED = pi / 36.0  # directions that share a curve: 5 degrees
 _STEPS = 120
+
+
+class Cuts(Protocol):
+    """The cuts of an effective PSF: of a transfer function, or of an image of it."""
+
+    @property
+    def even(self) -> bool:
+        """Whether opposite directions show the same cut."""
+
+    def profile(self, angle: float, magnitude_difference: float = 0.0) -> SampledProfile:
+        """The PSF along `angle` (rad), as far out as a companion that much fainter asks."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -45,13 +63,13 @@ class PairLimits:
 
     Parameters
     ----------
-    delivered : Directions
+    delivered : Cuts
         Of the effective PSF.
     pairs : int, optional
         How many will be asked for; of more than 16, neighbouring directions share their curves.
     """
 
-    def __init__(self, delivered: Directions, *, pairs: int = 1) -> None:
+    def __init__(self, delivered: Cuts, *, pairs: int = 1) -> None:
         self._delivered = delivered
         self._many = pairs > _MANY
         self._kept: dict[int, tuple[float, SparrowCurve]] = {}
@@ -89,7 +107,7 @@ class PairLimits:
 
     def _shared(self, angle: float) -> tuple[float, SparrowCurve]:
         key = round((angle % (2.0 * pi)) / _SHARED)
-        if self._delivered.transfer.even:
+        if self._delivered.even:
             key %= round(pi / _SHARED)
         if key not in self._kept:
             profile = self._delivered.profile(key * _SHARED, 8.0)

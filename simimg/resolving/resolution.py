@@ -92,6 +92,11 @@ class Directions:
         self._samples: dict[float, SampledProfile] = {}
         self._saddles: dict[float, float] = {}
 
+    @property
+    def even(self) -> bool:
+        """Whether opposite directions show the same cut."""
+        return self.transfer.even
+
     def cut(self, angle: float) -> PsfCut:
         """The PSF along `angle` (rad, from the detector's +x towards +y), through its peak."""
         angle = self._key(angle)
