@@ -1,11 +1,11 @@
 """Looking at a pair whose truth is known, many times over: the same answer, sooner.
 
 `simimg.resolving.sighting.look` searches for a second star as if nothing were known. For a pair
-that has been put into the frame the search would end, time after time, at one of two places: where
-the second star is, or (the mirror solution of a close unequal pair) at the other side of the first.
-The fit is therefore begun there, which takes a fraction of the time and finds the same maximum of
-the likelihood. Wherever that is not beyond doubt - the second star is not certain, the fit has not
-settled, other objects shine in - the whole search is made.
+that has been put into the frame the search ends, time after time, near where the second star is;
+a fit begun there takes a fraction of the time and finds the same maximum of the likelihood.
+Wherever that is not beyond doubt - the second star is not certain, the mirror solution of a close
+unequal pair cannot be ruled out, the fit has not settled, other objects shine in - the whole search
+is made.
 
 Detector pixels and electrons.
 """
@@ -42,15 +42,15 @@ class KnownPair:
         Rows and columns of what is cut out.
     single : ndarray, shape (1, 3)
         x, y and electrons of the best single star in the frame without noise.
-    starts : tuple of ndarray, shape (2, 3)
-        The same of the two stars, and of the mirror solution where noise may prefer it.
+    double : ndarray, shape (2, 3)
+        The same of the two stars.
     """
 
     named: NamedPair
     quick: bool
     boxes: tuple[tuple[slice, slice], ...]
     single: FloatArray
-    starts: tuple[FloatArray, ...]
+    double: FloatArray
 
     @classmethod
     def prepare(cls, noiseless: Observation, named: NamedPair, *, alone: bool) -> KnownPair:
@@ -65,16 +65,13 @@ class KnownPair:
             Whether no other object shines in.
         """
         seen = look(noiseless, named.first, other=named.second)
-        nothing = frozen(np.empty((0, 3)))
-        if not alone or seen.neighbours or seen.double is None or seen.gain < _CERTAIN:
-            return cls(named, False, (), nothing, ())
-        return cls(
-            named=named,
-            quick=True,
-            boxes=tuple(_box(cutout) for cutout in seen.cutouts),
-            single=_stars(seen.single),
-            starts=_starts(seen.cutouts, seen.double),
-        )
+        quick = alone and not seen.neighbours and seen.gain > _CERTAIN
+        two = seen.double
+        if two is None or not quick or _mirrored(seen.cutouts, two):
+            nothing = frozen(np.empty((0, 3)))
+            return cls(named, False, (), nothing, nothing)
+        boxes = tuple(_box(cutout) for cutout in seen.cutouts)
+        return cls(named, True, boxes, _stars(seen.single), _stars(two))
 
     def look(self, observation: Observation) -> Sighting:
         """Look at the pair in one frame."""
@@ -85,16 +82,16 @@ class KnownPair:
     def _quickly(self, observation: Observation) -> Sighting | None:
         """One star and two, from known starts; None where doubt remains."""
         cutouts = tuple(_cut(observation, box) for box in self.boxes)
-        fits = [
+        single, double = (
             fit_stars(cutouts, places=start[:, :2], electrons=start[:, 2])
-            for start in (self.single, *self.starts)
-        ]
-        single, double = fits[0], min(fits[1:], key=lambda fit: fit.deviance)
+            for start in (self.single, self.double)
+        )
         gain = single.deviance - double.deviance
-        true = self.starts[0][1, :2] - self.starts[0][0, :2]
-        off = abs(hypot(*(double.places[1] - double.places[0])) - hypot(*true))
-        certain = gain > _CERTAIN and all(fit.converged for fit in fits)
-        if not certain or off > _SETTLED * observation.fwhm or double.electrons.min() <= 0.0:
+        if not (gain > _CERTAIN and single.converged and double.converged):
+            return None
+        lengths = [hypot(*(p[1] - p[0])) for p in (double.places, self.double[:, :2])]
+        astray = abs(lengths[1] - lengths[0]) > _SETTLED * observation.fwhm
+        if astray or double.electrons.min() <= 0.0:
             return None
         chance = probability_single(gain, area=_WIDEST, rim=_WIDEST)
         return Sighting(cutouts, single, double, gain, chance, (), self.named.first)
@@ -121,19 +118,13 @@ def _cut(observation: Observation, box: tuple[slice, slice]) -> Cutout:
     )
 
 
-def _starts(cutouts: tuple[Cutout, ...], double: StarFit) -> tuple[FloatArray, ...]:
-    """The two stars, and their mirror solution where the noise may prefer it."""
-    true = _stars(double)
-    light = true[:, 2] / true[:, 2].sum()
-    mirrored = true.copy()
-    mirrored[:, :2] = 2.0 * (light @ true[:, :2]) - true[:, :2]
+def _mirrored(cutouts: tuple[Cutout, ...], double: StarFit) -> bool:
+    """Whether the noise may prefer the second star on the other side of the first."""
+    mirrored = _stars(double).copy()
+    light = mirrored[:, 2] / mirrored[:, 2].sum()
+    mirrored[:, :2] = 2.0 * (light @ mirrored[:, :2]) - mirrored[:, :2]
     other = fit_stars(cutouts, places=mirrored[:, :2], electrons=mirrored[:, 2])
-    if other.deviance - double.deviance > _CERTAIN or _same(other, double):
-        return (true,)
-    return true, _stars(other)
-
-
-def _same(one: StarFit, two: StarFit) -> bool:
-    """Whether two fits are one solution, the stars in either order."""
-    offs = [float(np.abs(one.places - places).max()) for places in (two.places, two.places[::-1])]
-    return min(offs) < 0.1 * float(np.hypot(*(two.places[1] - two.places[0])))
+    orders = other.places, other.places[::-1]
+    offs = [float(np.abs(places - double.places).max()) for places in orders]
+    same = min(offs) < 0.1 * hypot(*(double.places[1] - double.places[0]))
+    return not same and other.deviance - double.deviance < _CERTAIN

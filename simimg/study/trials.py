@@ -209,7 +209,10 @@ def _elsewhere(
         for future in as_completed(waiting):
             yield waiting[future], future.result()
     except BrokenProcessPool as error:
-        raise RunError("a process of the trials was stopped; try fewer workers") from error
+        raise RunError(
+            "a process of the trials could not start or was stopped; try one worker, and guard the "
+            'main part of a script by if __name__ == "__main__":'
+        ) from error
     finally:
         pool.shutdown(cancel_futures=True)
 

@@ -1,0 +1,183 @@
+"""Trials of pairs: against the bound, the limits, single measurements, and themselves."""
+
+import math
+
+import numpy as np
+import pytest
+from numpy.testing import assert_allclose
+
+import simimg
+from simimg.errors import InputError
+from simimg.study.trials import trials
+from tests.study.pairs import AIR, SPACE, pair_scene
+
+ARCSEC = np.pi / 180.0 / 3600.0
+FIGURES = ("separation_arcsec", "position_angle_deg", "magnitude_difference")
+
+
+def figures(one):
+    return np.array([getattr(one, name) for name in FIGURES])
+
+
+CASES = {
+    # Equal, a little inside Rayleigh's delivered limit.
+    "air": (AIR, {}),
+    # Two magnitudes, above the air, 2.2 pixels to the FWHM.
+    "space": (SPACE, {}),
+    # Faint: noise of sky and camera, half a FWHM apart.
+    "faint": (
+        AIR,
+        {
+            "pair__0__electrons": ["24000 electron", "16000 electron"],
+            "pair__0__separation": "0.6 arcsec",
+            "sky__electrons": "400 electron",
+        },
+    ),
+}
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("case", CASES)
+def test_scatter_is_at_the_bound(tmp_path, case):
+    text, changes = CASES[case]
+    count = 1600
+    scene = pair_scene(tmp_path, text, **changes)
+    found = trials(scene, count=count)[0]
+    assert found.measured == count
+    bound = figures(found.bound)
+    # The regime in which the bound is promised to be reached.
+    assert bound[0] < 0.2 * scene.pair[0].separation / ARCSEC
+    assert bound[2] < 0.15
+    # A standard deviation of 1600 draws is good to 1.8 %.
+    assert_allclose(figures(found.scatter), bound, rtol=0.10)
+    assert_allclose(figures(found.error), figures(found.scatter), rtol=0.10)
+    assert (np.abs(figures(found.bias)) < bound / 3.0).all()
+
+
+@pytest.mark.slow
+def test_fraction_resolved_turns_at_the_limit(tmp_path):
+    """Rayleigh's and Sparrow's own separations, where the error is under 1 % of them."""
+    bright = {"pair__0__electrons": ["400000 electron", "400000 electron"]}
+    base = pair_scene(tmp_path, **bright)
+    delivered = simimg.limits(base).objects[0].delivered
+    for criterion in ("rayleigh", "sparrow"):
+        limit = getattr(delivered, f"{criterion}_arcsec")
+        shares = []
+        for factor in (0.98, 0.995, 1.005, 1.02):
+            scene = pair_scene(
+                tmp_path, **bright, pair__0__separation=f"{factor * limit:.9f} arcsec"
+            )
+            one = trials(scene, count=60)[0]
+            assert one.bound.separation_arcsec < 0.01 * limit
+            shares.append(getattr(one, criterion).fraction_resolved)
+        assert shares == sorted(shares)
+        assert shares[0] < 0.5 < shares[-1]
+        # A verdict asks for 95 %: below the limit it is rare, at any error.
+        assert shares[1] < 0.06
+
+
+@pytest.mark.slow
+def test_fraction_resolved_grows_with_exposure(tmp_path):
+    limit = simimg.limits(pair_scene(tmp_path)).objects[0].delivered.sparrow_arcsec
+    shares, doubles = [], []
+    for light in (600, 3000, 15000, 75000):
+        changes = {
+            "pair__0__electrons": [f"{light} electron"] * 2,
+            "sky__electrons": f"{light / 100} electron",
+            "pair__0__separation": f"{1.1 * limit:.6f} arcsec",
+        }
+        one = trials(pair_scene(tmp_path, **changes), count=60)[0]
+        shares.append(one.sparrow.fraction_resolved)
+        doubles.append(one.double.fraction_resolved)
+    assert shares == sorted(shares)
+    assert doubles == sorted(doubles)
+    assert shares[0] < 0.3
+    assert shares[-1] == 1.0
+
+
+@pytest.mark.slow
+def test_expected_significance_foretells_how_often_the_second_star_shows(tmp_path):
+    """At S = 4 in half of the frames, at S = 7 in nearly all."""
+    light = 80000.0
+    for significance, low, high in ((2.0, 0.0, 0.15), (4.0, 0.35, 0.75), (7.0, 0.97, 1.0)):
+        for _ in range(6):
+            changes = {"pair__0__electrons": [f"{light} electron"] * 2}
+            scene = pair_scene(tmp_path, pair__0__separation="0.6 arcsec", **changes)
+            found = simimg.precision(scene)[0].expected_significance
+            light *= (significance / found) ** 0.8
+        assert_allclose(found, significance, rtol=0.02)
+        one = trials(scene, count=40)[0]
+        assert low <= one.double.fraction_resolved <= high
+
+
+def test_trials_are_measurements_of_the_exposures(tmp_path):
+    scene = pair_scene(tmp_path)
+    first = trials(scene, count=1)[0]
+    both = trials(scene, count=2)[0]
+    measured = [simimg.measure(simimg.expose(scene, index=index))[0] for index in (0, 1)]
+    offs = np.array([figures(one) - figures(one.truth) for one in measured])
+    errors = figures(first.bound)
+    # The short cut stops where next to no likelihood is left to win.
+    assert_allclose(figures(first.bias), offs[0], atol=0.02 * errors.min(), rtol=0.02)
+    assert_allclose(figures(both.bias) / errors, offs.mean(axis=0) / errors, atol=0.02)
+    assert_allclose(figures(both.scatter) / errors, offs.std(axis=0, ddof=1) / errors, atol=0.03)
+    assert first.rayleigh.fraction_resolved == (measured[0].rayleigh.verdict == "resolved")
+    assert first.sparrow.fraction_resolved == (measured[0].sparrow.verdict == "resolved")
+    assert math.isnan(first.scatter.separation_arcsec)
+    assert first.to_dict()["scatter"]["separation_arcsec"] is None
+
+
+def test_workers_change_nothing(tmp_path):
+    scene = pair_scene(tmp_path, exposure__count=2)
+    seen = []
+    alone = trials(scene, count=40, progress=lambda done, total: seen.append((done, total)))
+    assert trials(scene, count=40, workers=2) == alone
+    assert seen[-1] == (40, 40)
+    assert [done for done, _ in seen] == sorted({done for done, _ in seen})
+
+
+def test_seed_changes_the_draws(tmp_path):
+    scene = pair_scene(tmp_path)
+    own, same, other = (trials(scene, count=2, seed=seed)[0] for seed in (None, 11, 12))
+    assert own == same
+    assert own.bias != other.bias
+    assert own.bound == other.bound
+
+
+def test_exposures_fitted_together(tmp_path):
+    changes = {"pair__0__electrons": ["9000 electron", "9000 electron"], "exposure__count": 6}
+    one = trials(pair_scene(tmp_path, **changes), count=150)[0]
+    assert one.exposures == 6
+    stacked = one.together
+    assert stacked.trials == 150
+    assert_allclose(figures(one.bound) / figures(stacked.bound), np.sqrt(6.0), rtol=1e-9)
+    # A standard deviation of 150 draws is good to 6 %.
+    assert_allclose(figures(stacked.scatter), figures(stacked.bound), rtol=0.2)
+    assert (figures(stacked.scatter) < 0.6 * figures(one.scatter)).all()
+    assert stacked.double.fraction_resolved >= one.double.fraction_resolved
+
+
+def test_every_pair_in_the_frame_in_order(tmp_path):
+    more = (
+        '[[pair]]\nlabel = "off"\nx = -90\ny = 5\nelectrons = ["9000 electron", "9000 electron"]\n'
+        'separation = "1 arcsec"\nposition_angle = "0 deg"\n'
+        '[[pair]]\nlabel = "Q"\nx = 9\ny = 39\nelectrons = ["90000 electron", "9000 electron"]\n'
+        'separation = "1.4 arcsec"\nposition_angle = "270 deg"\n'
+    )
+    scene = pair_scene(tmp_path, AIR + more)
+    found = trials(scene, count=8)
+    assert [one.label for one in found] == ["P", "Q"]
+    for one, bound in zip(found, simimg.precision(scene)[::2]):
+        assert_allclose(figures(one.bound), figures(bound), rtol=1e-9)
+        assert (np.abs(figures(one.bias)) < 3.0 * figures(one.bound)).all()
+
+
+def test_wrong_wishes(tmp_path):
+    scene = pair_scene(tmp_path)
+    for wrong in ({"count": 0}, {"count": 1, "workers": 0}, {"count": 1, "seed": -1}):
+        with pytest.raises(ValueError, match="must be 1 or more"):
+            trials(scene, **wrong)
+    with pytest.raises(InputError, match=r"camera\.pixels"):
+        trials(pair_scene(tmp_path, camera=None), count=3)
+    alone = "\n".join(AIR.split("\n")[:-8]) + "\n"
+    assert trials(pair_scene(tmp_path, alone), count=3) == []
