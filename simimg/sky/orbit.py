@@ -20,9 +20,6 @@ from numpy.typing import ArrayLike
 
 from simimg.arrays import FloatArray
 
-LARGEST_ECCENTRICITY = 0.999
-"""Largest eccentricity taken."""
-
 _STEPS = 60
 
 
@@ -37,7 +34,7 @@ class Orbit:
     periastron : float
         Julian year of a passage of periastron.
     eccentricity : float
-        0 to `LARGEST_ECCENTRICITY`.
+        0 to below 1.
     semi_major_axis : float
         Apparent length (rad), above 0.
     inclination : float
@@ -64,10 +61,8 @@ class Orbit:
         for name in ("periastron", "node", "argument"):
             if not np.isfinite(getattr(self, name)):
                 raise ValueError(f"{name} must be finite, got {getattr(self, name)}")
-        if not 0.0 <= self.eccentricity <= LARGEST_ECCENTRICITY:
-            raise ValueError(
-                f"eccentricity must be from 0 to {LARGEST_ECCENTRICITY}, got {self.eccentricity}"
-            )
+        if not 0.0 <= self.eccentricity < 1.0:
+            raise ValueError(f"eccentricity must be from 0 to below 1, got {self.eccentricity}")
         # A straight angle converted from degrees may miss pi by its last digit.
         if not 0.0 <= self.inclination <= np.pi * (1.0 + 1e-12):
             raise ValueError(f"inclination must be from 0 to pi rad, got {self.inclination}")
@@ -81,7 +76,7 @@ def eccentric_anomaly(mean_anomaly: ArrayLike, eccentricity: ArrayLike) -> Float
     mean_anomaly : array_like
         M (rad), any finite value.
     eccentricity : array_like
-        e, 0 to `LARGEST_ECCENTRICITY`; broadcasts with M.
+        e, 0 to below 1; broadcasts with M.
 
     Returns
     -------
@@ -102,8 +97,8 @@ def eccentric_anomaly(mean_anomaly: ArrayLike, eccentricity: ArrayLike) -> Float
     )
     if not np.all(np.isfinite(mean)):
         raise ValueError("mean anomalies must be finite")
-    if not np.all((e >= 0.0) & (e <= LARGEST_ECCENTRICITY)):
-        raise ValueError(f"eccentricities must be from 0 to {LARGEST_ECCENTRICITY}")
+    if not np.all((e >= 0.0) & (e < 1.0)):
+        raise ValueError("eccentricities must be from 0 to below 1")
     turns = 2.0 * np.pi * np.round(mean / (2.0 * np.pi))
     # The equation is odd: half a turn is enough.
     reduced = mean - turns
