@@ -48,6 +48,8 @@ _TIMES = {
     **dict.fromkeys(("min", "mins", "minute", "minutes"), 60.0),
     **dict.fromkeys(("h", "hr", "hour", "hours"), 3600.0),
     **dict.fromkeys(("d", "day", "days"), 86400.0),
+    # Julian years, as orbits and proper motions are given.
+    **dict.fromkeys(("yr", "yrs", "year", "years"), 365.25 * 86400.0),
 }
 _PRESSURES = {
     **dict.fromkeys(("Pa", "pascal"), 1.0),
@@ -74,6 +76,14 @@ def _per(tops: tuple[str, ...], bottoms: Mapping[str, float]) -> dict[str, float
     return {f"{top}/{bottom}": 1.0 / size for top in tops for bottom, size in bottoms.items()}
 
 
+# An hour of angle an hour of time is no way to write how fast something turns.
+_HOURS = ("hourangle", "h", "hour", "hours")
+_ANGULAR_RATES = {
+    f"{angle}/{time}": size / duration
+    for angle, size in ANGLES.items()
+    if angle not in _HOURS
+    for time, duration in _TIMES.items()
+}
 _PER_TIME = {**_TIMES, **{f"{p}/{unit}": size for p in _PIXEL for unit, size in _TIMES.items()}}
 
 
@@ -127,6 +137,9 @@ KINDS: Mapping[str, Kind] = {
     ),
     "pressure": Kind("a pressure", "780 hPa", "hPa", _PRESSURES, ("Pa",)),
     "speed": Kind("a speed", "10 m/s", "m/s", _SPEEDS, ("m / s",)),
+    "angular rate": Kind(
+        "an angular rate", "30 arcsec/h", "arcsec/s", _ANGULAR_RATES, ("rad / s",)
+    ),
     "electrons": Kind(
         "a number of electrons",
         "5 electron",
@@ -160,5 +173,6 @@ KINDS: Mapping[str, Kind] = {
     ),
     "ratio": Kind("a ratio", "0.8", "", dict.fromkeys(("%", "percent"), 0.01)),
     "number": Kind("a number", "1.5", "", {}),
+    "Julian year": Kind("a Julian year", "1934.0", "", {}),
 }
 """Every kind of quantity that `parse_quantity` knows, by name."""

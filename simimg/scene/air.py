@@ -6,8 +6,12 @@ import math
 from collections.abc import Iterator, Mapping
 from typing import Annotated, Any, ClassVar, Literal
 
-from simimg.scene.keys import Choice, Quantity
+from simimg.scene.keys import Choice, Flag, Quantity
 from simimg.scene.table import Fault, Table, key
+from simimg.scene.telescope import Angle
+
+THICKEST = 38.0
+"""Largest airmass that still has a zenith distance (Pickering 2002: the horizon's)."""
 
 
 class Air(Table):
@@ -65,6 +69,54 @@ class Air(Table):
         absent="no",
         meaning="image motion is part of the long exposure",
     )
+    pressure: Annotated[
+        float, Quantity("pressure", at_least="0 Pa", at_most="1400 hPa", sample="780 hPa")
+    ] = key(
+        "Pressure of the air at the telescope, which refraction depends on.",
+        101325.0,
+        absent="1013.25 hPa",
+        meaning="the telescope stands at sea level",
+        when=("dispersion",),
+    )
+    temperature: Annotated[
+        float, Quantity("temperature", at_least="-100 degC", at_most="100 degC", sample="7 degC")
+    ] = key(
+        "Temperature of the air at the telescope, which refraction depends on.",
+        288.15,
+        absent="15 degC",
+        meaning="the air at the telescope is mild",
+        when=("dispersion",),
+    )
+    relative_humidity: Annotated[
+        float, Quantity("ratio", at_least=0.0, at_most=1.0, sample="0.3")
+    ] = key(
+        "Relative humidity of the air at the telescope, which refraction depends on a little.",
+        0.0,
+        absent="0",
+        meaning="the air at the telescope is dry",
+        when=("dispersion",),
+    )
+    parallactic_angle: Annotated[float, Angle] = key(
+        "Position angle of the zenith, north through east, along which the air disperses light.",
+        0.0,
+        absent="0 deg",
+        meaning="the zenith lies north: light is dispersed from south to north",
+        when=("dispersion",),
+    )
+    dispersion: Annotated[bool, Flag()] = key(
+        "True: the air refracts each colour differently, and draws stars out along the parallactic "
+        "angle.",
+        False,
+        absent="false",
+        meaning="the air disperses no light",
+    )
+    dispersion_corrector: Annotated[bool, Flag()] = key(
+        "True: a corrector takes the dispersion away.",
+        False,
+        absent="false",
+        meaning="no corrector takes the dispersion away",
+        when=("dispersion",),
+    )
 
     @classmethod
     def complete(cls, given: Mapping[str, Any]) -> Mapping[str, Any]:
@@ -75,22 +127,28 @@ class Air(Table):
 
     @classmethod
     def together(cls, given: Mapping[str, Any]) -> Iterator[Fault]:
-        """One of seeing and image_quality; at most one of airmass and altitude."""
+        """At most one of seeing and image_quality, and of airmass and altitude.
+
+        The scene itself asks for one of the first two, unless it has a measured PSF.
+        """
         if "seeing" in given and "image_quality" in given:
             yield Fault(
                 ("image_quality",),
                 "contradicts air.seeing: each fixes the turbulence",
                 "leave out seeing or image_quality",
             )
-        elif "seeing" not in given and "image_quality" not in given:
-            yield Fault(
-                ("seeing",),
-                "is required in [air] and missing",
-                'add seeing = "0.8 arcsec" (or image_quality), or leave out [air] to be above it',
-            )
         if "airmass" in given and "altitude" in given:
             yield Fault(
                 ("altitude",),
                 "contradicts air.airmass: each fixes the other",
                 "leave out airmass or altitude",
+            )
+
+    def agree(self) -> Iterator[Fault]:
+        """Refraction needs a zenith distance."""
+        if self.dispersion and self.airmass is not None and self.airmass > THICKEST:
+            yield Fault(
+                ("dispersion",),
+                f"needs an airmass of at most {THICKEST:g}, the horizon's",
+                "write a smaller airmass, or dispersion = false",
             )

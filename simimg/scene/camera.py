@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from typing import Annotated, ClassVar
 
 from simimg.scene.keys import Flag, Quantity, Several, Text, Whole
+from simimg.scene.readers import RatioOrFile
 from simimg.scene.table import Fault, Table, key
 from simimg.scene.telescope import Angle
 
@@ -29,8 +30,8 @@ class Camera(Table):
         float | None,
         Quantity("angle", at_least="0.000001 arcsec", at_most="1 deg", sample="0.12 arcsec"),
     ] = key("Angle that a pixel's side spans on the sky.", None)
-    quantum_efficiency: Annotated[float, Quantity("ratio", above=0.0, at_most=1.0)] = key(
-        "Electrons per photon in the band.",
+    quantum_efficiency: Annotated[float | str, RatioOrFile()] = key(
+        "Electrons per photon: one value in the band, or a table of wavelengths and values.",
         1.0,
         absent="1",
         meaning="every photon is detected",

@@ -1,4 +1,4 @@
-"""The sky's light, the exposure, and where the telescope points. SI inside."""
+"""The sky's light and the exposure. SI inside."""
 
 from __future__ import annotations
 
@@ -68,17 +68,4 @@ class Exposure(Table):
         0.0,
         absent="0 s",
         meaning="exposures follow one another at once",
-    )
-
-
-class Pointing(Table):
-    """Where the centre of the field lies."""
-
-    heading: ClassVar[str] = "[pointing]"
-
-    ra: Annotated[float, Quantity("right ascension", at_least="0 deg", at_most="360 deg")] = key(
-        "Right ascension of the field centre; colons are read as hours."
-    )
-    dec: Annotated[float, Quantity("declination", at_least="-90 deg", at_most="90 deg")] = key(
-        "Declination of the field centre."
     )

@@ -15,6 +15,7 @@ from pathlib import Path
 from typing import Any
 
 from simimg.errors import InputError
+from simimg.scene.readers import names_a_file
 
 LARGEST_KEPT = 16 * 2**20
 """Largest file, in bytes, whose content is kept."""
@@ -22,8 +23,19 @@ LARGEST_KEPT = 16 * 2**20
 LARGEST_READ = 2**30
 """Largest file, in bytes, that a scene may name."""
 
-_FILE_KEYS = (("telescope", "pupil"),)
-_FILE_TABLES = ("picture", "catalogue")
+_FILE_KEYS = (
+    ("telescope", "pupil"),
+    ("telescope", "wavefront", "file"),
+    ("band", "file"),
+    ("psf", "file"),
+)
+_FILE_OR_RATIO = (("camera", "quantum_efficiency"),)
+_OBJECT_FILES = {
+    **dict.fromkeys(("star", "galaxy", "disc", "ring"), ("spectrum",)),
+    "pair": ("spectra",),
+    "picture": ("file", "spectrum"),
+    "catalogue": ("file",),
+}
 
 
 class UnusableFileError(Exception):
@@ -150,13 +162,20 @@ def read_input(name: str, directory: Path) -> InputFile:
 
 def files_named(document: Mapping[str, Any]) -> Iterator[tuple[tuple[str | int, ...], str]]:
     """Every key of a document that names a file, with the path as written."""
-    for table, name in _FILE_KEYS:
-        inner = document.get(table)
-        if isinstance(inner, Mapping) and isinstance(inner.get(name), str):
-            yield (table, name), inner[name]
-    for table in _FILE_TABLES:
-        tables = document.get(table)
-        if isinstance(tables, list):
-            for index, one in enumerate(tables):
-                if isinstance(one, Mapping) and isinstance(one.get("file"), str):
-                    yield (table, index, "file"), one["file"]
+    for place in (*_FILE_KEYS, *_FILE_OR_RATIO):
+        value: Any = document
+        for step in place:
+            value = value.get(step) if isinstance(value, Mapping) else None
+        if isinstance(value, str) and (place not in _FILE_OR_RATIO or names_a_file(value)):
+            yield place, value
+    for kind, names in _OBJECT_FILES.items():
+        tables = document.get(kind)
+        for index, one in enumerate(tables if isinstance(tables, list) else []):
+            for name in names if isinstance(one, Mapping) else ():
+                value = one.get(name)
+                if isinstance(value, str) and name != "spectra":
+                    yield (kind, index, name), value
+                elif isinstance(value, list) and name == "spectra":
+                    for which, path in enumerate(value):
+                        if isinstance(path, str):
+                            yield (kind, index, name, which), path

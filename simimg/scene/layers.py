@@ -13,25 +13,41 @@ from typing import Any
 
 from simimg.errors import mistake
 from simimg.quantities import shown
+from simimg.scene.colours import ABROAD, COLOURS, PAIR_COLOURS
 from simimg.scene.keys import Choice, FileName, Text, nearest
 from simimg.scene.model import Scene
 from simimg.scene.places import ROUTES
 from simimg.scene.table import MANY, Table, table_types
+from simimg.scene.telescope import PUPIL_PARTS
 from simimg.scene.text import parse_value
 
 _RIVALS: Mapping[str, tuple[tuple[tuple[str, ...], ...], ...]] = {
-    "telescope": ((("pupil",), ("obstruction", "vanes")),),
+    "telescope": ((("pupil",), PUPIL_PARTS),),
+    "telescope.vanes": ((("count", "angle"), ("angles",)),),
     "air": ((("seeing",), ("image_quality",)), (("airmass",), ("altitude",))),
-    "band": ((("name",), ("centre", "width")),),
+    "band": ((("name",), ("centre", "width"), ("file",)),),
     "camera": ((("pixel_scale",), ("pixel_size",)),),
     "sky": ((("surface_brightness",), ("electrons",)),),
-    "pair": ((("magnitudes",), ("electrons",)), ROUTES),
+    "pair": (
+        (("magnitudes", *ABROAD), ("electrons",)),
+        (("separation", "position_angle"), ("orbit",)),
+        tuple((name,) for name in PAIR_COLOURS),
+        ROUTES,
+    ),
     **dict.fromkeys(
-        ("star", "galaxy", "disc", "ring", "picture"), ((("magnitude",), ("electrons",)), ROUTES)
+        ("star", "galaxy", "disc", "ring", "picture"),
+        (
+            (("magnitude", *ABROAD), ("electrons",)),
+            tuple((name,) for name in COLOURS),
+            ROUTES,
+        ),
     ),
 }
 _FORM = 'write KEY=VALUE, as telescope.aperture="2 m"'
 _STEP = re.compile(r"[^.\[\]]+|\[\d+\]")
+
+_NUMBERED = ("header", "zernike")
+"""Tables whose keys may look like numbers."""
 
 Path = tuple[str | int, ...]
 
@@ -45,19 +61,19 @@ class MisplacedKeyError(Exception):
         super().__init__(f"{what}; {mend}")
 
 
-def overlay(below: Mapping[str, Any], above: Mapping[str, Any]) -> dict[str, Any]:
-    """One document over another: tables merge key by key, all else is replaced."""
+def overlay(
+    below: Mapping[str, Any], above: Mapping[str, Any], *, kind: str = ""
+) -> dict[str, Any]:
+    """One document over another: tables merge key by key, all else is replaced.
+
+    `kind` is the dotted name of the table that the two are of, empty for whole documents.
+    """
     merged = copy.deepcopy(dict(below))
     for name, value in above.items():
+        _displace(merged, kind, name, given=above)
         under = merged.get(name)
         if isinstance(value, Mapping) and isinstance(under, dict):
-            for inner, inner_value in value.items():
-                _displace(under, name, inner, given=value)
-                lower = under.get(inner)
-                if isinstance(inner_value, Mapping) and isinstance(lower, dict):
-                    lower.update(copy.deepcopy(dict(inner_value)))
-                else:
-                    under[inner] = copy.deepcopy(inner_value)
+            merged[name] = overlay(under, value, kind=f"{kind}.{name}".lstrip("."))
         else:
             merged[name] = copy.deepcopy(value)
     return merged
@@ -90,9 +106,8 @@ def parse_path(text: str) -> Path:
     path: list[str | int] = []
     for step in steps:
         word = step.strip("[] ")
-        # A keyword of the header may look like a number.
-        is_index = word.isascii() and word.isdigit() and len(word) < 10 and steps[0] != "header"
-        path.append(int(word) if is_index and path else word)
+        is_index = word.isascii() and word.isdigit() and len(word) < 10
+        path.append(int(word) if is_index and path and path[-1] not in _NUMBERED else word)
     return tuple(path)
 
 
@@ -123,10 +138,15 @@ def change(document: dict[str, Any], path: Path, value: Any) -> None:
         if value is None:
             here.pop(last, None)
         else:
-            _displace(here, str(path[0]), last, given={})
+            _displace(here, _kind(path), last, given={})
             here[last] = value
     else:
         raise MisplacedKeyError("is not inside a table", f"set {dotted(path[:-1])} itself")
+
+
+def _kind(path: Path) -> str:
+    """Dotted name of the table that the last step of a path is a key of."""
+    return ".".join(step for step in path[:-1] if isinstance(step, str))
 
 
 def _step_into(here: Any, path: Path, step: str | int) -> Any:
@@ -137,7 +157,10 @@ def _step_into(here: Any, path: Path, step: str | int) -> Any:
             raise MisplacedKeyError(
                 f"there is no [[{step}]] in the scene", f"write a [[{step}]] there"
             )
-        return here.setdefault(step, {})
+        if step not in here:
+            _displace(here, _kind(path), step, given={})
+            here[step] = {}
+        return here[step]
     raise MisplacedKeyError("is not inside a table", f"set {dotted(path[:-1])} itself")
 
 
@@ -206,7 +229,9 @@ def _wants_text(path: Path) -> bool:
     return isinstance(reader, Text | FileName | Choice)
 
 
-_ALIASES: Mapping[str, Path] = {"vanes": ("telescope", "vanes")}
+_PARTS = ("vanes", "wavefront", "segments", "field")
+"""Tables of the telescope that may be taken away by their own names."""
+
 _NEEDED = ("telescope", "band")
 
 
@@ -216,24 +241,22 @@ def take_away(document: dict[str, Any], without: Sequence[str]) -> list[str]:
     known = [name for name in Scene.model_fields if name not in ("title", *_NEEDED)]
     for name in without:
         word = name.strip().strip("[]")
-        path = _ALIASES.get(word, (word,))
-        if word == "telescope.vanes":
-            path = _ALIASES["vanes"]
+        part = word.removeprefix("telescope.")
         if word in _NEEDED:
             lines.append(mistake("--without", word, "cannot be left out of a scene", "leave it in"))
-        elif len(path) == 1 and word not in known:
+        elif part in _PARTS:
+            telescope = document.get("telescope")
+            if isinstance(telescope, dict):
+                telescope.pop(part, None)
+        elif word not in known:
             lines.append(
                 mistake(
                     "--without",
                     _short(name),
                     "is not a table of a scene",
-                    nearest(word, [*known, "vanes"]),
+                    nearest(word, [*known, *_PARTS]),
                 )
             )
-        elif len(path) == 1:
-            document.pop(word, None)
         else:
-            telescope = document.get("telescope")
-            if isinstance(telescope, dict):
-                telescope.pop("vanes", None)
+            document.pop(word, None)
     return lines

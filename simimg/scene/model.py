@@ -15,13 +15,15 @@ from typing import Annotated, Any, ClassVar, Self
 
 from pydantic import PrivateAttr
 
+from simimg.scene.agreement import scene_faults
 from simimg.scene.air import Air
 from simimg.scene.band import Band
 from simimg.scene.camera import Camera
-from simimg.scene.exposure import Exposure, Pointing, Sky
+from simimg.scene.exposure import Exposure, Sky
 from simimg.scene.header import Header
 from simimg.scene.inputs import InputFile
 from simimg.scene.keys import Text
+from simimg.scene.motion import Pointing
 from simimg.scene.objects import (
     Catalogue,
     Disc,
@@ -32,6 +34,7 @@ from simimg.scene.objects import (
     Ring,
     Star,
 )
+from simimg.scene.psf import Psf
 from simimg.scene.table import MANY, Fault, Table, key
 from simimg.scene.telescope import Telescope
 
@@ -74,6 +77,7 @@ class Scene(Table):
         absent="ra 0 deg, dec 0 deg",
         meaning="the centre of the field in the header's world coordinates",
     )
+    psf: Psf | None = key("A measured PSF in place of optics and air.", None)
     header: Annotated[dict[str, str | int | float | bool], Header()] = key(
         "Extra keywords for the frame's header.", {}
     )
@@ -175,8 +179,15 @@ class Scene(Table):
             tables = given.get(kind, [])
             if isinstance(tables, Mapping):
                 yield Fault((kind,), "is a single table", f"write [[{kind}]], in double brackets")
-            elif isinstance(tables, list) and "pointing" not in given:
+            elif isinstance(tables, list) and not _points(given.get("pointing")):
                 yield from _unpointed(kind, tables[:MOST_OBJECTS])
+        air = given.get("air")
+        if isinstance(air, Mapping) and "psf" not in given and not _says_seeing(air):
+            yield Fault(
+                ("air", "seeing"),
+                "is required in [air] and missing",
+                'add seeing = "0.8 arcsec" (or image_quality), or leave out [air] to be above it',
+            )
         total, fullest = _count(given)
         if total > MOST_OBJECTS:
             yield Fault(
@@ -186,8 +197,9 @@ class Scene(Table):
             )
 
     def agree(self) -> Iterator[Fault]:
-        """One route to the pixel scale; objects on the side of the sky that is looked at."""
+        """One route to the pixel scale; objects where the telescope looks; what needs what."""
         yield from self._pixel_scale_faults()
+        yield from scene_faults(self)
         if self.pointing is not None:
             for kind in MANY:
                 for index, one in enumerate(getattr(self, kind)):
@@ -242,6 +254,17 @@ def _count(given: Mapping[str, Any]) -> tuple[int, str]:
     return sum(counts.values()), max(counts, key=lambda kind: counts[kind], default="star")
 
 
+def _says_seeing(air: Mapping[str, Any]) -> bool:
+    return "seeing" in air or "image_quality" in air
+
+
+def _points(pointing: Any) -> bool:
+    """False where a scene does not say where it points; what is no table is told elsewhere."""
+    if isinstance(pointing, Mapping):
+        return "ra" in pointing or "dec" in pointing
+    return pointing is not None
+
+
 def _unpointed(kind: str, tables: list[Any]) -> Iterator[Fault]:
     """Objects placed by ra and dec in a scene that does not say where it points."""
     for index, table in enumerate(tables):
@@ -249,6 +272,6 @@ def _unpointed(kind: str, tables: list[Any]) -> Iterator[Fault]:
         if isinstance(place, Mapping) and "ra" in place and "dec" in place:
             yield Fault(
                 (kind, index, "ra"),
-                "needs a [pointing] table, which is missing",
+                "needs ra and dec in [pointing], which are missing",
                 "add [pointing] with the ra and dec of the field centre",
             )

@@ -13,8 +13,8 @@ from simimg.scene.table import MANY, Table
 def requirements_to_expose(scene: Scene) -> list[str]:
     """One line for each key that an exposure needs and the scene lacks.
 
-    Needed are ``camera.pixels``, one route to the pixel scale, and ``exposure.time`` unless every
-    signal is given in electrons.
+    Needed are ``camera.pixels``, one route to the pixel scale, ``exposure.time`` unless every
+    signal is given in electrons and nothing moves, and ``exposure.start`` for an orbit.
     """
     lines: list[str] = []
     if scene.camera is None or scene.camera.pixels is None:
@@ -45,11 +45,21 @@ def requirements_to_expose(scene: Scene) -> list[str]:
                 'add time = "30 s" to [exposure], or give every signal in electrons',
             )
         )
+    orbit = next((index for index, one in enumerate(scene.pair) if one.orbit is not None), None)
+    if orbit is not None and (scene.exposure is None or scene.exposure.start is None):
+        lines.append(
+            mistake(
+                scene.where,
+                "exposure.start",
+                f"is required to expose and missing, because of pair.{orbit}.orbit",
+                'add start = "2026-04-12T03:00:00" (UTC) to [exposure]',
+            )
+        )
     return lines
 
 
 def _signals_by_time(scene: Scene) -> Iterator[str]:
-    """The keys whose signal grows with the exposure time."""
+    """The keys whose signal or trail grows with the exposure time."""
     if scene.sky is not None and scene.sky.surface_brightness is not None:
         yield "sky.surface_brightness"
     if scene.camera is not None and scene.camera.dark_current > 0.0:
@@ -61,6 +71,13 @@ def _signals_by_time(scene: Scene) -> Iterator[str]:
                     yield f"the magnitudes of catalogue.{index}"
             elif one.electrons is None:
                 yield f"{kind}.{index}.{'magnitudes' if kind == 'pair' else 'magnitude'}"
+            elif one.motion is not None:
+                yield f"{kind}.{index}.motion"
+    if scene.pointing is not None:
+        if scene.pointing.drift is not None:
+            yield "pointing.drift"
+        if scene.pointing.rotation_rate != 0.0:
+            yield "pointing.rotation_rate"
 
 
 def defaults_used(scene: Scene) -> list[tuple[str, str, str]]:
@@ -77,14 +94,18 @@ def defaults_used(scene: Scene) -> list[tuple[str, str, str]]:
     for name in Scene.model_fields:
         value = getattr(scene, name)
         if isinstance(value, Table):
-            given = document[name]
-            rows.extend(_absent(value, given, f"{name}."))
-            if name == "telescope" and scene.telescope.vanes is not None:
-                vanes = scene.telescope.vanes
-                rows.extend(_absent(vanes, given["vanes"], "telescope.vanes."))
+            rows.extend(_within(value, document[name], f"{name}."))
     for kind in MANY:
         rows.extend(_of_objects(scene, document, kind))
     return rows
+
+
+def _within(table: Table, given: Mapping[str, Any], prefix: str) -> Iterator[tuple[str, str, str]]:
+    """Defaults of a table and of the small tables inside it."""
+    yield from _absent(table, given, prefix)
+    for name, value in table:
+        if isinstance(value, Table):
+            yield from _within(value, given[name], f"{prefix}{name}.")
 
 
 def _absent(table: Table, given: Mapping[str, Any], prefix: str) -> Iterator[tuple[str, str, str]]:
@@ -94,6 +115,9 @@ def _absent(table: Table, given: Mapping[str, Any], prefix: str) -> Iterator[tup
             continue
         unless = extra.get("unless")
         if isinstance(unless, list) and any(other in given for other in unless):
+            continue
+        when = extra.get("when")
+        if isinstance(when, list) and when and not any(given.get(str(other)) for other in when):
             continue
         absent = str(extra["absent"])
         if prefix == "band." and name == "system":
@@ -106,11 +130,11 @@ def _of_objects(
 ) -> Iterator[tuple[str, str, str]]:
     tables = getattr(scene, kind)
     if len(tables) == 1:
-        yield from _absent(tables[0], document[kind][0], f"{kind}.0.")
+        yield from _within(tables[0], document[kind][0], f"{kind}.0.")
         return
     counts: dict[tuple[str, str, str], int] = {}
     for table, given in zip(tables, document.get(kind, []), strict=True):
-        for row in _absent(table, given, f"{kind}.*."):
+        for row in _within(table, given, f"{kind}.*."):
             counts[row] = counts.get(row, 0) + 1
     for (name, value, meaning), count in counts.items():
         yield name, value, f"{meaning} ({count} of {len(tables)})"

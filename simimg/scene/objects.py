@@ -1,91 +1,41 @@
 """What may stand in the sky of a scene: stars, pairs, shapes, pictures, catalogues. SI inside.
 
-Each has a place given in one of three ways (offsets, right ascension and declination, pixels) and
-a brightness given in one of two (magnitudes, electrons detected per exposure).
+What they have in common, a place, a brightness and a colour, is in `simimg.scene.placed`.
 """
 
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from typing import Annotated, Any, ClassVar
+from typing import Annotated, Any, ClassVar, Literal
 
 from pydantic import Field
 
 from simimg.quantities import KINDS, QuantityError, shown, unit_factor
+from simimg.scene import colours
 from simimg.scene.keys import FileName, Quantity, Reader, Several, Text, fault, nearest
-from simimg.scene.places import ROUTES, brightness_faults, place_faults
+from simimg.scene.orbit import Orbit
+from simimg.scene.placed import Electrons, Luminous, Magnitude, Placed
+from simimg.scene.places import brightness_faults, place_faults
 from simimg.scene.table import Fault, Table, key
 from simimg.scene.telescope import Angle
 
-_Offset = Quantity("angle", at_least="-60 deg", at_most="60 deg", sample="1.5 arcsec")
-_Pixel = Quantity("pixels", at_least=-1e6, at_most=1e6)
-_Magnitude = Quantity("magnitude", at_least=-50.0, at_most=60.0)
-_Electrons = Quantity("signal", above=0.0, at_most=1e18)
+__all__ = [
+    "COLUMNS",
+    "COLUMN_KINDS",
+    "Catalogue",
+    "Disc",
+    "Galaxy",
+    "Luminous",
+    "Names",
+    "Pair",
+    "Picture",
+    "Placed",
+    "Ring",
+    "Star",
+]
+
 _Size = Quantity("angle", at_least="0.000001 arcsec", at_most="10 deg", sample="2 arcsec")
 _AxisRatio = Quantity("ratio", at_least=0.01, at_most=1.0, sample="0.7")
-
-
-class Placed(Table):
-    """A label and a place, given in one way; default the field centre."""
-
-    label: Annotated[str | None, Text(64, sample="SR-014")] = key(
-        "Name of the object in every table.", None
-    )
-    east: Annotated[float | None, _Offset] = key(
-        "Offset towards east from the field centre; None where the place is given otherwise.",
-        None,
-        absent="0 arcsec",
-        meaning="in the middle of the field",
-        unless=("ra", "dec", "x", "y"),
-    )
-    north: Annotated[float | None, _Offset] = key(
-        "Offset towards north from the field centre; None where the place is given otherwise.",
-        None,
-        absent="0 arcsec",
-        meaning="in the middle of the field",
-        unless=("ra", "dec", "x", "y"),
-    )
-    ra: Annotated[
-        float | None, Quantity("right ascension", at_least="0 deg", at_most="360 deg")
-    ] = key("Right ascension, with dec in place of the offsets; needs [pointing].", None)
-    dec: Annotated[float | None, Quantity("declination", at_least="-90 deg", at_most="90 deg")] = (
-        key("Declination, with ra in place of the offsets; needs [pointing].", None)
-    )
-    x: Annotated[float | None, _Pixel] = key(
-        "Column, from 0 at the centre of the first pixel, with y in place of the offsets.", None
-    )
-    y: Annotated[float | None, _Pixel] = key(
-        "Row, from 0 at the centre of the first pixel, with x in place of the offsets.", None
-    )
-
-    @classmethod
-    def complete(cls, given: Mapping[str, Any]) -> Mapping[str, Any]:
-        """The field centre where no place is given."""
-        if any(k in given for route in ROUTES[1:] for k in route):
-            return given
-        return {"east": "0 arcsec", "north": "0 arcsec", **given}
-
-    @classmethod
-    def together(cls, given: Mapping[str, Any]) -> Iterator[Fault]:
-        """One way to the place."""
-        yield from place_faults(given)
-
-
-class Luminous(Placed):
-    """An object with one brightness."""
-
-    magnitude: Annotated[float | None, _Magnitude] = key(
-        "Magnitude in the band, above the air.", None
-    )
-    electrons: Annotated[float | None, _Electrons] = key(
-        "Electrons detected per exposure over the whole image, in place of the magnitude.", None
-    )
-
-    @classmethod
-    def together(cls, given: Mapping[str, Any]) -> Iterator[Fault]:
-        """One way to the place, one to the brightness."""
-        yield from super().together(given)
-        yield from brightness_faults(given, "magnitude", ("11.2", "1e5"))
 
 
 class Star(Luminous):
@@ -99,30 +49,70 @@ class Pair(Placed):
 
     heading: ClassVar[str] = "[[pair]]"
 
-    magnitudes: Annotated[tuple[float, float] | None, Several(_Magnitude, 2)] = key(
+    magnitudes: Annotated[tuple[float, float] | None, Several(Magnitude, 2)] = key(
         "Magnitudes of the first and the second star in the band, above the air.", None
     )
-    electrons: Annotated[tuple[float, float] | None, Several(_Electrons, 2)] = key(
+    electrons: Annotated[tuple[float, float] | None, Several(Electrons, 2)] = key(
         "Electrons detected per exposure of each star, in place of the magnitudes.", None
     )
     separation: Annotated[
-        float, Quantity("angle", above="0 arcsec", at_most="10 deg", sample="0.35 arcsec")
-    ] = key("Separation of the two stars.")
+        float | None, Quantity("angle", above="0 arcsec", at_most="10 deg", sample="0.35 arcsec")
+    ] = key("Separation of the two stars; None where an orbit gives it.", None)
     position_angle: Annotated[float, Angle] = key(
         "Position angle of the second star from the first, north through east.",
         0.0,
         absent="0 deg",
         meaning="the second star lies north of the first",
+        unless=("orbit",),
     )
+    orbit: Orbit | None = key(
+        "Orbit of the second star about the first, in place of separation and position angle, "
+        "which then hang on exposure.start.",
+        None,
+    )
+    temperatures: Annotated[tuple[float, float] | None, Several(colours.Temperature, 2)] = key(
+        "Temperatures of blackbodies of the two stars' colours.",
+        None,
+        absent="none",
+        meaning="both spectra are flat in f_nu",
+        unless=("spectra",),
+    )
+    spectra: Annotated[tuple[str, str] | None, Several(colours.SpectrumFile, 2)] = key(
+        "Tables of wavelength and flux, with units, in place of the temperatures.", None
+    )
+
+    hints: ClassVar[Mapping[str, tuple[str, str]]] = {
+        "temperature": ("is not a key of a pair", 'write temperatures = ["9000 K", "4000 K"]'),
+        "spectrum": ("is not a key of a pair", 'write spectra = ["first.ecsv", "second.ecsv"]'),
+        "spectral_index": ("is not a key of a pair", "write temperatures or spectra, two of them"),
+    }
+
+    @property
+    def coloured(self) -> bool:
+        """True where the two colours are given."""
+        return self.temperatures is not None or self.spectra is not None
 
     @classmethod
     def together(cls, given: Mapping[str, Any]) -> Iterator[Fault]:
-        """One way to the place, one to the two brightnesses."""
+        """One way to each place, one to the two brightnesses, one to the colours at most."""
         yield from super().together(given)
         if "magnitude" in given and "magnitudes" not in given:
             yield Fault(("magnitude",), "is not a key of a pair", "write magnitudes = [11.2, 11.9]")
         else:
             yield from brightness_faults(given, "magnitudes", ("[11.2, 11.9]", "[5e5, 2e5]"))
+        yield from colours.colour_faults(given, colours.PAIR_COLOURS)
+        if "orbit" not in given:
+            if "separation" not in given:
+                sample = cls.sample("separation")
+                yield Fault(("separation",), "is required and missing", f"add {sample}, or orbit")
+            return
+        for name in ("separation", "position_angle"):
+            if name in given:
+                yield Fault(
+                    (name,),
+                    "contradicts orbit, which gives it",
+                    f"leave out {name} or orbit",
+                )
 
 
 class Galaxy(Luminous):
@@ -240,6 +230,7 @@ COLUMN_KINDS: Mapping[str, str] = {
     "y": "pixels",
     "magnitude": "magnitude",
     "electrons": "electrons",
+    "temperature": "temperature",
 }
 """Kind of quantity in each column of a catalogue that may have a unit."""
 
@@ -295,8 +286,8 @@ class Catalogue(Table):
         Names(COLUMNS, '{ east = "dx", north = "dy", magnitude = "m" }', "the name of a column"),
     ] = Field(
         default_factory=dict,
-        description="Which columns hold the place, the brightness and the labels; those of the "
-        "same names where it names none.",
+        description="Which columns hold the place, the brightness, the temperature and the labels; "
+        "those of the same names where it names none.",
     )
     units: Annotated[
         dict[str, str], Names(tuple(COLUMN_KINDS), '{ east = "arcsec" }', "a unit")
@@ -304,14 +295,26 @@ class Catalogue(Table):
         default_factory=dict,
         description="Units of columns for which the file gives none.",
     )
+    magnitude_band: Annotated[str | None, colours.MagnitudeBand] = key(colours.BAND_WORDS, None)
+    magnitude_system: Annotated[Literal["Vega", "AB"] | None, colours.MagnitudeSystem] = key(
+        colours.SYSTEM_WORDS, None
+    )
 
     def agree(self) -> Iterator[Fault]:
         """One place and one brightness; units of the right kind."""
         yield from place_faults(self.columns, ("columns",))
         if "magnitude" in self.columns and "electrons" in self.columns:
             yield from brightness_faults(self.columns, "magnitude", ("", ""), ("columns",))
+        given = self.model_fields_set
+        yield from colours.abroad_faults(dict.fromkeys(given), self.columns)
+        wrong = colours.vega_fault(self.magnitude_band, self.magnitude_system)
+        if wrong is not None:
+            yield Fault(("magnitude_system",), *wrong)
         for name, unit in self.units.items():
             kind = COLUMN_KINDS[name]
+            if unit.strip() in (KINDS[kind].offsets or {}):
+                yield Fault(("units", name), "must be an absolute unit", 'write "K"')
+                continue
             try:
                 unit_factor(unit, kind)
             except QuantityError as error:

@@ -39,6 +39,7 @@ def key(
     absent: str = "",
     meaning: str = "",
     unless: tuple[str, ...] = (),
+    when: tuple[str, ...] = (),
 ) -> Any:
     """Field of a table.
 
@@ -54,8 +55,15 @@ def key(
         What the default means for the frame.
     unless : tuple of str, optional
         The default is not used where one of these keys is given.
+    when : tuple of str, optional
+        The default is used only where one of these keys is given and is not false.
     """
-    extra: dict[str, Any] = {"absent": absent, "meaning": meaning, "unless": list(unless)}
+    extra: dict[str, Any] = {
+        "absent": absent,
+        "meaning": meaning,
+        "unless": list(unless),
+        "when": list(when),
+    }
     return Field(default, description=description, json_schema_extra=extra)
 
 
@@ -69,6 +77,9 @@ class Table(BaseModel):
 
     heading: ClassVar[str] = ""
     """How the table stands in a file, such as ``[air]`` or ``[[pair]]``."""
+
+    written: ClassVar[str] = ""
+    """How a small table inside another is written, such as ``vanes = { count = 4 }``."""
 
     hints: ClassVar[Mapping[str, tuple[str, str]]] = {}
     """Keys that are not known, but foreseen: what is wrong with them, and the mend."""
@@ -98,7 +109,9 @@ class Table(BaseModel):
             several = isinstance(value, list | tuple) and single
             raise fault(
                 f"must be {'one' if single else 'a'} table, got {shown(value)}",
-                f"write {cls.heading} once" if several else f"write a {cls.heading} table",
+                f"write {cls.heading} once"
+                if several
+                else f"write {cls.written or f'a {cls.heading} table'}",
             )
         faults = list(cls.together(value))
         told = {one.place for one in faults}

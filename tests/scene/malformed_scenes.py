@@ -150,7 +150,7 @@ MALFORMED: list[Malformed] = [
     _row("missing dec", 'dec = "-05:23:28"', "", "pointing.dec", "required"),
     _row("odd key", "[sky]", '[sky]\n"a b\\u001b" = 1', "sky", "known"),
     Malformed("a later table", add("\n[[cluster]]\ncount = 3\n"), "cluster", "known"),
-    Malformed("a later key", edit("[sky]", "[psf]\nfile = 'p.fits'\n[sky]"), "psf", "known"),
+    Malformed("a later key", edit("[sky]", "[correction]\nactuators = 9\n[sky]"), "corr", "known"),
     # Kinds of value.
     _row("bare aperture", '"2.0 m"', "2.0", "telescope.aperture", '"2.0 m"'),
     _row("bare number as text", '"2.0 m"', '"2.0"', "telescope.aperture", '"2.0 m"'),
@@ -233,7 +233,8 @@ MALFORMED: list[Malformed] = [
     _row("half a band", 'name = "V"', 'centre = "550 nm"', "band.width", "required"),
     _row("no band", 'name = "V"\n', "", "band.name", "required"),
     _row("unknown band", 'name = "V"', 'name = "v"', "band.name", '"V"'),
-    _row("band file", 'name = "V"', 'file = "v.dat"', "band.file", "not available"),
+    _row("two bands by file", "[band]", '[band]\nfile = "scene.toml"', "band.file", "band.name"),
+    _row("missing band file", 'name = "V"', 'file = "v.dat"', "band.file", "no such file"),
     _row("band to zero", 'name = "V"', 'centre = "200 nm"\nwidth = "400 nm"', "band.width", "1.9"),
     _row("no Vega there", 'name = "V"', 'centre = "9 um"\nwidth = "1 um"', "band.system", "Vega"),
     _row("unknown system", '"Vega"', '"vega"', "band.system", '"Vega"'),

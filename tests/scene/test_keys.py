@@ -5,8 +5,8 @@ import tomllib
 import pytest
 from pydantic_core import PydanticCustomError
 
-from simimg.light.bands import STANDARD_BANDS
-from simimg.scene.band import BLUEST, REDDEST, STANDARD_NAMES
+from simimg.light.bands import AB_BANDS, STANDARD_BANDS
+from simimg.scene.band import AB_NAMES, BLUEST, REDDEST, VEGA_NAMES
 from simimg.scene.header import Header
 from simimg.scene.keys import (
     Choice,
@@ -21,7 +21,9 @@ from simimg.scene.keys import (
     nearest,
 )
 from simimg.scene.model import Scene
+from simimg.scene.readers import EachAxis, RatioOrFile, UpTo
 from simimg.scene.table import MANY, table_types
+from simimg.scene.wavefront import LARGEST_TERM, Terms
 
 TABLES = [Scene, *table_types()]
 FIELDS = [
@@ -38,7 +40,7 @@ def test_each_key_is_documented(table, name):
     reader = table.reader(name)
     headings = [one.heading for one in table_types()]
     if reader is None:
-        assert {f"[{name}]", f"[[{name}]]", f"{table.heading[:-1]}.{name}]"} & set(headings)
+        assert {f"[{name}]", f"[[{name}]]", f"[{table.heading.strip('[]')}.{name}]"} & set(headings)
         return
     assert isinstance(reader, Reader)
     assert reader.range
@@ -76,7 +78,8 @@ def test_many_are_the_tables_in_double_brackets():
 
 
 def test_standard_bands_are_those_with_a_zero_point():
-    assert tuple(STANDARD_BANDS) == STANDARD_NAMES
+    assert tuple(STANDARD_BANDS) == VEGA_NAMES
+    assert tuple(AB_BANDS) == AB_NAMES
     centres = [band.centre for band in STANDARD_BANDS.values()]
     assert min(centres) == pytest.approx(BLUEST, rel=1e-12)  # the same decimal number
     assert max(centres) == pytest.approx(REDDEST, rel=1e-12)
@@ -103,6 +106,34 @@ def test_standard_bands_are_those_with_a_zero_point():
             Instant(),
             ["1900-01-01T01:00:00+01:00"],
             ["1900-01-01T00:30:00+01:00", "0001-01-01T00:00Z"],
+        ),
+        (
+            RatioOrFile(),
+            [0.9, 1, "88 %", "0.5", "qe.ecsv", "2026-qe.csv", "a b/88 % qe"],
+            [0, 1.1, "0", "120 %", "", " ", True, [0.9], "a\nb", "x" * 1001, float("nan")],
+        ),
+        (
+            EachAxis(Quantity("angle", at_least="0 arcsec")),
+            ["1 arcsec", ["1 arcsec", "0 deg"]],
+            [1, "-1 arcsec", [], ["1 arcsec"], ["1 arcsec"] * 3, ["1 arcsec", 1], {}],
+        ),
+        (UpTo(Whole(1, 3, 2), 2), [[1], [1, 2]], [[], 1, "1", [4], [1, 1, 1], {"a": 1}]),
+        (
+            Terms(),
+            [{}, {"4": "60 nm"}, {"2": "-1 um", str(LARGEST_TERM): "0 nm"}],
+            [
+                3,
+                [],
+                {"1": "1 nm"},
+                {"0": "1 nm"},
+                {"04": "1 nm"},
+                {"101": "1 nm"},
+                {"\u0664": "1 nm"},
+                {"": "1 nm"},
+                {"4": 60},
+                {"4": "2 m"},
+                {"9" * 5000: "1 nm"},
+            ],
         ),
         (Header(1), [{}, {"A": 1}], [{"A": 1, "B": 2}, 3, []]),
     ],
