@@ -144,7 +144,7 @@ def fit_pair(
     geometry : bool, optional
         Whether the scan measures the disc, which the false-alarm probability needs.
     """
-    single = fit_stars(cutouts, places=[place])
+    single = fit_stars(cutouts, places=[place], enough=_ENOUGH)
     scan = scan_second_star(cutouts, single, radius=radius, geometry=geometry)
     double = refine_pair(cutouts, single, scan)
     gain = 0.0 if double is None else max(0.0, single.deviance - double.deviance)

@@ -133,8 +133,11 @@ def scan_second_star(
     """
     whitened = _Whitened(cutouts, fit)
     fwhm = cutouts[0].psf.fwhm
-    count = max(6, int(np.ceil(_RADII_PER_FWHM * radius / fwhm)))
-    angles = max(_LEAST_ANGLES, 2 * int(np.ceil(_ANGLES_PER_FWHM * radius / fwhm / 2)))
+    # Places to start a fit from may lie wider apart than those of an integral.
+    density = 1.0 if geometry else 0.7
+    count = max(6, int(np.ceil(density * _RADII_PER_FWHM * radius / fwhm)))
+    angles = 2 * int(np.ceil(density * _ANGLES_PER_FWHM * radius / fwhm / 2))
+    angles = max(_LEAST_ANGLES, angles)
     knots, knot_weights = np.polynomial.legendre.leggauss(count)
     radii = np.append(0.5 * radius * (knots + 1.0), radius)
     weights = 0.5 * radius * knot_weights

@@ -203,6 +203,7 @@ def fit_stars(
     places: FloatArray | Sequence[Sequence[float]],
     electrons: FloatArray | Sequence[float] | None = None,
     most_shift: float | None = None,
+    enough: float = _CONVERGED,
 ) -> StarFit:
     """Fit point sources from given starting places.
 
@@ -215,6 +216,8 @@ def fit_stars(
         Starting electrons; when left out, the linear best fit at the starting places.
     most_shift : float, optional
         Longest move of a star in one step, pixels; default half the PSF's FWHM.
+    enough : float, optional
+        Fall of the deviance still to be won at which the search may end.
 
     Returns
     -------
@@ -231,7 +234,7 @@ def fit_stars(
     damping, converged = 1e-3, False
     for _ in range(_MOST_STEPS):
         step, promised = damped_step(current, damping)
-        if promised < _CONVERGED and damping < 0.1:
+        if promised < enough and damping < 0.1:
             converged = True
             break
         trial = vector + _shortened(step, likelihood.layout, reach)

@@ -157,9 +157,9 @@ def test_neighbours_are_allowed_for():
 
 def test_a_saturated_core_is_left_out():
     shot = frame(
-        pair("1.2 arcsec", 40.0, (9e5, 4e5)), overrides=['camera.full_well="40000 electron"']
+        pair("1.2 arcsec", 40.0, (9e5, 4e5)), overrides=["camera.full_well='40000 electron'"]
     )
-    assert (shot.mask > 0).sum() > 8
+    assert (shot.mask > 0).sum() >= 4
     for seen in (shot, replace(shot, mask=None)):
         (record,) = measure(seen)
         assert within(record)
