@@ -1,38 +1,109 @@
 """How many electrons: zero point, sources, sky and dark signal of a scene's set-up.
 
-A magnitude is above the air, in the scene's band and system; the air's extinction, the telescope's
-collecting area and throughput and the camera's quantum efficiency turn it into electrons at the
-detector. The sky's surface brightness is as observed, so that no extinction is applied to it.
+A magnitude is above the air, in the scene's band and system or carried over from another band; the
+source's spectrum, the air's extinction, the telescope's collecting area and throughput and the
+camera's quantum efficiency turn it into electrons at the detector. The sky's surface brightness is
+as observed, so that no extinction is applied to it; its spectrum is flat in f_nu.
 """
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from math import degrees
 
 import numpy as np
 
-from simimg.arrays import FloatArray
-from simimg.light.bands import Band, custom_band, photon_zero_point, standard_band
+from simimg.arrays import AnyArray, FloatArray
+from simimg.assembly.colours import KELVIN, Palette, scene_palette
+from simimg.errors import InputError, mistake
 from simimg.scene.model import Scene
 
-
-def scene_band(scene: Scene) -> Band:
-    """The band of a scene, a standard one or one by centre and width."""
-    band = scene.band
-    if band.centre is not None and band.width is not None:
-        return custom_band(band.centre, band.width, name=band.name or "")
-    return standard_band(str(band.name))
+# Temperatures at which a catalogue's zero points are computed; between them in log, cubic by far.
+_TEMPERATURES = 96
 
 
-def _photons_per_second(scene: Scene, area: float) -> float:
-    """Photons per second from magnitude 0 above the air, through area, optics and detector."""
-    efficiency = 1.0 if scene.camera is None else scene.camera.quantum_efficiency
-    rate = photon_zero_point(scene_band(scene), scene.band.resolved_system)
-    return float(rate * area * scene.telescope.throughput * efficiency)
+@dataclass(frozen=True, eq=False)
+class Photometry:
+    """Magnitudes to electrons.
+
+    Attributes
+    ----------
+    palette : Palette
+    through : float
+        Collecting area (m2) times throughput times what the air lets through.
+    time : float
+        Exposure (s).
+    """
+
+    palette: Palette
+    through: float
+    time: float
+
+    def zero_point(self, kind: int = 0) -> float:
+        """Electrons per second from magnitude 0 in the scene's band, of a kind of spectrum."""
+        return float(self.palette.rate(kind) * self.through)
+
+    def electrons(
+        self,
+        magnitude: FloatArray | float,
+        kind: AnyArray | int = 0,
+        *,
+        band: str | None = None,
+        system: str | None = None,
+    ) -> FloatArray:
+        """Electrons an exposure.
+
+        Parameters
+        ----------
+        magnitude : array_like
+        kind : array_like of int
+            Of the sources' spectra, one for all or one each.
+        band, system : str, optional
+            Where the magnitudes are known; the scene's own unless given.
+
+        Raises
+        ------
+        InputError
+            Where a spectrum or a zero point does not reach over a band.
+        """
+        faint = 10.0 ** (-0.4 * np.asarray(magnitude, dtype=np.float64))
+        factor = self._factors(np.asarray(kind, dtype=np.int64), band, system)
+        return np.asarray(faint * factor * self.time)
+
+    def _factors(self, kind: AnyArray, band: str | None, system: str | None) -> FloatArray:
+        def one(number: int) -> float:
+            try:
+                carried = self.palette.carried(number, band, system)
+            except ValueError as error:
+                scene = self.palette.scene
+                line = mistake(
+                    scene.name,
+                    "magnitude_band",
+                    str(error),
+                    "give the magnitude in another band, or a spectrum that reaches over both",
+                )
+                raise InputError(line) from error
+            return float(self.zero_point(number) * 10.0 ** (-0.4 * carried))
+
+        if kind.ndim == 0:
+            return np.asarray(one(int(kind)))
+        known = np.unique(kind)
+        if known.size > _TEMPERATURES and known[0] >= KELVIN:
+            # Smooth in 1/T; a hundred points of it leave 1e-6 by cubic splines.
+            from scipy.interpolate import CubicSpline
+
+            places = np.linspace(1.0 / known[-1], 1.0 / known[0], _TEMPERATURES)
+            table = np.log([one(round(1.0 / place)) for place in places])
+            spline = CubicSpline(1.0 / np.rint(1.0 / places), table)
+            return np.asarray(np.exp(spline(1.0 / kind)))
+        values = np.array([one(int(number)) for number in known])
+        return np.asarray(values[np.searchsorted(known, kind)])
 
 
-def zero_point(scene: Scene, *, area: float, airmass: float | None) -> float:
-    """Electrons per second at the detector from a star of magnitude 0.
+def photometry(
+    scene: Scene, *, area: float, airmass: float | None, palette: Palette | None = None
+) -> Photometry:
+    """The way from magnitudes to electrons in a scene.
 
     Parameters
     ----------
@@ -41,10 +112,18 @@ def zero_point(scene: Scene, *, area: float, airmass: float | None) -> float:
         Collecting area of the pupil (m2).
     airmass : float or None
         None above the air: no extinction.
+    palette : Palette, optional
+        The scene's, where it is at hand.
     """
     extinction = scene.air.extinction if scene.air is not None else 0.0
     loss = 10.0 ** (-0.4 * extinction * (airmass or 0.0))
-    return float(_photons_per_second(scene, area) * loss)
+    through = area * scene.telescope.throughput * loss
+    return Photometry(palette or scene_palette(scene), float(through), exposure_time(scene))
+
+
+def zero_point(scene: Scene, *, area: float, airmass: float | None) -> float:
+    """Electrons per second at the detector from a star of magnitude 0, flat in f_nu."""
+    return photometry(scene, area=area, airmass=airmass).zero_point()
 
 
 def exposure_time(scene: Scene) -> float:
@@ -52,13 +131,6 @@ def exposure_time(scene: Scene) -> float:
     if scene.exposure is None or scene.exposure.time is None:
         return 0.0
     return scene.exposure.time
-
-
-def electrons_from_magnitude(
-    magnitude: FloatArray | float, *, zero_point: float, time: float
-) -> FloatArray:
-    """Electrons that a star of this magnitude gives in an exposure."""
-    return np.asarray(zero_point * time * 10.0 ** (-0.4 * np.asarray(magnitude, float)))
 
 
 def sky_electrons(scene: Scene, *, area: float) -> float:
@@ -71,8 +143,8 @@ def sky_electrons(scene: Scene, *, area: float) -> float:
     if sky.surface_brightness is None or scale is None:
         return 0.0
     square_arcsec = (degrees(scale) * 3600.0) ** 2
-    rate = _photons_per_second(scene, area) * 10.0 ** (-0.4 * sky.surface_brightness)
-    return float(rate * square_arcsec * exposure_time(scene))
+    clear = photometry(scene, area=area, airmass=None)
+    return float(clear.electrons(sky.surface_brightness) * square_arcsec)
 
 
 def dark_electrons(scene: Scene) -> float:

@@ -15,13 +15,26 @@ from typing import Any
 import numpy as np
 
 from simimg.arrays import AnyArray, FloatArray
-from simimg.assembly.brightness import electrons_from_magnitude, exposure_time, zero_point
+from simimg.assembly.basis import FOLLOWED
+from simimg.assembly.brightness import Photometry, photometry
+from simimg.assembly.colours import colour_keys, kelvin_kinds
+from simimg.assembly.motion import field_turn, moved_points, object_trail
+from simimg.assembly.orbits import pair_place
 from simimg.assembly.places import FieldGeometry, field_geometry
 from simimg.assembly.train import Train, assemble_train
 from simimg.errors import InputError, mistake
 from simimg.imaging.sources import PlacedShape, Points, SkyShape, Sources
 from simimg.scene.model import Scene
-from simimg.scene.objects import Catalogue, Disc, Galaxy, Pair, Picture, Placed, Ring
+from simimg.scene.objects import (
+    Catalogue,
+    Disc,
+    Galaxy,
+    Luminous,
+    Pair,
+    Picture,
+    Placed,
+    Ring,
+)
 from simimg.sky.catalogues import read_catalogue
 from simimg.sky.disc import DiscShape
 from simimg.sky.mosaic import PictureShape
@@ -86,7 +99,11 @@ class Entry:
 
 @dataclass(frozen=True, eq=False)
 class Inventory:
-    """Every object of a scene, as columns of one length, and as sources for the engine."""
+    """Every object of a scene, as columns of one length, and as sources for the engine.
+
+    `colour` is the kind of source for the engine, `trails` (rad) the motion of those written in the
+    scene, `turn` (rad) that of the field; the rest is as in `Entry`.
+    """
 
     label: AnyArray
     kind: AnyArray
@@ -100,6 +117,11 @@ class Inventory:
     keys: tuple[dict[str, float], ...]
     shapes: tuple[SkyShape | None, ...]
     geometry: FieldGeometry
+    colour: AnyArray
+    trails: FloatArray
+    turn: float
+    train: Train
+    where: str
 
     def __len__(self) -> int:
         return int(self.x.size)
@@ -110,17 +132,39 @@ class Inventory:
         return len(self.keys)
 
     @property
+    def points(self) -> Points:
+        """All objects as points, in the order of the rows, where they are at mid-exposure."""
+        return Points(self.x, self.y, self.electrons, self.colour)
+
+    @property
     def sources(self) -> Sources:
-        """The same objects for the engine."""
+        """The same objects for the engine; what moves is drawn out."""
         point = np.ones(len(self), dtype=bool)
-        shapes = []
+        shapes: list[PlacedShape] = []
         for row, shape in enumerate(self.shapes):
             if shape is not None:
                 point[row] = False
-                place = float(self.x[row]), float(self.y[row]), float(self.electrons[row])
-                shapes.append(PlacedShape(*place, shape))
-        points = Points(self.x[point], self.y[point], self.electrons[point])
-        return Sources(points, tuple(shapes))
+                places = self._drawn(np.array([row]))
+                shapes += [
+                    PlacedShape(float(x), float(y), float(light), shape, int(kind))
+                    for x, y, light, kind in zip(
+                        places.x, places.y, places.electrons, places.kind, strict=True
+                    )
+                ]
+        return Sources(self._drawn(np.flatnonzero(point)), tuple(shapes))
+
+    def _drawn(self, rows: AnyArray) -> Points:
+        trails = np.zeros((rows.size, 2))
+        own = rows < self.written
+        trails[own] = self.trails[rows[own]]
+        return moved_points(
+            self.points.chosen(rows),
+            trails=trails,
+            turn=self.turn,
+            finest=self.train.basis.members[0],
+            geometry=self.geometry,
+            where=self.where,
+        )
 
     def entry(self, row: int) -> Entry:
         """One row."""
@@ -162,37 +206,47 @@ def inventory(scene: Scene, *, train: Train | None = None) -> Inventory:
     """
     train = assemble_train(scene) if train is None else train
     geometry = field_geometry(scene)
-    zero = zero_point(scene, area=train.pupil.area, airmass=train.airmass)
-    time = exposure_time(scene)
+    light = photometry(scene, area=train.pupil.area, airmass=train.airmass, palette=train.palette)
+    followed = scene.pointing.track if scene.pointing is not None else None
     rows: list[dict[str, Any]] = []
     for kind in ("star", "pair", "galaxy", "disc", "ring", "picture"):
         for number, one in enumerate(getattr(scene, kind)):
             label = one.label or f"{kind}-{number + 1}"
+            extra = FOLLOWED if followed is not None and one.label == followed else 0
+            colours = [train.palette.kinds[key] for key in colour_keys(one)]
+            common = {
+                "label": label,
+                "kind": kind,
+                "trail": (0.0, 0.0) if extra else object_trail(scene, one.motion),
+            }
             x, y = _place(one, geometry)
             if isinstance(one, Pair):
-                rows += _pair_rows(one, label, x, y, geometry, len(rows), zero, time)
-                continue
-            rows.append(
-                {
-                    "label": label,
-                    "kind": kind,
-                    "x": x,
-                    "y": y,
-                    "electrons": _electrons(one.electrons, one.magnitude, zero, time),
-                    "magnitude": np.nan if one.magnitude is None else one.magnitude,
-                    "keys": {k: getattr(one, k) for k in SHAPE_KEYS if hasattr(one, k)},
-                    "shape": _shape(scene, f"{kind}[{number}]", one, geometry),
-                }
-            )
+                made = _pair_rows(scene, one, x, y, geometry, len(rows), light, colours)
+            else:
+                made = [
+                    {
+                        "x": x,
+                        "y": y,
+                        "electrons": _electrons(
+                            one, one.electrons, one.magnitude, light, colours[0]
+                        ),
+                        "magnitude": np.nan if one.magnitude is None else one.magnitude,
+                        "keys": {k: getattr(one, k) for k in SHAPE_KEYS if hasattr(one, k)},
+                        "shape": _shape(scene, f"{kind}[{number}]", one, geometry),
+                    }
+                ]
+            for row, colour in zip(made, colours, strict=True):
+                rows.append({**common, **row, "colour": colour + extra})
     columns: dict[str, list[AnyArray]] = {
         "label": [np.array([r["label"] for r in rows], dtype=str)],
         "kind": [np.array([r["kind"] for r in rows], dtype=str)],
         "partner": [np.array([r.get("partner", -1) for r in rows], dtype=np.int64)],
+        "colour": [np.array([r["colour"] for r in rows], dtype=np.int64)],
     }
     for name in ("x", "y", "electrons", "magnitude", "separation", "position_angle"):
         columns[name] = [np.array([r.get(name, np.nan) for r in rows], dtype=np.float64)]
     for number, catalogue in enumerate(scene.catalogue):
-        part = _catalogue_rows(scene, number, catalogue, geometry, zero, time)
+        part = _catalogue_rows(scene, number, catalogue, geometry, light)
         for name, values in columns.items():
             values.append(part[name])
     joined = {name: np.concatenate(values) for name, values in columns.items()}
@@ -200,7 +254,11 @@ def inventory(scene: Scene, *, train: Train | None = None) -> Inventory:
         **joined,
         keys=tuple(r["keys"] for r in rows),
         shapes=tuple(r["shape"] for r in rows),
+        trails=np.array([r["trail"] for r in rows], dtype=np.float64).reshape(len(rows), 2),
+        turn=field_turn(scene),
         geometry=geometry,
+        train=train,
+        where=scene.name,
     )
 
 
@@ -214,42 +272,49 @@ def _place(one: Placed, geometry: FieldGeometry) -> tuple[float, float]:
     return float(x), float(y)
 
 
-def _electrons(electrons: float | None, magnitude: float | None, zero: float, time: float) -> float:
+def _electrons(
+    one: Luminous | Pair,
+    electrons: float | None,
+    magnitude: float | None,
+    light: Photometry,
+    colour: int,
+) -> float:
     if electrons is not None:
         return electrons
     assert magnitude is not None
-    return float(electrons_from_magnitude(magnitude, zero_point=zero, time=time))
+    return float(
+        light.electrons(magnitude, colour, band=one.magnitude_band, system=one.magnitude_system)
+    )
 
 
 def _pair_rows(
+    scene: Scene,
     pair: Pair,
-    label: str,
     x: float,
     y: float,
     geometry: FieldGeometry,
     row: int,
-    zero: float,
-    time: float,
+    light: Photometry,
+    colours: list[int],
 ) -> list[dict[str, Any]]:
     """The two stars of a pair; the second stands off in the tangent plane."""
+    separation, position_angle = pair_place(scene, pair)
     east, north = geometry.to_offsets(np.array(x), np.array(y))
     second = geometry.to_pixels(
-        east + pair.separation * np.sin(pair.position_angle),
-        north + pair.separation * np.cos(pair.position_angle),
+        east + separation * np.sin(position_angle),
+        north + separation * np.cos(position_angle),
     )
     magnitudes = pair.magnitudes or (None, None)
     electrons = pair.electrons or (None, None)
     places = ((x, y), (float(second[0]), float(second[1])))
     return [
         {
-            "label": label,
-            "kind": "pair",
             "x": places[star][0],
             "y": places[star][1],
-            "electrons": _electrons(electrons[star], magnitudes[star], zero, time),
+            "electrons": _electrons(pair, electrons[star], magnitudes[star], light, colours[star]),
             "magnitude": np.nan if magnitudes[star] is None else magnitudes[star],
-            "separation": pair.separation,
-            "position_angle": pair.position_angle % (2.0 * pi),
+            "separation": separation,
+            "position_angle": position_angle % (2.0 * pi),
             "partner": row + 1 - star,
             "keys": {},
             "shape": None,
@@ -297,8 +362,7 @@ def _catalogue_rows(
     number: int,
     catalogue: Catalogue,
     geometry: FieldGeometry,
-    zero: float,
-    time: float,
+    light: Photometry,
 ) -> dict[str, AnyArray]:
     """The stars of a catalogue as columns."""
     source = scene.inputs[catalogue.file]
@@ -324,8 +388,11 @@ def _catalogue_rows(
     nothing = np.full(size, np.nan)
     magnitude = table.get("magnitude", nothing)
     electrons = table.get("electrons")
+    colour = _catalogue_kinds(scene, number, table.get("temperature"), size)
     if electrons is None:
-        electrons = electrons_from_magnitude(magnitude, zero_point=zero, time=time)
+        electrons = light.electrons(
+            magnitude, colour, band=catalogue.magnitude_band, system=catalogue.magnitude_system
+        )
     label = table.get("label")
     if label is None:
         stem = catalogue.label or f"catalogue-{number + 1}"
@@ -336,6 +403,7 @@ def _catalogue_rows(
         "label": np.asarray(label, dtype=str),
         "kind": np.full(size, "star"),
         "partner": np.full(size, -1, dtype=np.int64),
+        "colour": colour,
         "x": np.asarray(x, float),
         "y": np.asarray(y, float),
         "electrons": np.asarray(electrons, float),
@@ -343,3 +411,20 @@ def _catalogue_rows(
         "separation": nothing,
         "position_angle": nothing,
     }
+
+
+def _catalogue_kinds(
+    scene: Scene, number: int, temperatures: FloatArray | None, size: int
+) -> AnyArray:
+    if temperatures is None:
+        return np.zeros(size, dtype=np.int64)
+    try:
+        return kelvin_kinds(temperatures)
+    except ValueError as error:
+        line = mistake(
+            scene.name,
+            f"catalogue[{number}].columns.temperature",
+            str(error),
+            "give temperatures in kelvin",
+        )
+        raise InputError(line) from error

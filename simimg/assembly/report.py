@@ -14,10 +14,10 @@ import numpy as np
 from simimg.assembly.brightness import (
     dark_electrons,
     exposure_time,
-    scene_band,
     sky_electrons,
     zero_point,
 )
+from simimg.assembly.colours import scene_band
 from simimg.assembly.objects import inventory
 from simimg.assembly.train import Train, assemble_train, half_light_width
 from simimg.camera.converter import converter_top

@@ -98,7 +98,7 @@ def _shares(objects: Inventory, train: Train) -> FloatArray:
 
     if not len(objects):
         return np.empty(0)
-    share = held(Points(objects.x, objects.y, objects.electrons))
+    share = held(objects.points)
     for row, shape in enumerate(objects.shapes):
         if shape is None:
             continue
@@ -113,6 +113,7 @@ def _shares(objects: Inventory, train: Train) -> FloatArray:
             objects.x[row] + (x.ravel() + left) * step,
             objects.y[row] + (y.ravel() + bottom) * step,
             np.ones(stamp.size),
+            np.full(stamp.size, objects.colour[row]),
         )
         light = stamp.ravel() / stamp.sum()
         share[row] = np.clip(light @ held(cells), 0.0, 1.0)

@@ -63,6 +63,29 @@ def read_picture(content: bytes, name: str) -> FloatArray:
     return picture
 
 
+def read_map(content: bytes, name: str) -> FloatArray:
+    """First 2-D image of a FITS file as it stands: any values, also NaN.
+
+    Parameters
+    ----------
+    content : bytes
+        The file.
+    name : str
+        Its name, for messages.
+
+    Returns
+    -------
+    ndarray, shape (rows, columns)
+        Row 0 is the file's first.
+
+    Raises
+    ------
+    InputError
+        No FITS image, a damaged one, or more than `LARGEST_PICTURE` pixels.
+    """
+    return _from_fits(content, name)
+
+
 def _check_size(columns: int, rows: int, name: str) -> None:
     if columns < 1 or rows < 1:
         raise InputError(mistake(name, "", f"a picture of {columns} x {rows} pixels", _USE))

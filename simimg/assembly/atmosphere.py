@@ -1,0 +1,125 @@
+"""What the air of a scene does to an image: blur, and colours drawn apart.
+
+Turbulence blurs each wavelength by its own Fried parameter; refraction lifts the bluer light
+farther towards the zenith, unless a corrector takes it away. Metres and radians.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from math import gamma, pi
+
+import numpy as np
+
+from simimg.air.refraction import (
+    airmass_from_altitude,
+    altitude_from_airmass,
+    band_dispersion,
+    differential_refraction,
+)
+from simimg.air.turbulence import KOLMOGOROV, long_exposure_transfer, tilt_removed_transfer
+from simimg.arrays import FloatArray
+from simimg.assembly.places import field_geometry
+from simimg.imaging.basis import Transfer
+from simimg.light.bands import Band
+from simimg.scene.air import Air
+from simimg.scene.model import Scene
+
+# exp(-D/2) ~ 1 - k f^(5/3) falls into a wing of theta^(-11/3): Stein & Weiss 1971.
+_WING = 0.5 * KOLMOGOROV * pi ** (-8.0 / 3.0) * gamma(11.0 / 6.0) / abs(gamma(-5.0 / 6.0))
+
+
+def scene_airmass(air: Air | None) -> float | None:
+    """Airmass of a scene: as given, or from the altitude (Pickering 2002); None above the air."""
+    if air is None:
+        return None
+    if air.altitude is not None:
+        return float(airmass_from_altitude(air.altitude))
+    return 1.0 if air.airmass is None else air.airmass
+
+
+def through_air(
+    optics: Transfer, air: Air, *, wavelength: float, fried: float, diameter: float
+) -> Transfer:
+    """The optics' transfer function times that of turbulence.
+
+    Parameters
+    ----------
+    optics : Transfer
+    air : Air
+    wavelength, fried : float
+        Wavelength and Fried's parameter there, at the airmass (m).
+    diameter : float
+        Of the aperture (m).
+    """
+    outer_scale = np.inf if air.outer_scale is None else air.outer_scale
+
+    def long_exposure(f: FloatArray) -> FloatArray:
+        return long_exposure_transfer(wavelength * f, fried, outer_scale=outer_scale)
+
+    def tilt_removed(f: FloatArray) -> FloatArray:
+        return tilt_removed_transfer(
+            wavelength * f,
+            fried,
+            diameter=diameter,
+            field=air.tilt_removed or "near",
+            outer_scale=outer_scale,
+        )
+
+    turbulence = long_exposure if air.tilt_removed is None else tilt_removed
+    # The air blurs rings and spikes but moves little of their light: the laws add, and a spike is
+    # spread over the width of the seeing disc.
+    blur = min(1.0, 2.0 * fried / diameter)
+    wings = replace(
+        optics.wings,
+        spikes=tuple((level * blur, angle) for level, angle in optics.wings.spikes),
+        kolmogorov=_WING * (wavelength / fried) ** (5.0 / 3.0),
+        core=optics.wings.core + 2.0 * wavelength / fried,
+    )
+    return replace(optics, radial=(*optics.radial, turbulence), wings=wings)
+
+
+def _zenith_distance(airmass: float) -> float:
+    return float(0.5 * pi - altitude_from_airmass(airmass))
+
+
+def _refracts(air: Air | None) -> bool:
+    return air is not None and air.dispersion and not air.dispersion_corrector
+
+
+def colour_shifts(
+    scene: Scene, wavelengths: FloatArray, reference: float
+) -> tuple[FloatArray, FloatArray]:
+    """Where refraction puts each wavelength (x, y; rad on the detector), the reference at 0."""
+    air, airmass = scene.air, scene_airmass(scene.air)
+    if air is None or airmass is None or not _refracts(air):
+        return np.zeros_like(wavelengths), np.zeros_like(wavelengths)
+    lifted = differential_refraction(
+        wavelengths,
+        reference,
+        zenith_distance=_zenith_distance(airmass),
+        pressure=air.pressure,
+        temperature=air.temperature,
+        relative_humidity=air.relative_humidity,
+    )
+    upward = field_geometry(scene).direction(air.parallactic_angle)
+    return lifted * np.cos(upward), lifted * np.sin(upward)
+
+
+def scene_dispersion(scene: Scene, band: Band) -> float:
+    """Angle (rad) between the images of a band's two edges; 0 where nothing refracts."""
+    air, airmass = scene.air, scene_airmass(scene.air)
+    if air is None or airmass is None or not _refracts(air):
+        return 0.0
+    return abs(
+        float(
+            band_dispersion(
+                band.lower,
+                band.upper,
+                zenith_distance=_zenith_distance(airmass),
+                pressure=air.pressure,
+                temperature=air.temperature,
+                relative_humidity=air.relative_humidity,
+            )
+        )
+    )

@@ -1,0 +1,156 @@
+"""Which source of a scene has which PSF: by spectrum, by place in the field, by being followed.
+
+The members of the basis are the PSFs of a few spectra at a few places, once as they are and, where
+the telescope follows an object, once drawn out with the stars. A source's weights are the product
+of its shares in each.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+import numpy as np
+
+from simimg.arrays import AnyArray, FloatArray
+from simimg.assembly.aperture import Aperture
+from simimg.assembly.colours import KELVIN, Palette, colour_keys
+from simimg.assembly.motion import drawn_out, followed_trail
+from simimg.assembly.places import field_geometry
+from simimg.imaging.basis import PsfBasis, Transfer
+from simimg.imaging.sources import Points
+from simimg.light.colours import ColourMembers
+from simimg.optics.fieldaberration import field_nodes
+from simimg.scene.model import Scene
+
+FOLLOWED = 1_000_000
+"""Added to the kind of a source that the telescope follows."""
+
+FIELD_NODES = 5
+"""Places a side of the field whose PSFs are mixed for the others."""
+
+Delivered = Callable[[FloatArray, tuple[float, float] | None], Transfer]
+
+
+def scene_basis(
+    scene: Scene,
+    palette: Palette,
+    aperture: Aperture,
+    wavelengths: FloatArray,
+    delivered: Delivered,
+) -> tuple[PsfBasis, Transfer]:
+    """The basis of a scene, and the PSF of its first object in the middle of the field.
+
+    Parameters
+    ----------
+    scene : Scene
+    palette : Palette
+    aperture : Aperture
+    wavelengths : ndarray
+        Nodes of the band (m).
+    delivered : callable
+        PSF of weights of the nodes at a place of the field, without pixel.
+
+    Returns
+    -------
+    basis : PsfBasis
+        With the pixel, where the scene has one.
+    focal : Transfer
+        Without.
+    """
+    first = _first_kind(scene, palette)
+    own = [palette.weights(spectrum, wavelengths) for spectrum in palette.spectra]
+    shared = palette.members(wavelengths) if _catalogue_colours(scene) else None
+    weights = [*own, *(shared.weights if shared is not None else ())]
+    places, mix_places = _places(scene, aperture)
+    focal = delivered(own[first], None)
+    trail = followed_trail(scene)
+    followed = trail != (0.0, 0.0)
+    used = _used(scene, palette, shared)
+    members: list[Transfer] = []
+    for place in places:
+        for colour in used:
+            if place is None and colour == first:
+                one = focal
+            else:
+                one = delivered(np.asarray(weights[colour]), place)
+            members.append(drawn_out(one, trail))
+            if followed:
+                members.append(one)
+    scale = scene.pixel_scale
+    if scale is not None:
+        members = [member.with_pixel(scale) for member in members]
+    focal = drawn_out(focal, trail)
+    if len(members) == 1:
+        return PsfBasis((members[0],)), focal
+
+    def weigh(points: Points) -> FloatArray:
+        kind = points.kind % FOLLOWED
+        shares = _colour_shares(kind, used, len(own), shared)
+        where = mix_places(points)
+        together = where[:, :, None] * shares[:, None, :]
+        if followed:
+            still = (points.kind >= FOLLOWED).astype(np.float64)
+            pair = np.stack([1.0 - still, still], axis=1)
+            together = together[:, :, :, None] * pair[:, None, None, :]
+        return np.asarray(together.reshape(len(points), -1))
+
+    return PsfBasis(tuple(members), weigh), focal
+
+
+def _first_kind(scene: Scene, palette: Palette) -> int:
+    """Kind of the first pair's first star, or else of the first object."""
+    for one in (*scene.pair, *scene.objects):
+        return palette.kinds[colour_keys(one)[0]]
+    return 0
+
+
+def _catalogue_colours(scene: Scene) -> bool:
+    """True where a catalogue may bring temperatures, told from its columns or its first bytes."""
+    return any(
+        "temperature" in one.columns
+        or (not one.columns and b"temperature" in scene.inputs[one.file].read()[:65536].lower())
+        for one in scene.catalogue
+    )
+
+
+def _used(scene: Scene, palette: Palette, shared: ColourMembers | None) -> list[int]:
+    """Members among the colours: the kinds that objects have, then the shared references."""
+    kinds = {palette.kinds[key] for one in scene.objects for key in colour_keys(one)}
+    if scene.catalogue or not kinds:
+        kinds.add(0)
+    count = len(palette.spectra)
+    references = range(count, count + (len(shared.weights) if shared is not None else 0))
+    return [*sorted(kinds), *references]
+
+
+def _colour_shares(
+    kind: AnyArray, used: list[int], count: int, shared: ColourMembers | None
+) -> FloatArray:
+    shares = np.zeros((kind.size, len(used)))
+    for column, colour in enumerate(used):
+        if colour < count:
+            shares[:, column] = kind == colour
+    stars = kind >= KELVIN
+    if shared is not None and stars.any():
+        first = sum(colour < count for colour in used)
+        shares[stars, first:] = shared.mixture(kind[stars].astype(np.float64))
+    return shares
+
+
+def _places(
+    scene: Scene, aperture: Aperture
+) -> tuple[list[tuple[float, float] | None], Callable[[Points], FloatArray]]:
+    """Places of the field whose PSFs are mixed, and each source's shares in them."""
+    errors, geometry = scene.telescope.field, field_geometry(scene)
+    if aperture.field is None or errors is None or scene.pixel_scale is None:
+        return [None], lambda points: np.ones((len(points), 1))
+    unit = errors.radius / scene.pixel_scale
+    half_x, half_y = geometry.columns / 2.0 / unit, geometry.rows / 2.0 / unit
+    nodes = field_nodes(half_x, half_y, count=FIELD_NODES)
+
+    def mix(points: Points) -> FloatArray:
+        x = (points.x - geometry.centre[0]) / unit
+        y = (points.y - geometry.centre[1]) / unit
+        return nodes.weights(x, y)
+
+    return list(nodes.places), mix
