@@ -5,7 +5,8 @@ Each row is the content of a scene file, the key that a line must name and a wor
 
 from __future__ import annotations
 
-from typing import NamedTuple
+from tests.scene.malformed_real import MALFORMED_REAL
+from tests.scene.rows import Malformed, replaced
 
 GOOD = """\
 title = "A close pair"
@@ -83,20 +84,9 @@ outer_diameter = "2 arcsec"
 """
 
 
-class Malformed(NamedTuple):
-    """One malformed scene."""
-
-    name: str
-    content: bytes
-    key: str
-    word: str
-
-
 def edit(old: str, new: str) -> bytes:
     """The good scene with one piece of it replaced."""
-    if GOOD.count(old) != 1:
-        raise ValueError(f"{old!r} stands {GOOD.count(old)} times in the good scene")
-    return GOOD.replace(old, new).encode()
+    return replaced(GOOD, old, new)
 
 
 def add(text: str) -> bytes:
@@ -325,8 +315,23 @@ MALFORMED: list[Malformed] = [
         "telescope.pupil",
         "no such file",
     ),
+    # Bands, efficiencies and vanes in more than one way.
+    _row("no vane count", "count = 4, ", "", "telescope.vanes.count", "required"),
+    _row("Vega in g", 'name = "V"', 'name = "g"', "band.system", "Vega"),
+    _row(
+        "longer than the dish",
+        'name = "V"\nsystem = "Vega"',
+        'centre = "1 m"\nwidth = "0.1 m"',
+        "telescope.aperture",
+        "wavelengths",
+    ),
+    _row("no efficiency table", "= 0.88", '= "no.ecsv"', "camera.quantum_eff", "no such file"),
+    _row("efficiency too high", "= 0.88", '= "101 %"', "camera.quantum_eff", "at most 1"),
+    _row("efficiency empty", "= 0.88", '= ""', "camera.quantum_eff", "empty"),
+    _row("efficiency a list", "= 0.88", "= [0.8]", "camera.quantum_eff", "ratio"),
     # A base.
     Malformed("missing base", b'base = "no.toml"\n' + GOOD.encode(), "base", "no such file"),
     Malformed("base a number", b"base = 3\n" + GOOD.encode(), "base", "path"),
     Malformed("base inside", edit("[sky]", '[sky]\nbase = "b.toml"'), "sky.base", "known"),
+    *MALFORMED_REAL,
 ]
