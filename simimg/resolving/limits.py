@@ -17,8 +17,11 @@ from simimg.assembly.brightness import exposure_time
 from simimg.assembly.objects import inventory
 from simimg.assembly.train import Train, assemble_train
 from simimg.imaging.circles import encircled_diameters
+from simimg.imaging.profile import psf_peak
+from simimg.optics.wavefront import marechal_strehl
 from simimg.resolving.criteria import first_dark_ring
 from simimg.resolving.listing import Listing, ObjectLimits
+from simimg.resolving.notes import limit_notes, nyquist_pixel
 from simimg.resolving.resolution import Directions, Resolution, computable, to_arcsec
 from simimg.resolving.signal import scene_detector
 from simimg.scene.model import Scene
@@ -53,7 +56,13 @@ class Limits:
     dawes_arcsec : float
         116 over the aperture in mm, for reference.
     strehl : float
-        Peak of the PSF over that of the pupil without air, neither with a pixel.
+        Peak of the PSF over that of the perfect pupil, both over the band and without a pixel.
+    strehl_from_rms : float
+        By the extended Marechal formula from the rms of the optics' own wavefront, without air.
+    wavefront_rms_nm : float
+        Of the optics on the axis, tilt taken out.
+    dispersion_arcsec : float
+        Between the images of the band's edges, by the air's refraction; 0 where it is corrected.
     ee50_arcsec, ee80_arcsec : float
         Diameters of the circles that hold 50 and 80 % of the delivered light.
     nyquist_pixel_arcsec : float
@@ -71,6 +80,9 @@ class Limits:
     delivered: Resolution
     dawes_arcsec: float
     strehl: float
+    strehl_from_rms: float
+    wavefront_rms_nm: float
+    dispersion_arcsec: float
     ee50_arcsec: float
     ee80_arcsec: float
     nyquist_pixel_arcsec: float
@@ -157,17 +169,23 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
         diffraction=of_optics,
         delivered=of_all,
         dawes_arcsec=DAWES / (train.pupil.diameter * 1e3),
-        strehl=1.0 if train.fried is None else focal.peak(angle) / diffraction.peak(angle),
+        strehl=_strehl(train),
+        strehl_from_rms=marechal_strehl(train.aperture.rms, train.wavelength),
+        wavefront_rms_nm=train.aperture.rms * 1e9,
+        dispersion_arcsec=to_arcsec(train.dispersion),
         ee50_arcsec=to_arcsec(half_light),
         ee80_arcsec=to_arcsec(most_light),
-        nyquist_pixel_arcsec=to_arcsec(_nyquist(train)),
+        nyquist_pixel_arcsec=to_arcsec(nyquist_pixel(train)),
         objects=listing.objects(found),
-        notes=tuple(_notes(scene, train, diffraction, focal, angle, of_optics, of_all)),
+        notes=tuple(limit_notes(scene, train, diffraction, focal, angle, of_optics, of_all)),
     )
 
 
-def _nyquist(train: Train) -> float:
-    return train.wavelength / (2.0 * train.pupil.diameter)
+def _strehl(train: Train) -> float:
+    """Peak of what is delivered at the focal plane over the perfect pupil's, over the band."""
+    if train.focal is train.perfect:
+        return 1.0
+    return min(1.0, psf_peak(train.focal) / psf_peak(train.perfect))
 
 
 def _dark_ring(train: Train) -> float | None:
@@ -176,61 +194,3 @@ def _dark_ring(train: Train) -> float | None:
         return None
     ring = first_dark_ring(train.pupil.obstruction)
     return ring * train.wavelength / train.pupil.diameter
-
-
-def _notes(
-    scene: Scene,
-    train: Train,
-    diffraction: Directions,
-    focal: Directions,
-    angle: float,
-    of_optics: Resolution,
-    of_all: Resolution,
-) -> list[str]:
-    """What should be known beside the figures."""
-    notes = []
-    pupil = train.pupil
-    if pupil.enveloped and pupil.obstruction > 0.0:
-        notes.append(
-            f"With an obstruction of {pupil.obstruction:.3g} the saddle of an equal pair falls to "
-            f"0.735 of its peaks only at {diffraction.saddle_limit(angle):.4g} arcsec, beyond the "
-            f"first dark ring at {of_optics.rayleigh_arcsec:.4g}, even without air and pixel."
-        )
-    if pupil.enveloped and not pupil.round:
-        notes.append(
-            "Diffraction's Rayleigh limit is the first dark ring of the aperture without its vanes."
-        )
-    if not pupil.enveloped:
-        notes.append(
-            "Diffraction's Rayleigh limit is the first minimum of the pupil map's PSF along the "
-            "position angle."
-        )
-    if scene.air is not None and scene.air.tilt_removed is not None:
-        notes.append(
-            "The tilt-removed average is an approximation: it takes the tilt of the wavefront as "
-            "uncorrelated with the rest."
-        )
-    if train.pixel_scale is None:
-        notes.append(
-            "No pixel: delivered limits are those of the focal plane, and there is no signal to "
-            "noise."
-        )
-        return notes
-    scale = to_arcsec(train.pixel_scale)
-    without = focal.resolution(angle)
-    notes.append(
-        f"There are {of_all.fwhm_arcsec / scale:.2g} pixels to the delivered FWHM; the pixel "
-        f"widens it from {without.fwhm_arcsec:.4g} to {of_all.fwhm_arcsec:.4g} arcsec and "
-        f"Sparrow's limit from {without.sparrow_arcsec:.4g} to {of_all.sparrow_arcsec:.4g}."
-    )
-    if train.pixel_scale > _nyquist(train) and train.fried is None:
-        notes.append(
-            f"A pixel of {scale:.4g} arcsec loses the finest detail of the optics, which needs "
-            f"{to_arcsec(_nyquist(train)):.4g} or less."
-        )
-    if of_all.fwhm_arcsec < 2.0 * scale:
-        notes.append(
-            "Undersampled: what a single frame shows of a close pair depends on where it falls on "
-            "the pixels."
-        )
-    return notes

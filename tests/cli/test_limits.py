@@ -56,7 +56,8 @@ def test_figures_that_a_hand_can_check(run, scene):
 
 def test_above_the_air_and_without_a_pixel(run, scene):
     arguments = ["--without", "air", "--without", "camera", "--without", "sky", "--json"]
-    found = run("limits", scene, *arguments).json
+    narrow = ["--set", 'band.centre="550 nm"', "--set", 'band.width="0.1 nm"']
+    found = run("limits", scene, *arguments, *narrow).json
     assert found["r0_m"] is None
     assert found["pixel_scale_arcsec"] is None
     assert found["strehl"] == pytest.approx(1)

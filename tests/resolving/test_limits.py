@@ -26,7 +26,7 @@ aperture = "{aperture}"
 obstruction = {obstruction}
 [band]
 centre = "500 nm"
-width = "50 nm"
+width = "0.5 nm"
 """
 CAMERA = """
 [camera]
@@ -425,6 +425,9 @@ def test_json_keys(scene):
         "delivered",
         "dawes_arcsec",
         "strehl",
+        "strehl_from_rms",
+        "wavefront_rms_nm",
+        "dispersion_arcsec",
         "ee50_arcsec",
         "ee80_arcsec",
         "nyquist_pixel_arcsec",
