@@ -69,7 +69,7 @@ def test_even_without_air():
 
 
 def test_noise_that_leaves_it_open():
-    subject = scene(pair("0.80 arcsec", 60.0, (2.5e3, 2.5e3)))
+    subject = scene(pair("0.84 arcsec", 60.0, (2.5e3, 2.5e3)))
     record = advised(subject)
     assert record.sparrow.verdict == "borderline"
     assert record.sparrow.limit_arcsec < record.separation_arcsec
