@@ -150,6 +150,23 @@ def _print_objects(objects: Sequence[ObjectLimits]) -> None:
         rows,
         right=(1, 2, 3, 5, 6),
     )
+    bounds = [(one.label or NO_LABEL, one.bound) for one in pairs if one.bound is not None]
+    if bounds:
+        say()
+        table(
+            ("measured at best", "separation", "angle", "dm", "second star"),
+            [
+                (
+                    label,
+                    f"+/- {arcsec(bound.separation_arcsec, 2)}",
+                    f"+/- {figures(bound.position_angle_deg, 2)} deg",
+                    f"+/- {figures(bound.magnitude_difference, 2)}",
+                    f"{figures(bound.expected_significance, 3)} sigma",
+                )
+                for label, bound in bounds
+            ],
+            right=(1, 2, 3, 4),
+        )
 
 
 def _own(name: str, limits: Resolution | None) -> tuple[str, str, str]:

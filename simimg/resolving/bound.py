@@ -136,7 +136,7 @@ def pair_precision(view: Expectation, pair: StarPair, *, exposures: int = 1) -> 
     separation = angle = difference = inf
     significance = 0.0
     images = view.cutouts(pair)
-    stars = np.array([[star.x, star.y, star.electrons] for star in pair])
+    stars = view.rows(pair)
     if images and float(stars[:, 2].min()) > 0.0:
         sky = np.full(len(images), view.sky)
         separation, angle, difference = pair_errors(images, stars=stars, background=sky)
@@ -146,7 +146,7 @@ def pair_precision(view: Expectation, pair: StarPair, *, exposures: int = 1) -> 
         label=first.label,
         x=first.x,
         y=first.y,
-        separation_arcsec=to_arcsec(separation * view.detector.pixel_scale) * fewer,
+        separation_arcsec=to_arcsec(separation * view.scale) * fewer,
         position_angle_deg=degrees(angle) * fewer,
         magnitude_difference=difference * fewer,
         expected_significance=significance / fewer,

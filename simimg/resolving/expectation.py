@@ -1,26 +1,26 @@
 """The expected image about any pair of a scene, as cutouts that a fit could be made to.
 
 The stars come from the effective PSF's model, sky and dark signal are even, extended objects are
-painted by the engine. Detector pixels and electrons.
+painted by the engine. Where the PSF is very many pixels wide, blocks of pixels are taken together,
+which loses nothing: it hardly changes over one. Blocks (mostly of one pixel) and electrons.
 """
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import ceil, floor, hypot
 
 import numpy as np
 
-from simimg.arrays import FloatArray, frozen
+from simimg.arrays import AnyArray, FloatArray, frozen
 from simimg.assembly.objects import Entry, Inventory
 from simimg.assembly.train import Train, half_light_width
-from simimg.imaging.profile import sampled_psf
+from simimg.imaging.profile import effective_band, sampled_psf
 from simimg.imaging.render import expected_image
 from simimg.imaging.sources import PlacedShape, Sources, no_points
 from simimg.resolving.neighbours import PlacedStar, star_light
-from simimg.resolving.observation import spline_oversampling
 from simimg.resolving.psfmodel import PsfModel
+from simimg.resolving.resolution import computable
 from simimg.resolving.signal import Detector, scene_detector
 from simimg.resolving.starfit import Cutout
 from simimg.scene.model import Scene
@@ -28,6 +28,8 @@ from simimg.scene.model import Scene
 _MARGIN = 4.0  # FWHM of sky about the stars
 _APART = 3.0 * _MARGIN  # FWHM beyond which each star has a square of its own
 _REACH = 12.0  # FWHM from a star beyond which its light is not modelled
+_FINEST = 12.0  # blocks to the FWHM above which pixels are taken together
+_SAMPLES = 8.0, 24  # of the PSF: to the wave of highest frequency, at most to the block
 
 StarPair = tuple[Entry, Entry]
 
@@ -49,19 +51,27 @@ class Expectation:
     ----------
     train : Train
     detector : Detector
+    block : int
+        Pixels to the side of a block.
     psf : PsfModel
+        In blocks.
     variance : float
-        Gaussian variance of a pixel, electrons squared.
+        Gaussian variance of a block, electrons squared.
     points : ndarray, shape (n, 3)
-        Places and electrons of the stars.
+        Places (blocks) and electrons of all objects.
+    stars : ndarray of bool, shape (n,)
+        Which of them are stars.
     shapes : tuple of PlacedShape
+        The others.
     """
 
     train: Train
     detector: Detector
+    block: int
     psf: PsfModel
     variance: float
     points: FloatArray
+    stars: AnyArray
     shapes: tuple[PlacedShape, ...]
 
     @classmethod
@@ -87,45 +97,58 @@ class Expectation:
             return None
         exact = scene.camera.read_noise == 0.0 and scene.camera.gain == 1.0
         rounding = 0.0 if exact else scene.camera.gain**2 / 12.0
-        scale = detector.pixel_scale
-        width = hypot(half_light_width(train.focal) / scale, 0.8)
+        pixels = hypot(half_light_width(train.focal) / detector.pixel_scale, 0.8)
+        block = max(1, floor(pixels / _FINEST))
+        scale, width = block * detector.pixel_scale, pixels / block
         apart = found.separation[: found.written] / scale
         apart = apart[apart <= _APART * width]
-        reach = max(_REACH * width, float(apart.max(initial=0.0)) + (_MARGIN + 1.0) * width, 8.0)
-        oversampling = spline_oversampling(train.effective, scale)
+        effective = computable(train.effective)
+        samples = ceil(_SAMPLES[0] * effective_band(effective) * scale)
+        oversampling = min(max(samples, 1), _SAMPLES[1])
         image = sampled_psf(
-            train.effective,
+            effective,
             pixel_scale=scale,
             oversampling=oversampling,
-            half_width_pixels=ceil(reach),
+            half_width_pixels=ceil(
+                max(_REACH * width, float(apart.max(initial=0.0)) + (_MARGIN + 1.0) * width, 8.0)
+            ),
         )
-        sources = found.sources
+        stars = np.ones(len(found), dtype=bool)
+        stars[: found.written] = [shape is None for shape in found.shapes]
         return cls(
             train=train,
             detector=detector,
+            block=block,
             psf=PsfModel.from_image(image, oversampling=oversampling),
-            variance=detector.read_noise**2 + rounding,
-            points=frozen(
-                np.column_stack([sources.points.x, sources.points.y, sources.points.electrons])
-            ),
-            shapes=sources.shapes,
+            variance=(detector.read_noise**2 + rounding) * block**2,
+            points=frozen(np.column_stack([found.x / block, found.y / block, found.electrons])),
+            stars=stars,
+            shapes=found.sources.shapes,
         )
 
     @property
     def sky(self) -> float:
-        """Electrons of sky and dark signal in a pixel."""
-        return self.detector.sky + self.detector.dark
+        """Electrons of sky and dark signal in a block."""
+        return (self.detector.sky + self.detector.dark) * self.block**2
+
+    @property
+    def scale(self) -> float:
+        """Side of a block (rad)."""
+        return self.detector.pixel_scale * self.block
+
+    def rows(self, pair: StarPair) -> FloatArray:
+        """Places (blocks) and electrons of a pair's stars, shape (2, 3)."""
+        return self.points[[pair[1].partner, pair[0].partner]]
 
     def cutouts(self, pair: StarPair) -> list[Cutout]:
         """The expected image about a pair: one square about both stars, or one about each."""
-        first, second = pair
+        first, second = self.rows(pair)[:, :2]
         fwhm = self.psf.fwhm
-        apart = hypot(second.x - first.x, second.y - first.y)
+        apart = hypot(*(second - first))
         if apart > _APART * fwhm:
-            squares = [(star.x, star.y, _MARGIN * fwhm) for star in pair]
+            squares = [(*first, _MARGIN * fwhm), (*second, _MARGIN * fwhm)]
         else:
-            middle = 0.5 * (first.x + second.x), 0.5 * (first.y + second.y)
-            squares = [(*middle, _MARGIN * fwhm + 0.5 * apart)]
+            squares = [(*(0.5 * (first + second)), _MARGIN * fwhm + 0.5 * apart)]
         images = [self._cutout(pair, *square) for square in squares]
         return [image for image in images if image is not None]
 
@@ -134,8 +157,8 @@ class Expectation:
         left, right = floor(x - half), ceil(x + half)
         bottom, top = floor(y - half), ceil(y + half)
         if self.detector.columns is not None and self.detector.rows is not None:
-            left, right = max(0, left), min(self.detector.columns - 1, right)
-            bottom, top = max(0, bottom), min(self.detector.rows - 1, top)
+            left, right = max(0, left), min((self.detector.columns - 1) // self.block, right)
+            bottom, top = max(0, bottom), min((self.detector.rows - 1) // self.block, top)
         if right < left or top < bottom:
             return None
         blank = Cutout.of(
@@ -145,8 +168,8 @@ class Expectation:
             x0=left,
             y0=bottom,
         )
-        own = [PlacedStar(star.x, star.y, star.electrons) for star in pair]
-        known = self._others(blank, own)
+        known = self._others(blank, pair)
+        own = [PlacedStar(*row) for row in self.rows(pair)]
         expected = known + star_light(own, blank) + self.sky
         return Cutout.of(
             expected,
@@ -154,23 +177,22 @@ class Expectation:
             psf=self.psf,
             x0=left,
             y0=bottom,
-            used=expected < self.detector.saturation,
+            used=expected < self.detector.saturation * self.block**2,
             known=known,
         )
 
-    def _others(self, cutout: Cutout, own: Sequence[PlacedStar]) -> FloatArray:
+    def _others(self, cutout: Cutout, pair: StarPair) -> FloatArray:
         """Expected electrons of all other objects on a cutout."""
         rows, columns = cutout.electrons.shape
         reach = self.psf.half_width
-        x, y, electrons = self.points.T
-        near = (x > cutout.x0 - reach) & (x < cutout.x0 + columns + reach)
+        x, y, _ = self.points.T
+        near = self.stars & (x > cutout.x0 - reach) & (x < cutout.x0 + columns + reach)
         near &= (y > cutout.y0 - reach) & (y < cutout.y0 + rows + reach)
-        for star in own:
-            near &= (x != star.x) | (y != star.y) | (electrons != star.electrons)
+        near[[pair[0].partner, pair[1].partner]] = False
         light = star_light([PlacedStar(*row) for row in self.points[near]], cutout)
         if self.shapes:
             moved = tuple(
-                PlacedShape(one.x - cutout.x0, one.y - cutout.y0, one.electrons, one.shape)
+                replace(one, x=one.x / self.block - cutout.x0, y=one.y / self.block - cutout.y0)
                 for one in self.shapes
             )
             light += expected_image(
@@ -178,6 +200,6 @@ class Expectation:
                 Sources(no_points(), moved),
                 columns=columns,
                 rows=rows,
-                pixel_scale=self.detector.pixel_scale,
+                pixel_scale=self.scale,
             )
         return light

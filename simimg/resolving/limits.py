@@ -19,7 +19,9 @@ from simimg.assembly.train import Train, assemble_train
 from simimg.imaging.circles import encircled_diameters
 from simimg.imaging.profile import psf_peak
 from simimg.optics.wavefront import marechal_strehl
+from simimg.resolving.bound import PairPrecision
 from simimg.resolving.criteria import first_dark_ring
+from simimg.resolving.expectation import Expectation
 from simimg.resolving.listing import Listing, ObjectLimits
 from simimg.resolving.notes import limit_notes, nyquist_pixel
 from simimg.resolving.resolution import Directions, Resolution, computable, to_arcsec
@@ -35,6 +37,7 @@ _OF_PAIRS = (
     "magnitude_difference",
     "diffraction",
     "delivered",
+    "bound",
     "stars",
 )
 
@@ -105,6 +108,8 @@ def _plain(value: Any) -> Any:
         return value if isfinite(value) else None
     if isinstance(value, tuple):
         return [_plain(one) for one in value]
+    if isinstance(value, PairPrecision):
+        return value.to_dict()
     if is_dataclass(value):
         return {one.name: _plain(getattr(value, one.name)) for one in fields(value)}
     return value
@@ -143,9 +148,13 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
     if not isfinite(position_angle):
         raise ValueError(f"position_angle must be finite, got {position_angle}")
     train = assemble_train(scene)
-    if scene.catalogue and not all_stars:
-        scene = scene.model_copy(update={"catalogue": ()})
-    found = inventory(scene, train=train)
+    listed = scene if all_stars else scene.model_copy(update={"catalogue": ()})
+    found = inventory(listed, train=train)
+    expectation = None
+    if scene.pair:
+        # The stars of catalogues shine on the pairs, listed or not.
+        shown = inventory(scene, train=train) if scene.catalogue and not all_stars else found
+        expectation = Expectation.of(scene, train, shown)
     angle = found.geometry.direction(position_angle)
     diffraction = Directions(train.optics, dark_ring=_dark_ring(train), saddle=False)
     effective = computable(train.effective)
@@ -158,6 +167,7 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
         diffraction=diffraction,
         delivered=delivered,
         width=delivered.profile(angle).width,
+        expectation=expectation,
     )
     half_light, most_light = encircled_diameters(effective, (0.5, 0.8))
     scale = train.pixel_scale

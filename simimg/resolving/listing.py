@@ -14,6 +14,8 @@ import numpy as np
 from simimg.arrays import AnyArray, FloatArray
 from simimg.assembly.objects import Entry, Inventory
 from simimg.assembly.train import Train
+from simimg.resolving.bound import PairPrecision, pair_precision
+from simimg.resolving.expectation import Expectation
 from simimg.resolving.resolution import Directions, Resolution, to_arcsec
 from simimg.resolving.signal import Detector, Signal, StarLight, pair_signal, shape_signal
 
@@ -50,6 +52,8 @@ class ObjectLimits:
         Of a pair's second star about its first.
     diffraction, delivered : Resolution or None
         A pair's own limits, along its own angle and for its own magnitude difference.
+    bound : PairPrecision or None
+        How well a pair can be measured at best: see `simimg.resolving.bound`.
     stars : tuple of StarSignal
         A pair's two stars.
     """
@@ -66,6 +70,7 @@ class ObjectLimits:
     magnitude_difference: float | None = None
     diffraction: Resolution | None = None
     delivered: Resolution | None = None
+    bound: PairPrecision | None = None
     stars: tuple[StarSignal, ...] = ()
 
 
@@ -82,6 +87,8 @@ class Listing:
     diffraction, delivered : Directions
     width : float
         FWHM delivered (rad), roughly.
+    expectation : Expectation or None
+        Of the image about pairs, all objects shown.
     """
 
     train: Train
@@ -90,6 +97,7 @@ class Listing:
     diffraction: Directions
     delivered: Directions
     width: float
+    expectation: Expectation | None
 
     def objects(self, found: Inventory) -> tuple[ObjectLimits, ...]:
         """Every object of an inventory, a pair once, in its order."""
@@ -159,9 +167,11 @@ class Listing:
         *,
         coarse: bool,
     ) -> ObjectLimits:
-        signal = None
+        signal = bound = None
         if light is not None and known:
             signal = pair_signal(light, stars)
+        if self.expectation is not None and known:
+            bound = pair_precision(self.expectation, stars)
         first = stars[0]
         difference = magnitude_difference(stars)
         angle = found.geometry.direction(first.position_angle)
@@ -177,6 +187,7 @@ class Listing:
             magnitude_difference=_number(difference),
             diffraction=self.diffraction.resolution(angle, difference),
             delivered=self.delivered.resolution(angle, difference),
+            bound=bound,
             stars=alone,
         )
 

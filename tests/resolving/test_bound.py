@@ -13,6 +13,7 @@ from simimg.errors import InputError
 from simimg.imaging.render import expected_image
 from simimg.imaging.sources import Points, Sources
 from simimg.resolving.bound import pair_errors, precision, second_star_significance
+from simimg.resolving.expectation import Expectation
 from simimg.resolving.psfmodel import PsfModel
 from simimg.resolving.starfit import Cutout
 from tests.study.pairs import AIR, SPACE, pair_scene
@@ -246,6 +247,57 @@ def test_turned_and_mirrored_detector_changes_nothing(tmp_path):
     plain = figures(precision(pair_scene(tmp_path))[0])
     turned = pair_scene(tmp_path, camera__rotation="90 deg", camera__mirrored=True)
     assert_allclose(figures(precision(turned)[0]), plain, rtol=0.03)
+
+
+def test_limits_carry_the_bound(tmp_path):
+    scene = pair_scene(tmp_path)
+    assert simimg.limits(scene).objects[0].bound == precision(scene)[0]
+    shown = simimg.limits(scene).to_dict()["objects"][0]["bound"]
+    assert shown == precision(scene)[0].to_dict()
+    for absent in (
+        pair_scene(tmp_path, camera=None),
+        # Magnitudes need a time, which is not given.
+        pair_scene(tmp_path, pair__0__electrons=None, pair__0__magnitudes=[12.0, 12.0]),
+    ):
+        assert simimg.limits(absent).to_dict()["objects"][0]["bound"] is None
+
+
+def test_stars_of_a_catalogue_shine_on_a_pair_listed_or_not(tmp_path):
+    (tmp_path / "stars.csv").write_text("px,py,e\n24,21,900000\n40,9,5000\n")
+    beside = pair_scene(
+        tmp_path,
+        AIR + '[[catalogue]]\nfile = "stars.csv"\n'
+        'columns = { x = "px", y = "py", electrons = "e" }\n',
+    )
+    bounds = [simimg.limits(beside, all_stars=every).objects[0].bound for every in (False, True)]
+    assert bounds[0] == bounds[1]
+    assert (figures(bounds[0]) > 1.1 * figures(precision(pair_scene(tmp_path))[0])).all()
+
+
+def test_blocks_of_pixels_lose_nothing(tmp_path, monkeypatch):
+    fine = {"camera__pixel_scale": "0.03 arcsec", "camera__pixels": [300, 290]}
+    place = {"pair__0__x": 144.4, "pair__0__y": 151.3, "sky__electrons": "0.7 electron"}
+    galaxy = (
+        '[[galaxy]]\nx = 160\ny = 150\nelectrons = "400000 electron"\nsersic_index = 1\n'
+        'effective_radius = "0.5 arcsec"\n'
+    )
+    scene = pair_scene(tmp_path, AIR + galaxy, **fine, **place)
+    train = assemble_train(scene)
+    view = Expectation.of(scene, train, inventory(scene, train=train))
+    assert view.block == 2
+    blocks = precision(scene)[0]
+    monkeypatch.setattr("simimg.resolving.expectation._FINEST", 1e9)
+    pixels = precision(scene)[0]
+    # The edges of the square differ by a part of a block.
+    assert_allclose(figures(blocks), figures(pixels), rtol=1e-3)
+    assert_allclose(blocks.expected_significance, pixels.expected_significance, rtol=1e-3)
+    assert (blocks.x, blocks.y) == (pixels.x, pixels.y) == (144.4, 151.3)
+
+
+@pytest.mark.parametrize("side", ["0.0005 arcsec", "40 arcsec"])
+def test_absurd_pixels_have_an_answer(tmp_path, side):
+    scene = pair_scene(tmp_path, camera__pixel_scale=side, camera__pixels=[4000, 4000])
+    assert figures(precision(scene)[0]).shape == (3,)
 
 
 def test_pairs_without_an_answer(tmp_path):

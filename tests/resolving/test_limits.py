@@ -444,7 +444,14 @@ def test_json_keys(scene):
         "magnitude_difference",
         "diffraction",
         "delivered",
+        "bound",
         "stars",
+    }
+    assert set(found["objects"][1]["bound"]) == {
+        "separation_arcsec",
+        "position_angle_deg",
+        "magnitude_difference",
+        "expected_significance",
     }
     assert found["objects"][1]["electrons"] == [1e5, 4e4]
     assert found["position_angle_deg"] == 90.0
