@@ -79,8 +79,8 @@ class Pointing(Table):
         float,
         Quantity("angular rate", at_least="-1 deg/s", at_most="1 deg/s", sample="15 arcsec/s"),
     ] = key(
-        "How fast the sky turns on the detector about the field centre, positive from north through "
-        "east, as behind a mount in altitude and azimuth that does not turn with it.",
+        "How fast the sky turns on the detector about the field centre, positive from north "
+        "through east, as behind a mount in altitude and azimuth that does not turn with it.",
         0.0,
         absent="0 arcsec/s",
         meaning="the field does not turn",
