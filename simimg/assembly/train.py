@@ -39,6 +39,9 @@ from simimg.scene.model import Scene
 NODE_ERROR = 1e-5
 """Largest error of an image by standing few wavelengths for a band, over its peak."""
 
+NARROW = 3e-3
+"""Width over centre of a band below which one wavelength stands for it within that error."""
+
 
 @dataclass(frozen=True, eq=False)
 class Train:
@@ -174,6 +177,9 @@ def _count(scene: Scene, palette: Palette, pupil: Pupil, fried: float | None) ->
     if scene.band.nodes is not None:
         return scene.band.nodes
     centre = palette.band.centre
+    lower, upper = palette.band.support
+    if upper - lower < NARROW * centre and not scene_dispersion(scene, palette.band):
+        return 1
     contrast = 1.0 if fried is None else float(np.exp(-3.44 * (pupil.diameter / fried) ** (5 / 3)))
     finest = pupil.diameter if fried is None else min(pupil.diameter, 1.5 * fried)
     phase = 2.0 * np.pi * finest / centre * scene_dispersion(scene, palette.band)
