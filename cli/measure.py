@@ -13,6 +13,7 @@ from simimg_cli import options
 from simimg_cli.output import document, note, plain, say, table, warn
 from simimg_cli.progress import with_progress
 from simimg_cli.scenes import named
+from simimg_cli.trials import run_trials
 from simimg_cli.words import arcsec, probability, short, with_error
 
 if TYPE_CHECKING:
@@ -32,17 +33,55 @@ MANY = 8  # pairs: of more, a table with a line for each
     help="Measure at this place, too: pixels from 0 at the centre of the first pixel. May be given "
     "several times.",
 )
+@click.option(
+    "--trials",
+    type=click.IntRange(1, 1_000_000),
+    metavar="N",
+    help="Expose and measure the pairs of a scene N times: how often are they resolved, and how "
+    "well measured?",
+)
+@click.option(
+    "--workers",
+    type=click.IntRange(1, 1024),
+    metavar="N",
+    help="Processes for the trials; all processors unless given. The result is the same.",
+)
+@options.changes
 @options.as_json
 @options.quiet
 def command(
-    frames: Sequence[str], near: Sequence[tuple[float, float]], as_json: bool, quiet: bool
+    frames: Sequence[str],
+    near: Sequence[tuple[float, float]],
+    trials: int | None,
+    workers: int | None,
+    overrides: Sequence[str],
+    without: Sequence[str],
+    as_json: bool,
+    quiet: bool,
 ) -> None:
     """Measure pairs in FRAMES, and say whether they are resolved and how sure that is.
 
     Measured are the pairs that a frame's truth names and every place given with --near, in this
     order, then what is found in the frame. A frame that cannot be measured is reported, the others
     are measured all the same, and the exit code is 2.
+
+    With --trials a scene is given in place of frames (or a frame, which carries its scene).
     """
+    if trials is not None:
+        if len(frames) > 1 or near:
+            raise click.UsageError("--trials takes one scene, and measures the pairs it names")
+        run_trials(
+            frames[0],
+            trials,
+            workers=workers,
+            overrides=overrides,
+            without=without,
+            as_json=as_json,
+            quiet=quiet,
+        )
+        return
+    if overrides or without or workers is not None:
+        raise click.UsageError("--set, --without and --workers go with --trials")
     answers: list[dict[str, Any]] = []
     mistakes: list[str] = []
     for path in with_progress(frames, "frames", quiet=quiet, lines=not as_json):

@@ -101,8 +101,8 @@ class Words(click.ParamType):
         return words
 
 
-def scene(function: _F) -> _F:
-    """The scene argument, and what changes it."""
+def changes(function: _F) -> _F:
+    """What changes a scene."""
     for add in (
         click.option(
             "--without",
@@ -117,10 +117,14 @@ def scene(function: _F) -> _F:
             metavar="KEY=VALUE",
             help='Change a value of the scene: telescope.aperture="4 m", pair.0.separation=...',
         ),
-        click.argument("scene", type=click.Path()),
     ):
         function = add(function)
     return function
+
+
+def scene(function: _F) -> _F:
+    """The scene argument, and what changes it."""
+    return click.argument("scene", type=click.Path())(changes(function))
 
 
 as_json = click.option("--json", "as_json", is_flag=True, help="Print JSON, and nothing else.")

@@ -22,12 +22,15 @@ if TYPE_CHECKING:
     from simimg.resolving.records import PairMeasurement as PairMeasurement
     from simimg.scene.file import load_scene as load_scene
     from simimg.scene.model import Scene as Scene
+    from simimg.study.trials import PairTrials as PairTrials
+    from simimg.study.trials import trials as trials
 
 _HOMES = {
     "Frame": "simimg.frame",
     "InputError": "simimg.errors",
     "PairMeasurement": "simimg.resolving.records",
     "PairPrecision": "simimg.resolving.bound",
+    "PairTrials": "simimg.study.trials",
     "RunError": "simimg.errors",
     "Scene": "simimg.scene.model",
     "expose": "simimg.exposure",
@@ -35,6 +38,7 @@ _HOMES = {
     "load_scene": "simimg.scene.file",
     "measure": "simimg.resolving.measure",
     "precision": "simimg.resolving.bound",
+    "trials": "simimg.study.trials",
 }
 
 __all__ = ["__version__", *_HOMES]
