@@ -13,7 +13,7 @@ from math import ceil, degrees, isfinite, nan
 
 from scipy.optimize import brentq
 
-from simimg.assembly.train import assemble_train
+from simimg.assembly.train import Train, assemble_train
 from simimg.errors import InputError
 from simimg.resolving.criteria import sparrow
 from simimg.resolving.judging import Judgement
@@ -63,10 +63,11 @@ def advise(observation: Observation, judgement: Judgement, *, brief: bool = Fals
         if verdicts[1] == "unresolved"
         else "Two stars are certain here, and it is open whether they are resolved"
     )
-    if brief:
+    scene, train = observation.scene, observation.train
+    if brief or scene is None or train is None:
         return opening + "."
     opening += ": "
-    return opening + _what_would(observation, record, judgement.geometry.angle)
+    return opening + _what_would(scene, train, observation.arcsec, record, judgement.geometry.angle)
 
 
 def _perhaps_single(judgement: Judgement) -> str:
@@ -80,7 +81,9 @@ def _perhaps_single(judgement: Judgement) -> str:
     return text + f"; if the second is real, about {exposures} such exposures together show it."
 
 
-def _what_would(observation: Observation, record: PairMeasurement, angle: float) -> str:
+def _what_would(
+    scene: Scene, train: Train, pixel: float, record: PairMeasurement, angle: float
+) -> str:
     """What sets Sparrow's limit for a pair, and what would bring it below the separation."""
     separation, error = record.separation_arcsec, record.separation_error_arcsec
     limit, difference = record.sparrow.limit_arcsec, record.magnitude_difference
@@ -94,15 +97,15 @@ def _what_would(observation: Observation, record: PairMeasurement, angle: float)
     wanted = separation - max(_MARGIN * error, 0.005 * separation)
     if wanted <= 0.0:
         return "the separation is too uncertain to say what would resolve them."
-    change = _Change(observation.scene, angle, difference, limit)
-    if observation.scene.air is not None and observation.train.seeing is not None:
-        return _in_air(observation, change, wanted)
-    return _above_air(observation, change, wanted, "")
+    change = _Change(scene, angle, difference, limit)
+    if scene.air is not None and train.seeing is not None:
+        return _in_air(train, pixel, change, wanted)
+    return _above_air(train, pixel, change, wanted, "")
 
 
-def _in_air(observation: Observation, change: _Change, wanted: float) -> str:
+def _in_air(train: Train, pixel: float, change: _Change, wanted: float) -> str:
     """The air's share, or what remains without it."""
-    seeing = degrees(observation.train.seeing or nan) * 3600.0
+    seeing = degrees(train.seeing or nan) * 3600.0
 
     def with_seeing(value: float) -> dict[str, str | None]:
         return {"air.image_quality": None, "air.seeing": f"{value:.6g} arcsec"}
@@ -114,14 +117,13 @@ def _in_air(observation: Observation, change: _Change, wanted: float) -> str:
     if without <= wanted:
         return "the air sets the limit. Resolved by Sparrow above the atmosphere."
     opening = f'even without air the limit would be {without:.2g}"; '
-    return _above_air(observation, change, wanted, opening)
+    return _above_air(train, pixel, change, wanted, opening)
 
 
-def _above_air(observation: Observation, change: _Change, wanted: float, opening: str) -> str:
+def _above_air(train: Train, pixel: float, change: _Change, wanted: float, opening: str) -> str:
     """The aperture's or the pixel's share, without air."""
     change = change.without_air()
-    pixel = observation.arcsec
-    diameter = observation.train.pupil.diameter
+    diameter = train.pupil.diameter
     if change.under({"camera.pixel_size": None, "camera.pixel_scale": '0.0001 "'}) <= wanted:
 
         def with_pixel(value: float) -> dict[str, str | None]:

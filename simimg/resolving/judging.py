@@ -6,7 +6,7 @@ Arcseconds and degrees in the record; detector pixels before.
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import degrees, nan
+from math import degrees, hypot, nan
 
 import numpy as np
 
@@ -17,6 +17,7 @@ from simimg.resolving.records import CriterionVerdict, PairMeasurement, PairTrut
 from simimg.resolving.resolution import to_arcsec
 from simimg.resolving.saddle import saddle_seen
 from simimg.resolving.sighting import Sighting
+from simimg.resolving.skyplane import SkyStep, sky_step
 from simimg.resolving.starfit import StarFit
 from simimg.resolving.verdict import SURELY_DOUBLE, Limit, probability_beyond, verdict
 
@@ -74,26 +75,26 @@ def judge(
         return Judgement(_single(observation, sighting, limits, named), sighting, None)
     first, second = _order(fit, named)
     geometry = pair_geometry(fit, first=first, second=second)
-    errors = geometry.errors
-    scale = observation.arcsec
-    dx, dy = fit.places[second] - fit.places[first]
     chance = sighting.probability_single
-    rayleigh, sparrow_verdict = _criteria(observation, limits, geometry, chance)
+    x, y = (float(value) for value in fit.places[first])
+    axes = observation.sky.axes(x, y)
+    step = sky_step(axes, length=geometry.separation, angle=geometry.angle)
+    rayleigh, sparrow_verdict = _criteria(observation, limits, geometry, chance, step.scale_arcsec)
     resolved = "resolved" in (rayleigh.verdict, sparrow_verdict.verdict)
     saddle, saddle_error = _saddle(sighting, fit, first, second)
-    x, y = (float(value) for value in fit.places[first])
-    difference, spread = geometry.magnitude_difference, errors[2]
+    difference, spread = geometry.magnitude_difference, geometry.errors[2]
     ra, dec = _sky(observation, x, y)
+    errors = _errors(step, geometry)
     record = PairMeasurement(
         label="" if named is None else named.label,
         x=x,
         y=y,
         ra_deg=ra,
         dec_deg=dec,
-        separation_arcsec=geometry.separation * scale,
-        separation_error_arcsec=errors[0] * scale,
-        position_angle_deg=degrees(observation.geometry.position_angle(float(dx), float(dy))),
-        position_angle_error_deg=degrees(errors[1]),
+        separation_arcsec=step.length_arcsec,
+        separation_error_arcsec=errors[0],
+        position_angle_deg=step.position_angle_deg,
+        position_angle_error_deg=errors[1],
         magnitude_difference=difference,
         magnitude_difference_error=spread,
         probability_single=chance,
@@ -120,15 +121,33 @@ def _order(fit: StarFit, named: NamedPair | None) -> tuple[int, int]:
 
 def _sky(observation: Observation, x: float, y: float) -> tuple[float, float]:
     """Right ascension and declination of a place, degrees."""
-    ra, dec = observation.geometry.to_sky(np.array(x), np.array(y))
-    return degrees(float(ra)), degrees(float(dec))
+    ra, dec = observation.sky.to_sky(x, y)
+    return degrees(ra), degrees(dec)
+
+
+def _errors(step: SkyStep, geometry: PairGeometry) -> tuple[float, float]:
+    """Errors of separation (arcsec) and position angle (deg) on the sky."""
+    slopes = np.array(step.slopes)
+    covariance = np.array(geometry.covariance)[:2, :2]
+    if not np.isfinite(covariance).all():
+        return float("inf"), float("inf")
+    variances = np.einsum("ij,jk,ik->i", slopes, covariance, slopes)
+    length, angle = (float(value) for value in np.sqrt(np.maximum(variances, 0.0)))
+    return length, angle
 
 
 def _criteria(
-    observation: Observation, limits: PairLimits, geometry: PairGeometry, chance: float
+    observation: Observation,
+    limits: PairLimits,
+    geometry: PairGeometry,
+    chance: float,
+    arcsec: float,
 ) -> tuple[CriterionVerdict, CriterionVerdict]:
-    """Both delivered limits along the pair's own line, with probabilities and verdicts."""
-    scale = observation.geometry.pixel_scale
+    """Both delivered limits along the pair's own line, with probabilities and verdicts.
+
+    `arcsec` is the length of a pixel along that line.
+    """
+    scale = observation.sky.pixel_scale
     spread = geometry.errors[2]
     reach = _REST * spread if np.isfinite(spread) else 0.0
     limit = limits.of(geometry.angle, geometry.magnitude_difference, reach)
@@ -142,7 +161,7 @@ def _criteria(
             covariance=covariance,
         )
         return CriterionVerdict(
-            limit_arcsec=to_arcsec(value),
+            limit_arcsec=value / scale * arcsec,
             probability=probability,
             verdict=verdict(probability, probability_single=chance),
         )
@@ -176,10 +195,12 @@ def _single(
     if sighting.empty or not observation.holds(x, y):
         x, y = sighting.place
     limit = limits.of(0.0, 0.0, 0.0)
+    east, north = observation.sky.axes(x, y)[:, 0]
+    stretch = hypot(east, north) / observation.sky.pixel_scale
 
     def unresolved(limit: float) -> CriterionVerdict:
         return CriterionVerdict(
-            limit_arcsec=to_arcsec(limit), probability=0.0, verdict="unresolved"
+            limit_arcsec=to_arcsec(limit * stretch), probability=0.0, verdict="unresolved"
         )
 
     ra, dec = _sky(observation, x, y)

@@ -1,34 +1,39 @@
 """A frame as a fit sees it: electrons, pixels that count, effective PSF, limits, directions.
 
-What the counts do not tell (gain, bias, read noise, optics and air) comes from the scene that a
-frame of simimg carries. Detector pixels, counted from 0 at the centre of the first; electrons.
+What the counts do not tell comes from the scene that a frame of simimg carries; of any other frame
+from its header, from what the user gives, and from the pixels themselves
+(`simimg.resolving.readout`, `simimg.resolving.psfsource`, `simimg.resolving.skyplane`). Detector
+pixels, counted from 0 at the centre of the first; electrons.
 """
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
-from math import ceil, degrees, floor, hypot, inf
+from math import ceil, degrees, floor, hypot, radians
 
 import numpy as np
 
 from simimg.arrays import AnyArray, FloatArray
-from simimg.assembly.places import FieldGeometry, field_geometry
+from simimg.assembly.places import field_geometry
 from simimg.assembly.train import Train, assemble_train
-from simimg.camera.converter import converter_top
 from simimg.camera.masks import BAD_COLUMN, BLEEDING, COSMIC_RAY, DEAD, HOT, SATURATED
 from simimg.errors import InputError, mistake
 from simimg.frame import Frame
-from simimg.imaging.basis import Transfer
-from simimg.imaging.profile import sampled_psf
+from simimg.resolving.backdrop import Backdrop
+from simimg.resolving.given import Given
+from simimg.resolving.headers import header_pixel_scale
+from simimg.resolving.pairlimits import Cuts
 from simimg.resolving.psfmodel import PsfModel
-from simimg.resolving.resolution import Directions
+from simimg.resolving.psfsource import PsfChoice, SourcedPsf, source_psf
+from simimg.resolving.psfsource import spline_oversampling as spline_oversampling
+from simimg.resolving.readout import foreign_readout, scene_readout
+from simimg.resolving.skyplane import BareSky, FieldSky, Sky, coordinate_sky
 from simimg.resolving.starfit import Cutout
 from simimg.scene.file import scene_from_record
 from simimg.scene.model import Scene
 
-_SPLINE_ERROR = 4e-7  # of the peak: what interpolation between the PSF's samples may cost
 _UNFIT = SATURATED | BLEEDING | COSMIC_RAY | HOT | DEAD | BAD_COLUMN
-_REACH = 12.0  # FWHM from a star beyond which its light is not modelled
 
 
 @dataclass(frozen=True, eq=False)
@@ -38,31 +43,43 @@ class Observation:
     Attributes
     ----------
     frame : Frame
-    scene : Scene
-        Of the frame.
-    train : Train
+    scene : Scene or None
+        Of the frame; None for a foreign one.
+    train : Train or None
         Of the scene.
-    geometry : FieldGeometry
-    delivered : Directions
-        Limits of the effective PSF.
+    sky : Sky
+    delivered : Cuts
+        Of the effective PSF, for the limits.
     psf : PsfModel
         The effective PSF.
     gain, bias, saturation : float
         Electrons to the count, counts, counts.
     variance : float
         Gaussian variance of a pixel (read noise, rounding), electrons squared.
+    sourced : SourcedPsf
+        Where the PSF comes from.
+    barred : ndarray of bool or None
+        Pixels that do not count, besides what the frame itself says.
+    backdrop : Backdrop or None
+        Of a foreign frame, whose background may slope: it is then fitted as a plane.
+    notes : tuple of str
+        What was assumed.
     """
 
     frame: Frame
-    scene: Scene
-    train: Train
-    geometry: FieldGeometry
-    delivered: Directions
+    scene: Scene | None
+    train: Train | None
+    sky: Sky
+    delivered: Cuts
     psf: PsfModel
     gain: float
     bias: float
     saturation: float
     variance: float
+    sourced: SourcedPsf
+    barred: AnyArray | None = None
+    backdrop: Backdrop | None = None
+    notes: tuple[str, ...] = ()
 
     @property
     def fwhm(self) -> float:
@@ -72,7 +89,7 @@ class Observation:
     @property
     def arcsec(self) -> float:
         """Side of a pixel, arcseconds."""
-        return degrees(self.geometry.pixel_scale) * 3600.0
+        return degrees(self.sky.pixel_scale) * 3600.0
 
     def holds(self, x: float, y: float) -> bool:
         """Whether a place lies on the detector."""
@@ -83,12 +100,25 @@ class Observation:
         """Electrons above the bias of a box of the frame (rows, columns)."""
         return (np.asarray(self.frame.counts[box], dtype=np.float64) - self.bias) * self.gain
 
+    def rise(self, box: tuple[slice, slice] = (slice(None), slice(None))) -> FloatArray | float:
+        """Electrons by which the background of a box is above that where it is darkest."""
+        if self.backdrop is None:
+            return 0.0
+        rows, columns = self.frame.counts.shape
+        return self.gain * self.backdrop.rise(box, (rows, columns))
+
+    def flattened(self) -> FloatArray:
+        """Electrons of the whole frame with an even background: for finding, not for fitting."""
+        return self.electrons() - self.rise()
+
     def usable(self, box: tuple[slice, slice] = (slice(None), slice(None))) -> AnyArray:
         """Whether the pixels of a box are finite and neither saturated nor bad."""
         counts = self.frame.counts[box]
         good = np.isfinite(counts) & (counts < self.saturation)
         if self.frame.mask is not None:
             good &= (self.frame.mask[box] & _UNFIT) == 0
+        if self.barred is not None:
+            good &= ~self.barred[box]
         return np.asarray(good)
 
     def cutout(self, x: float, y: float, half: float) -> Cutout:
@@ -104,13 +134,18 @@ class Observation:
         left, right = max(0, floor(x - half)), min(columns - 1, ceil(x + half))
         bottom, top = max(0, floor(y - half)), min(rows - 1, ceil(y + half))
         box = (slice(bottom, top + 1), slice(left, right + 1))
+        electrons = self.electrons(box)
+        if self.backdrop is not None:
+            rise = np.asarray(self.rise(box))
+            electrons -= rise - rise.mean()
         return Cutout.of(
-            self.electrons(box),
+            electrons,
             variance=self.variance,
             psf=self.psf,
             x0=left,
             y0=bottom,
             used=self.usable(box),
+            tilted=self.backdrop is not None,
         )
 
     def cutouts(
@@ -131,86 +166,104 @@ class Observation:
         return [self.cutout(*middle, margin + 0.5 * apart)]
 
 
-def observe(frame: Frame, *, widest: float = 0.0) -> Observation:
+def observe(
+    frame: Frame,
+    *,
+    widest: float = 0.0,
+    given: Given | None = None,
+    psf: PsfChoice | None = None,
+    apart: Sequence[tuple[float, float]] = (),
+) -> Observation:
     """Gather what is needed to fit stars to a frame.
 
     Parameters
     ----------
     frame : Frame
-        With its scene, that is: made by simimg.
+        Of simimg or of anyone.
     widest : float, optional
         Largest separation that will be fitted, pixels.
+    given : Given, optional
+        What goes before the frame's own header.
+    psf : PsfChoice, optional
+        Where the PSF is to come from.
+    apart : sequence of (x, y), optional
+        Places of what may be no single stars.
 
     Raises
     ------
     InputError
-        A frame without a scene, or whose scene no longer holds together.
+        A scene that no longer holds together, a frame without a pixel scale, or no PSF to be had.
     """
-    if not frame.scene_files:
-        raise InputError(
-            mistake(
-                "frame",
-                "SCENE",
-                "carries no scene, so that its PSF and noise are unknown",
-                "measure a frame that simimg exposed",
-            )
-        )
-    scene = scene_from_record(frame.scene_files, name="frame", directory=".")
-    camera, scale = scene.camera, scene.pixel_scale
-    if camera is None or scale is None:
-        raise InputError(
-            mistake("frame", "SCENE", "has no camera", "measure a frame that simimg exposed")
-        )
-    train = assemble_train(scene)
-    delivered = Directions(train.effective)
-    width = delivered.profile(0.0).width / scale
-    oversampling = spline_oversampling(train.effective, scale)
-    image = sampled_psf(
-        train.effective,
-        pixel_scale=scale,
-        oversampling=oversampling,
-        half_width_pixels=ceil(max(_REACH * width, widest + 5.0 * width, 8.0)),
+    given, psf = given or Given(), psf or PsfChoice()
+    scene, train = _scene(frame)
+    notes: list[str] = []
+    sky: Sky
+    if scene is not None and scene.camera is not None:
+        if given.pixel_scale_arcsec is not None:
+            what = "the frame carries its scene, which tells it"
+            raise InputError(mistake("frame", "pixel scale", what, "leave it out"))
+        sky = FieldSky(field_geometry(scene))
+        readout = scene_readout(scene.camera, given)
+    else:
+        sky = _foreign_sky(frame, given, notes)
+        readout = foreign_readout(frame, given)
+    sourced = source_psf(
+        frame,
+        psf,
+        train=train,
+        readout=readout,
+        pixel_scale=sky.pixel_scale,
+        widest=widest,
+        apart=apart,
     )
-    full_well = inf if camera.full_well is None else camera.full_well
-    top = float(converter_top(camera.bit_depth))
-    rounding = 0.0 if camera.read_noise == 0.0 and camera.gain == 1.0 else camera.gain**2 / 12.0
     return Observation(
         frame=frame,
         scene=scene,
         train=train,
-        geometry=field_geometry(scene),
-        delivered=delivered,
-        psf=PsfModel.from_image(image, oversampling=oversampling),
-        gain=camera.gain,
-        bias=camera.bias,
-        # Read noise may bring a full pixel's count below the level of the full well.
-        saturation=min(
-            top,
-            camera.bias + max(full_well - 6.0 * camera.read_noise, 0.5 * full_well) / camera.gain,
-        ),
-        variance=camera.read_noise**2 + rounding,
+        sky=sky,
+        delivered=sourced.delivered,
+        psf=sourced.model,
+        gain=readout.gain,
+        bias=readout.bias,
+        saturation=readout.saturation,
+        variance=readout.variance,
+        sourced=sourced,
+        barred=readout.barred,
+        backdrop=readout.backdrop,
+        notes=(*notes, *readout.notes, *sourced.notes),
     )
 
 
-def spline_oversampling(transfer: Transfer, pixel_scale: float) -> int:
-    """Samples to the pixel that a quintic spline needs to render a PSF to 1e-6 of its peak.
+def _scene(frame: Frame) -> tuple[Scene | None, Train | None]:
+    """The scene that a frame carries, and its train."""
+    if not frame.scene_files:
+        return None, None
+    scene = scene_from_record(frame.scene_files, name="frame", directory=".")
+    if scene.camera is None or scene.pixel_scale is None:
+        raise InputError(
+            mistake("frame", "SCENE", "has no camera", "measure a frame that simimg exposed")
+        )
+    return scene, assemble_train(scene)
 
-    Parameters
-    ----------
-    transfer : Transfer
-        Of the effective PSF.
-    pixel_scale : float
-        Side of a pixel, radians.
 
-    Notes
-    -----
-    A quintic B-spline misses a wave of frequency f, sampled h apart, by about ``2 (f h)^6``
-    (Unser 1999, IEEE Signal Process. Mag. 16, 22); the waves of the PSF are weighted by their
-    strength.
-    """
-    radius = transfer.band_limit * (np.arange(600) + 0.5) / 600
-    angle = np.pi * np.arange(8)[:, None] / 8
-    strength = np.abs(transfer(radius * np.cos(angle), radius * np.sin(angle))).max(axis=0) * radius
-    waves = (radius * pixel_scale) ** 6
-    error = 2.0 * float((strength * waves).sum() / strength.sum())
-    return int(max(1, ceil((error / _SPLINE_ERROR) ** (1.0 / 6.0))))
+def _foreign_sky(frame: Frame, given: Given, notes: list[str]) -> Sky:
+    """Directions and scale of a foreign frame."""
+    told = given.pixel_scale_arcsec
+    scale = None if told is None else radians(told / 3600.0)
+    rows, columns = frame.counts.shape
+    if frame.wcs is not None:
+        sky = coordinate_sky(frame.wcs, (rows, columns), pixel_scale=scale)
+        if sky is not None:
+            return sky
+        notes.append("the header's coordinates do not hold in the middle of the frame: not used")
+    notes.append("no coordinates in the header: north is taken as up and east as left")
+    if scale is None:
+        found = header_pixel_scale(frame)
+        if found is None:
+            what = "neither coordinates nor a pixel scale are in the header"
+            raise InputError(
+                mistake("frame", "pixel scale", what, "give --pixel-scale, arcseconds to the pixel")
+            )
+        scale = radians(found.value / 3600.0)
+        notes.append(f"{found.value:.4g} arcseconds to the pixel, by {found.keyword}")
+    return BareSky(scale)

@@ -1,23 +1,20 @@
 """Which way north and east lie on a frame, and how long an arcsecond is.
 
-Taken from the frame's world coordinates by finite differences of unit vectors, so that any
-rotation, mirroring, projection and place on the sky comes out right. Pixels count from 0.
+Taken from the frame's world coordinates at the very place, so that any rotation, mirroring,
+projection and place on the sky comes out right. Pixels count from 0.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass
 from math import atan2, cos, degrees, floor, hypot, log10, sin
-from typing import TYPE_CHECKING
 
 import numpy as np
 
 from simimg.arrays import FloatArray
 from simimg.frame import Frame
+from simimg.resolving.skyplane import local_axes
 from simimg.show.signal import header_number
-
-if TYPE_CHECKING:
-    from astropy.wcs import WCS
 
 
 @dataclass(frozen=True)
@@ -49,7 +46,7 @@ class Compass:
 
 def frame_compass(frame: Frame, x: float, y: float) -> Compass:
     """Directions and scale at (x, y) of a frame."""
-    axes = None if frame.wcs is None else _axes(frame.wcs, x, y)
+    axes = None if frame.wcs is None else local_axes(frame.wcs, x, y)
     if axes is None:
         return Compass((0.0, 1.0), (-1.0, 0.0), header_number(frame, "PIXSCALE"), known=False)
     # Columns: steps on the sky (east, north; rad) of a step of one pixel along x and along y.
@@ -62,29 +59,6 @@ def frame_compass(frame: Frame, x: float, y: float) -> Compass:
 def _unit(vector: FloatArray) -> tuple[float, float]:
     length = hypot(float(vector[0]), float(vector[1]))
     return float(vector[0]) / length, float(vector[1]) / length
-
-
-def _axes(wcs: WCS, x: float, y: float) -> FloatArray | None:
-    """East and north (rad) of a step along x and along y; None where the coordinates fail."""
-    half = 0.5
-    places = np.array([[x, y], [x + half, y], [x - half, y], [x, y + half], [x, y - half]])
-    try:
-        sky = np.asarray(wcs.all_pix2world(places, 0), dtype=np.float64)
-    # Coordinates come with strangers' files; whatever is wrong in them, there are none to draw.
-    except Exception:
-        return None
-    if wcs.wcs.lng == 1:
-        sky = sky[:, ::-1]
-    ra, dec = np.radians(sky.T)
-    vectors = np.array([np.cos(dec) * np.cos(ra), np.cos(dec) * np.sin(ra), np.sin(dec)]).T
-    along = np.array([vectors[1] - vectors[2], vectors[3] - vectors[4]])
-    east = np.array([-sin(ra[0]), cos(ra[0]), 0.0])
-    north = np.array([-sin(dec[0]) * cos(ra[0]), -sin(dec[0]) * sin(ra[0]), cos(dec[0])])
-    axes = np.array([along @ east, along @ north])
-    area = abs(float(np.linalg.det(axes)))
-    if not np.isfinite(axes).all() or area < 1e-4 * float(np.abs(axes).max()) ** 2 or area == 0.0:
-        return None
-    return axes
 
 
 def round_length(longest: float) -> float:

@@ -22,7 +22,7 @@ from simimg.exposure import Prepared
 from simimg.frame import Frame
 from simimg.resolving.judging import NamedPair
 from simimg.resolving.observation import Observation, observe
-from simimg.resolving.resolution import Directions
+from simimg.resolving.pairlimits import Cuts
 from simimg.scene.file import scene_record
 
 
@@ -80,7 +80,7 @@ class Exposures:
         self._observation = observe(blank, widest=widest)
 
     @property
-    def delivered(self) -> Directions:
+    def delivered(self) -> Cuts:
         """Limits of the effective PSF."""
         return self._observation.delivered
 

@@ -224,8 +224,8 @@ def test_mistakes_are_named():
         measure(shot, near=[(-3.0, 5.0), (10.0, 10.0), (np.nan, 2.0)])
     assert len(caught.value.lines) == 2
     assert all("not on the frame" in line for line in caught.value.lines)
-    with pytest.raises(InputError, match="carries no scene"):
-        measure(replace(shot, scene_files=()))
+    with pytest.raises(InputError, match="nor a pixel scale"):
+        measure(replace(shot, scene_files=(), wcs=None, header={}))
 
 
 def test_exposures_differ_and_the_same_one_repeats():

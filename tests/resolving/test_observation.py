@@ -61,5 +61,5 @@ def test_finer_detail_asks_for_more_samples():
     wide = observe(frame(star(1e5)))
     sharp = observe(frame(star(1e5), air=False))
     assert wide.psf.oversampling < sharp.psf.oversampling
-    scale = sharp.geometry.pixel_scale
+    scale = sharp.sky.pixel_scale
     assert spline_oversampling(sharp.train.effective, 4.0 * scale) >= 3 * sharp.psf.oversampling

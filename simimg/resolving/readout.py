@@ -1,0 +1,310 @@
+"""How the counts of a frame stand for electrons, and with what noise: of a scene, or foreign.
+
+A foreign frame is taken at its header's word, or its user's, as far as they go. What they leave
+open is read from the pixels: the scatter of the background is its photons' and the read noise's
+together, so that gain and read noise tell how many electrons of sky a background holds, whatever
+bias has been left in or sky been taken out. Every assumption leaves a line behind.
+
+Electrons to the count; counts; electrons squared.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from math import inf, sqrt
+
+import numpy as np
+
+from simimg.arrays import AnyArray, frozen
+from simimg.camera.converter import converter_top
+from simimg.camera.masks import BAD_COLUMN, BLEEDING, COSMIC_RAY, DEAD, HOT, SATURATED
+from simimg.errors import InputError, mistake
+from simimg.frame import Frame
+from simimg.resolving.backdrop import Backdrop, find_backdrop
+from simimg.resolving.given import Given
+from simimg.resolving.headers import (
+    header_bias,
+    header_gain,
+    header_read_noise,
+    header_saturation,
+    header_section,
+    header_time,
+    header_unit,
+)
+from simimg.scene.camera import Camera
+
+_UNFIT = SATURATED | BLEEDING | COSMIC_RAY | HOT | DEAD | BAD_COLUMN
+_CLEAR = 5.0  # noises above zero from which a level is that of a sky that was left in
+_COUNTED = 2.0  # counts of noise from which pixels may well be counts of one electron each
+_ELECTRONS = 25.0  # of background where nothing tells how many: Gaussian enough
+_PLATEAU = 3  # pixels of the very highest value that make it the top of the scale
+_ODD = 0.25  # relative difference of noise found and noise told that is worth a line
+
+
+@dataclass(frozen=True, eq=False)
+class Readout:
+    """How counts stand for electrons.
+
+    Attributes
+    ----------
+    gain : float
+        Electrons to the count.
+    bias : float
+        Counts of a pixel without electrons.
+    saturation : float
+        Counts from which a pixel is full.
+    variance : float
+        Gaussian variance of a pixel (read noise, rounding), electrons squared.
+    barred : ndarray of bool or None
+        Pixels that do not count, whatever they hold.
+    backdrop : Backdrop or None
+        The background, where it is read from the pixels.
+    notes : tuple of str
+        What was assumed.
+    """
+
+    gain: float
+    bias: float
+    saturation: float
+    variance: float
+    barred: AnyArray | None = None
+    backdrop: Backdrop | None = None
+    notes: tuple[str, ...] = ()
+
+
+def scene_readout(camera: Camera, given: Given) -> Readout:
+    """The read-out of a frame that simimg exposed; what is given goes before the scene."""
+    gain = camera.gain if given.gain is None else given.gain
+    bias = camera.bias if given.bias is None else given.bias
+    read_noise = camera.read_noise if given.read_noise is None else given.read_noise
+    full_well = inf if camera.full_well is None else camera.full_well
+    top = float(converter_top(camera.bit_depth))
+    saturation = min(top, np.floor(full_well / camera.gain + camera.bias))
+    rounding = 0.0 if read_noise == 0.0 and gain == 1.0 else gain**2 / 12.0
+    return Readout(
+        gain=gain,
+        bias=bias,
+        saturation=float(saturation if given.saturation is None else given.saturation),
+        variance=read_noise**2 + rounding,
+    )
+
+
+def foreign_readout(frame: Frame, given: Given) -> Readout:
+    """The read-out of any frame, from what is given, its header and its pixels.
+
+    Raises
+    ------
+    InputError
+        No pixel counts.
+    """
+    notes: list[str] = []
+    saturation = _saturation(frame, given, notes)
+    barred = _barred(frame, notes)
+    good = np.isfinite(frame.counts) & (frame.counts < saturation)
+    if barred is not None:
+        good &= ~barred
+    if not good.any():
+        what = "no pixel counts: all are full, masked or without a number"
+        raise InputError(mistake("frame", "", what, "give --saturation, or another image"))
+    backdrop = find_backdrop(frame.counts, good)
+    whole = _whole_numbers(frame.counts, good)
+    gain = _gain(frame, given, backdrop, whole, notes)
+    bias, read_noise = _overscan(frame, given, gain, backdrop)
+    scatter = (gain * backdrop.noise) ** 2
+    if scatter == 0.0:
+        brightest = float(np.max(frame.counts, where=good, initial=-inf)) - backdrop.level
+        scatter = max((1e-4 * gain * brightest) ** 2, 1e-12)
+        notes.append("the background has no noise: one ten-thousandth of the brightest is assumed")
+    rounding = gain**2 / 12.0 if whole else 0.0
+    if bias is None:
+        bias, variance = _from_scatter(backdrop, gain, scatter, read_noise, rounding, notes=notes)
+    else:
+        variance = _with_bias(backdrop, gain, scatter, read_noise, rounding, bias, notes)
+    return Readout(
+        gain=gain,
+        bias=bias,
+        saturation=saturation,
+        variance=variance,
+        barred=barred,
+        backdrop=backdrop,
+        notes=tuple(notes),
+    )
+
+
+def unfit(frame: Frame) -> AnyArray | None:
+    """Pixels that a frame's mask takes out; None without a mask."""
+    return None if frame.mask is None else np.asarray((frame.mask & _UNFIT) != 0)
+
+
+def _whole_numbers(counts: AnyArray, good: AnyArray) -> bool:
+    """Whether all pixels (or a sample of them) hold whole numbers."""
+    if counts.dtype.kind in "iu":
+        return True
+    values = counts[good]
+    values = values[:: max(1, values.size // 10_000)]
+    return bool((values == np.rint(values)).all())
+
+
+def _saturation(frame: Frame, given: Given, notes: list[str]) -> float:
+    """Counts from which a pixel is full: told, or the top of the scale where it is reached."""
+    if given.saturation is not None:
+        return given.saturation
+    told = header_saturation(frame)
+    if told is not None:
+        return told.value
+    counts = frame.counts
+    finite = counts[np.isfinite(counts)]
+    if finite.size == 0:
+        return inf
+    highest = float(finite.max())
+    if counts.dtype.kind in "iu" and highest == np.iinfo(counts.dtype).max:
+        notes.append(f"pixels of {highest:g} counts, the top of the scale, are taken as full")
+        return highest
+    middle, low = float(np.median(finite)), float(np.percentile(finite, 5.0))
+    plateau = int(np.count_nonzero(finite == highest))
+    if plateau >= _PLATEAU and highest > middle + 20.0 * max(middle - low, 0.0) > middle:
+        notes.append(f"{plateau} pixels share the highest value, {highest:g}: taken as full")
+        return highest
+    return inf
+
+
+def _barred(frame: Frame, notes: list[str]) -> AnyArray | None:
+    """Pixels outside the useful part of the frame, or masked."""
+    barred = unfit(frame)
+    section = header_section(frame, "TRIMSEC", "DATASEC")
+    if section is None:
+        return barred
+    outside = np.ones(frame.counts.shape, dtype=bool)
+    outside[section] = False
+    if not outside.any():
+        return barred
+    notes.append("pixels outside the header's useful section are left out")
+    return frozen(outside if barred is None else barred | outside)
+
+
+def _gain(frame: Frame, given: Given, backdrop: Backdrop, whole: bool, notes: list[str]) -> float:
+    """Electrons to the count: given, told, or assumed."""
+    if given.gain is not None:
+        return given.gain
+    unit, rate = header_unit(frame)
+    time = header_time(frame) if rate else None
+    seconds = time if time is not None else 1.0
+    if rate and time is None:
+        notes.append("the unit is a rate and no exposure time is told: 1 second is assumed")
+    if unit == "electron":
+        return seconds
+    told, said = header_gain(frame)
+    notes += said
+    if told is not None:
+        return told.value * seconds
+    noise, level = backdrop.noise, backdrop.level
+    if unit == "adu" or whole or noise * seconds >= _COUNTED or noise == 0.0:
+        notes.append(
+            "the gain is not known: 1 electron to the count is assumed, on which the errors and "
+            "probabilities rest"
+        )
+        return seconds
+    if level > _CLEAR * noise:
+        notes.append(
+            "the gain is not known: the background's scatter is taken as that of its photons, on "
+            "which the errors and probabilities rest"
+        )
+        return level / noise**2
+    notes.append(
+        "the gain is not known and the sky has been taken off: the stars' own photon noise is a "
+        "guess, on which the errors and probabilities rest"
+    )
+    return sqrt(_ELECTRONS) / noise
+
+
+def _overscan(
+    frame: Frame, given: Given, gain: float, backdrop: Backdrop
+) -> tuple[float | None, float | None]:
+    """Bias (counts) and read noise (electrons): given, told, or read from the overscan."""
+    bias, read_noise = given.bias, given.read_noise
+    if bias is None:
+        told = header_bias(frame)
+        bias = None if told is None else told.value
+    if read_noise is None:
+        found = header_read_noise(frame, gain)
+        read_noise = None if found is None else found.value
+    section = header_section(frame, "BIASSEC")
+    useful = header_section(frame, "TRIMSEC", "DATASEC")
+    if section is None or useful is None or (bias is not None and read_noise is not None):
+        return bias, read_noise
+    values = np.asarray(frame.counts[section], dtype=np.float64)
+    values = values[np.isfinite(values)]
+    if values.size < 100 or not np.median(values) <= backdrop.level + backdrop.noise:
+        return bias, read_noise
+    middle = float(np.median(values))
+    if read_noise is None:
+        read_noise = gain * 1.4826 * float(np.median(np.abs(values - middle)))
+    return (middle if bias is None else bias), read_noise
+
+
+def _from_scatter(
+    backdrop: Backdrop,
+    gain: float,
+    scatter: float,
+    read_noise: float | None,
+    rounding: float,
+    *,
+    notes: list[str],
+) -> tuple[float, float]:
+    """Bias and Gaussian variance where no bias is told: from the scatter of the background."""
+    if read_noise is None:
+        notes.append(
+            "the read noise is not known: the background's scatter is taken as that of its photons"
+        )
+    variance = (read_noise or 0.0) ** 2 + rounding
+    sky = scatter - variance
+    uncertain = 8.0 * backdrop.error * scatter + 0.03 * scatter
+    if abs(gain * backdrop.level - sky) <= uncertain and backdrop.level >= 0.0:
+        return 0.0, variance
+    if sky < -uncertain:
+        notes.append(
+            f"the background scatters by {sqrt(scatter):.3g} electrons, less than the read noise "
+            "alone: its scatter is used"
+        )
+    if sky < 0.0:
+        return backdrop.level, scatter
+    bias = backdrop.level - sky / gain
+    what = (
+        "the sky seems to have been taken off"
+        if bias < -0.1 * backdrop.noise
+        else "no bias level is told"
+    )
+    notes.append(
+        f"{what}: by its scatter the background holds {sky:.4g} electrons a pixel, so that "
+        f"{bias:.6g} counts stand for none"
+    )
+    return bias, variance
+
+
+def _with_bias(
+    backdrop: Backdrop,
+    gain: float,
+    scatter: float,
+    read_noise: float | None,
+    rounding: float,
+    bias: float,
+    notes: list[str],
+) -> float:
+    """Gaussian variance where the bias is told: read noise, or what scatter is left for it."""
+    sky = max(gain * (backdrop.level - bias), 0.0)
+    if read_noise is None:
+        variance = max(scatter - sky, rounding)
+        notes.append(
+            f"the read noise is not known: {sqrt(variance):.3g} electrons by the background's "
+            "scatter"
+        )
+        return variance
+    variance = read_noise**2 + rounding
+    expected = sky + variance
+    if abs(scatter - expected) > max(_ODD, 8.0 * backdrop.error) * expected:
+        notes.append(
+            f"the background scatters by {sqrt(scatter):.3g} electrons, where gain, bias and read "
+            f"noise say {sqrt(expected):.3g}: the larger is used"
+        )
+        variance += max(scatter - expected, 0.0)
+    return variance
