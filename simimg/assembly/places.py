@@ -4,14 +4,15 @@ The field is a tangent plane (gnomonic projection, TAN of Calabretta & Greisen 2
 touching the sphere at the pointing, which falls on the middle of the detector. East and north are
 the standard coordinates of that plane, in radians. The detector's +y has the position angle rho,
 north through east, and an odd number of reflections turns east to the right (p = -1):
-``x - xc = p (-E cos rho + N sin rho) / s`` and ``y - yc = (E sin rho + N cos rho) / s``.
+``x - xc = p (-E cos rho + N sin rho) / s`` and ``y - yc = (E sin rho + N cos rho) / s``; a radial
+distortion moves places outwards from the middle (pincushion) or inwards, and is in the WCS as SIP.
 Pixels count from 0 at the centre of the first pixel; only the WCS keywords count from 1.
 """
 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import atan2, cos, degrees, pi, sin
+from math import atan2, comb, cos, degrees, pi, sin
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -39,6 +40,9 @@ class FieldGeometry:
         True for an odd number of reflections.
     ra, dec : float
         Pointing (rad): the sky at the middle of the detector.
+    distortion : float
+        Radial distortion in units of 1 over pixels squared: a place r pixels from the middle is
+        moved outwards by ``distortion r^3``.
     """
 
     columns: int
@@ -48,6 +52,7 @@ class FieldGeometry:
     mirrored: bool = False
     ra: float = 0.0
     dec: float = 0.0
+    distortion: float = 0.0
 
     @property
     def centre(self) -> tuple[float, float]:
@@ -63,16 +68,35 @@ class FieldGeometry:
         """Pixels of offsets `east`, `north` (rad) from the field centre."""
         c, s = cos(self.rotation), sin(self.rotation)
         xc, yc = self.centre
-        x = xc + self.parity * (north * s - east * c) / self.pixel_scale
-        y = yc + (east * s + north * c) / self.pixel_scale
-        return x, y
+        dx = self.parity * (north * s - east * c) / self.pixel_scale
+        dy = (east * s + north * c) / self.pixel_scale
+        if self.distortion:
+            r_squared = dx * dx + dy * dy
+            # A barrel folds the far field back into the frame: there is nothing to be seen there.
+            stretch = np.where(
+                -3.0 * self.distortion * r_squared < 1.0, 1.0 + self.distortion * r_squared, 1e9
+            )
+            dx, dy = dx * stretch, dy * stretch
+        return xc + dx, yc + dy
 
     def to_offsets(self, x: FloatArray, y: FloatArray) -> tuple[FloatArray, FloatArray]:
         """Offsets east and north (rad) of pixels."""
         c, s = cos(self.rotation), sin(self.rotation)
         xc, yc = self.centre
-        dx, dy = (x - xc) * self.parity * self.pixel_scale, (y - yc) * self.pixel_scale
+        dx, dy = x - xc, y - yc
+        if self.distortion:
+            shrink = self._undistorted(dx * dx + dy * dy)
+            dx, dy = dx * shrink, dy * shrink
+        dx, dy = dx * self.parity * self.pixel_scale, dy * self.pixel_scale
         return dy * s - dx * c, dx * s + dy * c
+
+    def _undistorted(self, r_squared: FloatArray) -> FloatArray:
+        """What shrinks a distorted place to the undistorted one: q with q (1 + k r^2 q^2) = 1."""
+        k = self.distortion * np.asarray(r_squared, dtype=np.float64)
+        q = np.ones_like(k)
+        for _ in range(30):
+            q = q - (q * (1.0 + k * q * q) - 1.0) / np.maximum(1.0 + 3.0 * k * q * q, 1e-3)
+        return np.asarray(q)
 
     def to_sky(self, x: FloatArray, y: FloatArray) -> tuple[FloatArray, FloatArray]:
         """Right ascension, in [0, 2 pi), and declination (rad) of pixels."""
@@ -123,8 +147,34 @@ class FieldGeometry:
         # Adding 0 turns a negative zero, which would show in the header, into a plain one.
         wcs.wcs.cd = np.array([[-p * c, s], [p * s, c]]) * step + 0.0
         wcs.wcs.radesys = "ICRS"
+        if self.distortion:
+            from astropy.wcs import Sip
+
+            wcs.wcs.ctype = ["RA---TAN-SIP", "DEC--TAN-SIP"]
+            forward, back = self._sip_terms()
+            wcs.sip = Sip(forward, forward.T, back, back.T, wcs.wcs.crpix)
         wcs.wcs.set()
         return wcs
+
+    def _sip_terms(self) -> tuple[FloatArray, FloatArray]:
+        """SIP polynomials along x, from pixels to the plane and back (Shupe et al. 2005).
+
+        Back is the distortion itself, of third order; forward its inverse, by the polynomial to the
+        ninth that misses it least over the detector.
+        """
+        k = self.distortion
+        forward, back = np.zeros((10, 10)), np.zeros((4, 4))
+        farthest = (self.columns**2 + self.rows**2) / 4.0
+        # Chebyshev's points of the squared radius, where a fit is nearly the best there is.
+        t = 0.5 - 0.5 * np.cos(np.pi * (np.arange(200) + 0.5) / 200)
+        powers = t[:, None] ** np.arange(1, 5)
+        terms = np.linalg.lstsq(powers, self._undistorted(t * farthest) - 1.0, rcond=None)[0]
+        for power, factor in zip(range(1, 5), terms, strict=True):
+            # x (x^2 + y^2)^power, term by term.
+            for j in range(power + 1):
+                forward[1 + 2 * (power - j), 2 * j] = factor / farthest**power * comb(power, j)
+        back[3, 0] = back[1, 2] = k
+        return forward, back
 
 
 def field_geometry(scene: Scene) -> FieldGeometry:
@@ -143,4 +193,13 @@ def field_geometry(scene: Scene) -> FieldGeometry:
         mirrored=camera.mirrored if camera is not None else False,
         ra=pointing.ra if pointing is not None else 0.0,
         dec=pointing.dec if pointing is not None else 0.0,
+        distortion=_distortion(scene),
     )
+
+
+def _distortion(scene: Scene) -> float:
+    """Radial distortion of a scene's field, per square pixel."""
+    field, scale = scene.telescope.field, scene.pixel_scale
+    if field is None or scale is None:
+        return 0.0
+    return field.distortion * (scale / field.radius) ** 2

@@ -63,3 +63,48 @@ def test_sky_coordinates_are_those_of_astropy(mirrored, degrees, ra, dec):
 def test_the_far_side_of_the_sky_is_refused():
     with pytest.raises(ValueError, match="90 degrees"):
         geometry().from_sky(np.array([np.pi]), np.array([0.0]))
+
+
+@pytest.mark.parametrize("distortion", [0.02, -0.02])
+def test_distortion_moves_outwards_and_back(distortion):
+    """Two per cent at 100 pixels, by the stated law; and the WCS says the same through SIP."""
+    g = geometry(distortion=distortion / 100**2, ra=1.0, dec=0.4)
+    east = 20.0 * ARCSEC
+    x, y = g.to_pixels(np.array(-east), np.array(0.0))
+    assert x - 99.5 == pytest.approx(100 * (1 + distortion))
+    assert y == pytest.approx(49.5)
+    assert_allclose(g.to_offsets(x, y), (-east, 0.0), atol=1e-15)
+    xs, ys = np.meshgrid(np.linspace(0, 199, 9), np.linspace(0, 99, 7))
+    by_wcs = g.wcs().all_pix2world(xs, ys, 0)
+    own = np.degrees(g.to_sky(xs, ys))
+    # What the ninth-order polynomial leaves.
+    assert_allclose(own[0], by_wcs[0], atol=1e-5 * 0.2 / 3600)
+    assert_allclose(own[1], by_wcs[1], atol=1e-5 * 0.2 / 3600)
+    back = g.wcs().all_world2pix(*by_wcs, 0)
+    assert_allclose(back, (xs, ys), atol=1e-4)
+
+
+def test_a_written_frame_keeps_its_distortion(tmp_path):
+    """astropy reads the SIP terms back, and finds each star where TRUTH says."""
+    from astropy.io import fits
+    from astropy.table import Table
+    from astropy.wcs import WCS
+
+    import simimg
+    from tests.assembly.scenes import TEXT, scene
+
+    field = {"distortion": 0.03, "radius": "12 arcsec"}
+    text = TEXT + '[[star]]\neast = "-9 arcsec"\nnorth = "7 arcsec"\nmagnitude = 16\n'
+    simimg.expose(scene(tmp_path, text, telescope__field=field)).write(tmp_path / "f.fits")
+    with fits.open(tmp_path / "f.fits") as hdus:
+        wcs, truth = WCS(hdus[0].header), Table(hdus["TRUTH"].data)
+    assert wcs.sip is not None
+    x, y = wcs.all_world2pix(truth["ra"], truth["dec"], 0, tolerance=1e-8)
+    # What the ninth-order polynomial leaves of a distortion of three per cent.
+    assert_allclose(x, truth["x"], atol=1e-5)
+    assert_allclose(y, truth["y"], atol=1e-5)
+    r = np.hypot(9, 7)
+    assert np.hypot(truth["x"][1] - 50, truth["y"][1] - 40) == pytest.approx(
+        r / 0.25 * (1 + 0.03 * (r / 12) ** 2)
+    )
+    assert simimg.Frame.read(tmp_path / "f.fits").wcs.sip is not None
