@@ -218,6 +218,34 @@ def bench_scaling(folder: Path) -> list[tuple[str, str, str]]:
     ]
 
 
+def bench_colour(folder: Path) -> list[tuple[str, str, str]]:
+    """Stars of every temperature over a broad band, against one wavelength for all."""
+    from astropy.table import Table
+
+    plain = write_scene(folder, STARS)
+    table = Table.read(folder / f"stars-{STARS}.fits")
+    table["temperature"] = np.random.default_rng(2).uniform(2500, 40000, STARS)
+    table.write(folder / "coloured.fits", overwrite=True)
+    coloured = folder / "coloured.toml"
+    text = plain.read_text().replace(f"stars-{STARS}.fits", "coloured.fits")
+    coloured.write_text(text.replace("columns = {", 'columns = { temperature = "temperature",'))
+    single = folder / "single.toml"
+    single.write_text(plain.read_text().replace('name = "V"', 'name = "V"\nnodes = 1'))
+    whole_frame(coloured, folder / "c.fits")
+    many, one = [], []
+    for _ in range(3):
+        many.append(timed(lambda: whole_frame(coloured, folder / "c.fits"), 1))
+        one.append(timed(lambda: whole_frame(single, folder / "m.fits"), 1))
+    ratio = statistics.median(a / b for a, b in zip(many, one, strict=True))
+    return [
+        (
+            f"{STARS} stars of every temperature over a band, over one wavelength for all",
+            f"{ratio:.2f}",
+            "under 4",
+        )
+    ]
+
+
 def bench_help(_: Path) -> list[tuple[str, str, str]]:
     """``simimg --help`` against importing click."""
     ours, click = [], []
@@ -237,6 +265,7 @@ BENCHMARKS = {
     "frame": bench_frame,
     "photutils": bench_photutils,
     "scaling": bench_scaling,
+    "colour": bench_colour,
     "help": bench_help,
 }
 
