@@ -113,7 +113,7 @@ def _detect(observation: Observation) -> FloatArray:
     from photutils.detection import DAOStarFinder
     from photutils.utils.exceptions import NoDetectionsWarning
 
-    electrons, good = observation.electrons(), observation.usable()
+    electrons, good = observation.flattened(), observation.usable()
     _, background, noise = sigma_clipped_stats(electrons, mask=~good, sigma=3.0, maxiters=5)
     # A frame without noise of its own still has that of counting.
     noise = max(float(noise), float(np.sqrt(max(background, 0.0) + observation.variance)), 0.3)
