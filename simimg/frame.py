@@ -18,14 +18,13 @@ import numpy as np
 
 from simimg.arrays import AnyArray, FloatArray, frozen
 from simimg.fits.cards import check_header as check_header
+from simimg.fits.choosing import COUNT_TYPES as COUNT_TYPES
 from simimg.fits.reader import read_parts
 from simimg.fits.writer import write_frame
 
 if TYPE_CHECKING:
     from astropy.table import Table
     from astropy.wcs import WCS
-
-COUNT_TYPES = ("u1", "u2", "u4", "i2", "i4", "i8", "f4", "f8")
 
 
 @dataclass(frozen=True, eq=False)
@@ -163,13 +162,15 @@ class Frame:
         )
 
     @classmethod
-    def read(cls, path: str | os.PathLike[str]) -> Frame:
-        """Read a frame of simimg with all its parts, or the first 2-D image of any FITS file.
+    def read(cls, path: str | os.PathLike[str], *, hdu: int | str | None = None) -> Frame:
+        """Read a frame of simimg with all its parts, or a 2-D image of any FITS file.
 
         Parameters
         ----------
         path : path
             A FITS file, gzipped or not.
+        hdu : int or str, optional
+            Number (from 0) or name of the HDU that holds the image; the first by default.
 
         Returns
         -------
@@ -180,7 +181,11 @@ class Frame:
         InputError
             No such file; not FITS, damaged, without a usable image, or larger than simimg reads.
         """
-        parts = read_parts(path)
+        from simimg.camera.masks import DEAD
+
+        parts = read_parts(path, hdu=hdu)
+        if "mask" in parts and parts["mask"].dtype == bool:
+            parts["mask"] = np.where(parts["mask"], DEAD, 0).astype(np.uint8)
         if "psf" in parts:
             parts["psf"] = PsfImage(*parts["psf"])
         return cls(**parts)

@@ -22,6 +22,7 @@ import numpy as np
 from simimg.arrays import AnyArray
 from simimg.errors import InputError, mistake
 from simimg.fits.cards import COMMENTARY, ascii_text, is_coordinate, is_keyword, is_layout
+from simimg.fits.choosing import COUNT_TYPES, foreign_mask, image_hdu, inherited, plane_of
 from simimg.fits.survey import UNPACKED_LIMIT, survey
 
 if TYPE_CHECKING:
@@ -48,13 +49,17 @@ _KINDS = {"text": "SU", "numbers": "iuf", "true or false": "b"}
 _AGAIN = "fetch or make the file again"
 
 
-def read_parts(path: str | os.PathLike[str]) -> dict[str, Any]:
+def read_parts(path: str | os.PathLike[str], *, hdu: int | str | None = None) -> dict[str, Any]:
     """The parts of a frame, as named in `simimg.frame.Frame`; the PSF as (image, oversampling).
+
+    The mask of a foreign file is true for its bad pixels.
 
     Parameters
     ----------
     path : path
         A FITS file, gzipped or not.
+    hdu : int or str, optional
+        Number or name of the HDU that holds the frame; the first 2-D image by default.
 
     Raises
     ------
@@ -62,6 +67,39 @@ def read_parts(path: str | os.PathLike[str]) -> dict[str, Any]:
         No such file; not FITS, damaged, without a usable image, or larger than simimg reads.
     """
     where = os.fspath(path)
+    with _open_hdus(where) as hdus:
+        return _parts(hdus, where, hdu)
+
+
+def read_psf_file(path: str | os.PathLike[str]) -> tuple[AnyArray, int | None]:
+    """An image of a PSF, and its samples to the pixel where the header says (OVERSAMP).
+
+    An extension named PSF is taken before any other image.
+
+    Raises
+    ------
+    InputError
+        As for `read_parts`.
+    """
+    where = os.fspath(path)
+    with _open_hdus(where) as hdus:
+        named = [hdu for hdu in hdus if hdu.name.upper() == "PSF" and hdu.is_image]
+        chosen = image_hdu(hdus, where, "PSF" if named else None)
+        with _damage(where, "image"):
+            image = plane_of(_native(chosen.data))
+        told = chosen.header.get("OVERSAMP")
+    if told is None:
+        return image, None
+    whole = isinstance(told, int | float) and not isinstance(told, bool) and told == int(told)
+    if not whole or told < 1:
+        what = f"must be a count of 1 or more, got {ascii_text(str(told))[:40]}"
+        raise InputError(mistake(where, "OVERSAMP", what, "repair it, or give --psf-oversampling"))
+    return image, int(told)
+
+
+@contextmanager
+def _open_hdus(where: str) -> Iterator[HDUList]:
+    """The HDUs of a file that has been surveyed."""
     with _opened(where) as handle:
         survey(handle, where)
         handle.seek(0)
@@ -73,23 +111,31 @@ def read_parts(path: str | os.PathLike[str]) -> dict[str, Any]:
                 _damage(where, ""),
                 fits.open(handle, memmap=False, lazy_load_hdus=False) as hdus,
             ):
-                return _parts(hdus, where)
+                yield hdus
 
 
-def _parts(hdus: HDUList, where: str) -> dict[str, Any]:
-    chosen = _image_hdu(hdus, where)
+def _parts(hdus: HDUList, where: str, wanted: int | str | None) -> dict[str, Any]:
+    chosen = image_hdu(hdus, where, wanted)
     with _damage(where, "image"):
-        counts = _native(chosen.data)
+        counts = plane_of(_native(chosen.data))
+        if counts.dtype.str[1:] not in COUNT_TYPES:
+            counts = counts.astype(np.float64)
     if counts.dtype.kind == "f" and not np.isfinite(counts).any():
         raise InputError(mistake(where, "", "its image has no finite pixel", "give one that has"))
+    header = inherited(hdus, chosen)
     parts: dict[str, Any] = {
         "counts": counts,
-        "header": _plain_header(chosen.header),
+        "header": _plain_header(header),
         "wcs": _read_wcs(chosen.header, (counts.shape[0], counts.shape[1]), where),
         "simulated": chosen.header.get("SIMULATE") is True,
     }
-    if not parts["simulated"]:
-        # Extensions of the same names in other programs' files mean other things.
+    if not parts["simulated"] or chosen is not hdus[0]:
+        # Extensions of the same names in other programs' files mean other things; but a mask is
+        # a mask.
+        with _damage(where, "mask"):
+            flagged = foreign_mask(hdus, chosen, counts.shape)
+        if flagged is not None:
+            parts["mask"] = flagged
         return parts
     extensions = {hdu.name: hdu for hdu in reversed(hdus[1:])}
     readers: dict[str, Callable[[Any, str], Any]] = {
@@ -109,25 +155,6 @@ def _parts(hdus: HDUList, where: str) -> dict[str, Any]:
             raise InputError(mistake(where, name, what, _AGAIN))
         parts["scene_files" if name == "SCENE" else name.lower()] = part
     return parts
-
-
-def _image_hdu(hdus: HDUList, where: str) -> Any:
-    axes_seen = []
-    for hdu in hdus:
-        axes = int(hdu.header.get("NAXIS", 0))
-        if not hdu.is_image or axes == 0:
-            continue
-        if axes == 2 and min(hdu.shape) > 0:
-            return hdu
-        axes_seen.append(axes)
-    if any(axes > 2 for axes in axes_seen):
-        what = f"has no 2-D image, only one of {max(axes_seen)} axes"
-        raise InputError(mistake(where, "", what, "write one of its planes to a file of its own"))
-    if 1 in axes_seen:
-        what = "has no 2-D image, only one of 1 axis"
-    else:
-        what = "its image has no pixels" if axes_seen else "holds no image"
-    raise InputError(mistake(where, "", what, "give a FITS file with a 2-D image"))
 
 
 def _plain_header(header: Header) -> dict[str, object]:
@@ -159,8 +186,10 @@ def _read_wcs(header: Header, shape: tuple[int, int], where: str) -> WCS | None:
     mend = "repair its CTYPE, CRPIX, CRVAL and CD or CDELT keywords, or take them out"
     with _damage(where, "coordinates", mend=mend):
         wcs = WCS(header)
-        if not wcs.has_celestial:
+        if not wcs.has_celestial or (wcs.wcs.naxis != 2 and wcs.wcs.lng != 0):
             return None
+        if wcs.wcs.naxis != 2:
+            wcs = wcs.celestial
         for keyword in ("CRPIX1", "CRPIX2", "CRVAL1", "CRVAL2", "CD1_1", "CDELT1", "CDELT2"):
             if isinstance(header.get(keyword), str):
                 raise ValueError(f"{keyword} is not a number")
