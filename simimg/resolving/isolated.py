@@ -95,7 +95,7 @@ def isolated_stars(
     for _ in range(2):
         if width is not None or not measured:
             break
-        common = _common(np.array([one.width for one in measured]))
+        common = _common(measured)
         if common < 4.5 * blur:
             width = common
             break
@@ -106,7 +106,7 @@ def isolated_stars(
     if width is None:
         if not measured:
             return []
-        width = _common(np.array([one.width for one in measured]))
+        width = _common(measured)
     alike = [
         one
         for one in measured
@@ -192,15 +192,16 @@ def _width(light: FloatArray, row: int, column: int) -> float | None:
     return 0.5 * sum(reaches)
 
 
-def _common(widths: FloatArray) -> float:
-    """The most common of some widths: the middle of the densest half, again and again."""
-    values = np.sort(np.log(widths))
-    while values.size > 4:
-        count = (values.size + 1) // 2
-        spans = values[count - 1 :] - values[: values.size - count + 1]
-        first = int(np.argmin(spans))
-        values = values[first : first + count]
-    return float(np.exp(np.median(values)))
+def _common(stars: Sequence[Candidate]) -> float:
+    """The width that holds most of the light: stars are brighter than cosmic rays and noise.
+
+    Each counts with the root of its electrons, within a factor of `_SPREAD` either way.
+    """
+    widths = np.log([one.width for one in stars])
+    weights = np.sqrt([one.electrons for one in stars])
+    near = np.abs(widths[:, None] - widths) < 0.7 * _SPREAD
+    best = near[int(np.argmax(near @ weights))]
+    return float(np.exp(np.average(widths[best], weights=weights[best])))
 
 
 def _whole(field: StarField, one: Candidate, width: float) -> bool:

@@ -119,6 +119,7 @@ class _FullSum:
         self, chosen: AnyArray, electrons: FloatArray, variance: float, high: float
     ) -> None:
         self.chosen = chosen
+        self._least = -0.25 * variance if variance > 1.0 else 1e-3
         most = ceil(high + 8.0 * sqrt(high) + 10.0)
         counts = np.arange(most + 1.0)[:, None]
         power = -((electrons - counts) ** 2) / (2.0 * variance)
@@ -131,8 +132,10 @@ class _FullSum:
         """Minus the log-density and its derivative.
 
         The polynomial goes on smoothly a little below a mean of 0, where an estimate of a dark
-        sky's background may stray.
+        sky's background may stray; beyond, and under a sharp Gaussian at once, it would swing
+        below 0, and the logarithm goes on along its tangent.
         """
+        wanted, mean = mean, np.maximum(mean, self._least)
         density = self._coefficients[-1].copy()
         derivative = np.zeros(mean.size)
         for coefficient in self._coefficients[-2::-1]:
@@ -141,7 +144,9 @@ class _FullSum:
             density *= mean
             density += coefficient
         np.maximum(density, 1e-290, out=density)
-        return mean - np.log(density) + self._constant, 1.0 - derivative / density
+        slope = 1.0 - derivative / density
+        minus_log = mean - np.log(density) + self._constant
+        return minus_log + slope * (wanted - mean), slope
 
 
 def _saddle_point(
