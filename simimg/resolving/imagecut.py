@@ -36,13 +36,14 @@ class ImageCut:
     _coefficients: FloatArray
     _peak: tuple[float, float]
     _samples: float
+    _height: float
 
     def __call__(self, t: FloatArray | float) -> FloatArray:
-        """Height of the PSF at `t` (rad) from its peak; 0 beyond the image."""
+        """PSF (per steradian) at `t` (rad) from its peak; 0 beyond the image."""
         steps = np.asarray(t, dtype=np.float64) * self._samples
         column = self._peak[0] + steps * cos(self.angle)
         row = self._peak[1] + steps * sin(self.angle)
-        return np.asarray(
+        return self._height * np.asarray(
             ndimage.map_coordinates(
                 self._coefficients,
                 np.stack([row, column]),
@@ -79,6 +80,7 @@ class ImageDirections:
         self.even = bool(np.abs(image - turned).max() < _EVEN * image.max())
         self._coefficients = frozen(ndimage.spline_filter(image, order=5, mode="mirror"))
         self._samples = psf.oversampling / pixel_scale
+        self._height = 1.0 / pixel_scale**2
         self._peak = (middle, middle) if self.even else _peak(image, self._coefficients)
         self._profiles: dict[float, SampledProfile] = {}
 
@@ -87,7 +89,7 @@ class ImageDirections:
         key = angle % (pi if self.even else 2.0 * pi)
         ratio = 10.0 ** (-0.4 * abs(magnitude_difference))
         start = self._profiles.get(key) or ImageCut(
-            key, self._coefficients, self._peak, self._samples
+            key, self._coefficients, self._peak, self._samples, self._height
         )
         self._profiles[key] = sample_far_enough(start, ratio)
         return self._profiles[key]

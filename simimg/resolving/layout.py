@@ -45,12 +45,15 @@ class View:
         A star at ``p`` stands at ``turn @ p + origin``, and a free shift from there.
     factor : float
         Electrons in this frame for each in the first, but for what is free, above 0.
+    free : bool
+        Whether a small shift and the transparency are to be fitted.
     """
 
     number: int = 0
     turn: FloatArray = field(default_factory=_unturned)
     origin: FloatArray = field(default_factory=_nowhere)
     factor: float = 1.0
+    free: bool = True
 
     def place(self, x: float, y: float) -> tuple[float, float]:
         """Where a star stands in this frame, but for the free shift."""
@@ -71,7 +74,7 @@ class Layout:
     tilted : sequence of bool
         For each cutout, whether its background is a plane.
     numbers : sequence of int
-        For each cutout, the number of its frame.
+        For each cutout, the number of its frame; 0 where its shift and transparency are known.
 
     Attributes
     ----------

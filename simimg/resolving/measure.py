@@ -219,6 +219,19 @@ def _observe(
     widest = max(
         (hypot(p.second[0] - p.first[0], p.second[1] - p.first[1]) for p in named), default=0.0
     )
+    checked_places(frame, places)
+    apart = [*places, *_places(named)]
+    return observe(frame, widest=widest, given=given, psf=psf, apart=apart)
+
+
+def checked_places(frame: Frame, places: Sequence[Place]) -> list[Place]:
+    """The places, all of them on the frame.
+
+    Raises
+    ------
+    InputError
+        One line for each that is not.
+    """
     rows, columns = frame.counts.shape
     lines = [
         mistake(
@@ -234,8 +247,7 @@ def _observe(
     ]
     if lines:
         raise InputError(*lines)
-    apart = [*places, *_places(named)]
-    return observe(frame, widest=widest, given=given, psf=psf, apart=apart)
+    return list(places)
 
 
 def _named(observation: Observation, named: Sequence[NamedPair]) -> list[_Seen]:

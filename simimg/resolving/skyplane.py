@@ -136,7 +136,7 @@ def sky_places(wcs: WCS, places: FloatArray) -> FloatArray:
                 sky = sky[:, ::-1]
         else:
             sky = np.asarray(wcs.celestial.all_pix2world(places, 0), dtype=np.float64)
-        if not _plain(wcs):
+        if not equatorial(wcs):
             try:
                 from astropy.coordinates import SkyCoord
                 from astropy.wcs.utils import wcs_to_celestial_frame
@@ -148,8 +148,8 @@ def sky_places(wcs: WCS, places: FloatArray) -> FloatArray:
     return np.radians(sky)
 
 
-def _plain(wcs: WCS) -> bool:
-    """Whether longitude and latitude are right ascension and declination of our day."""
+def equatorial(wcs: WCS) -> bool:
+    """Whether coordinates are right ascension and declination of our day (ICRS, FK5 J2000)."""
     kind = str(wcs.wcs.lngtyp).strip()
     system = str(wcs.wcs.radesys).strip()
     equinox = float(wcs.wcs.equinox)

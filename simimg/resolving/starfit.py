@@ -101,7 +101,9 @@ class Likelihood:
         self.cutouts = tuple(cutouts)
         self.stars = stars
         self.layout = Layout(
-            stars, [one.tilted for one in cutouts], [one.view.number for one in cutouts]
+            stars,
+            [one.tilted for one in cutouts],
+            [one.view.number * one.view.free for one in cutouts],
         )
         self.size = self.layout.size
         self.pixels = int(sum(cutout.used.sum() for cutout in self.cutouts))
