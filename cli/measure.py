@@ -4,23 +4,26 @@ from __future__ import annotations
 
 import textwrap
 from collections.abc import Mapping, Sequence
-from typing import TYPE_CHECKING, Any
+from typing import Any
 
 import click
 
 from simimg.errors import InputError
 from simimg_cli import options
-from simimg_cli.output import document, note, plain, say, table, warn
+from simimg_cli.answers import Answers, answers_document
+from simimg_cli.foreign import Wanted, frame_options
+from simimg_cli.output import note, say, table, warn
 from simimg_cli.progress import with_progress
-from simimg_cli.scenes import named
 from simimg_cli.trials import run_trials
 from simimg_cli.words import arcsec, probability, short, with_error
 
-if TYPE_CHECKING:
-    from simimg.frame import Frame
-
-
 MANY = 8  # pairs: of more, a table with a line for each
+_SOURCES = {
+    "extension": "the frame's extension",
+    "file": "the file given",
+    "stars": "the stars named",
+    "profile": "a profile of the frame's stars",
+}
 
 
 @click.command("measure")
@@ -47,6 +50,21 @@ MANY = 8  # pairs: of more, a table with a line for each
     help="Processes for the trials; all processors unless given. The result is the same.",
 )
 @options.changes
+@click.option(
+    "--together",
+    is_flag=True,
+    help="Fit the frames, which show one field, as if they were one: each with its own PSF, "
+    "background, small shift and transparency. Places are those of the first.",
+)
+@frame_options
+@click.option(
+    "--output",
+    "-o",
+    type=click.Path(),
+    metavar="TABLE",
+    help="Write a table, too, a row for each pair: .ecsv or .fits.",
+)
+@options.overwrite
 @options.as_json
 @options.quiet
 def command(
@@ -56,8 +74,12 @@ def command(
     workers: int | None,
     overrides: Sequence[str],
     without: Sequence[str],
+    together: bool,
+    output: str | None,
+    overwrite: bool,
     as_json: bool,
     quiet: bool,
+    **wanted: Any,
 ) -> None:
     """Measure pairs in FRAMES, and say whether they are resolved and how sure that is.
 
@@ -65,10 +87,14 @@ def command(
     order, then what is found in the frame. A frame that cannot be measured is reported, the others
     are measured all the same, and the exit code is 2.
 
+    Frames of other programs are measured alike. Their gain, read noise and coordinates are read
+    from the header under the usual keywords; what is assumed besides is said as a warning.
+
     With --trials a scene is given in place of frames (or a frame, which carries its scene).
     """
+    asked = Wanted(**wanted)
     if trials is not None:
-        if len(frames) > 1 or near:
+        if len(frames) > 1 or near or asked.anything or together or output is not None:
             raise click.UsageError("--trials takes one scene, and measures the pairs it names")
         run_trials(
             frames[0],
@@ -82,91 +108,87 @@ def command(
         return
     if overrides or without or workers is not None:
         raise click.UsageError("--set, --without and --workers go with --trials")
+    if together and len(frames) < 2:
+        raise click.UsageError("--together takes two frames or more")
+    if output is not None:
+        from simimg.resolving.recordtable import check_table
+
+        lines = check_table(output, overwrite=overwrite)
+        if lines:
+            raise InputError(*lines)
+    measured = Answers(near, asked)
     answers: list[dict[str, Any]] = []
     mistakes: list[str] = []
-    for path in with_progress(frames, "frames", quiet=quiet, lines=not as_json):
+    if together:
+        answers.append(measured.together(frames))
+    for path in () if together else with_progress(frames, "frames", quiet=quiet):
         try:
-            answer = _measured(path, near)
+            answers.append(measured.one(path))
         except InputError as error:
             mistakes += error.lines
             answers.append({"frame": path, "error": list(error.lines)})
-            continue
-        answers.append(answer)
-        if not as_json:
-            _print(answer, heading=len(frames) > 1, quiet=quiet)
-    if as_json and len(answers) > len(mistakes):
-        say(_document(answers))
+    good = [answer for answer in answers if "error" not in answer]
+    if as_json and good:
+        say(answers_document(answers))
+    elif not as_json:
+        _print(good, several=len(answers) > 1, quiet=quiet)
+    if output is not None and good:
+        measured.write(output, overwrite=overwrite)
     if mistakes:
         raise InputError(*mistakes)
-    if not as_json and not quiet and any(answer["simulated"] for answer in answers):
+    if not as_json and not quiet and any(answer["simulated"] for answer in good):
         from simimg.assembly.report import SIMULATION_NOTE
 
         note(f"note: {SIMULATION_NOTE}")
 
 
-def _measured(path: str, near: Sequence[tuple[float, float]]) -> dict[str, Any]:
-    """A frame's answer, for printing and for JSON."""
-    from simimg.frame import Frame
-
-    # Nothing slow is loaded for a frame that cannot be read.
-    frame = Frame.read(path)
-
-    from simimg.resolving.measure import measure_all
-
-    with named(path):
-        pairs = measure_all(frame, near=list(near) or None)
-    return {
-        "frame": path,
-        "scene_id": frame.scene_id,
-        "simulated": frame.simulated,
-        "warnings": _warnings(frame),
-        "pairs": [plain(pair.to_dict()) for pair in pairs],
-    }
-
-
-def _warnings(frame: Frame) -> list[str]:
-    if frame.wcs is None:
-        return ["no coordinates in the header: north is taken as up and east as left"]
-    return []
-
-
-def _document(answers: Sequence[dict[str, Any]]) -> str:
-    """One frame's answer as it is; of several a list of them."""
-    if len(answers) == 1:
-        own = ("scene_id", "simulated", "warnings")
-        rest = {key: value for key, value in answers[0].items() if key not in own}
-        return document(rest, **{key: answers[0][key] for key in own})
-    ids = {answer.get("scene_id") for answer in answers}
-    return document(
-        {"frames": answers},
-        scene_id=ids.pop() if len(ids) == 1 else None,
-        simulated=all(answer.get("simulated", False) for answer in answers),
-        warnings=[
-            f"{answer['frame']}: {text}"
-            for answer in answers
-            for text in answer.get("warnings", [])
-        ],
-    )
-
-
-def _print(answer: Mapping[str, Any], *, heading: bool, quiet: bool) -> None:
-    if heading:
-        say(f"{answer['frame']}:")
-    if not quiet:
-        warn(answer["warnings"])
-    if not answer["pairs"]:
-        say("nothing to measure: no pair is named, none was found, and no place was given")
-    if len(answer["pairs"]) > MANY:
-        _print_table(answer["pairs"])
+def _print(answers: Sequence[Mapping[str, Any]], *, several: bool, quiet: bool) -> None:
+    """The answers in words: of several frames a table of all their pairs."""
+    for answer in answers:
+        prefix = f"{answer['frame']}: " if several else ""
+        if not quiet:
+            warn(f"{prefix}{text}" for text in answer["warnings"])
+            _print_psf(answer, prefix)
+        if not answer["pairs"]:
+            say(f"{prefix}nothing to measure: no pair is named or found, and no place was given")
+    pairs = [pair for answer in answers for pair in answer["pairs"]]
+    if len(pairs) > MANY or (several and pairs):
+        _print_table(pairs, files=several)
         return
-    width = max((len(_name(pair)) for pair in answer["pairs"]), default=0)
-    for pair in answer["pairs"]:
+    width = max((len(_name(pair)) for pair in pairs), default=0)
+    for pair in pairs:
         _print_pair(pair, width)
 
 
-def _print_table(pairs: Sequence[Mapping[str, Any]]) -> None:
-    """A line for each of many pairs."""
-    columns = ("pair", "separation", "PA", "", "dm", "single star", "Rayleigh", "", "Sparrow", "")
+def _print_psf(answer: Mapping[str, Any], prefix: str) -> None:
+    """Where the PSF comes from, unless it is that of the frame's own scene."""
+    psf = answer["psf"]
+    if psf["source"] == "scene":
+        return
+    chi = psf["reduced_chi_square"]
+    judged = ""
+    if chi is not None:
+        stars = f"{psf['stars']} single star{'s' if psf['stars'] != 1 else ''}"
+        judged = f", reduced chi-square {short(chi)} in {stars}"
+    note(
+        f"{prefix}PSF from {_SOURCES[psf['source']]}, FWHM {arcsec(psf['fwhm_arcsec'], 3)}{judged}"
+    )
+
+
+def _print_table(pairs: Sequence[Mapping[str, Any]], *, files: bool) -> None:
+    """A line for each of many pairs, with its file where there are several."""
+    columns: tuple[str, ...] = (
+        "pair",
+        "separation",
+        "PA",
+        "",
+        "dm",
+        "single star",
+        "Rayleigh",
+        "",
+        "Sparrow",
+        "",
+    )
     rows = []
     for pair in pairs:
         separation, angle, difference = _geometry(pair)
@@ -175,6 +197,9 @@ def _print_table(pairs: Sequence[Mapping[str, Any]]) -> None:
         for criterion in ("rayleigh", "sparrow"):
             row += [pair[criterion]["verdict"], _chance(pair[criterion])]
         rows.append(row)
+    if files:
+        columns = ("file", *columns)
+        rows = [[pair["file"], *row] for pair, row in zip(pairs, rows)]
     table(columns, rows)
     if any(pair["ambiguous_180"] for pair in pairs):
         say("* the position angle may be half a turn off")

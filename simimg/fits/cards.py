@@ -227,7 +227,7 @@ def add_card(header: Header, keyword: str, value: object, comment: str = "") -> 
     note = ascii_text(comment)
     if isinstance(plain, str):
         shown = len(plain.replace("'", "''"))
-        room = 80 - 10 - 2 - max(shown, 8) - 3
+        room = 80 - 10 - max(shown + 2, 20) - 3
         # A text that fills its card goes on in CONTINUE cards, with its comment at their end.
         note = note[: max(room, 0)] if shown <= 68 else note[:60]
     else:

@@ -109,6 +109,43 @@ def write_frame(
             _write_image(handle, mask, simulated, "MASK", coordinates, mask_says)
 
 
+def write_table_file(
+    path: str | os.PathLike[str],
+    columns: Sequence[Column],
+    *,
+    name: str,
+    simulated: bool,
+    overwrite: bool = False,
+    says: Iterable[str] = (),
+) -> None:
+    """Write one binary table as a FITS file of its own.
+
+    Parameters
+    ----------
+    path : path
+    columns : sequence of Column
+        Of one length.
+    name : str
+        Of the extension.
+    simulated : bool
+        Whether the headers say ``SIMULATE = T``.
+    overwrite : bool
+        Whether a file of that name may be replaced.
+    says : sequence of str
+        Comments.
+
+    Raises
+    ------
+    InputError, RunError
+        As `simimg.newfile.new_file`.
+    """
+    rows = len(columns[0].values) if columns else 0
+    with new_file(path, overwrite=overwrite) as handle:
+        layout: dict[str, object] = {"BITPIX": (8, "no image"), "NAXIS": (0, "no image")}
+        write_hdu(handle, _header("IMAGE", layout, simulated, "", {}, ()), ())
+        _write_table(handle, columns, rows, simulated, name, says)
+
+
 def _write_image(
     handle: BinaryIO,
     image: AnyArray,

@@ -144,17 +144,16 @@ def psf_warnings(
         What was measured.
     """
     source, report = observation.sourced, quality.report
-    if isfinite(quality.misfit):
-        sure = quality.misfit > _SURE * quality.error
-        misfit = quality.misfit if sure else 0.0
+    sure = isfinite(quality.misfit) and quality.misfit > _SURE * quality.error
+    if sure and quality.misfit > source.noise:
+        misfit = quality.misfit
         cause = (
             f"the PSF leaves a reduced chi-square of {report.reduced_chi_square:.3g} in "
-            f"{report.stars} single star{'s' if report.stars != 1 else ''} of the frame"
+            f"{_count(report.stars, 'single star')} of the frame"
         )
     else:
         misfit = source.noise
-        number = len(source.stars)
-        cause = f"the PSF rests on {number} star{'s' if number != 1 else ''} and has their noise"
+        cause = f"the PSF rests on {_count(len(source.stars), 'star')} and has their noise"
     powers = [(name, signal_power(observation, one)) for name, one in seen if not one.empty]
     if not powers and isfinite(quality.typical):
         powers = [("a star of the frame", quality.typical)]
@@ -171,6 +170,10 @@ def psf_warnings(
     if not isfinite(quality.misfit) and source.source not in ("scene", "extension"):
         lines.append("no single star stands alone in the frame to judge the PSF by")
     return lines
+
+
+def _count(number: int, what: str) -> str:
+    return f"{number} {what}{'' if number == 1 else 's'}"
 
 
 def signal_power(observation: Observation, sighting: Sighting) -> float:
@@ -227,6 +230,11 @@ def _of_truth(observation: Observation) -> list[tuple[float, float, float]] | No
     if not rows.size:
         return []
     fwhm = observation.fwhm
+    # A PSF must not be judged by the stars that it was measured from.
+    own = np.zeros(rows.size, dtype=bool)
+    for place in observation.sourced.stars:
+        own |= np.hypot(x[rows] - place[0], y[rows] - place[1]) < fwhm
+    rows = rows[~own]
     others = np.flatnonzero(known)
     tree = cKDTree(np.column_stack([x[others], y[others]]))
     found: list[tuple[float, float, float]] = []

@@ -94,9 +94,11 @@ class TestMeasure:
         run("expose", scene, "-o", "n.fits", "--quiet", "--set", "exposure.count=2")
         result = run("measure", "n-000.fits", "n-001.fits")
         assert result.code == 0
-        assert [line for line in result.out.splitlines() if line.startswith("n-")] == [
-            "n-000.fits:",
-            "n-001.fits:",
+        lines = result.out.splitlines()
+        assert lines[0].split()[:3] == ["file", "pair", "separation"]
+        assert [line.split()[:2] for line in lines[1:3]] == [
+            ["n-000.fits", "SR-1"],
+            ["n-001.fits", "SR-1"],
         ]
         found = run("measure", "n-000.fits", "n-001.fits", "--json").json
         assert [one["frame"] for one in found["frames"]] == ["n-000.fits", "n-001.fits"]
@@ -104,6 +106,7 @@ class TestMeasure:
         assert found["simulated"] is True
         assert found["warnings"] == []
         assert len(found["frames"][1]["pairs"]) == 1
+        assert [pair["file"] for pair in found["pairs"]] == ["n-000.fits", "n-001.fits"]
 
     def test_one_bad_frame_of_two(self, run, frame):
         result = run("measure", frame, "missing.fits", "--json")

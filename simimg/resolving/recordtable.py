@@ -1,0 +1,183 @@
+"""Measurements as a table file: ECSV for people and programs, or a FITS binary table.
+
+One row a pair, with units and a word on every column; the same measurements give the same bytes.
+"""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Sequence
+from dataclasses import dataclass
+from io import StringIO
+from math import nan
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from simimg.errors import InputError, mistake
+from simimg.fits.hdus import Column
+from simimg.fits.writer import write_table_file
+from simimg.newfile import check_new_file, new_file
+from simimg.resolving.psfquality import PsfReport
+from simimg.resolving.records import PairMeasurement
+from simimg.version import __version__
+
+FORMATS = (".ecsv", ".fits")
+
+_PLACE = "pixels from 0 at the centre of the first pixel"
+# Attribute, unit, what it holds; a dot leads into a part of the record.
+_COLUMNS = (
+    ("label", "", "of the first star in TRUTH; empty for a place or a find"),
+    ("x", "pix", f"first star, {_PLACE}"),
+    ("y", "pix", f"first star, {_PLACE}"),
+    ("ra_deg", "deg", "first star, right ascension"),
+    ("dec_deg", "deg", "first star, declination"),
+    ("separation_arcsec", "arcsec", "of the two stars"),
+    ("separation_error_arcsec", "arcsec", "standard error"),
+    ("position_angle_deg", "deg", "of the second star, north through east"),
+    ("position_angle_error_deg", "deg", "standard error"),
+    ("magnitude_difference", "mag", "second minus first"),
+    ("magnitude_difference_error", "mag", "standard error"),
+    ("probability_single", "", "that a single star looks so double"),
+    ("elongated", "", "two stars, not resolved"),
+    ("ambiguous_180", "", "the angle may be half a turn off"),
+    ("saddle_ratio", "", "lowest between the stars over the lower peak"),
+    ("saddle_ratio_error", "", "standard error"),
+    ("rayleigh.limit_arcsec", "arcsec", "delivered limit, equal pair"),
+    ("rayleigh.probability", "", "that the pair lies beyond the limit"),
+    ("rayleigh.verdict", "", "resolved, borderline or unresolved"),
+    ("sparrow.limit_arcsec", "arcsec", "delivered limit, for the pair's difference"),
+    ("sparrow.probability", "", "that the pair lies beyond the limit"),
+    ("sparrow.verdict", "", "resolved, borderline or unresolved"),
+    ("truth.separation_arcsec", "arcsec", "as put into a simulated frame"),
+    ("truth.position_angle_deg", "deg", "as put into a simulated frame"),
+    ("truth.magnitude_difference", "mag", "as put into a simulated frame"),
+)
+
+
+@dataclass(frozen=True)
+class Row:
+    """A measured pair, the file that it was measured in, and the PSF with which."""
+
+    file: str
+    pair: PairMeasurement
+    psf: PsfReport
+
+
+def check_table(path: str | os.PathLike[str], *, overwrite: bool = False) -> list[str]:
+    """What forbids writing a table to this file; empty when nothing does."""
+    lines = check_new_file(path, overwrite=overwrite)
+    shown = os.fspath(path)
+    suffix = Path(shown).suffix.lower()
+    if suffix not in FORMATS and "\0" not in shown:
+        what = f"{suffix!r} is no format of a table" if suffix else "the name has no ending"
+        lines.append(mistake(shown, "", what, "end it in .ecsv or .fits"))
+    return lines
+
+
+def write_records(
+    rows: Sequence[Row],
+    path: str | os.PathLike[str],
+    *,
+    simulated: bool,
+    overwrite: bool = False,
+    warnings: Sequence[str] = (),
+) -> None:
+    """Write measurements as a table.
+
+    Parameters
+    ----------
+    rows : sequence of Row
+    path : path
+        Ends in .ecsv or .fits.
+    simulated : bool
+        Whether the file says so.
+    overwrite : bool, optional
+        Whether a file of that name may be replaced.
+    warnings : sequence of str, optional
+        Kept in the file.
+
+    Raises
+    ------
+    InputError
+        Another ending, or a file that exists or cannot be written.
+    RunError
+        The system refused; no part of the file is left behind.
+    """
+    lines = check_table(path, overwrite=overwrite)
+    if lines:
+        raise InputError(*lines)
+    columns = _columns(rows)
+    if Path(os.fspath(path)).suffix.lower() == ".fits":
+        write_table_file(
+            path,
+            columns,
+            name="PAIRS",
+            simulated=simulated,
+            overwrite=overwrite,
+            says=[f"warning: {text}" for text in warnings],
+        )
+        return
+    text = _ecsv(columns, simulated, warnings)
+    with new_file(path, overwrite=overwrite) as handle:
+        handle.write(text.encode("utf-8"))
+
+
+def _columns(rows: Sequence[Row]) -> list[Column]:
+    """The table's columns."""
+    columns = [Column("file", _values([row.file for row in rows], text=True), "", "measured in")]
+    for name, unit, says in _COLUMNS:
+        values = [_part(row.pair, name) for row in rows]
+        text = name in ("label", "rayleigh.verdict", "sparrow.verdict")
+        flag = name in ("elongated", "ambiguous_180")
+        held = np.array(values, dtype=bool) if flag else _values(values, text=text)
+        columns.append(Column(name.replace(".", "_"), held, unit, says))
+    columns.append(
+        Column("psf_source", _values([row.psf.source for row in rows], text=True), "", "of the PSF")
+    )
+    columns.append(
+        Column(
+            "psf_reduced_chi_square",
+            _values([row.psf.reduced_chi_square for row in rows]),
+            "",
+            "of the frame's single stars",
+        )
+    )
+    columns.append(
+        Column("advice", _values([row.pair.advice for row in rows], text=True), "", "in words")
+    )
+    return columns
+
+
+def _part(pair: PairMeasurement, name: str) -> Any:
+    """A value of a record, or NaN where the part that holds it is not there."""
+    value: Any = pair
+    for part in name.split("."):
+        value = None if value is None else getattr(value, part)
+    return nan if value is None else value
+
+
+def _values(values: Sequence[Any], *, text: bool = False) -> Any:
+    if text:
+        return np.array([str(value) for value in values], dtype=str)
+    return np.array(values, dtype=np.float64)
+
+
+def _ecsv(columns: Sequence[Column], simulated: bool, warnings: Sequence[str]) -> str:
+    """The table as ECSV."""
+    from astropy.table import Column as TableColumn
+    from astropy.table import Table
+
+    table = Table()
+    for column in columns:
+        table[column.name] = TableColumn(
+            column.values, unit=column.unit or None, description=column.comment
+        )
+    table.meta["CREATOR"] = f"simimg {__version__}"
+    table.meta["SIMULATE"] = simulated
+    if warnings:
+        table.meta["warnings"] = list(warnings)
+    stream = StringIO()
+    table.write(stream, format="ascii.ecsv")
+    return stream.getvalue()
