@@ -11,6 +11,7 @@ Angles in radians, frequencies in cycles per radian, PSFs per steradian at unit 
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import lru_cache
 from math import cos, isfinite, pi, sin
 
 import numpy as np
@@ -190,28 +191,41 @@ def centroid(transfer: Transfer) -> tuple[float, float]:
     return (float(slope[0]), float(slope[1]))
 
 
+@lru_cache(maxsize=16)
 def peak_place(transfer: Transfer) -> tuple[float, float]:
-    """Where the PSF is brightest (x, y; rad from the star's place); the origin for an even one."""
+    """Where the PSF is brightest (x, y; rad from the star's place); the origin for an even one.
+
+    The brightest of samples a quarter of the finest detail apart, then Newton's method on the
+    Fourier sum itself.
+    """
     if transfer.even:
         return (0.0, 0.0)
     x, y = centroid(transfer)
-    # Coarse over the core, then finer about the brightest sample, then a parabola.
-    step = 1.0 / effective_band(transfer)
-    for fine, half in ((0.25 * step, 64), (0.02 * step, 16), (0.002 * step, 16)):
-        image = sampled_psf(
-            transfer, pixel_scale=fine, oversampling=1, half_width_pixels=half, centre=(x, y)
-        )
-        row, column = divmod(int(np.argmax(image)), image.shape[1])
-        x += fine * (column - half)
-        y += fine * (row - half)
-    row = min(max(row, 1), 2 * half - 1)
-    column = min(max(column, 1), 2 * half - 1)
-    x += fine * _vertex(image[row, column - 1 : column + 2])
-    y += fine * _vertex(image[row - 1 : row + 2, column])
+    band = effective_band(transfer)
+    fine, half = 0.25 / band, 64
+    image = sampled_psf(
+        transfer, pixel_scale=fine, oversampling=1, half_width_pixels=half, centre=(x, y)
+    )
+    row, column = divmod(int(np.argmax(image)), image.shape[1])
+    x += fine * (column - half)
+    y += fine * (row - half)
+    nodes = half_lattice(transfer, band)
+    v = (np.arange(nodes) + 0.5) * (band / nodes)
+    u = np.concatenate([-v[::-1], v])
+    # The half plane of positive v: the other one adds the conjugate.
+    plane = np.asarray(transfer(u[None, :], v[:, None]), dtype=np.complex128)
+    wave_u, wave_v = 2j * pi * u, 2j * pi * v
+    for _ in range(6):
+        across = np.exp(wave_u * x)
+        sums = plane @ np.stack([across, wave_u * across, wave_u**2 * across], axis=1)
+        along = np.exp(wave_v * y)
+        whole, first, second = along @ sums, (wave_v * along) @ sums, (wave_v**2 * along) @ sums
+        slope = np.array([whole[1].real, first[0].real])
+        bend = np.array([[whole[2].real, first[1].real], [first[1].real, second[0].real]])
+        step = np.linalg.solve(bend, slope)
+        if not np.hypot(*step) < fine:
+            break
+        x, y = x - float(step[0]), y - float(step[1])
+        if np.hypot(*step) < 1e-9 / band:
+            break
     return (x, y)
-
-
-def _vertex(values: FloatArray) -> float:
-    """Place of a parabola's peak through three samples, in steps from the middle one."""
-    bend = float(values[0] - 2.0 * values[1] + values[2])
-    return 0.5 * float(values[0] - values[2]) / bend if bend < 0.0 else 0.0
