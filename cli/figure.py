@@ -31,6 +31,18 @@ if TYPE_CHECKING:
     metavar="X,Y",
     help="Show what is measured at this place: pixels from 0 at the centre of the first pixel.",
 )
+@click.option(
+    "--restored",
+    is_flag=True,
+    help="Add a view restored by Richardson and Lucy's iteration. It adds no information beyond "
+    "the fit.",
+)
+@click.option(
+    "--iterations",
+    type=click.IntRange(1, 1000),
+    metavar="N",
+    help="Iterations of the restored view; 30 unless given.",
+)
 @options.overwrite
 @options.as_json
 @options.quiet
@@ -39,6 +51,8 @@ def command(
     output: str,
     pair: str | None,
     near: tuple[float, float] | None,
+    restored: bool,
+    iterations: int | None,
     overwrite: bool,
     as_json: bool,
     quiet: bool,
@@ -49,6 +63,8 @@ def command(
     """
     if pair is not None and near is not None:
         raise click.UsageError("--pair and --near name two subjects; give one of them")
+    if iterations is not None and not restored:
+        raise click.UsageError("--iterations goes with --restored")
     from simimg.frame import Frame
     from simimg.newfile import check_new_file
 
@@ -58,10 +74,18 @@ def command(
     read = Frame.read(frame)
 
     from simimg.show.figure import write_figure
+    from simimg.show.restored import ITERATIONS
 
     with named(frame):
         chosen, measurement = _subject(read, pair, near)
-    caption = write_figure(read, output, overwrite=overwrite, pair=chosen, measurement=measurement)
+        caption = write_figure(
+            read,
+            output,
+            overwrite=overwrite,
+            pair=chosen,
+            measurement=measurement,
+            restored=(iterations or ITERATIONS) if restored else None,
+        )
     if as_json:
         payload = {"frame": frame, "figure": output, "caption": caption}
         say(document(payload, scene_id=read.scene_id, simulated=read.simulated))

@@ -43,7 +43,15 @@ def panel_titles(frame: Frame, subject: Subject) -> tuple[str, str]:
     return left, f"{label}: {separation}{_ARCSEC}\n{words}"
 
 
-def figure_caption(frame: Frame, subject: Subject, profile: Profile, setup: Setup | None) -> str:
+def figure_caption(
+    frame: Frame,
+    subject: Subject,
+    profile: Profile,
+    setup: Setup | None,
+    *,
+    iterations: int | None = None,
+    remark: str = "",
+) -> str:
     """The caption of a figure, one paragraph.
 
     Parameters
@@ -53,11 +61,15 @@ def figure_caption(frame: Frame, subject: Subject, profile: Profile, setup: Setu
     profile : Profile
     setup : Setup or None
         None where the frame carries no scene.
+    iterations : int, optional
+        Of the restored view that stands to the right of the frame, the profile below.
+    remark : str, optional
+        What is to be said of that view.
     """
     sentences = [
         _of_what(frame),
         *_setup_sentences(frame, setup),
-        *_panel_sentences(frame, subject, profile),
+        *_panel_sentences(frame, subject, profile, iterations, remark),
     ]
     if subject.measurement is not None:
         sentences += _verdict_sentences(subject.measurement, drawable(subject.label))
@@ -101,14 +113,22 @@ def _setup_sentences(frame: Frame, setup: Setup | None) -> list[str]:
     return [", ".join(stated) + "."] if stated else []
 
 
-def _panel_sentences(frame: Frame, subject: Subject, profile: Profile) -> list[str]:
+def _panel_sentences(
+    frame: Frame, subject: Subject, profile: Profile, iterations: int | None, remark: str
+) -> list[str]:
     left_edge, right_edge, bottom, top = subject.window
     whole = (top - bottom, right_edge - left_edge) == frame.counts.shape
     part = "the frame" if whole else "part of the frame"
-    left = f"Left: {part}, asinh stretch"
+    below = iterations is not None
+    left = f"{'Upper left' if below else 'Left'}: {part}, asinh stretch"
     if profile.fit is not None:
         left += ", crosses at the fitted stars"
     left += "." if subject.compass.known else "; it carries no directions."
+    if below:
+        left += (
+            f" Upper right: the same, restored by {iterations} iterations of Richardson and Lucy "
+            f"with the effective PSF; {remark}."
+        )
     if profile.offsets.size == 0:
         return [left]
     scale = subject.compass.scale
@@ -119,7 +139,10 @@ def _panel_sentences(frame: Frame, subject: Subject, profile: Profile) -> list[s
         else f"along position angle {subject.position_angle:.1f}{_DEG}"
     )
     through = _THROUGH.get(subject.kind) or drawable(subject.label)
-    right = f"Right: mean over a strip {width} wide through {through} {along}, with 1-sigma errors"
+    where = "Below" if below else "Right"
+    right = (
+        f"{where}: mean over a strip {width} wide through {through} {along}, with 1-sigma errors"
+    )
     if profile.fit is not None:
         stars = "two stars" if len(profile.fit.places) > 1 else "one star"
         right += f"; {stars} of the frame's own PSF fitted to the pixels"

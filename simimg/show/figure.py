@@ -1,11 +1,13 @@
 """The proposal figure: a frame, the profile along its pair's axis, and a caption with the verdict.
 
-Sized for two columns of a page (180 mm), as PNG, PDF or SVG; the same frame gives the same bytes.
+On request the frame stands beside a restored view of itself, with the profile below. Sized for two
+columns of a page (180 mm), as PNG, PDF or SVG; the same frame gives the same bytes.
 """
 
 from __future__ import annotations
 
 import os
+from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from simimg.frame import Frame
@@ -14,6 +16,7 @@ from simimg.show.caption import figure_caption, panel_titles
 from simimg.show.framepanel import draw_frame
 from simimg.show.profile import Profile, subject_profile
 from simimg.show.profilepanel import draw_profile
+from simimg.show.restored import REMARK, Restored, draw_restored, restore
 from simimg.show.setup import Setup, frame_setup
 from simimg.show.signal import Light, frame_light
 from simimg.show.subject import (
@@ -27,10 +30,26 @@ from simimg.show.subject import (
 if TYPE_CHECKING:
     from simimg.resolving.records import PairMeasurement
 
-_WIDTH, _HEIGHT = 180.0, 83.0  # mm
-_PANEL = (13.0, 11.0, 62.0, 62.0)  # left, bottom, width, height, mm
-_PROFILE = (113.0, 11.0, 65.0, 62.0)
+_WIDTH = 180.0  # mm
 _RESIDUAL = 13.0  # of the profile's height, mm
+
+_Box = tuple[float, float, float, float]
+
+
+@dataclass(frozen=True)
+class _Page:
+    """Where the panels stand: left, bottom, width, height in mm."""
+
+    height: float
+    plate: _Box
+    profile: _Box
+    restored: _Box | None = None
+
+
+_PLAIN = _Page(83.0, (13.0, 11.0, 62.0, 62.0), (113.0, 11.0, 65.0, 62.0))
+_WITH_RESTORED = _Page(
+    150.0, (13.0, 80.0, 60.0, 60.0), (16.0, 11.0, 161.0, 50.0), (98.0, 80.0, 60.0, 60.0)
+)
 
 
 def write_figure(
@@ -40,6 +59,7 @@ def write_figure(
     overwrite: bool = False,
     pair: str | int | None = None,
     measurement: PairMeasurement | None = None,
+    restored: int | None = None,
 ) -> str:
     """Draw a frame and the profile along its pair's axis, and write the figure to a file.
 
@@ -55,6 +75,8 @@ def write_figure(
         whose truth names no pair is shown whole, with a profile of its brightest object.
     measurement : PairMeasurement, optional
         What `simimg.measure` said of the pair; measured here unless given.
+    restored : int, optional
+        Iterations of a restored view beside the frame; none unless given.
 
     Returns
     -------
@@ -64,15 +86,19 @@ def write_figure(
     Raises
     ------
     InputError
-        Another ending, a file that exists or cannot be written, no such pair.
+        Another ending, a file that exists or cannot be written, no such pair; a restored view of a
+        frame whose PSF is not to be had.
     RunError
         The system refused; no part of the file is left behind.
     """
     file_format = figure_format(path, overwrite=overwrite)
     light, subject, profile, setup = figure_parts(frame, pair=pair, measurement=measurement)
-    caption = figure_caption(frame, subject, profile, setup)
+    view = None if restored is None else restore(frame, subject, iterations=restored)
+    caption = figure_caption(
+        frame, subject, profile, setup, iterations=restored, remark="" if view is None else REMARK
+    )
     with look():
-        figure = draw_figure(frame, light, subject, profile)
+        figure = draw_figure(frame, light, subject, profile, view)
         title = ("Simulated: " if frame.simulated else "") + (str(frame.value("OBJECT") or "frame"))
         save(
             figure,
@@ -105,24 +131,36 @@ def figure_parts(
     return light, subject, subject_profile(frame, light, subject, setup), setup
 
 
-def draw_figure(frame: Frame, light: Light, subject: Subject, profile: Profile) -> Any:
+def draw_figure(
+    frame: Frame,
+    light: Light,
+    subject: Subject,
+    profile: Profile,
+    restored: Restored | None = None,
+) -> Any:
     """The figure as a matplotlib object; to be called within `simimg.show.canvas.look`."""
     from matplotlib.backends.backend_agg import FigureCanvasAgg
     from matplotlib.figure import Figure
 
-    figure = Figure(figsize=(_WIDTH * MILLIMETRE, _HEIGHT * MILLIMETRE))
+    page = _PLAIN if restored is None else _WITH_RESTORED
+    figure = Figure(figsize=(_WIDTH * MILLIMETRE, page.height * MILLIMETRE))
     FigureCanvasAgg(figure)
 
     def panel(left: float, bottom: float, width: float, height: float) -> Any:
-        place = (left / _WIDTH, bottom / _HEIGHT, width / _WIDTH, height / _HEIGHT)
+        place = (left / _WIDTH, bottom / page.height, width / _WIDTH, height / page.height)
         return figure.add_axes(place)
 
     left_title, right_title = panel_titles(frame, subject)
-    plate = panel(*_PANEL)
+    plate = panel(*page.plate)
     plate.set_anchor("W")
     draw_frame(plate, light, subject, profile, simulated=frame.simulated)
     plate.set_title(left_title, loc="left", parse_math=False)
-    left, bottom, width, height = _PROFILE
+    if restored is not None and page.restored is not None:
+        sharp = panel(*page.restored)
+        sharp.set_anchor("W")
+        draw_restored(sharp, restored, subject)
+        sharp.set_title(f"Richardson-Lucy, {restored.iterations} iterations:\n{REMARK}", loc="left")
+    left, bottom, width, height = page.profile
     if profile.residuals is None:
         upper, below = panel(left, bottom, width, height), None
     else:
