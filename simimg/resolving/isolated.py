@@ -22,11 +22,11 @@ _PEAK = 6.0  # standard deviations of the smoothed background at which a peak is
 _MOST_PEAKS = 4000
 _MEASURED = 400  # of them, the brightest, whose width is measured
 _WIDEST = 60  # pixels from a peak to where it must have fallen to half
-_SIGNAL = 30.0  # signal to noise that a star must have
+_SIGNALS = (30.0, 12.0)  # signal to noise that a star must have; the second where none has
 _SPREAD = 0.22  # natural logarithm by which a star's width may differ from the most common
 _SHARP = 0.12  # mean of a hot pixel's four neighbours over it: a star has more
 _EDGE = 2.5  # FWHM to the frame's edge
-_WHOLE = 1.5  # FWHM within which every pixel must count
+_WHOLE, _FILLED = 1.5, 0.85  # FWHM within which this share of the pixels must count
 # Peaks of a neighbour over the star's own that are put up with, within 2.5 FWHM (rings of the PSF
 # itself have peaks there) and 5 FWHM; the later rows where too few stars are left.
 _COMPANY = ((0.04, 0.01), (0.08, 0.03), (0.15, 0.1))
@@ -40,7 +40,7 @@ class StarField:
     Attributes
     ----------
     electrons : ndarray, shape (rows, columns)
-        Above the background; 0 where `good` is false.
+        Above the background; filled in from around where `good` is false.
     good : ndarray of bool
     background : float
         Variance of a pixel without stars, electrons squared, above 0.
@@ -167,9 +167,10 @@ def _measured(
         width = sqrt(seen**2 - blurred)
         electrons = 1.13 * height * seen**2
         noise = sqrt(electrons + 2.3 * width**2 * field.background)
-        if electrons > _SIGNAL * noise:
-            found.append(Candidate(column, row, electrons, width))
-    return found
+        if electrons > _SIGNALS[-1] * noise:
+            found.append((electrons / noise, Candidate(column, row, electrons, width)))
+    bright = [one for signal, one in found if signal > _SIGNALS[0]]
+    return bright or [one for _, one in found]
 
 
 def _width(light: FloatArray, row: int, column: int) -> float | None:
@@ -205,7 +206,7 @@ def _common(stars: Sequence[Candidate]) -> float:
 
 
 def _whole(field: StarField, one: Candidate, width: float) -> bool:
-    """Whether a star is clear of the edge and has all its inner pixels."""
+    """Whether a star is clear of the edge and has nearly all its inner pixels."""
     rows, columns = field.good.shape
     edge, reach = _EDGE * width, ceil(_WHOLE * width)
     if not (edge <= one.x <= columns - 1 - edge and edge <= one.y <= rows - 1 - edge):
@@ -213,7 +214,7 @@ def _whole(field: StarField, one: Candidate, width: float) -> bool:
     box = field.good[
         max(0, one.y - reach) : one.y + reach + 1, max(0, one.x - reach) : one.x + reach + 1
     ]
-    return bool(box.all())
+    return bool(box.mean() >= _FILLED and field.good[one.y, one.x])
 
 
 def _alone(

@@ -135,7 +135,7 @@ class Observation:
         bottom, top = max(0, floor(y - half)), min(rows - 1, ceil(y + half))
         box = (slice(bottom, top + 1), slice(left, right + 1))
         electrons = self.electrons(box)
-        if self.backdrop is not None:
+        if self.backdrop is not None and electrons.size:
             rise = np.asarray(self.rise(box))
             electrons -= rise - rise.mean()
         return Cutout.of(

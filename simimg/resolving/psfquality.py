@@ -32,6 +32,7 @@ CERTAIN_FALL = 17.0
 _MOST = 20
 _WITHIN = 1.5  # FWHM about a star in which its pixels are judged
 _CUT = 2.5  # FWHM about a star that are fitted
+_FILLED = 0.8  # share of these that must count
 _SURE = 3.0  # standard errors by which a misfit must stand out
 _OUTLIER = 3.0  # times the median chi-square from which a star is something else
 _SIGNAL = 900.0  # square of the signal to noise that a star must have
@@ -251,12 +252,15 @@ def _of_truth(observation: Observation) -> list[tuple[float, float, float]] | No
 
 def _judge(observation: Observation, x: float, y: float, width: float) -> _Judged | None:
     """Fit one star and weigh what is left of it; None where it is faint, full or at the edge."""
+    if not observation.holds(x, y):
+        return None
     cutout = observation.cutout(x, y, max(_CUT * width, 4.0))
     rows, columns = cutout.electrons.shape
     across = cutout.x0 + np.arange(columns) - x
     along = (cutout.y0 + np.arange(rows) - y)[:, None]
     inside = np.hypot(across, along) <= max(_WITHIN * width, 1.5)
-    if not (cutout.used[inside] > 0.0).all() or inside.sum() < 9:
+    seen = inside & (cutout.used > 0.0)
+    if seen.sum() < max(9.0, _FILLED * inside.sum()):
         return None
     fit = fit_stars([cutout], places=[(x, y)])
     if hypot(*(fit.places[0] - (x, y))) > width:
@@ -266,8 +270,8 @@ def _judge(observation: Observation, x: float, y: float, width: float) -> _Judge
     model = likelihood.jacobian(vector, 0)[0].reshape(rows, columns)
     variance = np.maximum(np.maximum(model, 0.0) + cutout.variance, 1e-6)
     light = likelihood.star(vector, 0, fit.places[0], order=0)[0] * float(fit.electrons[0])
-    power = float((light**2 / variance)[inside].sum())
+    power = float((light**2 / variance)[seen].sum())
     if power < _SIGNAL:
         return None
     rest = (cutout.electrons - model) ** 2 / variance
-    return _Judged(float(rest[inside].sum()), int(inside.sum()) - 3, power)
+    return _Judged(float(rest[seen].sum()), int(seen.sum()) - 3, power)

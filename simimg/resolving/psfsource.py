@@ -301,6 +301,10 @@ def star_field(frame: Frame, readout: Readout) -> tuple[FloatArray, StarField]:
     background = (backdrop.level - readout.bias) * readout.gain
     variance = max((readout.gain * backdrop.noise) ** 2, readout.variance, 1e-9)
     above = np.where(good, electrons - background, 0.0)
+    if not good.all():
+        weight = ndimage.gaussian_filter(good.astype(np.float64), 1.0)
+        around = ndimage.gaussian_filter(above, 1.0) / np.maximum(weight, 1e-6)
+        above = np.where(good, above, np.where(weight > 0.2, around, 0.0))
     return electrons, StarField(above, good, variance)
 
 

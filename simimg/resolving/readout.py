@@ -38,6 +38,7 @@ _CLEAR = 5.0  # noises above zero from which a level is that of a sky that was l
 _COUNTED = 2.0  # counts of noise from which pixels may well be counts of one electron each
 _ELECTRONS = 25.0  # of background where nothing tells how many: Gaussian enough
 _PLATEAU = 3  # pixels of the very highest value that make it the top of the scale
+_NOISELESS, _ASSUMED = 1e-6, 1e-4  # noise over the brightest pixel: none at all, assumed then
 _ODD = 0.25  # relative difference of noise found and noise told that is worth a line
 
 
@@ -108,14 +109,15 @@ def foreign_readout(frame: Frame, given: Given) -> Readout:
         raise InputError(mistake("frame", "", what, "give --saturation, or another image"))
     backdrop = find_backdrop(frame.counts, good)
     whole = _whole_numbers(frame.counts, good)
-    gain = _gain(frame, given, backdrop, whole, notes)
+    brightest = float(frame.counts[good].max()) - backdrop.level
+    quiet = backdrop.noise <= _NOISELESS * brightest
+    gain = _gain(frame, given, backdrop, 0.0 if quiet else backdrop.noise, whole, notes)
     bias, read_noise = _overscan(frame, given, gain, backdrop)
-    scatter = (gain * backdrop.noise) ** 2
-    if scatter == 0.0:
-        brightest = float(np.max(frame.counts, where=good, initial=-inf)) - backdrop.level
-        scatter = max((1e-4 * gain * brightest) ** 2, 1e-12)
-        notes.append("the background has no noise: one ten-thousandth of the brightest is assumed")
     rounding = gain**2 / 12.0 if whole else 0.0
+    scatter = (gain * backdrop.noise) ** 2
+    if quiet or scatter == 0.0:
+        scatter = max((gain * _ASSUMED * brightest) ** 2, rounding, 1e-12)
+        notes.append("the background has no noise: one ten-thousandth of the brightest is assumed")
     if bias is None:
         bias, variance = _from_scatter(backdrop, gain, scatter, read_noise, rounding, notes=notes)
     else:
@@ -182,7 +184,14 @@ def _barred(frame: Frame, notes: list[str]) -> AnyArray | None:
     return frozen(outside if barred is None else barred | outside)
 
 
-def _gain(frame: Frame, given: Given, backdrop: Backdrop, whole: bool, notes: list[str]) -> float:
+def _gain(
+    frame: Frame,
+    given: Given,
+    backdrop: Backdrop,
+    noise: float,
+    whole: bool,
+    notes: list[str],
+) -> float:
     """Electrons to the count: given, told, or assumed."""
     if given.gain is not None:
         return given.gain
@@ -197,19 +206,20 @@ def _gain(frame: Frame, given: Given, backdrop: Backdrop, whole: bool, notes: li
     notes += said
     if told is not None:
         return told.value * seconds
-    noise, level = backdrop.noise, backdrop.level
+    level = backdrop.level
+    # Fractions of a count are the mark of a frame that has been calibrated: no bias is left in it.
+    if not whole and level > _CLEAR * noise > 0.0:
+        notes.append(
+            "the gain is not known: the background's scatter is taken as that of its photons, on "
+            "which the errors and probabilities rest"
+        )
+        return level / noise**2
     if unit == "adu" or whole or noise * seconds >= _COUNTED or noise == 0.0:
         notes.append(
             "the gain is not known: 1 electron to the count is assumed, on which the errors and "
             "probabilities rest"
         )
         return seconds
-    if level > _CLEAR * noise:
-        notes.append(
-            "the gain is not known: the background's scatter is taken as that of its photons, on "
-            "which the errors and probabilities rest"
-        )
-        return level / noise**2
     notes.append(
         "the gain is not known and the sky has been taken off: the stars' own photon noise is a "
         "guess, on which the errors and probabilities rest"

@@ -137,7 +137,8 @@ def _filled(seen: Observation, box: tuple[slice, slice]) -> FloatArray:
         return np.asarray(electrons)
     weight = ndimage.gaussian_filter(good.astype(np.float64), 1.5)
     around = ndimage.gaussian_filter(electrons, 1.5) / np.maximum(weight, 1e-6)
-    return np.where(good, electrons, around)
+    far = float(np.median(electrons[good])) if good.any() else 0.0
+    return np.where(good, electrons, np.where(weight > 0.05, around, far))
 
 
 def draw_restored(axes: Any, restored: Restored, subject: Subject) -> None:
