@@ -70,6 +70,18 @@ def _windows(factor: FloatArray) -> FloatArray:
     )
 
 
+def _gaussian_nodes(sigma: float, fwhm: float) -> tuple[FloatArray, FloatArray]:
+    """Shifts and weights that stand for a Gaussian convolution of a PSF of some width."""
+    if sigma < 0.3 * fwhm:
+        nodes, weights = np.polynomial.hermite_e.hermegauss(9)
+        return sigma * nodes, weights / weights.sum()
+    step = min(0.9 * sigma, 0.4 * fwhm)
+    count = math.ceil(4.5 * sigma / step)
+    shifts = step * np.arange(-count, count + 1.0)
+    weights = np.exp(-0.5 * (shifts / sigma) ** 2)
+    return shifts, weights / weights.sum()
+
+
 @dataclass(frozen=True, eq=False)
 class PsfModel:
     """An effective PSF that can be evaluated, with derivatives, at exact sub-pixel places.
@@ -195,6 +207,42 @@ class PsfModel:
         pairs = _PLANES[: (1, 3, 6)[order]]
         result = np.empty((len(pairs), rows, columns))
         for plane, (in_x, in_y) in zip(result, pairs):
+            np.matmul(along[:, in_y], across[:, in_x].T, out=plane)
+        return result
+
+    def blurred(
+        self, x: float, y: float, *, columns: int, rows: int, variance: float
+    ) -> FloatArray:
+        """Return the PSF convolved with a round Gaussian, and its derivatives, as `evaluate` does.
+
+        The convolution is a sum over shifted PSFs, by Gauss-Hermite nodes where the Gaussian is
+        narrow and by the trapezoidal rule (whose error falls exponentially) where it is not. By the
+        heat equation the derivative by the variance is half the Laplacian, to which the second
+        derivatives add; below a variance of 0 the PSF goes on along it.
+
+        Parameters
+        ----------
+        x, y, columns, rows
+            As for `evaluate`.
+        variance : float
+            Of the Gaussian along each axis, pixels squared.
+
+        Returns
+        -------
+        ndarray, shape (6, rows, columns)
+        """
+        if variance <= 0.0:
+            planes = self.evaluate(x, y, columns=columns, rows=rows, order=2)
+            if variance < 0.0:
+                planes[0] += 0.5 * variance * (planes[3] + planes[5])
+            return planes
+        shifts, weights = _gaussian_nodes(math.sqrt(variance), self.fwhm)
+        across = along = np.zeros(())
+        for shift, weight in zip(shifts, weights):
+            across = across + weight * self._along(self._right, x + shift, columns, 2)
+            along = along + weight * self._along(self._left, y + shift, rows, 2)
+        result = np.empty((6, rows, columns))
+        for plane, (in_x, in_y) in zip(result, _PLANES):
             np.matmul(along[:, in_y], across[:, in_x].T, out=plane)
         return result
 
