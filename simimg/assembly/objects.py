@@ -17,31 +17,20 @@ import numpy as np
 from simimg.arrays import AnyArray, FloatArray
 from simimg.assembly.basis import FOLLOWED
 from simimg.assembly.brightness import Photometry, photometry
-from simimg.assembly.colours import colour_keys, kelvin_kinds
+from simimg.assembly.catalogues import catalogue_rows
+from simimg.assembly.colours import colour_keys
 from simimg.assembly.motion import field_turn, moved_points, object_trail
 from simimg.assembly.orbits import pair_place
 from simimg.assembly.places import FieldGeometry, field_geometry
+from simimg.assembly.shapes import sky_shape
 from simimg.assembly.train import Train, assemble_train
-from simimg.errors import InputError, mistake
 from simimg.imaging.sources import PlacedShape, Points, SkyShape, Sources
 from simimg.scene.model import Scene
 from simimg.scene.objects import (
-    Catalogue,
-    Disc,
-    Galaxy,
     Luminous,
     Pair,
-    Picture,
     Placed,
-    Ring,
 )
-from simimg.sky.catalogues import read_catalogue
-from simimg.sky.disc import DiscShape
-from simimg.sky.mosaic import PictureShape
-from simimg.sky.phase import PhaseDiscShape
-from simimg.sky.pictures import read_picture
-from simimg.sky.ring import RingShape
-from simimg.sky.sersic import SersicShape
 
 SHAPE_KEYS = (
     "sersic_index",
@@ -232,7 +221,7 @@ def inventory(scene: Scene, *, train: Train | None = None) -> Inventory:
                         ),
                         "magnitude": np.nan if one.magnitude is None else one.magnitude,
                         "keys": {k: getattr(one, k) for k in SHAPE_KEYS if hasattr(one, k)},
-                        "shape": _shape(scene, f"{kind}[{number}]", one, geometry),
+                        "shape": sky_shape(scene, f"{kind}[{number}]", one, geometry),
                     }
                 ]
             for row, colour in zip(made, colours, strict=True):
@@ -246,7 +235,7 @@ def inventory(scene: Scene, *, train: Train | None = None) -> Inventory:
     for name in ("x", "y", "electrons", "magnitude", "separation", "position_angle"):
         columns[name] = [np.array([r.get(name, np.nan) for r in rows], dtype=np.float64)]
     for number, catalogue in enumerate(scene.catalogue):
-        part = _catalogue_rows(scene, number, catalogue, geometry, light)
+        part = catalogue_rows(scene, number, catalogue, geometry, light)
         for name, values in columns.items():
             values.append(part[name])
     joined = {name: np.concatenate(values) for name, values in columns.items()}
@@ -321,110 +310,3 @@ def _pair_rows(
         }
         for star in (0, 1)
     ]
-
-
-def _shape(scene: Scene, key: str, one: Placed, geometry: FieldGeometry) -> SkyShape | None:
-    """The shape of an object in the detector's axes; None for a star."""
-    if isinstance(one, Galaxy):
-        angle = geometry.direction(one.position_angle)
-        return SersicShape(one.effective_radius, one.sersic_index, one.axis_ratio, angle)
-    if isinstance(one, Disc):
-        angle = geometry.direction(one.position_angle)
-        if one.phase_angle == 0.0:
-            return DiscShape(one.diameter, one.limb_darkening, one.axis_ratio, angle)
-        return PhaseDiscShape(
-            one.diameter, one.limb_darkening, one.phase_angle, one.axis_ratio, angle
-        )
-    if isinstance(one, Ring):
-        angle = geometry.direction(one.position_angle)
-        return RingShape(one.inner_diameter, one.outer_diameter, one.inclination, angle)
-    if isinstance(one, Picture):
-        source = scene.inputs[one.file]
-        values = read_picture(source.read(), source.name)
-        up = geometry.direction(one.position_angle)
-        try:
-            return PictureShape(
-                values, one.width / values.shape[1], up - pi / 2.0, geometry.mirrored
-            )
-        except ValueError as error:
-            line = mistake(
-                scene.name,
-                f"{key}.file",
-                f"{source.name}: {error}",
-                "give a picture with some light",
-            )
-            raise InputError(line) from error
-    return None
-
-
-def _catalogue_rows(
-    scene: Scene,
-    number: int,
-    catalogue: Catalogue,
-    geometry: FieldGeometry,
-    light: Photometry,
-) -> dict[str, AnyArray]:
-    """The stars of a catalogue as columns."""
-    source = scene.inputs[catalogue.file]
-    table = read_catalogue(
-        source.read(), source.name, columns=catalogue.columns, units=catalogue.units
-    )
-    if "x" in table:
-        x, y = table["x"], table["y"]
-    elif "ra" in table:
-        try:
-            x, y = geometry.from_sky(table["ra"], table["dec"])
-        except ValueError as error:
-            line = mistake(
-                scene.name,
-                f"catalogue[{number}].file",
-                f"{source.name}: {error}",
-                "point [pointing] at the catalogue's field",
-            )
-            raise InputError(line) from error
-    else:
-        x, y = geometry.to_pixels(table["east"], table["north"])
-    size = x.size
-    nothing = np.full(size, np.nan)
-    magnitude = table.get("magnitude", nothing)
-    electrons = table.get("electrons")
-    colour = _catalogue_kinds(scene, number, table.get("temperature"), size)
-    if electrons is None:
-        electrons = light.electrons(
-            magnitude, colour, band=catalogue.magnitude_band, system=catalogue.magnitude_system
-        )
-    label = table.get("label")
-    if label is None:
-        stem = catalogue.label or f"catalogue-{number + 1}"
-        width = len(str(size))
-        numbers = np.char.zfill(np.arange(1, size + 1).astype(str), width)
-        label = np.char.add(f"{stem}-", numbers)
-    return {
-        "label": np.asarray(label, dtype=str),
-        "kind": np.full(size, "star"),
-        "partner": np.full(size, -1, dtype=np.int64),
-        "colour": colour,
-        "x": np.asarray(x, float),
-        "y": np.asarray(y, float),
-        "electrons": np.asarray(electrons, float),
-        "magnitude": np.asarray(magnitude, float),
-        "separation": nothing,
-        "position_angle": nothing,
-    }
-
-
-def _catalogue_kinds(
-    scene: Scene, number: int, temperatures: FloatArray | None, size: int
-) -> AnyArray:
-    if temperatures is None:
-        return np.zeros(size, dtype=np.int64)
-    try:
-        return kelvin_kinds(temperatures)
-    except ValueError as error:
-        line = mistake(
-            scene.name,
-            f"catalogue[{number}].columns.temperature",
-            str(error),
-            "give temperatures in kelvin",
-        )
-        raise InputError(line) from error
