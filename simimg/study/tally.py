@@ -146,7 +146,9 @@ def fraction(resolved: int, trials: int) -> Fraction:
     half = sqrt(share * (1.0 - share) / trials + square / (4.0 * trials**2)) * _NORMAL
     half /= 1.0 + square / trials
     return Fraction(
-        fraction_resolved=share, low=max(0.0, middle - half), high=min(1.0, middle + half)
+        fraction_resolved=share,
+        low=max(0.0, middle - half) if resolved > 0 else 0.0,
+        high=min(1.0, middle + half) if resolved < trials else 1.0,
     )
 
 

@@ -12,9 +12,11 @@ from __future__ import annotations
 
 import multiprocessing
 import signal
+import threading
 from collections.abc import Callable, Iterator
 from concurrent.futures import ProcessPoolExecutor, as_completed
 from concurrent.futures.process import BrokenProcessPool
+from contextlib import contextmanager
 from dataclasses import dataclass, fields, is_dataclass
 from math import isfinite
 from typing import Any
@@ -36,6 +38,7 @@ from simimg.study.stand import Setup, Stand
 from simimg.study.tally import Tally, tally
 
 Progress = Callable[[int, int], None]
+Take = Callable[[range, FloatArray], None]
 _CHUNK = 16  # trials that a process takes at a time
 _STRAY = 1.0  # standard deviations of other objects' light that would not show
 
@@ -174,40 +177,42 @@ def _summed(
 def _all(setup: Setup, count: int, workers: int, progress: Progress | None) -> FloatArray:
     """Every trial, shape (trials, kinds, pairs, figures)."""
     chunks = [range(begin, min(begin + _CHUNK, count)) for begin in range(0, count, _CHUNK)]
-    done = 0
     results: dict[int, FloatArray] = {}
-    here = workers == 1 or len(chunks) == 1
-    for chunk, part in _here(setup, chunks) if here else _elsewhere(setup, chunks, workers):
+
+    def take(chunk: range, part: FloatArray) -> None:
         results[chunk.start] = part
-        done += len(chunk)
         if progress is not None:
-            progress(done, count)
+            progress(sum(len(one) for one in results.values()), count)
+
+    if workers == 1 or len(chunks) == 1:
+        _here(setup, chunks, take)
+    else:
+        _elsewhere(setup, chunks, min(workers, len(chunks)), take)
     return np.concatenate([results[chunk.start] for chunk in chunks])
 
 
-def _here(setup: Setup, chunks: list[range]) -> Iterator[tuple[range, FloatArray]]:
+def _here(setup: Setup, chunks: list[range], take: Take) -> None:
     from threadpoolctl import threadpool_limits
 
     # The same library on the same number of threads gives the same bits.
     with threadpool_limits(limits=1):
         stand = Stand(setup)
         for chunk in chunks:
-            yield chunk, _run(stand, chunk)
+            take(chunk, _run(stand, chunk))
 
 
-def _elsewhere(
-    setup: Setup, chunks: list[range], workers: int
-) -> Iterator[tuple[range, FloatArray]]:
+def _elsewhere(setup: Setup, chunks: list[range], workers: int, take: Take) -> None:
     pool = ProcessPoolExecutor(
-        min(workers, len(chunks)),
+        workers,
         mp_context=multiprocessing.get_context("spawn"),
         initializer=_begin,
         initargs=(setup,),
     )
     try:
-        waiting = {pool.submit(_run_here, chunk): chunk for chunk in chunks}
+        with _holding_interrupts():
+            waiting = {pool.submit(_run_here, chunk): chunk for chunk in chunks}
         for future in as_completed(waiting):
-            yield waiting[future], future.result()
+            take(waiting.pop(future), future.result())
     except BrokenProcessPool as error:
         raise RunError(
             "a process of the trials could not start or was stopped; try one worker, and guard the "
@@ -217,14 +222,40 @@ def _elsewhere(
         pool.shutdown(cancel_futures=True)
 
 
+@contextmanager
+def _holding_interrupts() -> Iterator[None]:
+    """Let an interrupt wait, and the processes started here hear none: they inherit the mask.
+
+    One in the midst of starting a process would leave it behind.
+    """
+    main = threading.current_thread() is threading.main_thread()
+    if not (main and hasattr(signal, "pthread_sigmask")):
+        yield
+        return
+    heard = False
+
+    def hear(*_: object) -> None:
+        nonlocal heard
+        heard = True
+
+    handler = signal.signal(signal.SIGINT, hear)
+    mask = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
+    try:
+        yield
+    finally:
+        signal.pthread_sigmask(signal.SIG_SETMASK, mask)
+        signal.signal(signal.SIGINT, signal.SIG_DFL if handler is None else handler)
+        if heard:
+            signal.raise_signal(signal.SIGINT)
+
+
 _stands: list[Stand] = []
 
 
 def _begin(setup: Setup) -> None:
-    """Set up a process; interrupts are for the one that started it."""
+    """Set up a process."""
     from threadpoolctl import threadpool_limits
 
-    signal.signal(signal.SIGINT, signal.SIG_IGN)
     threadpool_limits(limits=1)
     _stands[:] = [Stand(setup)]
 

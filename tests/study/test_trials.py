@@ -1,6 +1,8 @@
 """Trials of pairs: against the bound, the limits, single measurements, and themselves."""
 
 import math
+import os
+import signal
 
 import numpy as np
 import pytest
@@ -8,7 +10,7 @@ from numpy.testing import assert_allclose
 
 import simimg
 from simimg.errors import InputError
-from simimg.study.trials import trials
+from simimg.study.trials import _holding_interrupts, trials
 from tests.study.pairs import AIR, SPACE, pair_scene
 
 ARCSEC = np.pi / 180.0 / 3600.0
@@ -135,6 +137,23 @@ def test_workers_change_nothing(tmp_path):
     assert trials(scene, count=40, workers=2) == alone
     assert seen[-1] == (40, 40)
     assert [done for done, _ in seen] == sorted({done for done, _ in seen})
+
+
+def test_an_interrupt_waits_while_processes_start():
+    reached = []
+
+    def start():
+        with _holding_interrupts():
+            signal.raise_signal(signal.SIGINT)
+            os.kill(os.getpid(), signal.SIGINT)
+            reached.append("the end")
+        reached.append("too far")
+
+    with pytest.raises(KeyboardInterrupt):
+        start()
+    assert reached == ["the end"]
+    assert signal.getsignal(signal.SIGINT) is signal.default_int_handler
+    assert signal.SIGINT not in signal.pthread_sigmask(signal.SIG_BLOCK, ())
 
 
 def test_seed_changes_the_draws(tmp_path):
