@@ -11,7 +11,7 @@ In the frame's own counts; pixels count from 0 at the centre of the first.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import ceil, sqrt
 
 import numpy as np
@@ -47,6 +47,8 @@ class Backdrop:
         Of the blocks, gaps filled, smoothed.
     side : int
         Of a block, pixels.
+    slope : (float, float)
+        Of the plane that follows the levels best, counts to the pixel along x and y.
     """
 
     level: float
@@ -55,6 +57,7 @@ class Backdrop:
     slant: float
     levels: FloatArray
     side: int
+    slope: tuple[float, float] = (0.0, 0.0)
 
     @property
     def even(self) -> bool:
@@ -62,7 +65,23 @@ class Backdrop:
         return self.slant <= max(_EVEN * 1.3 * self.noise / self.side, 0.02 * self.noise)
 
     def rise(self, box: tuple[slice, slice], shape: tuple[int, int]) -> FloatArray:
-        """Background over a box less `level`, counts: linear between the blocks' middles.
+        """The plane over a box, 0 in the middle of the frame, counts: for fits.
+
+        A fit has a plane of its own; what bends at every block would trouble it.
+
+        Parameters
+        ----------
+        box : (slice, slice)
+            Rows and columns.
+        shape : (rows, columns)
+            Of the frame.
+        """
+        y = np.arange(*box[0].indices(shape[0])) - 0.5 * (shape[0] - 1)
+        x = np.arange(*box[1].indices(shape[1])) - 0.5 * (shape[1] - 1)
+        return np.asarray(self.slope[0] * x + self.slope[1] * y[:, None])
+
+    def relief(self, box: tuple[slice, slice], shape: tuple[int, int]) -> FloatArray:
+        """Background over a box less `level`, counts, linear between blocks: for finding.
 
         Parameters
         ----------
@@ -130,7 +149,7 @@ def find_backdrop(counts: AnyArray, good: AnyArray) -> Backdrop:
     variances = variances[variances <= 2.0 * middle] if middle > 0.0 else variances
     pixels = float(kept[chosen].sum())
     low, high = np.percentile(levels, [5.0, 95.0])
-    return Backdrop(
+    backdrop = Backdrop(
         level=float(level[chosen].mean()),
         noise=float(np.sqrt(variances.mean())),
         error=1.0 / sqrt(2.0 * max(pixels, 2.0)),
@@ -138,6 +157,28 @@ def find_backdrop(counts: AnyArray, good: AnyArray) -> Backdrop:
         levels=frozen(levels),
         side=side,
     )
+    if min(grid) < 3 or backdrop.even:
+        return backdrop
+    return replace(backdrop, slope=_slope(levels, down, along))
+
+
+def _slope(levels: FloatArray, down: AnyArray, along: AnyArray) -> tuple[float, float]:
+    """Slope of the plane through the blocks' levels, those that stars raise left out."""
+    y, x = np.meshgrid(down, along, indexing="ij")
+    design = np.stack([np.ones(levels.size), x.ravel(), y.ravel()], axis=1).astype(np.float64)
+    values = levels.ravel()
+    keep = np.ones(values.size, dtype=bool)
+    solution: FloatArray = np.zeros(3)
+    for _ in range(10):
+        solution = np.linalg.lstsq(design[keep], values[keep], rcond=None)[0]
+        rest = values - design @ solution
+        spread = 1.4826 * float(np.median(np.abs(rest[keep] - np.median(rest[keep]))))
+        # Stars only raise a level: the high side is cut closer.
+        new = (rest < 1.5 * spread) & (rest > -3.0 * spread)
+        if spread == 0.0 or new.sum() < 6 or (new == keep).all():
+            break
+        keep = new
+    return float(solution[1]), float(solution[2])
 
 
 def _planes(

@@ -100,16 +100,12 @@ class Observation:
         """Electrons above the bias of a box of the frame (rows, columns)."""
         return (np.asarray(self.frame.counts[box], dtype=np.float64) - self.bias) * self.gain
 
-    def rise(self, box: tuple[slice, slice] = (slice(None), slice(None))) -> FloatArray | float:
-        """Electrons by which the background of a box is above that where it is darkest."""
+    def flattened(self, box: tuple[slice, slice] = (slice(None), slice(None))) -> FloatArray:
+        """Electrons of a box with an even background: for finding and showing, not for fits."""
         if self.backdrop is None:
-            return 0.0
+            return self.electrons(box)
         rows, columns = self.frame.counts.shape
-        return self.gain * self.backdrop.rise(box, (rows, columns))
-
-    def flattened(self) -> FloatArray:
-        """Electrons of the whole frame with an even background: for finding, not for fitting."""
-        return self.electrons() - self.rise()
+        return self.electrons(box) - self.gain * self.backdrop.relief(box, (rows, columns))
 
     def usable(self, box: tuple[slice, slice] = (slice(None), slice(None))) -> AnyArray:
         """Whether the pixels of a box are finite and neither saturated nor bad."""
@@ -136,7 +132,7 @@ class Observation:
         box = (slice(bottom, top + 1), slice(left, right + 1))
         electrons = self.electrons(box)
         if self.backdrop is not None and electrons.size:
-            rise = np.asarray(self.rise(box))
+            rise = self.gain * self.backdrop.rise(box, (rows, columns))
             electrons -= rise - rise.mean()
         return Cutout.of(
             electrons,

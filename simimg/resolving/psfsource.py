@@ -296,11 +296,11 @@ def star_field(frame: Frame, readout: Readout) -> tuple[FloatArray, StarField]:
     backdrop = readout.backdrop or find_backdrop(counts, good)
     everywhere = (slice(None), slice(None))
     shape = (counts.shape[0], counts.shape[1])
-    level = np.where(good, counts, backdrop.level) - backdrop.rise(everywhere, shape)
-    electrons = (level - readout.bias) * readout.gain
-    background = (backdrop.level - readout.bias) * readout.gain
+    known = np.where(good, counts, backdrop.level).astype(np.float64)
+    electrons = (known - backdrop.rise(everywhere, shape) - readout.bias) * readout.gain
     variance = max((readout.gain * backdrop.noise) ** 2, readout.variance, 1e-9)
-    above = np.where(good, electrons - background, 0.0)
+    above = (known - backdrop.relief(everywhere, shape) - backdrop.level) * readout.gain
+    above[~good] = 0.0
     if not good.all():
         weight = ndimage.gaussian_filter(good.astype(np.float64), 1.0)
         around = ndimage.gaussian_filter(above, 1.0) / np.maximum(weight, 1e-6)

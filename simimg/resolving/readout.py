@@ -248,7 +248,10 @@ def _overscan(
         return bias, read_noise
     middle = float(np.median(values))
     if read_noise is None:
-        read_noise = gain * 1.4826 * float(np.median(np.abs(values - middle)))
+        # Whole counts: a median deviation would come in whole steps.
+        spread = 1.4826 * float(np.median(np.abs(values - middle)))
+        near = values[np.abs(values - middle) <= 4.0 * max(spread, 1.0)]
+        read_noise = gain * float(near.std())
     return (middle if bias is None else bias), read_noise
 
 

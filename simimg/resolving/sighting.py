@@ -113,6 +113,9 @@ def look(
     sighting = _look_once(observation, place, radius, neighbours)
     if known is not None:
         return _let_go(observation, sighting, radius)
+    beyond = None if other is not None else _beyond(observation, sighting, radius)
+    if beyond is not None:
+        return beyond
     for _ in range(_ROUNDS):
         found = _around(observation, sighting, radius)
         if _same(found, neighbours):
@@ -122,6 +125,27 @@ def look(
     if other is None and sighting.probability_single >= SURELY_DOUBLE:
         return _beside(observation, sighting) or sighting
     return _let_go(observation, sighting, radius)
+
+
+def _beyond(observation: Observation, sighting: Sighting, radius: float) -> Sighting | None:
+    """A companion just outside the disc, whose light holds the second star to the rim.
+
+    Left there, it would pass for a neighbour, and the star at the rim for the companion.
+    """
+    double = sighting.double
+    if double is None or not sighting.probability_single < SURELY_DOUBLE:
+        return None
+    if hypot(*(double.places[1] - double.places[0])) < 0.999 * radius:
+        return None
+    free = fit_stars(sighting.cutouts, places=double.places, electrons=double.electrons)
+    apart = hypot(*(free.places[1] - free.places[0]))
+    if not radius < apart <= NEXT * observation.fwhm or free.electrons.min() <= 0.0:
+        return None
+    places = [(float(x), float(y)) for x, y in free.places]
+    if free.deviance > double.deviance or not all(observation.holds(*place) for place in places):
+        return None
+    wide = replace(_look_twice(observation, places[0], places[1], None), place=sighting.place)
+    return wide if wide.probability_single < SURELY_DOUBLE else None
 
 
 def _let_go(observation: Observation, sighting: Sighting, radius: float) -> Sighting:

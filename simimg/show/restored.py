@@ -132,7 +132,7 @@ def _kernel(seen: Observation, half: int) -> FloatArray:
 def _filled(seen: Observation, box: tuple[slice, slice]) -> FloatArray:
     """Electrons of a box, pixels that do not count filled in from those around."""
     good = seen.usable(box)
-    electrons = np.where(good, seen.electrons(box), 0.0) - seen.rise(box) * good
+    electrons = np.where(good, seen.flattened(box), 0.0)
     if good.all():
         return np.asarray(electrons)
     weight = ndimage.gaussian_filter(good.astype(np.float64), 1.5)
