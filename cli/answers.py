@@ -54,6 +54,7 @@ class Answers:
             "warnings": list(found.warnings),
             "psf": plain(found.psf.to_dict()),
             "pairs": self._pairs(path, found),
+            "singles": [plain(single.to_dict()) for single in found.singles],
         }
 
     def together(self, paths: Sequence[str]) -> dict[str, Any]:

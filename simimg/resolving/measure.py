@@ -13,18 +13,22 @@ from dataclasses import dataclass, replace
 from math import hypot, isfinite, log10, nan
 from typing import Any
 
+import numpy as np
+from scipy.spatial import cKDTree
+
 from simimg.arrays import AnyArray
 from simimg.errors import InputError, mistake
 from simimg.frame import Frame, PsfImage
 from simimg.resolving.advice import advise
 from simimg.resolving.asked import as_choice, as_frame
+from simimg.resolving.finding import SingleStar, search_field
 from simimg.resolving.given import Given
 from simimg.resolving.judging import NamedPair, judge
 from simimg.resolving.observation import Observation, observe
 from simimg.resolving.pairlimits import PairLimits
 from simimg.resolving.psfquality import PsfReport, judge_psf, psf_warnings
 from simimg.resolving.psfsource import PsfChoice
-from simimg.resolving.records import PairMeasurement, PairTruth
+from simimg.resolving.records import PairMeasurement, PairTruth, SingleMeasurement
 from simimg.resolving.sighting import Sighting, look
 
 Place = tuple[float, float]
@@ -43,11 +47,14 @@ class FrameMeasurement:
     psf : PsfReport
     warnings : tuple of str
         What was assumed, and what is not to be trusted.
+    singles : tuple of SingleMeasurement
+        What was found and is no pair, by decreasing brightness.
     """
 
     pairs: tuple[PairMeasurement, ...]
     psf: PsfReport
     warnings: tuple[str, ...]
+    singles: tuple[SingleMeasurement, ...] = ()
 
 
 def measure(
@@ -132,6 +139,7 @@ def measure_frame(
     near: Sequence[Place] | None = None,
     given: Given | None = None,
     psf: PsfChoice | None = None,
+    workers: int = 1,
 ) -> FrameMeasurement:
     """Measure the pairs of TRUTH and every place given, then what is found; judge the PSF.
 
@@ -143,6 +151,8 @@ def measure_frame(
         What goes before the frame's own header.
     psf : PsfChoice, optional
         Where the PSF is to come from.
+    workers : int, optional
+        Processes at most for a field of many stars; the result does not depend on it.
 
     Raises
     ------
@@ -153,10 +163,11 @@ def measure_frame(
     named = named_pairs(frame)
     observation = _observe(frame, places, named, given=given, psf=psf)
     besides = [*places, *_places(named)]
-    seen = [
+    field = search_field(observation, besides=besides, workers=workers)
+    seen: list[_Seen] = [
         *_named(observation, named),
         *_placed(observation, places),
-        *_found(observation, besides),
+        *((sighting, None) for sighting in field.pairs),
     ]
     records = _records(observation, seen)
     quality = judge_psf(observation, apart=besides)
@@ -165,8 +176,46 @@ def measure_frame(
         observation, quality, [(name, one) for name, (one, _) in zip(names, seen)]
     )
     return FrameMeasurement(
-        pairs=tuple(records), psf=quality.report, warnings=(*observation.notes, *doubts)
+        pairs=tuple(records),
+        psf=quality.report,
+        warnings=(*observation.notes, *doubts),
+        singles=single_records(observation, field.singles),
     )
+
+
+def single_records(
+    observation: Observation, stars: Sequence[SingleStar]
+) -> tuple[SingleMeasurement, ...]:
+    """Turn fitted single stars into records, with TRUTH's labels."""
+    table: Any = observation.frame.truth
+    labels = None
+    if table is not None and len(table) and {"label", "x", "y"} <= set(table.colnames):
+        at = np.column_stack([np.asarray(table["x"]), np.asarray(table["y"])])
+        finite = np.flatnonzero(np.isfinite(at).all(axis=1))
+        if finite.size:
+            labels = cKDTree(at[finite]), [str(table["label"][int(i)]) for i in finite]
+    records = []
+    for star in stars:
+        extended = star.wide.extended
+        place = star.wide.place if extended else star.point.places[0]
+        error = float(np.sqrt(star.point.covariance[2, 2]))
+        label = ""
+        if labels is not None:
+            away, nearest = labels[0].query(place)
+            label = labels[1][int(nearest)] if away < 0.5 * observation.fwhm else ""
+        records.append(
+            SingleMeasurement(
+                x=float(place[0]),
+                y=float(place[1]),
+                electrons=star.wide.electrons if extended else float(star.point.electrons[0]),
+                electrons_error=star.wide.electrons_error if extended else error,
+                verdict="extended" if extended else "point",
+                width_arcsec=star.wide.width * observation.arcsec,
+                width_error_arcsec=star.wide.width_error * observation.arcsec,
+                label=label,
+            )
+        )
+    return tuple(records)
 
 
 def named_pairs(frame: Frame) -> list[NamedPair]:

@@ -101,6 +101,40 @@ class PairMeasurement:
         return result
 
 
+@dataclass(frozen=True, kw_only=True)
+class SingleMeasurement:
+    """What a frame says of a single object that was found in it.
+
+    Attributes
+    ----------
+    x, y : float
+        Pixels.
+    electrons, electrons_error : float
+    verdict : str
+        ``"extended"`` where a point source would look so wide with a chance below 0.01, else
+        ``"point"``.
+    width_arcsec, width_error_arcsec : float
+        Intrinsic standard deviation of a round Gaussian, 0 where it is no wider than the PSF, and
+        how far it rises for one standard error of its square.
+    label : str
+        Of the object that TRUTH has there; empty without.
+    """
+
+    x: float
+    y: float
+    electrons: float
+    electrons_error: float
+    verdict: str
+    width_arcsec: float
+    width_error_arcsec: float
+    label: str = ""
+
+    def to_dict(self) -> dict[str, Any]:
+        """For JSON; None for what is not finite."""
+        result: dict[str, Any] = _plain(self)
+        return result
+
+
 def _plain(value: Any) -> Any:
     if isinstance(value, float):
         return value if isfinite(value) else None
