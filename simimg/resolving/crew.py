@@ -14,6 +14,7 @@ from concurrent.futures.process import BrokenProcessPool
 from dataclasses import replace
 from typing import Any, TypeVar, cast
 
+from simimg.arrays import AnyArray
 from simimg.errors import RunError
 from simimg.frame import Frame
 from simimg.resolving.observation import Observation
@@ -58,7 +59,7 @@ def crew_map(
         min(workers, len(tasks)),
         mp_context=multiprocessing.get_context("spawn"),
         initializer=_begin,
-        initargs=(_bare(observation),),
+        initargs=(_bare(observation), observation.frame.counts, observation.frame.mask),
     )
     try:
         return list(pool.map(_Job(function), tasks, chunksize=1))
@@ -72,12 +73,11 @@ def crew_map(
 
 
 def _bare(observation: Observation) -> Observation:
-    """What fits need of an observation, and no more."""
-    frame = observation.frame
+    """What fits need of an observation besides the pixels, and no more."""
     nothing = cast(Any, None)
     return replace(
         observation,
-        frame=Frame(counts=frame.counts, mask=frame.mask),
+        frame=nothing,
         scene=None,
         train=None,
         sky=nothing,
@@ -99,8 +99,8 @@ class _Job:
 _held: list[Observation] = []
 
 
-def _begin(observation: Observation) -> None:
+def _begin(observation: Observation, counts: AnyArray, mask: AnyArray | None) -> None:
     from threadpoolctl import threadpool_limits
 
     threadpool_limits(limits=1)
-    _held[:] = [observation]
+    _held[:] = [replace(observation, frame=Frame(counts=counts, mask=mask))]
