@@ -13,7 +13,9 @@ from simimg_cli.output import document, say, table, warn
 from simimg_cli.words import NONE, arcsec, figures, short
 
 if TYPE_CHECKING:
+    from simimg.resolving.ephemeris import DatedPair
     from simimg.resolving.limits import Limits, ObjectLimits, Resolution
+    from simimg.scene.model import Scene
 
 
 @click.command("limits")
@@ -25,6 +27,12 @@ if TYPE_CHECKING:
     metavar="DEG",
     help="Direction in which a PSF that is not round is cut, north through east; 90 unless given.",
 )
+@click.option(
+    "--dates",
+    type=options.Dates(),
+    metavar="START:STOP:STEP",
+    help="Tabulate when the pairs can be resolved, at these Julian years: 1980:2020:10.",
+)
 @click.option("--all", "all_stars", is_flag=True, help="List the stars of catalogues, too.")
 @options.as_json
 @options.quiet
@@ -33,6 +41,7 @@ def command(
     overrides: Sequence[str],
     without: Sequence[str],
     position_angle: float,
+    dates: list[float] | None,
     all_stars: bool,
     as_json: bool,
     quiet: bool,
@@ -43,22 +52,60 @@ def command(
     pixel together. SCENE may be a frame of simimg, which carries its scene.
     """
     from simimg.assembly.report import cautions, describe
+    from simimg.resolving.ephemeris import ephemeris
     from simimg.resolving.limits import limits
-    from simimg.scene.file import scene_id
+    from simimg.scene.file import replace, scene_id
     from simimg_cli.cautions import print_cautions
     from simimg_cli.scenes import open_scene
 
     opened = open_scene(scene, overrides=overrides, without=without).scene
+    rows = None if dates is None else ephemeris(opened, dates)
+    if dates and _undated(opened):
+        # The objects' own table needs one date for the orbits; the first will do.
+        opened = replace(opened, {"exposure.start": _first_of_january(dates[0])})
     found = limits(opened, position_angle=position_angle, all_stars=all_stars)
     warnings = describe(opened).warnings
     if as_json:
         payload = {**found.to_dict(), "cautions": cautions(opened)}
+        if rows is not None:
+            payload["ephemeris"] = [row.to_dict() for row in rows]
         say(document(payload, scene_id=scene_id(opened), warnings=warnings))
         return
     _print(found, f"{scene}: {opened.title or 'without a title'}")
+    if rows is not None:
+        _print_ephemeris(rows)
     if not quiet:
         warn(warnings)
     print_cautions(opened, quiet=quiet)
+
+
+def _undated(scene: Scene) -> bool:
+    """True for orbits in a scene without a date."""
+    dated = scene.exposure is not None and scene.exposure.start is not None
+    return not dated and any(pair.orbit is not None for pair in scene.pair)
+
+
+def _first_of_january(year: float) -> str:
+    return f"{min(max(round(year), 1), 9999):04d}-01-01T00:00:00"
+
+
+def _print_ephemeris(rows: Sequence[DatedPair]) -> None:
+    say()
+    table(
+        ("pair", "date", "separation", "angle", "Rayleigh", "Sparrow"),
+        [
+            (
+                row.label,
+                short(row.date),
+                arcsec(row.separation_arcsec),
+                f"{row.position_angle_deg:.2f} deg",
+                "beyond" if row.rayleigh else "within",
+                "beyond" if row.sparrow else "within",
+            )
+            for row in rows
+        ],
+        right=(1, 2, 3),
+    )
 
 
 def _print(found: Limits, heading: str) -> None:
@@ -94,6 +141,7 @@ def _print(found: Limits, heading: str) -> None:
         [
             ("Dawes", arcsec(found.dawes_arcsec), "observers' custom, for reference"),
             ("Strehl ratio", figures(found.strehl, 3), "without the pixel"),
+            *_optional_rows(found),
             ("50 % of the light", arcsec(found.ee50_arcsec), "diameter, delivered"),
             ("80 % of the light", arcsec(found.ee80_arcsec), "diameter, delivered"),
             (
@@ -109,6 +157,25 @@ def _print(found: Limits, heading: str) -> None:
     for text in found.notes:
         say()
         say(textwrap.fill(text, 96))
+
+
+def _optional_rows(found: Limits) -> list[tuple[str, str, str]]:
+    """Rows of what not every scene has: a wavefront, refraction."""
+    rows = []
+    if found.wavefront_rms_nm > 0.0:
+        rms = figures(found.wavefront_rms_nm, 3)
+        rows.append(
+            ("Strehl from the rms", figures(found.strehl_from_rms, 3), f"of {rms} nm, optics alone")
+        )
+    if found.dispersion_arcsec > 0.0:
+        rows.append(
+            (
+                "dispersion",
+                arcsec(found.dispersion_arcsec),
+                "between the band's edges",
+            )
+        )
+    return rows
 
 
 def _print_objects(objects: Sequence[ObjectLimits]) -> None:

@@ -59,6 +59,31 @@ class Place(click.ParamType):
         return x, y
 
 
+class Dates(click.ParamType):
+    """Julian years ``START:STOP:STEP``; the list of them."""
+
+    name = "START:STOP:STEP"
+
+    def convert(
+        self, value: Any, param: click.Parameter | None, ctx: click.Context | None
+    ) -> list[float]:
+        if isinstance(value, list):
+            return value
+        from simimg.resolving.ephemeris import julian_years
+
+        try:
+            start, stop, step = (float(part) for part in value.split(":"))
+            return julian_years(start, stop, step)
+        except ValueError as error:
+            what = "" if "could not" in str(error) or "unpack" in str(error) else f" ({error})"
+            self.fail(
+                f"{value!r} are no dates{what}; write Julian years START:STOP:STEP, such as "
+                "1980:2020:10",
+                param,
+                ctx,
+            )
+
+
 class Degrees(click.ParamType):
     """An angle in degrees; radians inside."""
 

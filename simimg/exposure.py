@@ -21,7 +21,7 @@ from simimg.assembly.train import Train, assemble_train
 from simimg.assembly.truth import truth_table
 from simimg.camera.chain import CameraSettings, record
 from simimg.camera.converter import converter_top
-from simimg.errors import InputError
+from simimg.errors import InputError, mistake
 from simimg.frame import Frame, PsfImage
 from simimg.imaging.profile import sampled_psf
 from simimg.imaging.render import expected_image
@@ -30,6 +30,13 @@ from simimg.scene.model import Scene
 
 PSF_OVERSAMPLING = 4
 _PSF_HALF_WIDTH = 16
+
+COUNTED = (91e-9, 30e-6)
+"""Wavelengths (m) between which photon counting is the right noise: common practice of the trade.
+
+Shortward interstellar hydrogen hides the sky and single photons make many electrons; longward
+receivers measure waves, and thermal light fluctuates more than Poisson's law says.
+"""
 
 
 @dataclass(frozen=True, eq=False)
@@ -65,6 +72,7 @@ def prepare(
     if missing:
         raise InputError(*missing)
     train = assemble_train(scene)
+    _require_photons(scene, train)
     objects = inventory(scene, train=train)
     geometry = objects.geometry
     expected = expected_image(
@@ -220,6 +228,28 @@ def _times(start: str, later: float) -> dict[str, object]:
         "MJD-OBS": (days, "[d] start of the exposure"),
         "TIMESYS": ("UTC", "time scale"),
     }
+
+
+def _require_photons(scene: Scene, train: Train) -> None:
+    """Refuse to count photons where detectors do not.
+
+    Raises
+    ------
+    InputError
+        A band outside the far ultraviolet to the mid-infrared.
+    """
+    shortest, longest = COUNTED
+    if shortest <= train.wavelength <= longest:
+        return
+    raise InputError(
+        mistake(
+            scene.name,
+            "band",
+            f"lies at {train.wavelength:.3g} m, where a detector's noise is not that of counted "
+            f"photons (from {shortest * 1e9:.0f} nm to {longest * 1e6:.0f} um it is)",
+            "use limits, which holds at any wavelength",
+        )
+    )
 
 
 def _threads(threads: int | None) -> int:

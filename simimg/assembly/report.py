@@ -11,6 +11,7 @@ from math import degrees, sqrt
 
 import numpy as np
 
+from simimg.air.windows import shut_parts, shut_share
 from simimg.assembly.brightness import (
     dark_electrons,
     exposure_time,
@@ -22,6 +23,7 @@ from simimg.assembly.objects import inventory
 from simimg.assembly.train import Train, assemble_train, half_light_width
 from simimg.camera.converter import converter_top
 from simimg.imaging.grid import peak_share
+from simimg.optics.wavefront import steepest_step
 from simimg.scene.camera import Camera
 from simimg.scene.file import defaults_used, scene_id
 from simimg.scene.model import Scene
@@ -215,11 +217,39 @@ def _warnings(scene: Scene, train: Train) -> list[str]:
             found.append(
                 f"undersampled: {width / scale:.2g} pixels a FWHM; the pixel sets the resolution"
             )
+    found += _blocked(train)
+    if train.dispersion > half_light_width(train.focal) / 3.0:
+        found.append(
+            f"the air draws the band out over {_arcsec(train.dispersion):.3g} arcsec, more than a "
+            "third of the FWHM"
+        )
+    if train.aperture.path is not None:
+        step = steepest_step(train.aperture.path, train.pupil)
+        if step > 0.5 * train.wavelength:
+            found.append(
+                f"the wavefront changes by up to {step / train.wavelength:.2g} waves from one "
+                "square of the pupil to the next: light far out is folded back"
+            )
     if train.airmass is not None and train.airmass > 3.0:
         found.append(f"airmass {train.airmass:.3g}: extinction and seeing so low are uncertain")
     if scene.camera is not None and exposure_time(scene) == 0.0:
         found.append("no exposure time: dark signal and sky brightness count for nothing")
     return found
+
+
+def _blocked(train: Train) -> list[str]:
+    """Where the air does not let the band through; common practice of the trade."""
+    if train.airmass is None:
+        return []
+    lower, upper = train.palette.band.support
+    share = shut_share(lower, upper)
+    if share < 0.05:
+        return []
+    window, _ = max(shut_parts(lower, upper), key=lambda part: part[1])
+    return [
+        f"the air is shut over {share:.0%} of the band: {window.sentence} (common practice); no "
+        "extinction stands for that: observe above the air"
+    ]
 
 
 def _saturating(scene: Scene, train: Train, camera: Camera, scale: float) -> list[str]:

@@ -72,3 +72,35 @@ def test_a_star_that_saturates_is_warned_of(tmp_path):
     bright = scene(tmp_path, star__0__magnitude=9)
     assert any(w.startswith("1 star saturates") for w in describe(bright).warnings)
     assert not any("saturate" in w for w in describe(scene(tmp_path)).warnings)
+
+
+def test_a_band_that_the_air_shuts_out_is_warned_of(tmp_path):
+    """Common practice: ozone below 300 nm, water vapour at 1.4 um."""
+    for centre, word in (("250 nm", "ozone"), ("1.4 um", "water vapour")):
+        band = {"centre": centre, "width": "20 nm"}
+        warnings = describe(scene(tmp_path, band=band)).warnings
+        assert any("the air is shut" in w and word in w for w in warnings)
+        above = describe(scene(tmp_path, band=band, air=None)).warnings
+        assert not any("the air is shut" in w for w in above)
+    assert not any("the air is shut" in w for w in describe(scene(tmp_path)).warnings)
+
+
+def test_a_radio_dish_has_limits_and_no_counts(tmp_path):
+    """1.2197 lambda/D at 21 cm through 100 m; and expose says why it does not count photons."""
+    import simimg
+    from simimg.errors import InputError
+
+    dish = scene(
+        tmp_path,
+        air=None,
+        telescope={"aperture": "100 m"},
+        band={"centre": "21 cm", "width": "1 mm"},
+        camera__pixel_scale="100 arcsec",
+        star__0={"electrons": 1e5},
+        sky=None,
+    )
+    limits = simimg.limits(dish)
+    dark_ring = 1.21967 * 0.21 / 100 * 206264.806
+    assert limits.diffraction.rayleigh_arcsec == pytest.approx(dark_ring, rel=1e-4)
+    with pytest.raises(InputError, match="not that of counted photons"):
+        simimg.expose(dish)

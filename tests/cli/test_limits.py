@@ -1,6 +1,7 @@
 """limits: every figure that is promised, as text and as JSON."""
 
 import math
+from pathlib import Path
 
 import pytest
 
@@ -106,3 +107,30 @@ def test_quiet_holds_back_the_notes_alone(run, scene):
     assert loud.out == still.out
     assert "warning: camera.bias" in loud.err
     assert still.err == ""
+
+
+ORBIT = """
+[[pair]]
+label = "turning"
+magnitudes = [12, 12.5]
+orbit = { period = "41.623 yr", periastron = 1934.008, eccentricity = 0.2763, \
+semi_major_axis = "0.907 arcsec", inclination = "59.025 deg", node = "23.717 deg", \
+argument = "219.907 deg" }
+"""
+
+
+def test_dates_tabulate_an_orbit(run, scene):
+    """Meeus, example 57.a: 0.411 arcsec at 1980.0; no exposure.start is needed."""
+    Path(scene).write_text(Path(scene).read_text() + ORBIT)
+    found = run("limits", scene, "--dates", "1980:2020:10", "--json").json
+    assert [row["date"] for row in found["ephemeris"]] == [1980, 1990, 2000, 2010, 2020]
+    assert found["ephemeris"][0]["separation_arcsec"] == pytest.approx(0.41102, abs=1e-4)
+    assert {"position_angle_deg", "rayleigh", "sparrow", "label"} <= set(found["ephemeris"][0])
+    assert "1980" in run("limits", scene, "--dates", "1980:1981:1").out
+
+
+@pytest.mark.parametrize("dates", ["1980", "1990:1980:1", "1:2:0", "a:b:c", "0:1e9:1"])
+def test_impossible_dates(run, scene, dates):
+    done = run("limits", scene, "--dates", dates)
+    assert done.code == 2
+    assert "START:STOP:STEP" in done.err

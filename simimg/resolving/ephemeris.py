@@ -1,0 +1,140 @@
+"""When the pairs of a scene come apart: separation and angle at given dates, against the limits.
+
+The limits are the delivered ones along the pair's direction at each date: Rayleigh's, and Sparrow's
+for the pair's own magnitude difference. Dates in Julian years; arcseconds and degrees.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import asdict, dataclass
+from math import degrees, isfinite, log10, radians
+from typing import Any
+
+import numpy as np
+
+from simimg.assembly.brightness import photometry
+from simimg.assembly.colours import colour_keys
+from simimg.assembly.orbits import places_at
+from simimg.assembly.places import field_geometry
+from simimg.assembly.train import assemble_train
+from simimg.resolving.resolution import Directions, computable, to_arcsec
+from simimg.scene.model import Scene
+from simimg.scene.objects import Pair
+
+MOST_DATES = 10_000
+"""Most dates of a table."""
+
+_SHARED = radians(2.0)
+
+
+@dataclass(frozen=True)
+class DatedPair:
+    """A pair at a date.
+
+    Attributes
+    ----------
+    label : str
+    date : float
+        Julian year.
+    separation_arcsec, position_angle_deg : float
+        Of the second star about the first.
+    rayleigh, sparrow : bool
+        Whether the separation is beyond the delivered limit.
+    """
+
+    label: str
+    date: float
+    separation_arcsec: float
+    position_angle_deg: float
+    rayleigh: bool
+    sparrow: bool
+
+    def to_dict(self) -> dict[str, Any]:
+        """The same for JSON."""
+        return asdict(self)
+
+
+def ephemeris(scene: Scene, dates: Sequence[float]) -> tuple[DatedPair, ...]:
+    """Tabulate when the pairs of a scene can be resolved with its set-up.
+
+    Parameters
+    ----------
+    scene : Scene
+        Its pairs, on orbits or at rest.
+    dates : sequence of float
+        Julian years, at most `MOST_DATES`.
+
+    Returns
+    -------
+    tuple of DatedPair
+        Pair after pair, each in the order of the dates.
+
+    Raises
+    ------
+    ValueError
+        Dates that are not finite, or too many.
+    """
+    years = np.asarray(dates, dtype=np.float64)
+    if years.ndim != 1 or years.size > MOST_DATES or not np.isfinite(years).all():
+        raise ValueError(f"dates must be at most {MOST_DATES} finite Julian years")
+    train = assemble_train(scene)
+    delivered = Directions(computable(train.effective))
+    geometry = field_geometry(scene)
+    light = photometry(scene, area=train.pupil.area, airmass=train.airmass, palette=train.palette)
+    rows = []
+    for number, pair in enumerate(scene.pair):
+        fainter = _magnitude_difference(pair, [light.zero_point(k) for k in _kinds(train, pair)])
+        separations, angles = places_at(pair, years)
+        limits: dict[float, tuple[float, float]] = {}
+        for year, separation, angle in zip(years, separations, angles, strict=True):
+            direction = geometry.direction(float(angle))
+            # Directions two degrees apart share their limits, which change far less.
+            key = round(direction / _SHARED) * _SHARED if years.size > 12 else direction
+            if key not in limits:
+                found = delivered.resolution(key, fainter)
+                limits[key] = (found.rayleigh_arcsec, found.sparrow_arcsec)
+            arcsec = to_arcsec(float(separation))
+            rayleigh, sparrow = limits[key]
+            rows.append(
+                DatedPair(
+                    label=pair.label or f"pair-{number + 1}",
+                    date=float(year),
+                    separation_arcsec=arcsec,
+                    position_angle_deg=degrees(float(angle)) % 360.0,
+                    rayleigh=bool(arcsec > rayleigh),
+                    sparrow=bool(isfinite(sparrow) and arcsec > sparrow),
+                )
+            )
+    return tuple(rows)
+
+
+def _kinds(train: Any, pair: Pair) -> list[int]:
+    return [train.palette.kinds[key] for key in colour_keys(pair)]
+
+
+def _magnitude_difference(pair: Pair, zero_points: Sequence[float]) -> float:
+    """Second minus first, as the detector sees it."""
+    if pair.electrons is not None:
+        first, second = pair.electrons
+        return -2.5 * log10(second / first)
+    assert pair.magnitudes is not None
+    return pair.magnitudes[1] - pair.magnitudes[0] - 2.5 * log10(zero_points[1] / zero_points[0])
+
+
+def julian_years(start: float, stop: float, step: float) -> list[float]:
+    """Dates from start to stop, the end included where a step falls on it.
+
+    Raises
+    ------
+    ValueError
+        A step that is not above 0, an end before the start, or too many dates.
+    """
+    if not (isfinite(start) and isfinite(stop) and isfinite(step) and step > 0.0):
+        raise ValueError("START, STOP and STEP must be Julian years, STEP above 0")
+    if stop < start:
+        raise ValueError("STOP must not lie before START")
+    count = int((stop - start) / step * (1.0 + 1e-12) + 1e-9) + 1
+    if count > MOST_DATES:
+        raise ValueError(f"{count} dates are more than {MOST_DATES}")
+    return [start + step * number for number in range(count)]
