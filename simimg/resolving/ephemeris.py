@@ -61,7 +61,7 @@ def ephemeris(scene: Scene, dates: Sequence[float]) -> tuple[DatedPair, ...]:
     Parameters
     ----------
     scene : Scene
-        Its pairs, on orbits or at rest.
+        Its pairs on orbits; those at rest where none is on an orbit.
     dates : sequence of float
         Julian years, at most `MOST_DATES`.
 
@@ -83,7 +83,10 @@ def ephemeris(scene: Scene, dates: Sequence[float]) -> tuple[DatedPair, ...]:
     geometry = field_geometry(scene)
     light = photometry(scene, area=train.pupil.area, airmass=train.airmass, palette=train.palette)
     rows = []
+    orbiting = any(pair.orbit is not None for pair in scene.pair)
     for number, pair in enumerate(scene.pair):
+        if orbiting and pair.orbit is None:
+            continue
         fainter = _magnitude_difference(pair, [light.zero_point(k) for k in _kinds(train, pair)])
         separations, angles = places_at(pair, years)
         limits: dict[float, tuple[float, float]] = {}
