@@ -27,9 +27,12 @@ class Answers:
         Places to measure.
     wanted : Wanted
         What the user says of frames and PSF.
+    workers : int
+        Processes for a field of many stars.
     """
 
-    def __init__(self, near: Sequence[Place], wanted: Wanted) -> None:
+    def __init__(self, near: Sequence[Place], wanted: Wanted, *, workers: int = 1) -> None:
+        self._workers = workers
         self._near = list(near) or None
         self._wanted = wanted
         self._given = wanted.given()
@@ -45,7 +48,13 @@ class Answers:
         from simimg.resolving.measure import measure_frame
 
         with named(path):
-            found = measure_frame(frame, near=self._near, given=self._given, psf=self._choice)
+            found = measure_frame(
+                frame,
+                near=self._near,
+                given=self._given,
+                psf=self._choice,
+                workers=self._workers,
+            )
         self.warnings += found.warnings
         return {
             "frame": path,

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import textwrap
 from collections.abc import Mapping, Sequence
 from typing import Any
@@ -15,7 +16,7 @@ from simimg_cli.foreign import Wanted, frame_options
 from simimg_cli.output import note, say, table, warn
 from simimg_cli.progress import with_progress
 from simimg_cli.trials import run_trials
-from simimg_cli.words import arcsec, probability, short, with_error
+from simimg_cli.words import arcsec, figures, probability, short, with_error
 
 MANY = 8  # pairs: of more, a table with a line for each
 _SOURCES = {
@@ -47,7 +48,8 @@ _SOURCES = {
     "--workers",
     type=click.IntRange(1, 1024),
     metavar="N",
-    help="Processes for the trials; all processors unless given. The result is the same.",
+    help="Processes for trials and for fields of many stars; all processors unless given. The "
+    "result is the same.",
 )
 @options.changes
 @click.option(
@@ -106,8 +108,8 @@ def command(
             quiet=quiet,
         )
         return
-    if overrides or without or workers is not None:
-        raise click.UsageError("--set, --without and --workers go with --trials")
+    if overrides or without:
+        raise click.UsageError("--set and --without go with --trials")
     if together and len(frames) < 2:
         raise click.UsageError("--together takes two frames or more")
     if output is not None:
@@ -116,7 +118,7 @@ def command(
         lines = check_table(output, overwrite=overwrite)
         if lines:
             raise InputError(*lines)
-    measured = Answers(near, asked)
+    measured = Answers(near, asked, workers=workers or os.cpu_count() or 1)
     answers: list[dict[str, Any]] = []
     mistakes: list[str] = []
     if together:
@@ -154,10 +156,39 @@ def _print(answers: Sequence[Mapping[str, Any]], *, several: bool, quiet: bool) 
     pairs = [pair for answer in answers for pair in answer["pairs"]]
     if len(pairs) > MANY or (several and pairs):
         _print_table(pairs, files=several)
+    else:
+        width = max((len(_name(pair)) for pair in pairs), default=0)
+        for pair in pairs:
+            _print_pair(pair, width)
+    for answer in answers:
+        _print_singles(answer.get("singles", []), f"{answer['frame']}: " if several else "")
+
+
+def _print_singles(singles: Sequence[Mapping[str, Any]], prefix: str) -> None:
+    """How many single objects there are besides, and where these are few, what they are."""
+    if not singles:
         return
-    width = max((len(_name(pair)) for pair in pairs), default=0)
-    for pair in pairs:
-        _print_pair(pair, width)
+    extended = sum(single["verdict"] == "extended" for single in singles)
+    say()
+    objects = "object" if len(singles) == 1 else "objects"
+    say(f"{prefix}{len(singles)} single {objects} besides, {extended} extended")
+    if len(singles) > MANY:
+        return
+    table(
+        ("", "x", "y", "electrons", "", "width"),
+        [
+            (
+                single.get("label") or "",
+                f"{single['x']:.2f}",
+                f"{single['y']:.2f}",
+                f"{figures(single['electrons'], 5)} +/- {figures(single['electrons_error'], 2)}",
+                single["verdict"],
+                _width(single),
+            )
+            for single in singles
+        ],
+        right=(1, 2),
+    )
 
 
 def _print_psf(answer: Mapping[str, Any], prefix: str) -> None:
@@ -252,3 +283,8 @@ def _geometry(pair: Mapping[str, Any]) -> tuple[str, str, str]:
     angle = with_error(pair["position_angle_deg"], pair["position_angle_error_deg"])
     difference = with_error(pair["magnitude_difference"], pair["magnitude_difference_error"])
     return f'{separation}"', f"{angle} deg", difference
+
+
+def _width(single: Mapping[str, Any]) -> str:
+    width, error = (figures(single[f"width{part}_arcsec"], 2) for part in ("", "_error"))
+    return f'{width} +/- {error}"'

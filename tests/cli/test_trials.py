@@ -74,7 +74,7 @@ def test_workers_of_the_command_itself(scene):
         (("--trials", "0"), "--trials"),
         (("--trials", "2", "--near", "3,4"), "--trials takes one scene"),
         (("--set", "exposure.seed=4"), "go with --trials"),
-        (("--workers", "2"), "go with --trials"),
+        (("--workers", "0"), "--workers"),
         (("--trials", "2", "--without", "camera"), "camera.pixels"),
         (("--trials", "2", "--set", "exposure.sead=4"), "seed"),
     ],
