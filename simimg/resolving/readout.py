@@ -99,8 +99,8 @@ def foreign_readout(frame: Frame, given: Given) -> Readout:
         No pixel counts.
     """
     notes: list[str] = []
-    saturation = _saturation(frame, given, notes)
     barred = _barred(frame, notes)
+    saturation = _saturation(frame, given, barred, notes)
     good = np.isfinite(frame.counts) & (frame.counts < saturation)
     if barred is not None:
         good &= ~barred
@@ -147,7 +147,7 @@ def _whole_numbers(counts: AnyArray, good: AnyArray) -> bool:
     return bool((values == np.rint(values)).all())
 
 
-def _saturation(frame: Frame, given: Given, notes: list[str]) -> float:
+def _saturation(frame: Frame, given: Given, barred: AnyArray | None, notes: list[str]) -> float:
     """Counts from which a pixel is full: told, or the top of the scale where it is reached."""
     if given.saturation is not None:
         return given.saturation
@@ -155,7 +155,10 @@ def _saturation(frame: Frame, given: Given, notes: list[str]) -> float:
     if told is not None:
         return told.value
     counts = frame.counts
-    finite = counts[np.isfinite(counts)]
+    seen = np.isfinite(counts)
+    if barred is not None:
+        seen &= ~barred
+    finite = counts[seen]
     if finite.size == 0:
         return inf
     highest = float(finite.max())
