@@ -14,6 +14,7 @@ if TYPE_CHECKING:
     from simimg.errors import InputError as InputError
     from simimg.errors import RunError as RunError
     from simimg.exposure import expose as expose
+    from simimg.exposure import noise_free as noise_free
     from simimg.frame import Frame as Frame
     from simimg.resolving.bound import PairPrecision as PairPrecision
     from simimg.resolving.bound import precision as precision
@@ -37,6 +38,7 @@ _HOMES = {
     "limits": "simimg.resolving.limits",
     "load_scene": "simimg.scene.file",
     "measure": "simimg.resolving.measure",
+    "noise_free": "simimg.exposure",
     "precision": "simimg.resolving.bound",
     "trials": "simimg.study.trials",
 }

@@ -68,23 +68,10 @@ def prepare(
     InputError
         The scene lacks what an exposure needs, or the image cannot fit into the memory.
     """
-    missing = requirements_to_expose(scene)
-    if missing:
-        raise InputError(*missing)
-    train = assemble_train(scene)
+    train = _ready(scene)
     _require_photons(scene, train)
     objects = inventory(scene, train=train)
-    geometry = objects.geometry
-    expected = expected_image(
-        train.basis,
-        objects.sources,
-        columns=geometry.columns,
-        rows=geometry.rows,
-        pixel_scale=geometry.pixel_scale,
-        memory_bytes=memory_bytes,
-        threads=_threads(threads),
-    )
-    expected += expected.dtype.type(sky_electrons(scene, area=train.pupil.area))
+    expected = _expected(scene, train, objects, memory_bytes=memory_bytes, threads=threads)
     camera = scene.camera
     assert camera is not None
     settings = CameraSettings(
@@ -98,6 +85,63 @@ def prepare(
         serial=camera.serial,
     )
     return Prepared(scene, train, objects, expected, settings)
+
+
+def noise_free(
+    scene: Scene, *, memory_bytes: int | None = None, threads: int | None = None
+) -> AnyArray:
+    """The image of a scene without noise, at any wavelength.
+
+    Parameters
+    ----------
+    scene : Scene
+    memory_bytes, threads : int, optional
+        As for `prepare`.
+
+    Returns
+    -------
+    ndarray, shape (rows, columns)
+        Expected electrons of objects and sky in each pixel (``[y, x]``). Outside `COUNTED` they
+        are a measure of the energy received, in quanta, and not what a counter would count.
+
+    Raises
+    ------
+    InputError
+        The scene lacks what an image needs, or the image cannot fit into the memory.
+    """
+    train = _ready(scene)
+    objects = inventory(scene, train=train)
+    return _expected(scene, train, objects, memory_bytes=memory_bytes, threads=threads)
+
+
+def _ready(scene: Scene) -> Train:
+    missing = requirements_to_expose(scene)
+    if missing:
+        raise InputError(*missing)
+    return assemble_train(scene)
+
+
+def _expected(
+    scene: Scene,
+    train: Train,
+    objects: Inventory,
+    *,
+    memory_bytes: int | None,
+    threads: int | None,
+) -> AnyArray:
+    """Electrons of objects and sky in each pixel, without noise."""
+    geometry = objects.geometry
+    expected = expected_image(
+        train.basis,
+        objects.sources,
+        columns=geometry.columns,
+        rows=geometry.rows,
+        pixel_scale=geometry.pixel_scale,
+        memory_bytes=memory_bytes,
+        threads=_threads(threads),
+    )
+    expected += expected.dtype.type(sky_electrons(scene, area=train.pupil.area))
+    return expected
 
 
 def expose(
@@ -241,13 +285,18 @@ def _require_photons(scene: Scene, train: Train) -> None:
     shortest, longest = COUNTED
     if shortest <= train.wavelength <= longest:
         return
+    why = (
+        "a photon frees many electrons and interstellar hydrogen hides the sky"
+        if train.wavelength < shortest
+        else "receivers measure waves, and thermal light fluctuates more than counted photons do"
+    )
     raise InputError(
         mistake(
             scene.name,
             "band",
-            f"lies at {train.wavelength:.3g} m, where a detector's noise is not that of counted "
-            f"photons (from {shortest * 1e9:.0f} nm to {longest * 1e6:.0f} um it is)",
-            "use limits, which holds at any wavelength",
+            f"lies at {train.wavelength:.3g} m, where the noise is not that of counted photons: "
+            f"{why}; frames are made from {shortest * 1e9:.0f} nm to {longest * 1e6:.0f} um",
+            "use limits, figure --what psf, or noise_free in Python, which hold at any wavelength",
         )
     )
 

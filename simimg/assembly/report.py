@@ -23,7 +23,7 @@ from simimg.assembly.objects import inventory
 from simimg.assembly.train import Train, assemble_train, half_light_width
 from simimg.camera.converter import converter_top
 from simimg.imaging.grid import peak_share
-from simimg.optics.wavefront import steepest_step
+from simimg.optics.wavefront import marechal_holds, marechal_strehl, steepest_step
 from simimg.scene.camera import Camera
 from simimg.scene.file import defaults_used, scene_id
 from simimg.scene.model import Scene
@@ -125,7 +125,7 @@ def _light_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
             "band",
             f"{band.name or 'by centre and width'}, {band.centre * 1e9:.5g} nm, "
             f"{band.width * 1e9:.4g} nm wide",
-            f"{scene.band.resolved_system} magnitudes; the PSF is that of the centre",
+            f"{scene.band.resolved_system} magnitudes; {_nodes(train)}",
         ),
         ("collecting area", f"{train.pupil.area:.4g} m2", "obstruction and vanes taken off"),
         (
@@ -138,13 +138,30 @@ def _light_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
             f"{_arcsec(half_light_width(train.optics)):.4g} arcsec",
             f"lambda/D is {_arcsec(train.wavelength / scene.telescope.aperture):.4g} arcsec",
         ),
+        *_wavefront_lines(train),
     ]
+
+
+def _nodes(train: Train) -> str:
+    count = train.wavelengths.size
+    return "the PSF is that of the centre" if count == 1 else f"the PSF is of {count} wavelengths"
+
+
+def _wavefront_lines(train: Train) -> list[tuple[str, str, str]]:
+    rms, wavelength = train.aperture.rms, train.wavelength
+    if rms == 0.0:
+        return []
+    strehl = marechal_strehl(rms, wavelength)
+    remark = f"{rms / wavelength:.2g} waves: a Strehl ratio of {strehl:.3g} by Marechal's formula"
+    if not marechal_holds(rms, wavelength):
+        remark = f"{rms / wavelength:.2g} waves, beyond the range of Marechal's formula"
+    return [("wavefront", f"{rms * 1e9:.4g} nm rms", remark)]
 
 
 def _air_lines(train: Train) -> list[tuple[str, str, str]]:
     if train.fried is None or train.seeing is None:
         return [("air", "none", "above the atmosphere")]
-    return [
+    lines = [
         ("airmass", f"{train.airmass:.4g}", ""),
         (
             "seeing",
@@ -158,6 +175,15 @@ def _air_lines(train: Train) -> list[tuple[str, str, str]]:
             "FWHM delivered at the focal plane, without pixel",
         ),
     ]
+    if train.dispersion > 0.0:
+        lines.append(
+            (
+                "dispersion",
+                f"{_arcsec(train.dispersion):.3g} arcsec",
+                "by refraction, between the images of the band's edges",
+            )
+        )
+    return lines
 
 
 def _camera_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
@@ -283,6 +309,9 @@ def _values(scene: Scene, train: Train) -> dict[str, object]:
         "zero_point_magnitude": 2.5 * float(np.log10(zero)),
         "airmass": train.airmass,
         "r0_m": train.fried,
+        "wavelengths": train.wavelengths.size,
+        "wavefront_rms_nm": train.aperture.rms * 1e9,
+        "dispersion_arcsec": _arcsec(train.dispersion),
         "seeing_arcsec": None if train.seeing is None else _arcsec(train.seeing),
         "image_quality_arcsec": _arcsec(half_light_width(train.focal)),
         "pixel_scale_arcsec": None if scale is None else _arcsec(scale),

@@ -15,7 +15,7 @@ import numpy as np
 from scipy.optimize import brentq
 
 from simimg.air.turbulence import fried_parameter
-from simimg.arrays import FloatArray
+from simimg.arrays import FloatArray, frozen
 from simimg.assembly.aperture import Aperture, scene_aperture
 from simimg.assembly.atmosphere import (
     colour_shifts,
@@ -63,6 +63,8 @@ class Train:
         Pupil and wavefront.
     palette : Palette
         Band, detector and spectra.
+    wavelengths : ndarray
+        Nodes that stand for the band (m).
     dispersion : float
         Angle between the images of the band's edges (rad).
     optics : Transfer
@@ -83,6 +85,7 @@ class Train:
     pixel_scale: float | None
     aperture: Aperture
     palette: Palette
+    wavelengths: FloatArray
     dispersion: float
     optics: Transfer
     perfect: Transfer
@@ -146,6 +149,7 @@ def assemble_train(scene: Scene) -> Train:
         pixel_scale=scale,
         aperture=aperture,
         palette=palette,
+        wavelengths=frozen(wavelengths),
         dispersion=scene_dispersion(scene, palette.band),
         optics=alone,
         perfect=perfect,

@@ -104,3 +104,73 @@ def test_a_radio_dish_has_limits_and_no_counts(tmp_path):
     assert limits.diffraction.rayleigh_arcsec == pytest.approx(dark_ring, rel=1e-4)
     with pytest.raises(InputError, match="not that of counted photons"):
         simimg.expose(dish)
+    # Its image without noise is had all the same: a beam of 446 arcsec, nearly all in the frame.
+    image = simimg.noise_free(dish)
+    assert image.sum() == pytest.approx(1e5, rel=0.03)
+    middle = image[40]
+    assert (middle > 0.5 * middle.max()).sum() == pytest.approx(
+        1.029 * 0.21 / 100 * 206264.806 / 100, abs=1
+    )
+
+
+def test_the_image_without_noise_is_what_a_frame_expects(tmp_path):
+    import simimg
+
+    plain = scene(tmp_path)
+    frame = simimg.expose(plain, keep=["expected"])
+    assert (simimg.noise_free(plain).astype("f4") == frame.expected).all()
+
+
+def test_light_far_from_photon_counting_is_told_by_the_wavelength(tmp_path):
+    import simimg
+    from simimg.errors import InputError
+
+    for centre, width, why in (("31 um", "1 um", "measure waves"), ("80 nm", "4 nm", "frees many")):
+        far = scene(tmp_path, air=None, sky=None, band={"centre": centre, "width": width})
+        with pytest.raises(InputError, match=f"counted photons.*{why}"):
+            simimg.expose(far)
+
+
+def test_a_wavefront_is_described(tmp_path):
+    lines = {name: (value, remark) for name, value, remark in describe(scene(tmp_path)).lines}
+    assert "wavefront" not in lines
+    rough = scene(tmp_path, telescope__wavefront={"zernike": {"4": "40 nm", "7": "30 nm"}})
+    found = describe(rough)
+    lines = {name: (value, remark) for name, value, remark in found.lines}
+    # Orthonormal terms add in squares: 50 nm; exp(-(2 pi 50/550)^2) = 0.722.
+    assert lines["wavefront"][0] == "50 nm rms"
+    assert "0.722" in lines["wavefront"][1]
+    assert found.values["wavefront_rms_nm"] == pytest.approx(50, rel=1e-3)
+    bad = scene(tmp_path, telescope__wavefront={"zernike": {"4": "300 nm"}})
+    lines = {name: remark for name, _, remark in describe(bad).lines}
+    assert "beyond the range" in lines["wavefront"]
+
+
+def test_a_wavefront_too_steep_for_its_squares_is_warned_of(tmp_path):
+    def folded(rms):
+        terms = {"zernike": {"4": rms}}
+        warnings = describe(scene(tmp_path, air=None, telescope__wavefront=terms)).warnings
+        return any("folded back" in w for w in warnings)
+
+    assert not folded("60 nm")
+    assert folded("40 um")
+
+
+def test_dispersion_is_described_and_warned_of(tmp_path):
+    low = scene(tmp_path, air__airmass=2.0, air__dispersion=True, band__name="B")
+    found = describe(low)
+    lines = {name: value for name, value, _ in found.lines}
+    assert float(lines["dispersion"].split()[0]) == pytest.approx(
+        found.values["dispersion_arcsec"], rel=1e-2
+    )
+    assert any("more than a third of the FWHM" in w for w in found.warnings)
+    high = describe(scene(tmp_path, air__airmass=1.02, air__dispersion=True)).warnings
+    assert not any("third of the FWHM" in w for w in high)
+    mended = scene(
+        tmp_path,
+        air__airmass=2.0,
+        air__dispersion=True,
+        air__dispersion_corrector=True,
+        band__name="B",
+    )
+    assert "dispersion" not in {name for name, _, _ in describe(mended).lines}
