@@ -12,7 +12,7 @@ from __future__ import annotations
 import numpy as np
 from scipy.ndimage import map_coordinates, spline_filter
 
-from simimg.arrays import FloatArray
+from simimg.arrays import AnyArray, FloatArray
 from simimg.imaging.basis import PsfBasis
 from simimg.imaging.render import expected_image
 from simimg.imaging.sources import Points, Sources, one_point
@@ -62,8 +62,25 @@ def share_in_frame(
             at = np.clip(np.stack([to_y, to_x]) + half + 1.0, 0.0, 2.0 * half + 1.0)
             return np.asarray(map_coordinates(smooth, at, order=3, prefilter=False, mode="nearest"))
 
-        left, right = -1.0 - points.x, columns - 1.0 - points.x
-        bottom, top = -1.0 - points.y, rows - 1.0 - points.y
-        held = summed(right, top) - summed(left, top) - summed(right, bottom) + summed(left, bottom)
+        held = np.ones(len(points))
+        near = _near_an_edge(psf, points, columns, rows)
+        left, right = -1.0 - points.x[near], columns - 1.0 - points.x[near]
+        bottom, top = -1.0 - points.y[near], rows - 1.0 - points.y[near]
+        held[near] = (
+            summed(right, top) - summed(left, top) - summed(right, bottom) + summed(left, bottom)
+        )
         share += weights[:, k] * held
     return np.clip(share, 0.0, 1.0)
+
+
+def _near_an_edge(psf: AnyArray, points: Points, columns: int, rows: int) -> AnyArray:
+    """Points so near to an edge, or outside, that more than 1e-4 of their light may be lost."""
+    half = psf.shape[0] // 2
+    if max(columns, rows) <= half:
+        return np.ones(len(points), dtype=bool)
+    # Light beyond so many pixels to one side, the worse of the two axes.
+    beyond = np.maximum(*(psf.sum(axis)[half:][::-1].cumsum()[::-1] for axis in (0, 1)))
+    safe = int(np.searchsorted(-beyond, -1e-4))
+    inside = (points.x > safe) & (points.x < columns - 1 - safe)
+    inside &= (points.y > safe) & (points.y < rows - 1 - safe)
+    return ~inside
