@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import textwrap
 from collections.abc import Sequence
+from datetime import datetime, timedelta
 from typing import TYPE_CHECKING
 
 import click
@@ -59,17 +60,18 @@ def command(
     from simimg_cli.scenes import open_scene
 
     opened = open_scene(scene, overrides=overrides, without=without).scene
+    identity = scene_id(opened)
     rows = None if dates is None else ephemeris(opened, dates)
     if dates and _undated(opened):
         # The objects' own table needs one date for the orbits; the first will do.
-        opened = replace(opened, {"exposure.start": _first_of_january(dates[0])})
+        opened = replace(opened, {"exposure.start": _start_of(dates[0])})
     found = limits(opened, position_angle=position_angle, all_stars=all_stars)
     warnings = describe(opened).warnings
     if as_json:
         payload = {**found.to_dict(), "cautions": cautions(opened)}
         if rows is not None:
             payload["ephemeris"] = [row.to_dict() for row in rows]
-        say(document(payload, scene_id=scene_id(opened), warnings=warnings))
+        say(document(payload, scene_id=identity, warnings=warnings))
         return
     _print(found, f"{scene}: {opened.title or 'without a title'}")
     if rows is not None:
@@ -85,8 +87,10 @@ def _undated(scene: Scene) -> bool:
     return not dated and any(pair.orbit is not None for pair in scene.pair)
 
 
-def _first_of_january(year: float) -> str:
-    return f"{min(max(round(year), 1), 9999):04d}-01-01T00:00:00"
+def _start_of(year: float) -> str:
+    """A Julian year as a scene's start, within the years that a scene can name."""
+    days = min(max((year - 2000.0) * 365.25, -730000.0), 2921000.0)
+    return (datetime(2000, 1, 1, 12) + timedelta(days=days)).isoformat(timespec="seconds")
 
 
 def _print_ephemeris(rows: Sequence[DatedPair]) -> None:

@@ -20,6 +20,7 @@ from simimg.assembly.brightness import (
 )
 from simimg.assembly.colours import scene_band
 from simimg.assembly.objects import inventory
+from simimg.assembly.orbits import scene_year
 from simimg.assembly.train import Train, assemble_train, half_light_width
 from simimg.camera.converter import converter_top
 from simimg.imaging.grid import peak_share
@@ -235,7 +236,8 @@ def _warnings(scene: Scene, train: Train) -> list[str]:
                 f"{(top - camera.bias) * camera.gain:.4g} electrons"
             )
     scale = train.pixel_scale
-    if camera is not None and scale is not None:
+    undated = scene_year(scene) is None and any(pair.orbit is not None for pair in scene.pair)
+    if camera is not None and scale is not None and not undated:
         found += _saturating(scene, train, camera, scale)
     if scale is not None:
         width = half_light_width(train.focal)

@@ -17,7 +17,7 @@ from simimg.assembly.brightness import photometry
 from simimg.assembly.colours import colour_keys
 from simimg.assembly.orbits import places_at
 from simimg.assembly.places import field_geometry
-from simimg.assembly.train import assemble_train
+from simimg.assembly.train import Train, assemble_train
 from simimg.resolving.resolution import Directions, computable, to_arcsec
 from simimg.scene.model import Scene
 from simimg.scene.objects import Pair
@@ -112,7 +112,7 @@ def ephemeris(scene: Scene, dates: Sequence[float]) -> tuple[DatedPair, ...]:
     return tuple(rows)
 
 
-def _kinds(train: Any, pair: Pair) -> list[int]:
+def _kinds(train: Train, pair: Pair) -> list[int]:
     return [train.palette.kinds[key] for key in colour_keys(pair)]
 
 

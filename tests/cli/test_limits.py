@@ -126,7 +126,15 @@ def test_dates_tabulate_an_orbit(run, scene):
     assert [row["date"] for row in found["ephemeris"]] == [1980, 1990, 2000, 2010, 2020]
     assert found["ephemeris"][0]["separation_arcsec"] == pytest.approx(0.41102, abs=1e-4)
     assert {"position_angle_deg", "rayleigh", "sparrow", "label"} <= set(found["ephemeris"][0])
+    checked = run("check", scene, "--json").json
+    assert found["scene_id"] == checked["scene_id"]
+    assert any("exposure.start" in line for line in checked["to_expose"])
+    # The objects are listed as of the first date, to the second.
+    (turning,) = [one for one in found["objects"] if one["label"] == "turning"]
+    assert turning["separation_arcsec"] == pytest.approx(0.41102, abs=1e-4)
     assert "1980" in run("limits", scene, "--dates", "1980:1981:1").out
+    for dates in ("-1000:-990:10", "20000:20010:10", "1980.5:1980.5:1"):
+        assert run("limits", scene, "--dates", dates, "--quiet").code == 0
 
 
 @pytest.mark.parametrize("dates", ["1980", "1990:1980:1", "1:2:0", "a:b:c", "0:1e9:1"])
