@@ -25,14 +25,21 @@ from simimg.resolving.layout import plane
 
 _MOST_STEPS = 40
 _CONVERGED = 1e-4  # relative fall of the sum of squares
-_LARGEST_POWER = 30.0  # of b - 1: a Gaussian for all that matters
-_NODES, _WEIGHTS = np.polynomial.legendre.leggauss(3)
-_POINTS = [
-    (0.5 * x, 0.5 * y, 0.25 * u * v)
-    for x, u in zip(_NODES, _WEIGHTS)
-    for y, v in zip(_NODES, _WEIGHTS)
-]
-_WHOLE = [(0.0, 0.0, 1.0)]
+_LARGEST_POWER = 300.0  # of b - 1: a Gaussian for all that matters
+_NARROW = 2.0  # FWHM in pixels under which a pixel's mean takes more points
+
+
+def _points(count: int) -> list[tuple[float, float, float]]:
+    """Offsets and weights of Gauss-Legendre points over a pixel."""
+    nodes, weights = np.polynomial.legendre.leggauss(count)
+    return [
+        (0.5 * float(x), 0.5 * float(y), 0.25 * float(u * v))
+        for x, u in zip(nodes, weights)
+        for y, v in zip(nodes, weights)
+    ]
+
+
+_FEW, _MANY, _WHOLE = _points(3), _points(6), [(0.0, 0.0, 1.0)]
 _SUSPECT = 1.5  # times the median chi-square from which a star counts for less in the fit
 _OUTLIER = 3.0  # times the median chi-square from which a star is no star like the others
 
@@ -78,7 +85,8 @@ class Moffat:
         (a, b), (_, c) = self.quadratic
         height = (self.power - 1.0) * exp(-2.0 * self.log_radius) / pi
         value, by_x, by_y = (np.zeros(np.broadcast(dx, dy).shape) for _ in range(3))
-        for across, along, weight in _POINTS if self.averaged else _WHOLE:
+        points = _WHOLE if not self.averaged else _FEW if self.fwhm > _NARROW else _MANY
+        for across, along, weight in points:
             x, y = dx + across, dy + along
             fall = 1.0 + a * x * x + 2.0 * b * x * y + c * y * y
             share = weight * height * fall**-self.power
