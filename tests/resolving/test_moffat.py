@@ -123,7 +123,7 @@ def misfit(measured, draw, *, light=2e5, half=15):
 def test_an_empirical_psf_is_as_good_as_its_stars(kind):
     """What it leaves in other stars is what its own noise foretells, and falls with their number.
 
-    A Moffat profile's misfit stays.
+    A Moffat profile's misfit stays, where it is not the truth.
     """
     psf = model(kind)
 
@@ -140,8 +140,13 @@ def test_an_empirical_psf_is_as_good_as_its_stars(kind):
                 # The expectation of the noise is known; one draw, and a little misfit besides.
                 assert 0.4 < left[measure, count] / (measured.noise * power) < 2.0
     assert left[measured_stars, 10] < 0.8 * left[measured_stars, 2]
-    assert left[measured_stars, 10] < 0.8 * left[measured_profile, 10]
-    assert_allclose(left[measured_profile, 10], left[measured_profile, 2], rtol=0.5)
+    if kind == "air":
+        # Turbulence has other wings than a Moffat profile, however many stars there are.
+        assert left[measured_stars, 10] < 0.8 * left[measured_profile, 10]
+        assert_allclose(left[measured_profile, 10], left[measured_profile, 2], rtol=0.5)
+    else:
+        # A Gaussian seen by pixels is the profile of a large power: four parameters, all of it.
+        assert left[measured_profile, 10] < 10.0
 
 
 def test_missing_pixels_of_a_star_do_not_count():
