@@ -62,11 +62,14 @@ def command(
     opened = open_scene(scene, overrides=overrides, without=without).scene
     identity = scene_id(opened)
     rows = None if dates is None else ephemeris(opened, dates)
+    warnings: list[str] = []
     if dates and _undated(opened):
         # The objects' own table needs one date for the orbits; the first will do.
-        opened = replace(opened, {"exposure.start": _start_of(dates[0])})
+        start = _start_of(dates[0])
+        opened = replace(opened, {"exposure.start": start})
+        warnings.append(f"exposure.start is missing: objects are listed as of {start}")
     found = limits(opened, position_angle=position_angle, all_stars=all_stars)
-    warnings = describe(opened).warnings
+    warnings += describe(opened).warnings
     if as_json:
         payload = {**found.to_dict(), "cautions": cautions(opened)}
         if rows is not None:
@@ -88,8 +91,8 @@ def _undated(scene: Scene) -> bool:
 
 
 def _start_of(year: float) -> str:
-    """A Julian year as a scene's start, within the years that a scene can name."""
-    days = min(max((year - 2000.0) * 365.25, -730000.0), 2921000.0)
+    """A Julian year as a scene's start, within the years that a scene may name."""
+    days = (min(max(year, 1900.1), 2099.9) - 2000.0) * 365.25
     return (datetime(2000, 1, 1, 12) + timedelta(days=days)).isoformat(timespec="seconds")
 
 
@@ -100,7 +103,7 @@ def _print_ephemeris(rows: Sequence[DatedPair]) -> None:
         [
             (
                 row.label,
-                short(row.date),
+                f"{row.date:.8g}",
                 arcsec(row.separation_arcsec),
                 f"{row.position_angle_deg:.2f} deg",
                 "beyond" if row.rayleigh else "within",
