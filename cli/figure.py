@@ -1,8 +1,9 @@
-"""simimg figure: a frame and its pair's profile, drawn for a proposal."""
+"""simimg figure: a frame and its pair's profile, or a scene's optics, drawn for a proposal."""
 
 from __future__ import annotations
 
 import textwrap
+from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
 import click
@@ -19,6 +20,14 @@ if TYPE_CHECKING:
 
 @click.command("figure")
 @click.argument("frame", type=click.Path())
+@options.changes
+@click.option(
+    "--what",
+    type=options.Words("pupil", "wavefront", "psf", "transfer"),
+    metavar="PANELS",
+    help="Draw the optics of a scene (or of a frame's scene) in place of a frame: some of pupil, "
+    "wavefront, psf, transfer, with commas between them.",
+)
 @options.output("The figure to write; its ending says PNG, PDF or SVG.")
 @click.option(
     "--pair",
@@ -48,6 +57,9 @@ if TYPE_CHECKING:
 @options.quiet
 def command(
     frame: str,
+    overrides: Sequence[str],
+    without: Sequence[str],
+    what: tuple[str, ...] | None,
     output: str,
     pair: str | None,
     near: tuple[float, float] | None,
@@ -59,8 +71,18 @@ def command(
 ) -> None:
     """Draw FRAME beside the profile along its pair's axis, and print a caption.
 
-    A frame without pairs is shown with the profile of its brightest object.
+    A frame without pairs is shown with the profile of its brightest object. With --what, FRAME may
+    be a scene, too, and its optics are drawn.
     """
+    if what is not None:
+        if pair is not None or near is not None or restored or iterations is not None:
+            raise click.UsageError("--what draws a scene's optics, not a frame; leave out the rest")
+        _draw_optics(
+            frame, overrides, without, what, output, overwrite, as_json=as_json, quiet=quiet
+        )
+        return
+    if overrides or without:
+        raise click.UsageError("--set and --without change a scene's optics; they go with --what")
     if pair is not None and near is not None:
         raise click.UsageError("--pair and --near name two subjects; give one of them")
     if iterations is not None and not restored:
@@ -89,6 +111,33 @@ def command(
     if as_json:
         payload = {"frame": frame, "figure": output, "caption": caption}
         say(document(payload, scene_id=read.scene_id, simulated=read.simulated))
+    elif not quiet:
+        say(textwrap.fill(caption, 96))
+
+
+def _draw_optics(
+    path: str,
+    overrides: Sequence[str],
+    without: Sequence[str],
+    what: Sequence[str],
+    output: str,
+    overwrite: bool,
+    *,
+    as_json: bool,
+    quiet: bool,
+) -> None:
+    """Draw the optics of a scene, or of the scene of a frame."""
+    from simimg.scene.file import scene_id
+    from simimg_cli.scenes import open_scene
+
+    scene = open_scene(path, overrides=overrides, without=without).scene
+
+    from simimg.show.optics import write_optics
+
+    caption = write_optics(scene, output, what=what, overwrite=overwrite)
+    if as_json:
+        payload = {"scene": path, "figure": output, "caption": caption}
+        say(document(payload, scene_id=scene_id(scene)))
     elif not quiet:
         say(textwrap.fill(caption, 96))
 

@@ -116,11 +116,13 @@ def _print_ephemeris(rows: Sequence[DatedPair]) -> None:
 
 
 def _print(found: Limits, heading: str) -> None:
+    from simimg.assembly.report import wavelength_text
+
     air = "above the air" if found.r0_m is None else f"r0 {figures(found.r0_m * 100, 3)} cm"
     scale = found.pixel_scale_arcsec
     pixel = "without a pixel" if scale is None else f'pixel {short(scale)}"'
     say(heading)
-    say(f"{short(found.wavelength_nm)} nm, {air}, {pixel}")
+    say(f"{wavelength_text(found.wavelength_nm * 1e-9)}, {air}, {pixel}")
     say()
     say("Limits for an equal pair (Rayleigh by diffraction: the first dark ring)")
     angle = short(found.position_angle_deg)

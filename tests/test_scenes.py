@@ -11,12 +11,13 @@ from numpy.testing import assert_allclose
 
 import simimg
 from simimg.assembly.report import describe
+from simimg.resolving.ephemeris import ephemeris, julian_years
 from tests.show import drawn
 
 FOLDER = Path(__file__).parents[1] / "scenes"
 BASES = ("orbiter", "station")
 DEMOS = sorted(path.stem for path in FOLDER.glob("*.toml") if path.stem not in BASES)
-PAIRS = ("close-pair", "close-pair-in-space", "unequal-pair")
+PAIRS = ("close-pair", "close-pair-in-space", "mirror-segments", "turning-pair", "unequal-pair")
 SECONDS = 30.0  # of this test's patience; a demo takes about one
 
 
@@ -46,11 +47,11 @@ def measured(exposed):
     return measure
 
 
-def test_there_are_enough_of_two_places():
+def test_there_are_enough_of_few_telescopes():
     assert len(DEMOS) >= 6
     assert set(PAIRS) < set(DEMOS)
     names = {simimg.load_scene(FOLDER / f"{name}.toml").telescope.name for name in DEMOS}
-    assert names == {"Saltmarsh 2 m", "Driftglass 1.2 m"}
+    assert names == {"Saltmarsh 2 m", "Driftglass 1.2 m", "Driftglass 6 m"}
 
 
 @pytest.mark.parametrize("name", DEMOS)
@@ -126,6 +127,42 @@ def test_unequal_pair_has_two_verdicts(measured):
     found = measured("unequal-pair")
     assert (found.rayleigh.verdict, found.sparrow.verdict) == ("resolved", "unresolved")
     assert 1.2 < found.sparrow.limit_arcsec < 1.6
+
+
+def test_colours_in_low_air_stand_too_close(measured):
+    """The comment's 0.025 arcsec, and that a corrector takes it away."""
+    found = measured("colours-in-low-air")
+    short = found.truth.separation_arcsec - found.separation_arcsec
+    assert_allclose(short, 0.025, atol=0.002)
+    assert short > 20.0 * found.separation_error_arcsec
+    scene = simimg.load_scene(
+        FOLDER / "colours-in-low-air.toml", overrides=["air.dispersion_corrector=true"]
+    )
+    (mended,) = simimg.measure(simimg.expose(scene))
+    short = mended.truth.separation_arcsec - mended.separation_arcsec
+    assert abs(short) < 4.0 * mended.separation_error_arcsec
+
+
+def test_turning_pair_comes_apart_in_some_years():
+    scene = simimg.load_scene(FOLDER / "turning-pair.toml")
+    rows = ephemeris(scene, julian_years(2020, 2056, 3))
+    beyond = {row.date: (row.rayleigh, row.sparrow) for row in rows}
+    assert beyond[2026] == beyond[2041] == (True, True)
+    assert beyond[2032] == beyond[2035] == (False, False)
+
+
+def test_mirror_segments_lose_light_as_they_drift():
+    strehl = []
+    for piston in ("60 nm", "250 nm"):
+        override = [f'telescope.segments.piston="{piston}"']
+        limits = simimg.limits(
+            simimg.load_scene(FOLDER / "mirror-segments.toml", overrides=override)
+        )
+        strehl.append(limits.strehl)
+        # Marechal's formula holds to 2 % at such errors, to 10 % up to 0.14 waves.
+        assert_allclose(limits.strehl_from_rms, limits.strehl, rtol=0.1)
+    assert strehl[0] > 0.9
+    assert strehl[1] < 0.75
 
 
 def test_star_field_holds_its_catalogue(exposed):

@@ -113,6 +113,15 @@ def names_the_sun(scene: Scene) -> bool:
     return bright or bool(words & {"sun", "solar", "sunspot", "sunspots", "photosphere"})
 
 
+def wavelength_text(length: float) -> str:
+    """A wavelength (m) in nm, or beyond 10 um in what keeps it short."""
+    units = ((1.0, "m"), (1e-2, "cm"), (1e-3, "mm"), (1e-6, "um"))
+    size, name = next((one for one in units if length >= one[0] * 0.999999), (1e-9, "nm"))
+    if length < 1e-5:
+        size, name = 1e-9, "nm"
+    return f"{length / size:.5g} {name}"
+
+
 def _arcsec(angle: float) -> float:
     return degrees(angle) * 3600.0
 
@@ -124,8 +133,8 @@ def _light_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
     return [
         (
             "band",
-            f"{band.name or 'by centre and width'}, {band.centre * 1e9:.5g} nm, "
-            f"{band.width * 1e9:.4g} nm wide",
+            f"{band.name or 'by centre and width'}, {wavelength_text(band.centre)}, "
+            f"{wavelength_text(band.width)} wide",
             f"{scene.band.resolved_system} magnitudes; {_nodes(train)}",
         ),
         ("collecting area", f"{train.pupil.area:.4g} m2", "obstruction and vanes taken off"),

@@ -11,16 +11,14 @@ import numpy as np
 from simimg.arrays import AnyArray
 from simimg.show.canvas import grouped
 from simimg.show.compass import Compass, round_length, round_number, shown_length
+from simimg.show.marks import draw_arrows, inked
 from simimg.show.profile import Profile
 from simimg.show.signal import Light
 from simimg.show.stretch import choose_stretch
 from simimg.show.subject import Subject
 
 COLOUR_MAP = "magma"  # its lightness rises evenly: it survives grey print and colour blindness
-_INK = "white"
 _MOST_SHOWN = 1200  # pixels in the side of a drawn image; more are averaged in blocks
-_ARROW = 0.11  # of the panel's shorter side
-_CORNER = 0.3  # of the same: a corner with the arrows in it
 
 
 @dataclass(frozen=True)
@@ -78,12 +76,13 @@ def draw_frame(
     _colour_bar(axes, picture, stretch.ticks(), light.unit)
     if simulated:
         axes.text(0.03, 0.97, "simulated", va="top", transform=axes.transAxes, gid="simulated")
-        _inked(axes.texts[-1])
+        inked(axes.texts[-1])
     strip_ends = _mark_strip(axes, subject, profile)
     if profile.fit is not None:
         _mark_stars(axes, profile.fit.places)
     plate = _scale_bar(axes, subject.compass, right - left, top - bottom, subject.window)
-    _arrows(axes, subject.compass, subject.window, strip_ends)
+    edges = (left - 0.5, right - 0.5, bottom - 0.5, top - 0.5)
+    draw_arrows(axes, subject.compass, edges, strip_ends)
     axes.set_xlim(left - 0.5, right - 0.5)
     axes.set_ylim(bottom - 0.5, top - 0.5)
     return plate
@@ -110,15 +109,6 @@ def _colour_bar(axes: Any, picture: Any, ticks: list[float], unit: str) -> None:
     bar.outline.set_linewidth(0.6)
 
 
-def _inked(artist: Any) -> None:
-    """White on a dark rim: legible on any shade."""
-    from matplotlib.patheffects import Normal, withStroke
-
-    artist.set_color(_INK)
-    rim = withStroke(linewidth=1.6, foreground="black")
-    artist.set_path_effects([rim] if hasattr(artist, "get_text") else [rim, Normal()])
-
-
 def _mark_strip(axes: Any, subject: Subject, profile: Profile) -> list[tuple[float, float]]:
     """A short line at either end of the strip, clear of the subject itself; where they end."""
     if profile.offsets.size < 2:
@@ -135,7 +125,7 @@ def _mark_strip(axes: Any, subject: Subject, profile: Profile) -> list[tuple[flo
             linewidth=0.8,
             gid=f"strip-{number}",
         )
-        _inked(line)
+        inked(line)
     return [(subject.x + end * c, subject.y + end * s) for end in (first, last)]
 
 
@@ -173,8 +163,8 @@ def _scale_bar(
     (bar,) = axes.plot(
         [x, x + pixels], [y, y], linewidth=1.4, solid_capstyle="butt", gid="scale-bar"
     )
-    _inked(bar)
-    _inked(
+    inked(bar)
+    inked(
         axes.annotate(
             words,
             (x + 0.5 * pixels, y),
@@ -185,51 +175,3 @@ def _scale_bar(
         )
     )
     return Plate(pixels, arcsec, compass.north, compass.east)
-
-
-def _arrows(
-    axes: Any,
-    compass: Compass,
-    window: tuple[int, int, int, int],
-    taken: list[tuple[float, float]],
-) -> None:
-    """North and east in the upper right corner, or the lower where the upper is taken.
-
-    None where the frame does not know them.
-    """
-    if not compass.known:
-        return
-    left, right, bottom, top = window
-    size = min(right - left, top - bottom)
-    length = _ARROW * size
-    # Arrows and letters keep to a box in the corner, whichever way they point.
-    tips = np.array([(0.0, 0.0), compass.north, compass.east]) * 1.45 * length
-    x = right - 0.5 - 0.05 * size - tips[:, 0].max()
-    y = top - 0.5 - 0.05 * size - tips[:, 1].max()
-    if any(px > right - _CORNER * size and py > top - _CORNER * size for px, py in taken):
-        y = bottom - 0.5 + 0.05 * size - tips[:, 1].min()
-    for name, (dx, dy) in (("N", compass.north), ("E", compass.east)):
-        arrow = axes.annotate(
-            "",
-            (x + dx * length, y + dy * length),
-            (x, y),
-            arrowprops={
-                "arrowstyle": "-|>,head_width=0.16,head_length=0.32",
-                "shrinkA": 0.0,
-                "shrinkB": 0.0,
-                "linewidth": 0.9,
-                "color": _INK,
-            },
-            gid=f"arrow-{name}",
-        )
-        _rimmed(arrow.arrow_patch)
-        letter = axes.text(
-            x + dx * 1.35 * length, y + dy * 1.35 * length, name, ha="center", va="center"
-        )
-        _inked(letter)
-
-
-def _rimmed(patch: Any) -> None:
-    from matplotlib.patheffects import Normal, withStroke
-
-    patch.set_path_effects([withStroke(linewidth=2.0, foreground="black"), Normal()])

@@ -193,3 +193,45 @@ class TestFigure:
         assert run("figure", frame, "-o", "figure.png").code == 2
         assert (folder / "figure.png").read_bytes() == b"precious"
         assert run("figure", frame, "-o", "figure.png", "--overwrite").code == 0
+
+
+class TestOptics:
+    def test_of_a_scene_and_of_a_frame(self, run, scene, frame, folder):
+        first = run("figure", scene, "--what", "pupil,psf", "-o", "a.png")
+        assert first.code == 0
+        assert first.out.startswith("Simulated optics: A tiny field.")
+        second = run("figure", frame, "--what", "pupil,psf", "-o", "b.png")
+        assert second.out == first.out
+        assert (folder / "a.png").read_bytes() == (folder / "b.png").read_bytes()
+
+    def test_of_a_changed_scene(self, run, scene):
+        found = run(
+            "figure",
+            scene,
+            *("--what", "wavefront", "-o", "a.svg", "--json", "--without", "air"),
+            *("--set", 'telescope.wavefront={ zernike = { 4 = "50 nm" } }'),
+        ).json
+        assert found["figure"] == "a.svg"
+        assert "wavefront 50 nm rms" in found["caption"]
+        assert found["simulated"] is True
+
+    @pytest.mark.parametrize(
+        ("arguments", "said"),
+        [
+            (["--what", "pupil,rays"], "'rays' is none of pupil, wavefront, psf, transfer"),
+            (["--what", "psf", "--near", "1,2"], "leave out the rest"),
+            (["--what", "psf", "--restored"], "leave out the rest"),
+            (["--set", "air.seeing='1 arcsec'"], "go with --what"),
+            (["--what", "psf", "--set", "air.seing='1 arcsec'"], "seeing"),
+        ],
+    )
+    def test_nothing_is_written(self, run, scene, files, arguments, said):
+        result = run("figure", scene, "-o", "f.png", *arguments)
+        assert result.code == 2
+        assert said in result.err
+        assert files() == [scene]
+
+    def test_a_scene_without_what(self, run, scene, files):
+        result = run("figure", scene, "-o", "f.png")
+        assert result.code == 2
+        assert files() == [scene]
