@@ -17,6 +17,7 @@ from typing import Any, TypeVar, cast
 from simimg.arrays import AnyArray
 from simimg.errors import RunError
 from simimg.frame import Frame
+from simimg.interrupts import holding_interrupts
 from simimg.resolving.observation import Observation
 
 Task = TypeVar("Task")
@@ -62,7 +63,9 @@ def crew_map(
         initargs=(_bare(observation), observation.frame.counts, observation.frame.mask),
     )
     try:
-        return list(pool.map(_Job(function), tasks, chunksize=1))
+        with holding_interrupts():
+            results = pool.map(_Job(function), tasks, chunksize=1)
+        return list(results)
     except BrokenProcessPool as error:
         raise RunError(
             "a process could not start or was stopped; try one worker, and guard the main part of "

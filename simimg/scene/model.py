@@ -35,6 +35,7 @@ from simimg.scene.objects import (
     Star,
 )
 from simimg.scene.psf import Psf
+from simimg.scene.study import Study
 from simimg.scene.table import MANY, Fault, Table, key
 from simimg.scene.telescope import Telescope
 
@@ -78,6 +79,7 @@ class Scene(Table):
         meaning="the centre of the field in the header's world coordinates",
     )
     psf: Psf | None = key("A measured PSF in place of optics and air.", None)
+    study: Study | None = key("What `simimg study` varies.", None)
     header: Annotated[dict[str, str | int | float | bool], Header()] = key(
         "Extra keywords for the frame's header.", {}
     )

@@ -11,12 +11,9 @@ Each process works on one thread, and no result depends on which process made it
 from __future__ import annotations
 
 import multiprocessing
-import signal
-import threading
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
 from concurrent.futures import ProcessPoolExecutor, as_completed
 from concurrent.futures.process import BrokenProcessPool
-from contextlib import contextmanager
 from dataclasses import dataclass, fields, is_dataclass
 from math import isfinite
 from typing import Any
@@ -28,6 +25,7 @@ from simimg.assembly.truth import truth_table
 from simimg.errors import RunError
 from simimg.exposure import Prepared, prepare
 from simimg.frame import Frame
+from simimg.interrupts import holding_interrupts
 from simimg.resolving.bound import PairPrecision, pair_precision
 from simimg.resolving.expectation import Expectation, StarPair, pairs_of
 from simimg.resolving.judging import NamedPair
@@ -209,7 +207,7 @@ def _elsewhere(setup: Setup, chunks: list[range], workers: int, take: Take) -> N
         initargs=(setup,),
     )
     try:
-        with _holding_interrupts():
+        with holding_interrupts():
             waiting = {pool.submit(_run_here, chunk): chunk for chunk in chunks}
         for future in as_completed(waiting):
             take(waiting.pop(future), future.result())
@@ -220,33 +218,6 @@ def _elsewhere(setup: Setup, chunks: list[range], workers: int, take: Take) -> N
         ) from error
     finally:
         pool.shutdown(cancel_futures=True)
-
-
-@contextmanager
-def _holding_interrupts() -> Iterator[None]:
-    """Let an interrupt wait, and the processes started here hear none: they inherit the mask.
-
-    One in the midst of starting a process would leave it behind.
-    """
-    main = threading.current_thread() is threading.main_thread()
-    if not (main and hasattr(signal, "pthread_sigmask")):
-        yield
-        return
-    heard = False
-
-    def hear(*_: object) -> None:
-        nonlocal heard
-        heard = True
-
-    handler = signal.signal(signal.SIGINT, hear)
-    mask = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT})
-    try:
-        yield
-    finally:
-        signal.pthread_sigmask(signal.SIG_SETMASK, mask)
-        signal.signal(signal.SIGINT, signal.SIG_DFL if handler is None else handler)
-        if heard:
-            signal.raise_signal(signal.SIGINT)
 
 
 _stands: list[Stand] = []

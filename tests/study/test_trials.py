@@ -10,7 +10,8 @@ from numpy.testing import assert_allclose
 
 import simimg
 from simimg.errors import InputError
-from simimg.study.trials import _holding_interrupts, trials
+from simimg.interrupts import holding_interrupts
+from simimg.study.trials import trials
 from tests.study.pairs import AIR, SPACE, pair_scene
 
 ARCSEC = np.pi / 180.0 / 3600.0
@@ -143,7 +144,7 @@ def test_an_interrupt_waits_while_processes_start():
     reached = []
 
     def start():
-        with _holding_interrupts():
+        with holding_interrupts():
             signal.raise_signal(signal.SIGINT)
             os.kill(os.getpid(), signal.SIGINT)
             reached.append("the end")

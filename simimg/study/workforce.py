@@ -1,0 +1,128 @@
+"""Independent jobs, done here, in processes of this machine, or by the workers of a cluster.
+
+Each process works on one thread, so that no result depends on which of them made it. Results come
+as they are done, with the number of their job.
+"""
+
+from __future__ import annotations
+
+import multiprocessing
+from collections.abc import Callable, Iterator, Sequence
+from concurrent.futures import ProcessPoolExecutor, as_completed
+from concurrent.futures.process import BrokenProcessPool
+from dataclasses import dataclass
+from typing import TypeVar
+
+from simimg.errors import InputError, RunError, mistake
+from simimg.interrupts import holding_interrupts
+
+Task = TypeVar("Task")
+Result = TypeVar("Result")
+
+
+@dataclass(frozen=True, kw_only=True)
+class Jobs:
+    """Who does the work.
+
+    Attributes
+    ----------
+    workers : int
+        Processes, 1 or more; 1 starts none.
+    cluster : str or None
+        Address of a Dask scheduler whose workers take the jobs instead.
+    """
+
+    workers: int = 1
+    cluster: str | None = None
+
+    def run(
+        self, function: Callable[[Task], Result], tasks: Sequence[Task]
+    ) -> Iterator[tuple[int, Result]]:
+        """The result of every task, as they are done, each with the number of its task.
+
+        Parameters
+        ----------
+        function : callable
+            Of a module, so that other processes can find it.
+        tasks : sequence
+
+        Raises
+        ------
+        RunError
+            A process was stopped from outside.
+        InputError
+            No scheduler answers at the address, or what it needs is not installed.
+        """
+        if not tasks:
+            return
+        if self.cluster is not None:
+            yield from _abroad(self.cluster, function, tasks)
+        elif self.workers == 1 or len(tasks) == 1:
+            from threadpoolctl import threadpool_limits
+
+            for number, task in enumerate(tasks):
+                # The same library on the same number of threads gives the same bits.
+                with threadpool_limits(limits=1):
+                    result = function(task)
+                yield number, result
+        else:
+            yield from _elsewhere(min(self.workers, len(tasks)), function, tasks)
+
+
+def _elsewhere(
+    workers: int, function: Callable[[Task], Result], tasks: Sequence[Task]
+) -> Iterator[tuple[int, Result]]:
+    pool = ProcessPoolExecutor(
+        workers, mp_context=multiprocessing.get_context("spawn"), initializer=single_threaded
+    )
+    try:
+        with holding_interrupts():
+            waiting = {pool.submit(function, task): number for number, task in enumerate(tasks)}
+        for future in as_completed(waiting):
+            yield waiting.pop(future), future.result()
+    except BrokenProcessPool as error:
+        raise RunError(
+            "a process could not start or was stopped; try one worker, and guard the main part of "
+            'a script by if __name__ == "__main__":'
+        ) from error
+    finally:
+        pool.shutdown(cancel_futures=True)
+
+
+def single_threaded() -> None:
+    """Keep this process on one thread."""
+    from threadpoolctl import threadpool_limits
+
+    threadpool_limits(limits=1)
+
+
+def _abroad(
+    address: str, function: Callable[[Task], Result], tasks: Sequence[Task]
+) -> Iterator[tuple[int, Result]]:
+    try:
+        from distributed import Client
+        from distributed import as_completed as as_done
+    except ImportError:
+        mend = "install simimg with its extra: pip install 'simimg[cluster]'"
+        raise InputError(mistake("--cluster", "", "needs dask.distributed", mend)) from None
+    try:
+        client = Client(address, timeout="15 s", set_as_default=False)
+    except (OSError, ValueError) as error:
+        what = f"no scheduler answers at {address}: {' '.join(str(error).split())}"
+        mend = "give the address that the scheduler printed, as tcp://HOST:8786"
+        raise InputError(mistake("--cluster", "", what, mend)) from None
+    with client:
+        futures = [
+            client.submit(_alone, function, task, key=f"simimg-{number}", pure=False)
+            for number, task in enumerate(tasks)
+        ]
+        numbers = {future.key: number for number, future in enumerate(futures)}
+        for future in as_done(futures):
+            yield numbers[future.key], future.result()
+
+
+def _alone(function: Callable[[Task], Result], task: Task) -> Result:
+    from threadpoolctl import threadpool_limits
+
+    with threadpool_limits(limits=1):
+        return function(task)
