@@ -8,7 +8,6 @@ from __future__ import annotations
 import os
 from collections.abc import Sequence
 from dataclasses import dataclass
-from io import StringIO
 from math import nan
 from pathlib import Path
 from typing import Any
@@ -16,12 +15,12 @@ from typing import Any
 import numpy as np
 
 from simimg.errors import InputError, mistake
+from simimg.fits.ecsv import ecsv_text
 from simimg.fits.hdus import Column
 from simimg.fits.writer import write_table_file
 from simimg.newfile import check_new_file, new_file
 from simimg.resolving.psfquality import PsfReport
 from simimg.resolving.records import PairMeasurement
-from simimg.version import __version__
 
 FORMATS = (".ecsv", ".fits")
 
@@ -119,7 +118,8 @@ def write_records(
             says=[f"warning: {text}" for text in warnings],
         )
         return
-    text = _ecsv(columns, simulated, warnings)
+    meta = {"warnings": list(warnings)} if warnings else None
+    text = ecsv_text(columns, simulated=simulated, meta=meta)
     with new_file(path, overwrite=overwrite) as handle:
         handle.write(text.encode("utf-8"))
 
@@ -162,22 +162,3 @@ def _values(values: Sequence[Any], *, text: bool = False) -> Any:
     if text:
         return np.array([str(value) for value in values], dtype=str)
     return np.array(values, dtype=np.float64)
-
-
-def _ecsv(columns: Sequence[Column], simulated: bool, warnings: Sequence[str]) -> str:
-    """The table as ECSV."""
-    from astropy.table import Column as TableColumn
-    from astropy.table import Table
-
-    table = Table()
-    for column in columns:
-        table[column.name] = TableColumn(
-            column.values, unit=column.unit or None, description=column.comment
-        )
-    table.meta["CREATOR"] = f"simimg {__version__}"
-    table.meta["SIMULATE"] = simulated
-    if warnings:
-        table.meta["warnings"] = list(warnings)
-    stream = StringIO()
-    table.write(stream, format="ascii.ecsv")
-    return stream.getvalue()
