@@ -27,6 +27,7 @@ COMMANDS = {
     "expose": "Make the frame that a scene's set-up would record.",
     "limits": "What can be resolved: diffraction, air, pixel, each object.",
     "measure": "Measure pairs in frames: resolved or not, and how sure.",
+    "study": "Trade studies: limits, bounds and trials as a key varies.",
     "figure": "Draw a frame and a pair's profile for a proposal.",
 }
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import os
 import re
 from collections.abc import Callable
 from typing import Any, TypeVar
@@ -164,6 +165,24 @@ threads = click.option(
     metavar="N",
     help="Threads to work on; all processors unless given. The result is the same.",
 )
+workers = click.option(
+    "--workers",
+    type=click.IntRange(1, 1024),
+    metavar="N",
+    help="Processes to work in; all processors unless given. The result is the same.",
+)
+cluster = click.option(
+    "--cluster",
+    metavar="ADDRESS",
+    help="Let the workers of this Dask scheduler do it, as tcp://HOST:8786.",
+)
+
+
+def processors() -> int:
+    """Processors that this process may use."""
+    if hasattr(os, "sched_getaffinity"):
+        return len(os.sched_getaffinity(0))
+    return os.cpu_count() or 1
 
 
 def output(help_text: str) -> Callable[[_F], _F]:

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import sys
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
+from contextlib import contextmanager
 from typing import TypeVar
 
 _T = TypeVar("_T")
@@ -24,3 +25,21 @@ def with_progress(
     from rich.progress import track
 
     yield from track(items, description=what, console=Console(stderr=True), transient=True)
+
+
+@contextmanager
+def progress_bar(what: str, *, quiet: bool) -> Iterator[Callable[[int, int], None] | None]:
+    """What to call with the number of things done and of all, or None where nobody watches."""
+    if quiet or not sys.stderr.isatty():
+        yield None
+        return
+    from rich.console import Console
+    from rich.progress import Progress
+
+    with Progress(console=Console(stderr=True), transient=True) as bar:
+        task = bar.add_task(what, total=None)
+
+        def progress(done: int, total: int) -> None:
+            bar.update(task, completed=done, total=total)
+
+        yield progress

@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-import os
-import sys
-from collections.abc import Callable, Iterator, Sequence
-from contextlib import contextmanager
+from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
+from simimg_cli.options import processors
 from simimg_cli.output import document, say, table, warn
+from simimg_cli.progress import progress_bar
 from simimg_cli.words import arcsec, figures
 
 if TYPE_CHECKING:
@@ -38,8 +37,8 @@ def run_trials(
     opened = open_scene(path, overrides=overrides, without=without).scene
     warnings = describe(opened).warnings
     if workers is None:
-        workers = 1 if count < _FEW else _processors()
-    with _bar(quiet=quiet) as progress:
+        workers = 1 if count < _FEW else processors()
+    with progress_bar("trials", quiet=quiet) as progress:
         pairs = trials(opened, count=count, workers=workers, progress=progress)
     if as_json:
         payload = {
@@ -58,31 +57,6 @@ def run_trials(
     if not quiet:
         warn(warnings)
     print_cautions(opened, quiet=quiet)
-
-
-def _processors() -> int:
-    """Processors that this process may use."""
-    if hasattr(os, "sched_getaffinity"):
-        return len(os.sched_getaffinity(0))
-    return os.cpu_count() or 1
-
-
-@contextmanager
-def _bar(*, quiet: bool) -> Iterator[Callable[[int, int], None] | None]:
-    """A bar on standard error, where a person watches."""
-    if quiet or not sys.stderr.isatty():
-        yield None
-        return
-    from rich.console import Console
-    from rich.progress import Progress
-
-    with Progress(console=Console(stderr=True), transient=True) as bar:
-        task = bar.add_task("trials", total=None)
-
-        def progress(done: int, total: int) -> None:
-            bar.update(task, completed=done, total=total)
-
-        yield progress
 
 
 def _print(pair: PairTrials) -> None:
