@@ -231,7 +231,7 @@ def _draw(
     if strip is not None:
         from simimg.show.studystrip import write_study_strip
 
-        captions.append(write_study_strip(planned, strip, overwrite=overwrite))
+        captions.append(write_study_strip(planned, made, strip, overwrite=overwrite))
     return "\n".join(captions)
 
 

@@ -59,7 +59,9 @@ class Checkpoint:
         try:
             lines = self.path.read_bytes().split(b"\n")
         except OSError as error:
-            raise RunError(mistake(str(self.path), "", error.strerror or "cannot be read")) from None
+            raise RunError(
+                mistake(str(self.path), "", error.strerror or "cannot be read")
+            ) from None
         if lines[0].decode("ascii", "replace") != self._identity:
             mend = "finish that study with its own command, or allow a new one with --overwrite"
             raise InputError(mistake(str(self.path), "", "was left by another study", mend))

@@ -58,13 +58,8 @@ class Jobs:
         if self.cluster is not None:
             yield from _abroad(self.cluster, function, tasks)
         elif self.workers == 1 or len(tasks) == 1:
-            from threadpoolctl import threadpool_limits
-
             for number, task in enumerate(tasks):
-                # The same library on the same number of threads gives the same bits.
-                with threadpool_limits(limits=1):
-                    result = function(task)
-                yield number, result
+                yield number, single_threaded(function, task)
         else:
             yield from _elsewhere(min(self.workers, len(tasks)), function, tasks)
 
@@ -72,12 +67,13 @@ class Jobs:
 def _elsewhere(
     workers: int, function: Callable[[Task], Result], tasks: Sequence[Task]
 ) -> Iterator[tuple[int, Result]]:
-    pool = ProcessPoolExecutor(
-        workers, mp_context=multiprocessing.get_context("spawn"), initializer=single_threaded
-    )
+    pool = ProcessPoolExecutor(workers, mp_context=multiprocessing.get_context("spawn"))
     try:
         with holding_interrupts():
-            waiting = {pool.submit(function, task): number for number, task in enumerate(tasks)}
+            waiting = {
+                pool.submit(single_threaded, function, task): number
+                for number, task in enumerate(tasks)
+            }
         for future in as_completed(waiting):
             yield waiting.pop(future), future.result()
     except BrokenProcessPool as error:
@@ -89,11 +85,22 @@ def _elsewhere(
         pool.shutdown(cancel_futures=True)
 
 
-def single_threaded() -> None:
-    """Keep this process on one thread."""
+def single_threaded(function: Callable[[Task], Result], task: Task) -> Result:
+    """What a function gives on one thread.
+
+    The same library on the same number of threads gives the same bits.
+
+    Parameters
+    ----------
+    function : callable
+    task : object
+    """
+    # A library that is loaded later would not be held back.
+    import scipy.linalg  # noqa: F401
     from threadpoolctl import threadpool_limits
 
-    threadpool_limits(limits=1)
+    with threadpool_limits(limits=1):
+        return function(task)
 
 
 def _abroad(
@@ -113,16 +120,9 @@ def _abroad(
         raise InputError(mistake("--cluster", "", what, mend)) from None
     with client:
         futures = [
-            client.submit(_alone, function, task, key=f"simimg-{number}", pure=False)
+            client.submit(single_threaded, function, task, key=f"simimg-{number}", pure=False)
             for number, task in enumerate(tasks)
         ]
         numbers = {future.key: number for number, future in enumerate(futures)}
         for future in as_done(futures):
             yield numbers[future.key], future.result()
-
-
-def _alone(function: Callable[[Task], Result], task: Task) -> Result:
-    from threadpoolctl import threadpool_limits
-
-    with threadpool_limits(limits=1):
-        return function(task)
