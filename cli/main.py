@@ -28,6 +28,7 @@ COMMANDS = {
     "limits": "What can be resolved: diffraction, air, pixel, each object.",
     "measure": "Measure pairs in frames: resolved or not, and how sure.",
     "study": "Trade studies: limits, bounds and trials as a key varies.",
+    "solve": "The value of a key at which a target is just reached.",
     "figure": "Draw a frame and a pair's profile for a proposal.",
 }
 

@@ -23,6 +23,11 @@ if TYPE_CHECKING:
     from simimg.resolving.records import PairMeasurement as PairMeasurement
     from simimg.scene.file import load_scene as load_scene
     from simimg.scene.model import Scene as Scene
+    from simimg.study.solve import Solution as Solution
+    from simimg.study.solve import solve as solve
+    from simimg.study.sweep import Sweep as Sweep
+    from simimg.study.sweep import Varied as Varied
+    from simimg.study.sweep import sweep as sweep
     from simimg.study.trials import PairTrials as PairTrials
     from simimg.study.trials import trials as trials
 
@@ -34,12 +39,17 @@ _HOMES = {
     "PairTrials": "simimg.study.trials",
     "RunError": "simimg.errors",
     "Scene": "simimg.scene.model",
+    "Solution": "simimg.study.solve",
+    "Sweep": "simimg.study.sweep",
+    "Varied": "simimg.study.sweep",
     "expose": "simimg.exposure",
     "limits": "simimg.resolving.limits",
     "load_scene": "simimg.scene.file",
     "measure": "simimg.resolving.measure",
     "noise_free": "simimg.exposure",
     "precision": "simimg.resolving.bound",
+    "solve": "simimg.study.solve",
+    "sweep": "simimg.study.sweep",
     "trials": "simimg.study.trials",
 }
 
