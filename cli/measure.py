@@ -16,7 +16,7 @@ from simimg_cli.foreign import Wanted, frame_options
 from simimg_cli.output import note, say, table, warn
 from simimg_cli.progress import with_progress
 from simimg_cli.trials import run_trials
-from simimg_cli.words import arcsec, figures, probability, short, with_error
+from simimg_cli.words import arcsec, figures, probability, short, with_error, with_interval
 
 MANY = 8  # pairs: of more, a table with a line for each
 _SOURCES = {
@@ -280,6 +280,9 @@ def _print_pair(pair: Mapping[str, Any], width: int) -> None:
 def _geometry(pair: Mapping[str, Any]) -> tuple[str, str, str]:
     """Separation, position angle and magnitude difference with their errors."""
     separation = with_error(pair["separation_arcsec"], pair["separation_error_arcsec"])
+    if pair["separation_high_arcsec"] is not None:
+        ends = pair["separation_low_arcsec"], pair["separation_high_arcsec"]
+        separation = with_interval(pair["separation_arcsec"], *ends)
     angle = with_error(pair["position_angle_deg"], pair["position_angle_error_deg"])
     difference = with_error(pair["magnitude_difference"], pair["magnitude_difference_error"])
     return f'{separation}"', f"{angle} deg", difference

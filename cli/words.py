@@ -39,6 +39,16 @@ def with_error(value: float | None, error: float | None) -> str:
     return f"{value:.{places}f} +/- {error:.{places}f}"
 
 
+def with_interval(value: float | None, low: float, high: float) -> str:
+    """A value and the ends of its interval, to two figures of the interval."""
+    if value is None or not math.isfinite(value):
+        return NONE
+    width = high - low
+    places = max(1 - math.floor(math.log10(width)), 0) if width > 0.0 else 3
+    least = "0" if low == 0.0 else f"{low:.{places}f}"
+    return f"{value:.{places}f} ({least} to {high:.{places}f})"
+
+
 def probability(value: float | None) -> str:
     """A probability; a small one as a bound."""
     if value is None or not math.isfinite(value):

@@ -17,6 +17,7 @@ from simimg.assembly.train import Train, assemble_train
 from simimg.errors import InputError
 from simimg.resolving.criteria import sparrow
 from simimg.resolving.judging import Judgement
+from simimg.resolving.notes import measured_notes
 from simimg.resolving.observation import Observation
 from simimg.resolving.records import PairMeasurement
 from simimg.resolving.resolution import BRIGHTEST_DIFFERENCE, Directions
@@ -40,6 +41,15 @@ def advise(observation: Observation, judgement: Judgement, *, brief: bool = Fals
     brief : bool, optional
         Leave out what takes time: which seeing, aperture or pixel would resolve the pair.
     """
+    said = _meaning(observation, judgement, brief)
+    if judgement.sighting.empty or judgement.geometry is None:
+        return said
+    fwhm = observation.fwhm * observation.arcsec
+    return " ".join([said, *measured_notes(judgement.record, fwhm_arcsec=fwhm)])
+
+
+def _meaning(observation: Observation, judgement: Judgement, brief: bool) -> str:
+    """What the answer means and what would change it."""
     record = judgement.record
     if judgement.sighting.empty:
         return "No star stands out of the noise here."

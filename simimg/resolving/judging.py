@@ -10,6 +10,7 @@ from math import degrees, hypot, nan
 
 import numpy as np
 
+from simimg.resolving.interval import is_lopsided, separation_interval
 from simimg.resolving.observation import Observation
 from simimg.resolving.pairfit import PairGeometry, pair_geometry
 from simimg.resolving.pairlimits import PairLimits
@@ -85,6 +86,7 @@ def judge(
     difference, spread = geometry.magnitude_difference, geometry.errors[2]
     ra, dec = _sky(observation, x, y)
     errors = _errors(step, geometry)
+    low, high = _interval(sighting, geometry, step.length_arcsec)
     record = PairMeasurement(
         label="" if named is None else named.label,
         x=x,
@@ -93,6 +95,8 @@ def judge(
         dec_deg=dec,
         separation_arcsec=step.length_arcsec,
         separation_error_arcsec=errors[0],
+        separation_low_arcsec=low,
+        separation_high_arcsec=high,
         position_angle_deg=step.position_angle_deg,
         position_angle_error_deg=errors[1],
         magnitude_difference=difference,
@@ -134,6 +138,21 @@ def _errors(step: SkyStep, geometry: PairGeometry) -> tuple[float, float]:
     variances = np.einsum("ij,jk,ik->i", slopes, covariance, slopes)
     length, angle = (float(value) for value in np.sqrt(np.maximum(variances, 0.0)))
     return length, angle
+
+
+def _interval(sighting: Sighting, geometry: PairGeometry, arcsec: float) -> tuple[float, float]:
+    """The separation's interval (arcsec), NaN where its error says all.
+
+    Nor is there one without the pixels. `arcsec` is the separation on the sky.
+    """
+    double, cutouts, chance = sighting.double, sighting.cutouts, sighting.probability_single
+    if double is None or not cutouts or not geometry.separation > 0.0:
+        return nan, nan
+    if not is_lopsided(geometry, chance=chance, fwhm=cutouts[0].psf.fwhm):
+        return nan, nan
+    found = separation_interval(cutouts, single=sighting.single, double=double, chance=chance)
+    scale = arcsec / geometry.separation
+    return found.low * scale, found.high * scale
 
 
 def _criteria(

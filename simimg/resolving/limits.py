@@ -23,7 +23,7 @@ from simimg.resolving.bound import PairPrecision
 from simimg.resolving.criteria import first_dark_ring
 from simimg.resolving.expectation import Expectation
 from simimg.resolving.listing import Listing, ObjectLimits
-from simimg.resolving.notes import limit_notes, nyquist_pixel
+from simimg.resolving.notes import bound_notes, limit_notes, nyquist_pixel
 from simimg.resolving.resolution import Directions, Resolution, computable, to_arcsec
 from simimg.resolving.signal import scene_detector
 from simimg.scene.model import Scene
@@ -169,6 +169,10 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
         width=delivered.profile(angle).width,
         expectation=expectation,
     )
+    objects = listing.objects(found)
+    apart = [(o.separation_arcsec, o.bound) for o in objects if o.separation_arcsec is not None]
+    notes = limit_notes(scene, train, diffraction, focal, angle, of_optics, of_all)
+    notes += bound_notes(apart, fwhm_arcsec=of_all.fwhm_arcsec)
     half_light, most_light = encircled_diameters(effective, (0.5, 0.8))
     scale = train.pixel_scale
     return Limits(
@@ -186,8 +190,8 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
         ee50_arcsec=to_arcsec(half_light),
         ee80_arcsec=to_arcsec(most_light),
         nyquist_pixel_arcsec=to_arcsec(nyquist_pixel(train)),
-        objects=listing.objects(found),
-        notes=tuple(limit_notes(scene, train, diffraction, focal, angle, of_optics, of_all)),
+        objects=objects,
+        notes=tuple(notes),
     )
 
 

@@ -1,11 +1,75 @@
-"""What should be known beside the figures of a table of limits, in sentences. Arcseconds."""
+"""What should be known beside the figures: of a table of limits, of a measured pair. Arcseconds."""
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from math import isfinite
+
 from simimg.assembly.train import Train
 from simimg.optics.wavefront import depth_of_focus, marechal_holds
+from simimg.resolving.bound import PairPrecision
+from simimg.resolving.records import PairMeasurement
 from simimg.resolving.resolution import Directions, Resolution, to_arcsec
 from simimg.scene.model import Scene
+
+CLOSE = 0.5
+"""FWHM below which a pair's errors grow as theory says that they must."""
+_TRUSTED = 0.2, 0.15  # bounds (of the separation, in it; magnitudes) up to which they are reached
+
+
+def measured_notes(record: PairMeasurement, *, fwhm_arcsec: float) -> list[str]:
+    """What should be known beside a measured pair's errors.
+
+    Parameters
+    ----------
+    record : PairMeasurement
+    fwhm_arcsec : float
+        Of the delivered PSF.
+    """
+    if not isfinite(record.separation_arcsec):
+        return []
+    notes = []
+    low, high = record.separation_low_arcsec, record.separation_high_arcsec
+    if isfinite(high):
+        notes.append(
+            "The likelihood of the separation is lopsided: with 68 % confidence it lies from "
+            f"{low:.3g} to {high:.3g} arcsec."
+        )
+    if record.separation_arcsec < CLOSE * fwhm_arcsec:
+        notes.append(_degraded(record.separation_arcsec / fwhm_arcsec) + ".")
+    return notes
+
+
+def bound_notes(
+    pairs: Sequence[tuple[float, PairPrecision | None]], *, fwhm_arcsec: float
+) -> list[str]:
+    """What should be known beside the bounds of pairs far closer than the PSF is wide.
+
+    Parameters
+    ----------
+    pairs : sequence of (float, PairPrecision or None)
+        Separation (arcsec) and bounds of each.
+    fwhm_arcsec : float
+        Of the delivered PSF.
+    """
+    notes = []
+    for separation, bound in pairs:
+        if bound is None or not separation < CLOSE * fwhm_arcsec:
+            continue
+        text = _degraded(separation / fwhm_arcsec)
+        part, spread = bound.separation_arcsec / separation, bound.magnitude_difference
+        if part > _TRUSTED[0] or spread > _TRUSTED[1]:
+            text += "; with these bounds estimates scatter more, and lopsidedly"
+        notes.append(f"{bound.label or 'The pair'}: {text[0].lower()}{text[1:]}.")
+    return notes
+
+
+def _degraded(ratio: float) -> str:
+    """What theory says of a separation so far below the FWHM."""
+    return (
+        f"At {ratio:.2g} of the FWHM errors of the separation grow as 1/separation, and a pair of "
+        "equal stars can hardly be told from a wider one of unequal stars"
+    )
 
 
 def nyquist_pixel(train: Train) -> float:

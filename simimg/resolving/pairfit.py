@@ -153,13 +153,13 @@ def fit_pair(
 
 def refine_pair(cutouts: Sequence[Cutout], single: StarFit, scan: SecondStarScan) -> StarFit | None:
     """Fit two stars from every promising place of a scan; the best, or None."""
-    search = _PairSearch(cutouts, scan.radius)
+    search = PairSearch(cutouts, scan.radius)
     states = []
-    for start in _starts(single, scan, cutouts[0].psf.fwhm):
-        state = _State(start, search.expand(start), 1e-3)
+    for start in pair_starts(single, scan, cutouts[0].psf.fwhm):
+        state = PairState(start, search.expand(start), 1e-3)
         states.append(search.run(state, _FIRST_STEPS, _ENOUGH))
     states.sort(key=lambda state: state.now.deviance)
-    finals: list[_State] = []
+    finals: list[PairState] = []
     for state in states[:_FINALISTS]:
         if state.now.deviance > states[0].now.deviance + _GAP:
             continue
@@ -175,8 +175,17 @@ def refine_pair(cutouts: Sequence[Cutout], single: StarFit, scan: SecondStarScan
     )
 
 
-def _starts(single: StarFit, scan: SecondStarScan, fwhm: float) -> list[FloatArray]:
-    """Inner vectors to start from: photocentre x, y, total, dx, dy, log ratio, the rest."""
+def inner_vector(fit: StarFit) -> FloatArray:
+    """Photocentre x, y, total, dx, dy, log ratio and the rest of a fit of two stars."""
+    vector = fit.vector
+    one, two = vector[2], vector[5]
+    centre = (one * vector[0:2] + two * vector[3:5]) / (one + two)
+    pair = [*centre, one + two, *(vector[3:5] - vector[0:2]), np.log(two / one)]
+    return np.concatenate([pair, vector[6:]])
+
+
+def pair_starts(single: StarFit, scan: SecondStarScan, fwhm: float) -> list[FloatArray]:
+    """Inner vectors to start from, as `inner_vector` gives them: every promising place."""
     (x, y), total = single.places[0], float(single.electrons[0])
     rest = np.concatenate([single.background, single.extras])
     starts: list[FloatArray] = []
@@ -207,8 +216,8 @@ def _starts(single: StarFit, scan: SecondStarScan, fwhm: float) -> list[FloatArr
 
 
 @dataclass
-class _State:
-    """Where a descent stands."""
+class PairState:
+    """Where a descent stands: an inner vector (see `inner_vector`)."""
 
     vector: FloatArray
     now: Expansion
@@ -216,13 +225,24 @@ class _State:
     converged: bool = False
 
 
-class _PairSearch:
-    """Descent of the deviance in the inner coordinates, the separation kept within a radius."""
+class PairSearch:
+    """Descent of the deviance in the inner coordinates, the separation kept within a radius.
 
-    def __init__(self, cutouts: Sequence[Cutout], radius: float) -> None:
+    Parameters
+    ----------
+    cutouts : sequence of Cutout
+    radius : float
+        Pixels.
+    held : bool, optional
+        Whether the separation is to be the radius itself.
+    """
+
+    def __init__(self, cutouts: Sequence[Cutout], radius: float, *, held: bool = False) -> None:
         self.likelihood = Likelihood(cutouts, 2)
         self.radius = radius
+        self.held = held
         self.reach = 0.5 * cutouts[0].psf.fwhm
+        self.turn = min(self.reach, radius) if held else self.reach
 
     def outer(self, inner: FloatArray) -> FloatArray:
         """From the inner coordinates to x1, y1, electrons1, x2, y2, electrons2, the rest."""
@@ -247,16 +267,16 @@ class _PairSearch:
         turn[5, [2, 5]] = np.array([-1.0, 1.0]) * share * (1.0 - share) * inner[2]
         return Expansion(outer.deviance, turn @ outer.slope, turn @ outer.information @ turn.T)
 
-    def run(self, state: _State, steps: int, enough: float) -> _State:
+    def run(self, state: PairState, steps: int, enough: float) -> PairState:
         """Take up to ``steps`` trial steps, until less than ``enough`` deviance is to be won."""
         vector, now, damping = state.vector, state.now, state.damping
         for _ in range(steps):
             step, promised = self._step(vector, now, damping)
             if promised < enough and damping < 0.1:
-                return _State(vector, now, damping, True)
+                return PairState(vector, now, damping, True)
             trial = self._kept(vector + step)
             if abs(trial[5]) > _MOST_RATIO:
-                return _State(vector, now, damping, True)
+                return PairState(vector, now, damping, True)
             candidate = self.expand(trial)
             fall = now.deviance - candidate.deviance
             damping = next_damping(damping, fall, promised)
@@ -264,26 +284,37 @@ class _PairSearch:
                 vector, now = trial, candidate
             elif damping > 1e8:
                 break
-        return _State(vector, now, damping)
+        return PairState(vector, now, damping)
+
+    def along_rim(self, vector: FloatArray, now: Expansion) -> tuple[FloatArray, Expansion]:
+        """The expansion at a held separation, and its directions, shape (p - 1, p).
+
+        They are the photocentre, the total, the way along the rim (pixels), the log ratio, the
+        rest.
+        """
+        dx, dy = vector[3:5] / float(np.hypot(*vector[3:5]))
+        tangent = np.zeros((len(vector) - 1, len(vector)))
+        tangent[[0, 1, 2], [0, 1, 2]] = 1.0
+        tangent[3, 3:5] = -dy, dx
+        tangent[range(4, len(vector) - 1), range(5, len(vector))] = 1.0
+        information = tangent @ now.information @ tangent.T
+        return tangent, Expansion(now.deviance, tangent @ now.slope, information)
 
     def _step(self, vector: FloatArray, now: Expansion, damping: float) -> tuple[FloatArray, float]:
         """One damped step; along the rim only where the rim holds the star back."""
-        step, promised = damped_step(now, damping)
-        dx, dy = vector[3:5]
-        length = float(np.hypot(dx, dy))
-        if length >= self.radius * (1.0 - 1e-9) and dx * step[3] + dy * step[4] > 0:
-            tangent = np.zeros((len(vector) - 1, len(vector)))
-            tangent[[0, 1, 2], [0, 1, 2]] = 1.0
-            tangent[3, 3:5] = -dy / length, dx / length
-            tangent[range(4, len(vector) - 1), range(5, len(vector))] = 1.0
-            held = Expansion(
-                now.deviance, tangent @ now.slope, tangent @ now.information @ tangent.T
-            )
+        length = float(np.hypot(vector[3], vector[4]))
+        along = self.held
+        if not along:
+            step, promised = damped_step(now, damping)
+            outward = vector[3] * step[3] + vector[4] * step[4] > 0
+            along = length >= self.radius * (1.0 - 1e-9) and outward
+        if along:
+            tangent, held = self.along_rim(vector, now)
             short, promised = damped_step(held, damping)
             step = tangent.T @ short
         longest = max(
             float(np.hypot(step[0], step[1])) / self.reach,
-            float(np.hypot(step[3], step[4])) / self.reach,
+            float(np.hypot(step[3], step[4])) / self.turn,
             abs(float(step[5])) / 1.5,
             -float(step[2]) / (0.7 * vector[2]),
             self.likelihood.layout.longest(step, self.reach),
@@ -293,6 +324,6 @@ class _PairSearch:
     def _kept(self, trial: FloatArray) -> FloatArray:
         """Pull the second star back to the rim."""
         length = float(np.hypot(trial[3], trial[4]))
-        if length > self.radius:
+        if length > self.radius or self.held:
             trial[3:5] *= self.radius / length
         return trial

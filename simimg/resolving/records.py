@@ -7,7 +7,7 @@ first; NaN where the data do not tell.
 from __future__ import annotations
 
 from dataclasses import dataclass, fields, is_dataclass
-from math import isfinite
+from math import isfinite, nan
 from typing import Any
 
 
@@ -54,6 +54,9 @@ class PairMeasurement:
     ra_deg, dec_deg : float
         The same on the sky.
     separation_arcsec, separation_error_arcsec : float
+    separation_low_arcsec, separation_high_arcsec : float
+        Ends of the separation's 68.27 % interval, where its likelihood is lopsided and the error,
+        which is symmetric, would mislead (`simimg.resolving.interval`); NaN elsewhere.
     position_angle_deg, position_angle_error_deg : float
         Of the second star about the first, north through east, 0 to 360.
     magnitude_difference, magnitude_difference_error : float
@@ -92,6 +95,8 @@ class PairMeasurement:
     saddle_ratio_error: float
     rayleigh: CriterionVerdict
     sparrow: CriterionVerdict
+    separation_low_arcsec: float = nan
+    separation_high_arcsec: float = nan
     truth: PairTruth | None = None
     advice: str = ""
 

@@ -34,6 +34,8 @@ _COLUMNS = (
     ("dec_deg", "deg", "first star, declination"),
     ("separation_arcsec", "arcsec", "of the two stars"),
     ("separation_error_arcsec", "arcsec", "standard error"),
+    ("separation_low_arcsec", "arcsec", "68 % interval, where the error misleads"),
+    ("separation_high_arcsec", "arcsec", "68 % interval, where the error misleads"),
     ("position_angle_deg", "deg", "of the second star, north through east"),
     ("position_angle_error_deg", "deg", "standard error"),
     ("magnitude_difference", "mag", "second minus first"),

@@ -34,7 +34,7 @@ def panel_titles(frame: Frame, subject: Subject) -> tuple[str, str]:
     measured = subject.measurement
     if measured is None or subject.second is None:
         return left, label
-    separation = with_error(measured.separation_arcsec, measured.separation_error_arcsec)
+    separation = _separation(measured)
     verdicts = {"Rayleigh": measured.rayleigh.verdict, "Sparrow": measured.sparrow.verdict}
     if len(set(verdicts.values())) == 1:
         words = f"{measured.rayleigh.verdict} (Rayleigh, Sparrow)"
@@ -158,7 +158,7 @@ def _verdict_sentences(measured: PairMeasurement, name: str) -> list[str]:
     chance = f"chance of a single star {_chance(measured.probability_single)}"
     if not isfinite(measured.separation_arcsec):
         return [f"{name}: no second star found, {chance}."]
-    separation = with_error(measured.separation_arcsec, measured.separation_error_arcsec)
+    separation = _separation(measured)
     angle = with_error(measured.position_angle_deg, measured.position_angle_error_deg)
     difference = with_error(measured.magnitude_difference, measured.magnitude_difference_error)
     turned = " or half a turn from it" if measured.ambiguous_180 else ""
@@ -170,6 +170,14 @@ def _verdict_sentences(measured: PairMeasurement, name: str) -> list[str]:
     if not measured.advice:
         return [found, "; ".join(criteria) + "."]
     return [found, "; ".join(criteria) + ".", measured.advice]
+
+
+def _separation(measured: PairMeasurement) -> str:
+    """With its error, or with its interval where the error would mislead."""
+    low, high = measured.separation_low_arcsec, measured.separation_high_arcsec
+    if not isfinite(high):
+        return with_error(measured.separation_arcsec, measured.separation_error_arcsec)
+    return f"{measured.separation_arcsec:.2g} ({low:.2g} to {high:.2g})"
 
 
 def _criterion(name: str, outcome: CriterionVerdict) -> str:

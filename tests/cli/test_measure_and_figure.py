@@ -1,5 +1,7 @@
 """measure prints what a frame says of its pairs; figure draws it."""
 
+import re
+
 import numpy as np
 import pytest
 from astropy.io import fits
@@ -12,6 +14,8 @@ PAIR_KEYS = {
     "dec_deg",
     "separation_arcsec",
     "separation_error_arcsec",
+    "separation_low_arcsec",
+    "separation_high_arcsec",
     "position_angle_deg",
     "position_angle_error_deg",
     "magnitude_difference",
@@ -68,6 +72,23 @@ class TestMeasure:
             assert "limit" in line
             assert "(probability " in line
         assert "confirmed with the observatory" in result.err
+
+    def test_a_lopsided_separation_has_an_interval(self, run, scene):
+        close = ("--set", "pair.0.separation=0.35 arcsec", "--set", "pair.0.magnitudes=[15, 15.3]")
+        assert run("expose", scene, "-o", "close.fits", "--quiet", *close).code == 0
+        (pair,) = run("measure", "close.fits", "--json").json["pairs"]
+        low, high = pair["separation_low_arcsec"], pair["separation_high_arcsec"]
+        assert 0.0 <= low < pair["separation_arcsec"] < high
+        lines = run("measure", "close.fits").out.splitlines()
+        assert re.match(r'SR-1  [0-9.]+ \([0-9.]+ to [0-9.]+\)"   PA ', lines[0])
+        said = " ".join(" ".join(lines).split())
+        assert "The likelihood of the separation is lopsided: with 68 % confidence" in said
+        assert "of the FWHM errors of the separation grow as 1/separation" in said
+        # A pair well apart has neither.
+        assert run("expose", scene, "-o", "frame.fits", "--quiet").code == 0
+        (wide,) = run("measure", "frame.fits", "--json").json["pairs"]
+        assert wide["separation_low_arcsec"] is None
+        assert wide["separation_high_arcsec"] is None
 
     def test_places_come_after_the_pairs_in_their_order(self, run, frame):
         arguments = ["measure", frame, "--near", "43,36", "--near", "24,20", "--json"]

@@ -53,11 +53,17 @@ def sampled(transfer: Radial, *, oversampling: int, half_width: int) -> np.ndarr
 
 @cache
 def model(kind: str) -> PsfModel:
-    """PSF models by name: in air, above it, and barely two pixels to the FWHM."""
+    """PSF models by name: in air, above it, and barely two pixels to the FWHM.
+
+    On the finer pixels next to nothing is left beyond the Nyquist frequency: 1e-3 of the PSF in
+    air, nothing above it. Those named coarse have two pixels to the delivered FWHM.
+    """
     transfer, oversampling, half_width = {
         "air": (kolmogorov(3.0), 3, 28),
         "space": (airy(0.5), 4, 24),
         "coarse": (gaussian(1.75), 4, 20),
+        "coarse air": (kolmogorov(1.843), 4, 20),
+        "coarse space": (airy(0.538), 4, 24),
     }[kind]
     image = sampled(transfer, oversampling=oversampling, half_width=half_width)
     return PsfModel.from_image(image, oversampling=oversampling)

@@ -18,6 +18,8 @@ NAMES = {
     "dec_deg",
     "separation_arcsec",
     "separation_error_arcsec",
+    "separation_low_arcsec",
+    "separation_high_arcsec",
     "position_angle_deg",
     "position_angle_error_deg",
     "magnitude_difference",

@@ -20,7 +20,8 @@ from tests.show import frames
 @pytest.fixture(scope="module")
 def rows():
     shot = frames.frame()
-    good = frames.measurement(shot, label="A \N{GREEK SMALL LETTER ALPHA}")
+    ends = {"separation_low_arcsec": 0.55, "separation_high_arcsec": 0.7}
+    good = frames.measurement(shot, label="A \N{GREEK SMALL LETTER ALPHA}", **ends)
     single = frames.measurement(
         shot, label="", separation_arcsec=np.nan, position_angle_deg=np.nan, elongated=False
     )
@@ -42,6 +43,10 @@ def test_it_comes_back_with_units(rows, ending, tmp_path):
     assert table["separation_arcsec"][0] == rows[0].pair.separation_arcsec
     separation = np.ma.filled(np.ma.asarray(table["separation_arcsec"], dtype=float), np.nan)
     assert np.isnan(separation[1])
+    for end in ("separation_low_arcsec", "separation_high_arcsec"):
+        ends = np.ma.filled(np.ma.asarray(table[end], dtype=float), np.nan)
+        assert ends[0] == getattr(rows[0].pair, end)
+        assert np.isnan(ends[1])
     assert list(table["elongated"]) == [True, False]
     assert list(table["rayleigh_verdict"]) == ["unresolved", "unresolved"]
     assert table["sparrow_probability"][0] == rows[0].pair.sparrow.probability
