@@ -124,10 +124,17 @@ class SparrowCurve:
     separations: FloatArray
 
     def __call__(self, magnitude_difference: FloatArray | float) -> FloatArray:
-        """Limit for any differences, linear between the table's; its ends hold beyond it."""
-        return np.asarray(
-            np.interp(magnitude_difference, self.magnitude_differences, self.separations)
-        )
+        """Limit for any differences, between the table's; its ends hold beyond it.
+
+        Linear in the power of 2/3, with which the limit rises from that of the equal pair: where
+        one maximum splits into two, the edge of the split is a cusp.
+        """
+        table = _along_cusp(self.magnitude_differences)
+        return np.asarray(np.interp(_along_cusp(magnitude_difference), table, self.separations))
+
+
+def _along_cusp(difference: FloatArray | float) -> FloatArray:
+    return np.asarray(np.sign(difference) * np.abs(difference) ** (2.0 / 3.0))
 
 
 def sparrow_curve(

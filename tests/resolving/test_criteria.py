@@ -252,11 +252,22 @@ def test_curve_agrees_with_single_limits():
     assert curve.magnitude_differences.size == 33
     for difference in (-3.0, -0.5, 0.0, 1.0, 4.0):
         assert_allclose(curve(difference), sparrow(profile, difference), rtol=1e-4)
-    between = curve(np.array([1.0, 1.1, 1.25]))
-    assert between[1] == pytest.approx(between[0] + 0.4 * (between[2] - between[0]))
     assert curve(9.0) == curve(4.0)
     with pytest.raises(ValueError, match="read-only"):
         curve.separations[0] = 1.0
+
+
+@pytest.mark.parametrize("profile", [gaussian, airy], ids=["gaussian", "airy"])
+def test_curve_holds_between_its_steps_where_the_limit_is_steep(profile):
+    """Nearly equal pairs: the limit rises with the power of 2/3 of the difference."""
+    curve = sparrow_curve(profile, largest=2.0, step=0.1)
+    for difference in (0.003, 0.02, 0.05, 0.15, 0.95):
+        exact = sparrow(profile, difference)
+        # The next power is left out; a straight line between the steps is off by ten times as much.
+        assert_allclose(curve(difference), exact, rtol=1e-3)
+        if difference in (0.02, 0.05):
+            straight = np.interp(difference, curve.magnitude_differences, curve.separations)
+            assert straight < 0.99 * exact
 
 
 def test_wings_that_hide_a_faint_companion_far_out():
