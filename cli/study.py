@@ -12,6 +12,7 @@ from simimg.errors import InputError, mistake
 from simimg_cli import options
 from simimg_cli.output import document, note, say, table, warn
 from simimg_cli.progress import progress_bar
+from simimg_cli.trade import rows_of
 from simimg_cli.words import figures
 
 if TYPE_CHECKING:
@@ -64,6 +65,17 @@ _TRIED = (("fraction_rayleigh", "by Rayleigh"), ("fraction_sparrow", "by Sparrow
 @click.option(
     "--strip", type=click.Path(), metavar="FILE", help="Draw the frames side by side along one key."
 )
+@click.option(
+    "--pixel-advice",
+    is_flag=True,
+    help="Say which pixel scales suit the pair, and why, in place of varied keys.",
+)
+@click.option(
+    "--separation-map",
+    is_flag=True,
+    help="Say which separations are resolved against the magnitude difference, in place of varied "
+    "keys.",
+)
 @options.workers
 @options.cluster
 @options.overwrite
@@ -81,6 +93,8 @@ def command(
     column: str | None,
     level: float | None,
     strip: str | None,
+    pixel_advice: bool,
+    separation_map: bool,
     workers: int | None,
     cluster: str | None,
     overwrite: bool,
@@ -102,6 +116,27 @@ def command(
     if lines:
         raise InputError(*lines)
     opened = open_scene(scene, overrides=overrides, without=without).scene
+    if pixel_advice or separation_map:
+        if vary or plot or strip or column or level or cluster or (pixel_advice and separation_map):
+            raise click.UsageError(
+                "--pixel-advice and --separation-map stand alone; leave out what is of varied keys"
+            )
+        from simimg_cli.trade import run_pixel_advice, run_separation_map
+
+        shared: dict[str, Any] = {
+            "pair": pair,
+            "output": output,
+            "workers": options.processors() if workers is None else workers,
+            "overwrite": overwrite,
+            "as_json": as_json,
+            "quiet": quiet,
+        }
+        if pixel_advice:
+            run_pixel_advice(scene, opened, trials=trials, **shared)
+        else:
+            run_separation_map(scene, opened, **shared)
+        print_cautions(opened, quiet=quiet)
+        return
     planned = plan(opened, vary=_varied(vary), trials=trials, pair=pair)
     if strip is not None and len(planned.varied) != 1:
         raise InputError(mistake("--strip", "", "shows one varied key", "vary one key"))
@@ -133,7 +168,7 @@ def command(
                 for one in made.varied
             ],
             "trials": made.trials,
-            "points": _points(sweep_columns(made)),
+            "points": rows_of(sweep_columns(made)),
         }
         if caption:
             payload["caption"] = caption
@@ -233,12 +268,6 @@ def _draw(
 
         captions.append(write_study_strip(planned, made, strip, overwrite=overwrite))
     return "\n".join(captions)
-
-
-def _points(columns: Sequence[Any]) -> list[dict[str, Any]]:
-    """The rows of the table, each by the names of its columns."""
-    rows = zip(*(column.values.tolist() for column in columns), strict=True)
-    return [dict(zip([column.name for column in columns], row, strict=True)) for row in rows]
 
 
 def _print(made: Sweep) -> None:

@@ -7,9 +7,11 @@ within a few percent in the share. That tells trials where to begin. Arcseconds.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from math import hypot, inf, isfinite, nan, sqrt
 
+import numpy as np
 from scipy.special import ndtr
 
 from simimg.scene.file import replace
@@ -18,6 +20,9 @@ from simimg.study.point import Question, work_out
 
 _BEYOND = 1.6448536269514722  # errors that hold 95 % to one side
 _SINGLE = 14.0  # fall of the deviance at which a single star has a chance of 1 %
+_CUSP = 2.0 / 3.0
+_MEANT = 0.05  # power of a difference above which the limit's own rise is known from it
+_USUAL_RISE = 0.43  # of Kolmogorov's PSF, over the limit of an equal pair; 0.27 of a clear aperture
 _MORE = 3.0  # by which two stars follow the noise better than one
 
 
@@ -58,22 +63,31 @@ def outlook(scene: Scene, asked: Question, criterion: str) -> Outlook:
     InputError
         A set-up that cannot be computed.
     """
-    row = work_out(scene, asked)
+    return outlook_of(work_out(scene, asked), criterion)
+
+
+def outlook_of(row: Mapping[str, float], criterion: str) -> Outlook:
+    """The same from a point of a study.
+
+    Parameters
+    ----------
+    row : mapping
+        By the names of `simimg.study.point.COLUMNS`.
+    criterion : {"rayleigh", "sparrow"}
+    """
     separation, limit = row["separation"], row[f"pair_{criterion}"]
     error, significance = row["bound_separation"], row["expected_significance"]
-    if criterion == "sparrow":
-        # The limit itself hangs on the magnitude difference, which has an error, too.
-        difference = abs(row["magnitude_difference"])
-        slope = (limit - row["delivered_sparrow"]) / max(difference, 0.3)
-        error = hypot(error, slope * min(row["bound_magnitude_difference"], 1.0))
-    if not (isfinite(separation) and isfinite(limit)):
-        share = 0.0 if limit == inf else nan
-    elif not isfinite(error):
-        share = 0.0
-    else:
-        beyond = (separation - limit) / error if error > 0.0 else inf * (separation - limit)
-        seen = (significance**2 + _MORE - _SINGLE) / (2.0 * sqrt(significance**2 + 1.0))
-        share = float(ndtr(beyond - _BEYOND) * ndtr(seen))
+    if criterion == "sparrow" and isfinite(limit):
+        limit, lean = blurred_limit(
+            row["delivered_sparrow"],
+            limit,
+            difference=row["magnitude_difference"],
+            spread=row["bound_magnitude_difference"],
+        )
+        error = hypot(error, lean)
+    share = share_resolved(
+        separation=separation, limit=limit, error=error, significance=significance
+    )
     return Outlook(
         figure=share,
         separation=separation,
@@ -82,6 +96,53 @@ def outlook(scene: Scene, asked: Question, criterion: str) -> Outlook:
         significance=significance,
         saturated=row["saturated"] == 1.0,
     )
+
+
+def blurred_limit(
+    equal: float, limit: float, *, difference: float, spread: float, about: float | None = None
+) -> tuple[float, float]:
+    """Sparrow's limit as an uncertain magnitude difference leaves it: its mean and its scatter.
+
+    About equal stars the limit has a cusp, rising as the difference to the power of 2/3 (the cusp
+    catastrophe of two maxima that merge), so that an error of the difference always raises it.
+
+    Parameters
+    ----------
+    equal, limit : float
+        For an equal pair, and for this difference.
+    difference, spread : float
+        Magnitude difference and its error.
+    about : float, optional
+        Difference that is asked for, where `limit` is that of another.
+    """
+    power = abs(difference) ** _CUSP
+    rise = (limit - equal) / power if power > _MEANT else _USUAL_RISE * equal
+    centre = difference if about is None else about
+    steps = np.linspace(-3.0, 3.0, 61)
+    weights = np.exp(-0.5 * steps**2)
+    blurred = equal + rise * np.abs(centre + min(spread, 1.0) * steps) ** _CUSP
+    mean = float(np.average(blurred, weights=weights))
+    scatter = float(np.sqrt(np.average((blurred - mean) ** 2, weights=weights)))
+    return mean, scatter
+
+
+def share_resolved(*, separation: float, limit: float, error: float, significance: float) -> float:
+    """Share of the frames whose verdict would be `resolved`, about; NaN where nothing is known.
+
+    Parameters
+    ----------
+    separation, limit, error : float
+        Of the pair, of its criterion, and of their difference, in one unit.
+    significance : float
+        Standard deviations of the second star.
+    """
+    if not (isfinite(separation) and isfinite(limit)):
+        return 0.0 if limit == inf else nan
+    if not isfinite(error):
+        return 0.0
+    beyond = (separation - limit) / error if error > 0.0 else inf * (separation - limit)
+    seen = (significance**2 + _MORE - _SINGLE) / (2.0 * sqrt(significance**2 + 1.0))
+    return float(ndtr(beyond - _BEYOND) * ndtr(seen))
 
 
 def why_not(scene: Scene, asked: Question, criterion: str, *, place: str) -> str:

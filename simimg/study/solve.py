@@ -35,7 +35,8 @@ _ROUNDS, _MOST_ROUNDS = 4, 8  # of trials after the first: once they cross the g
 _SPREAD = 0.08  # widest first step of the trials to either side, as a share of the range
 _OFF = 0.03  # relative error of a boundary that limit and bound promise
 _TIGHT = 1e-3  # relative uncertainty with which the search of trials may end
-_LAST = 4  # times so many trials again at the boundary itself, twice
+_LAST = 2  # times so many trials again about the boundary, four times
+_NEAR = 0.2  # of a share, over which its curve is about straight
 
 Progress = Callable[[int, int], None]
 
@@ -308,9 +309,14 @@ class _Search:
             tried += self.tried(self._next(crossing, tried, farther), count, first=3 + 2 * number)
             crossing = fit_crossing(tried, goal)
         if crossing.sure:
-            # The share there is then known better than a user's own trials will tell.
-            tried += self.tried([crossing.place] * 2, _LAST * count, first=100)
-            crossing = fit_crossing(tried, goal)
+            # To either side first, then there: the share is then known better than a user's own
+            # trials will tell, and from near by, where the curve is straight.
+            half = max(crossing.error, 1e-4 * self.reach.size(crossing.place))
+            sides = [crossing.place - half, crossing.place + half]
+            tried += self.tried(sides, _LAST * count, first=100)
+            crossing = fit_crossing(_near(tried, goal), goal)
+            tried += self.tried([crossing.place] * 2, _LAST * count, first=102)
+            crossing = fit_crossing(_near(tried, goal), goal)
         made = sum(one.count for one in tried)
         if not crossing.sure:
             return _replaced(
@@ -361,6 +367,14 @@ class _Search:
         ]
         resolved = dict(self.jobs.run(_try, tasks))
         return [Tried(place, count, resolved[number]) for number, place in enumerate(inside)]
+
+
+def _near(tried: Sequence[Tried], goal: float) -> list[Tried]:
+    """Trials whose share is near the goal; all where these lie on one side of it."""
+    near = [one for one in tried if abs(one.resolved / one.count - goal) <= _NEAR]
+    shares = [one.resolved / one.count for one in near]
+    crossed = bool(shares) and min(shares) < goal < max(shares)
+    return near if crossed else list(tried)
 
 
 def _seed(seed: int, number: int) -> int:

@@ -1,0 +1,435 @@
+"""Objects of a scene put into a frame that exists, ours or anyone's.
+
+The objects alone are added, with the Poisson noise of their own electrons: the frame has its sky,
+dark signal, bias and read noise already. They go where the frame's coordinates say, with the PSF
+that the scene's telescope, air and band make at the frame's pixel scale, and become counts by the
+frame's gain. Whole counts stay whole: what a converter cut off a pixel is put back as an even draw
+of one count before the sum is rounded once more, so that neither faint wings are lost nor a second
+rounding noise comes in. A pixel ends at the frame's own saturation level.
+
+Electrons, counts, seconds; angles in radians, places in pixels from 0 at the centre of the first.
+"""
+
+from __future__ import annotations
+
+import os
+from dataclasses import dataclass
+from dataclasses import replace as changed_fields
+from math import atan2, degrees, pi
+from typing import TYPE_CHECKING
+
+import numpy as np
+
+from simimg.arrays import AnyArray, FloatArray, frozen
+from simimg.assembly.objects import Inventory, inventory
+from simimg.assembly.train import assemble_train
+from simimg.assembly.truth import truth_table
+from simimg.camera.poisson import arrivals
+from simimg.camera.streams import BLOCK_ROWS, Stage, stream
+from simimg.errors import InputError, mistake
+from simimg.fits.rewriting import Original, read_original, write_changed
+from simimg.frame import Frame
+from simimg.imaging.render import expected_image
+from simimg.resolving.given import Given
+from simimg.resolving.headers import (
+    header_gain,
+    header_saturation,
+    header_section,
+    header_time,
+    header_unit,
+)
+from simimg.resolving.observation import foreign_sky
+from simimg.resolving.skyplane import CoordinateSky, Sky, equatorial
+from simimg.scene.file import replace, requirements_to_expose, scene_id
+from simimg.scene.model import Scene
+from simimg.version import __version__
+
+if TYPE_CHECKING:
+    from astropy.table import Table
+
+_SAYS = (
+    "injected: true for an object that simimg put into a frame that existed; its electrons are of "
+    "the frame's exposure.",
+)
+_SQUARE = 0.01  # relative difference of a pixel's sides that is worth a line
+
+
+@dataclass(frozen=True, eq=False)
+class Injection:
+    """A frame with a scene's objects in it.
+
+    Attributes
+    ----------
+    original : Original
+        The file as it was.
+    stored : ndarray, shape (rows, columns)
+        The image as it is to be stored.
+    expected : ndarray, shape (rows, columns)
+        Expected electrons that were put in.
+    truth : astropy.table.Table
+        What the frame's TRUTH held, then the objects put in, with ``injected`` true.
+    added : int
+        Objects put in.
+    gain : float
+        Electrons to the count.
+    saturation : float
+        Counts at which a pixel ends.
+    pixel_scale : float
+        Side of a pixel (rad).
+    saturated : int
+        Pixels that reached the saturation level by what was put in.
+    seed : int
+    scene_id : str
+        Of the scene whose objects were put in.
+    notes : tuple of str
+        What was assumed.
+    """
+
+    original: Original
+    stored: AnyArray
+    expected: FloatArray
+    truth: Table
+    added: int
+    gain: float
+    saturation: float
+    pixel_scale: float
+    saturated: int
+    seed: int
+    scene_id: str
+    notes: tuple[str, ...] = ()
+
+    def write(self, path: str | os.PathLike[str], *, overwrite: bool = False) -> None:
+        """Write the file again with the image changed and the truth grown: whole, or not at all.
+
+        Raises
+        ------
+        InputError, RunError
+            As `simimg.frame.Frame.write`.
+        """
+        write_changed(
+            path,
+            self.original,
+            stored=self.stored,
+            truth=self.truth,
+            cards={"SIMULATE": (True, "holds simulated objects")},
+            history=[
+                f"simimg {__version__} put {self.added} simulated objects into this image, seed "
+                f"{self.seed}, {self.gain:.9g} electron/adu: rows of TRUTH with injected = T; "
+                f"scene of sha256 {self.scene_id}"
+            ],
+            truth_says=_SAYS,
+            overwrite=overwrite,
+        )
+
+
+def inject(
+    path: str | os.PathLike[str],
+    scene: Scene,
+    *,
+    hdu: int | str | None = None,
+    given: Given | None = None,
+    seed: int | None = None,
+    memory_bytes: int | None = None,
+    threads: int | None = None,
+) -> Injection:
+    """Put the objects of a scene into a frame.
+
+    Objects placed by ``x`` and ``y`` go to those pixels of the frame. Objects placed by ``ra`` and
+    ``dec``, and by ``east`` and ``north`` in a scene that says where it points, go where the
+    frame's coordinates show that place; without [pointing] in the scene ``east`` and ``north``
+    count from the middle of the frame. The exposure time is the frame's where its header tells it.
+
+    Parameters
+    ----------
+    path : path
+        A FITS file with a 2-D image.
+    scene : Scene
+        Its objects are put in; its telescope, air and band make the PSF and the electrons. Its sky,
+        its camera's noise and its pixels are of no effect.
+    hdu : int or str, optional
+        Number or name of the HDU that holds the image.
+    given : Given, optional
+        What goes before the frame's own header.
+    seed : int, optional
+        Of the objects' noise; the scene's unless given.
+    memory_bytes, threads : int, optional
+        As for `simimg.exposure.prepare`.
+
+    Returns
+    -------
+    Injection
+
+    Raises
+    ------
+    InputError
+        A file that cannot be read, a frame that tells neither gain nor pixel scale, a scene that
+        does not go with it.
+    """
+    given = given or Given()
+    where = os.fspath(path)
+    original = read_original(path, hdu=hdu)
+    frame = Frame.read(path, hdu=hdu)
+    notes: list[str] = []
+    gain = _gain(frame, given, where, notes)
+    sky = _named(where, frame, given, notes)
+    matched = _matched(scene, frame, sky, notes)
+    missing = requirements_to_expose(matched)
+    if missing:
+        raise InputError(*missing)
+    train = assemble_train(matched)
+    objects, ra, dec = _placed(matched, inventory(matched, train=train), frame, sky, where)
+    geometry = objects.geometry
+    expected = expected_image(
+        train.basis,
+        objects.sources,
+        columns=geometry.columns,
+        rows=geometry.rows,
+        pixel_scale=geometry.pixel_scale,
+        memory_bytes=memory_bytes,
+        threads=threads or os.cpu_count() or 1,
+    ).astype(np.float64)
+    lit = header_section(frame, "DATASEC", "TRIMSEC")
+    if lit is not None:
+        light = np.zeros_like(expected)
+        light[lit] = expected[lit]
+        expected = light
+    told = header_saturation(frame)
+    saturation = given.saturation
+    if saturation is None:
+        saturation = told.value if told is not None else original.value_range[1]
+    number = frame.value("EXPNUM", 0)
+    if seed is None:
+        seed = scene.exposure.seed if scene.exposure is not None else 0
+    stored, saturated = _with_electrons(
+        original,
+        expected,
+        gain=gain,
+        saturation=saturation,
+        seed=seed,
+        frame=number if isinstance(number, int) and 0 <= number < 2**31 else 0,
+    )
+    rows = truth_table(objects, train)
+    rows["ra"], rows["dec"] = np.degrees(ra), np.degrees(dec)
+    rows["ra"].unit = rows["dec"].unit = "deg"
+    return Injection(
+        original=original,
+        stored=frozen(stored),
+        expected=frozen(expected),
+        truth=_grown(original.truth, rows, original.name),
+        added=len(objects),
+        gain=gain,
+        saturation=float(saturation),
+        pixel_scale=sky.pixel_scale,
+        saturated=saturated,
+        seed=seed,
+        scene_id=scene_id(scene),
+        notes=tuple(notes),
+    )
+
+
+def _named(where: str, frame: Frame, given: Given, notes: list[str]) -> Sky:
+    try:
+        return foreign_sky(frame, given, notes)
+    except InputError as error:
+        lines = (line.removeprefix("frame: ") for line in error.lines)
+        raise InputError(*(f"{where}: {line}" for line in lines)) from error
+
+
+def _gain(frame: Frame, given: Given, where: str, notes: list[str]) -> float:
+    """Electrons to the count: given or told, never guessed."""
+    if given.gain is not None:
+        return given.gain
+    unit, rate = header_unit(frame)
+    time = header_time(frame) if rate else 1.0
+    if time is None:
+        what = "its unit is a rate and no exposure time is in its header"
+        raise InputError(mistake(where, "gain", what, "give --gain, electrons to one of its units"))
+    if unit == "electron":
+        return time
+    told, said = header_gain(frame)
+    notes += said
+    if told is None:
+        what = "no gain is in its header"
+        raise InputError(mistake(where, "gain", what, "give --gain, electrons to the count"))
+    return told.value * time
+
+
+def _matched(scene: Scene, frame: Frame, sky: Sky, notes: list[str]) -> Scene:
+    """The scene seen by the frame's detector: its pixels, scale, orientation and exposure time."""
+    rows, columns = frame.counts.shape
+    x, y = 0.5 * (columns - 1), 0.5 * (rows - 1)
+    axes = sky.axes(x, y)
+    sides = np.hypot(axes[0], axes[1])
+    if abs(sides[0] / sides[1] - 1.0) > _SQUARE:
+        notes.append("the frame's pixels are not square: the PSF is that of square ones")
+    changes: dict[str, object] = {
+        "camera.pixels": [columns, rows],
+        "camera.pixel_size": None,
+        "camera.pixel_scale": f"{degrees(sky.pixel_scale) * 3600.0!r} arcsec",
+        "camera.rotation": f"{degrees(atan2(axes[0, 1], axes[1, 1])) % 360.0!r} deg",
+        "camera.mirrored": bool(np.linalg.det(axes) > 0.0),
+        "camera.dark_current": None,
+        "sky": None,
+    }
+    ra, dec = sky.to_sky(x, y)
+    if isinstance(sky, CoordinateSky) and not _has(scene, "pointing.ra"):
+        changes["pointing.ra"] = f"{degrees(ra) % 360.0!r} deg"
+        changes["pointing.dec"] = f"{degrees(dec)!r} deg"
+    time = header_time(frame)
+    own = scene.exposure.time if scene.exposure is not None else None
+    if time is not None:
+        changes["exposure.time"] = f"{time!r} s"
+        if own is not None and abs(own / time - 1.0) > 1e-6:
+            notes.append(f"exposed for {time:g} s, as the frame says, not {own:g} s")
+    absent = [key for key in changes if changes[key] is None and not _has(scene, key)]
+    return replace(scene, {key: value for key, value in changes.items() if key not in absent})
+
+
+def _has(scene: Scene, key: str) -> bool:
+    table: object = scene.document
+    for part in key.split("."):
+        if not isinstance(table, dict) or part not in table:
+            return False
+        table = table[part]
+    return True
+
+
+def _placed(
+    scene: Scene, objects: Inventory, frame: Frame, sky: Sky, where: str
+) -> tuple[Inventory, FloatArray, FloatArray]:
+    """The objects at their places in the frame, with right ascension and declination (rad)."""
+    geometry = objects.geometry
+    ra, dec = geometry.to_sky(objects.x, objects.y)
+    if not isinstance(sky, CoordinateSky) or frame.wcs is None:
+        if scene.pointing is None:
+            ra, dec = np.full(len(objects), np.nan), np.full(len(objects), np.nan)
+        return objects, np.asarray(ra), np.asarray(dec)
+    by_pixel = _by_pixel(scene, objects)
+    x, y = np.array(objects.x), np.array(objects.y)
+    if not by_pixel.all():
+        there = ~by_pixel
+        try:
+            x[there], y[there] = _pixels(frame, ra[there], dec[there])
+        except Exception as error:  # strangers' coordinates fail in any way they like
+            what = "its coordinates do not reach the objects' places"
+            raise InputError(mistake(where, "coordinates", what, "place them nearer")) from error
+    ra, dec = np.array(ra), np.array(dec)
+    for row in np.flatnonzero(by_pixel)[:100_000]:
+        ra[row], dec[row] = sky.to_sky(float(x[row]), float(y[row]))
+    if not (np.isfinite(x).all() and np.isfinite(y).all()):
+        what = "its coordinates do not reach the objects' places"
+        raise InputError(mistake(where, "coordinates", what, "place them nearer"))
+    return changed_fields(objects, x=x, y=y), ra % (2.0 * pi), dec
+
+
+def _pixels(frame: Frame, ra: FloatArray, dec: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Pixels of ICRS places (rad) in the coordinates of a frame."""
+    from astropy.coordinates import SkyCoord
+    from astropy.wcs.utils import wcs_to_celestial_frame
+
+    assert frame.wcs is not None
+    wcs = frame.wcs if frame.wcs.naxis == 2 else frame.wcs.celestial
+    first, second = np.degrees(ra), np.degrees(dec)
+    if not equatorial(wcs):
+        there = SkyCoord(ra, dec, unit="rad").transform_to(wcs_to_celestial_frame(wcs))
+        first, second = there.spherical.lon.deg, there.spherical.lat.deg
+    if wcs.wcs.lng == 1:
+        first, second = second, first
+    places = wcs.all_world2pix(np.column_stack([first, second]), 0, tolerance=1e-6)
+    return places[:, 0], places[:, 1]
+
+
+def _by_pixel(scene: Scene, objects: Inventory) -> AnyArray:
+    """Which rows of the inventory were placed by pixels."""
+    from simimg.sky.catalogues import read_catalogue
+
+    flags: list[AnyArray] = []
+    for kind in ("star", "pair", "galaxy", "disc", "ring", "picture"):
+        for one in getattr(scene, kind):
+            flags.append(np.full(2 if kind == "pair" else 1, one.x is not None))
+    for catalogue in scene.catalogue:
+        source = scene.inputs[catalogue.file]
+        table = read_catalogue(
+            source.read(), source.name, columns=catalogue.columns, units=catalogue.units
+        )
+        size = next(iter(table.values())).size
+        flags.append(np.full(size, "x" in table))
+    joined = np.concatenate(flags) if flags else np.zeros(0, dtype=bool)
+    assert joined.size == len(objects)
+    return joined
+
+
+def _with_electrons(
+    original: Original,
+    expected: FloatArray,
+    *,
+    gain: float,
+    saturation: float,
+    seed: int,
+    frame: int,
+) -> tuple[AnyArray, int]:
+    """The stored image with electrons added, and the number of pixels that they filled."""
+    before = original.stored
+    stored = np.array(before)
+    least, most = original.value_range
+    whole = before.dtype.kind != "f"
+    saturated = 0
+    for block in range(-(-before.shape[0] // BLOCK_ROWS)):
+        rows = slice(block * BLOCK_ROWS, (block + 1) * BLOCK_ROWS)
+        electrons = np.empty(expected[rows].shape)
+        rng = stream(seed, frame=frame, stage=Stage.INJECTED, block=block)
+        arrivals(np.array(expected[rows]), rng, out=electrons)
+        value = original.values(before[rows])
+        level = value + electrons / gain
+        ceiling = np.minimum(np.maximum(saturation, value), most)
+        touched = (electrons > 0.0) & np.isfinite(value)
+        level = np.clip(level, least, ceiling)
+        if whole:
+            # The floor of a value plus an even draw from 0 to 1 has the value as its mean.
+            draws = stream(seed, frame=frame, stage=Stage.INJECTED_ROUNDING, block=block).random(
+                level.shape
+            )
+            steps = (level - original.zero) / original.scale
+            top = (ceiling - original.zero) / original.scale
+            made = np.floor(np.where(touched, steps, 0.0) + draws)
+            highest = np.floor(np.where(touched, top, 0.0))
+            made = np.minimum(made, highest) if original.scale > 0.0 else made
+        else:
+            made = (level - original.zero) / original.scale
+        full = made * original.scale + original.zero >= (
+            np.floor(saturation) if whole else saturation
+        )
+        saturated += int(np.count_nonzero(touched & full & (value < saturation)))
+        # A pixel whose whole number came out lower than it was took nothing in.
+        stored[rows][touched] = made[touched].astype(before.dtype)
+    return stored, saturated
+
+
+def _grown(old: Table | None, new: Table, detector: str) -> Table:
+    """The truth of a frame with the rows of what was put in."""
+    from astropy.table import Table
+
+    new["injected"] = np.ones(len(new), dtype=bool)
+    new["injected"].description = "put into a frame that existed"
+    if old is None:
+        return new
+    if "detector" in old.colnames:
+        new["detector"] = np.full(len(new), detector or "")
+    new["partner"] = np.where(new["partner"] >= 0, new["partner"] + len(old), -1).astype(np.int32)
+    grown = Table()
+    for name in dict.fromkeys([*old.colnames, *new.colnames]):
+        kind = (old if name in old.colnames else new)[name]
+        parts = [
+            np.asarray(table[name]) if name in table.colnames else _nothing(kind.dtype, len(table))
+            for table in (old, new)
+        ]
+        grown[name] = np.concatenate(parts)
+        grown[name].unit = kind.unit
+        grown[name].description = kind.description
+    return grown
+
+
+def _nothing(kind: np.dtype[np.generic], count: int) -> AnyArray:
+    """What a table says in a column that has no value: NaN, no text, false, -1."""
+    fill = {"f": np.nan, "U": "", "S": "", "b": False}.get(kind.kind, -1)
+    return np.full(count, fill, dtype=kind)
