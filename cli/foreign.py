@@ -120,6 +120,19 @@ def frame_options(function: _F) -> _F:
     return function
 
 
+def frame_options_named(*names: str) -> Callable[[_F], _F]:
+    """Some of them, by the names of their keywords."""
+
+    def add_all(function: _F) -> _F:
+        for add in reversed(_OPTIONS):
+            made = add(lambda: None)
+            if made.__click_params__[0].name in names:  # type: ignore[attr-defined]
+                function = add(function)
+        return function
+
+    return add_all
+
+
 @dataclass(frozen=True, kw_only=True)
 class Wanted:
     """What the user says of frames and their PSF; the names are those of the options."""

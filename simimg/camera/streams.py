@@ -21,6 +21,8 @@ class Stage(IntEnum):
 
     PHOTONS = 1
     READ_NOISE = 2
+    INJECTED = 40
+    INJECTED_ROUNDING = 41
 
 
 def stream(seed: int, *, frame: int, stage: Stage | int, block: int) -> np.random.Generator:

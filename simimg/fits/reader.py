@@ -67,7 +67,7 @@ def read_parts(path: str | os.PathLike[str], *, hdu: int | str | None = None) ->
         No such file; not FITS, damaged, without a usable image, or larger than simimg reads.
     """
     where = os.fspath(path)
-    with _open_hdus(where) as hdus:
+    with open_hdus(where) as hdus:
         return _parts(hdus, where, hdu)
 
 
@@ -82,7 +82,7 @@ def read_psf_file(path: str | os.PathLike[str]) -> tuple[AnyArray, int | None]:
         As for `read_parts`.
     """
     where = os.fspath(path)
-    with _open_hdus(where) as hdus:
+    with open_hdus(where) as hdus:
         named = [hdu for hdu in hdus if hdu.name.upper() == "PSF" and hdu.is_image]
         chosen = image_hdu(hdus, where, "PSF" if named else None)
         with _damage(where, "image"):
@@ -98,9 +98,9 @@ def read_psf_file(path: str | os.PathLike[str]) -> tuple[AnyArray, int | None]:
 
 
 @contextmanager
-def _open_hdus(where: str) -> Iterator[HDUList]:
+def open_hdus(where: str) -> Iterator[HDUList]:
     """The HDUs of a file that has been surveyed."""
-    with _opened(where) as handle:
+    with opened(where) as handle:
         survey(handle, where)
         handle.seek(0)
         with warnings.catch_warnings():
@@ -129,17 +129,21 @@ def _parts(hdus: HDUList, where: str, wanted: int | str | None) -> dict[str, Any
         "wcs": _read_wcs(chosen.header, (counts.shape[0], counts.shape[1]), where),
         "simulated": chosen.header.get("SIMULATE") is True,
     }
-    if not parts["simulated"] or chosen is not hdus[0]:
+    ours = parts["simulated"] and str(header.get("CREATOR", "")).startswith("simimg")
+    if not ours or chosen is not hdus[0]:
         # Extensions of the same names in other programs' files mean other things; but a mask is
         # a mask.
         with _damage(where, "mask"):
             flagged = foreign_mask(hdus, chosen, counts.shape)
         if flagged is not None:
             parts["mask"] = flagged
+        if parts["simulated"] and chosen is hdus[0] and "TRUTH" in [one.name for one in hdus[1:]]:
+            with _damage(where, "TRUTH"):
+                parts["truth"] = read_truth(hdus["TRUTH"], where)
         return parts
     extensions = {hdu.name: hdu for hdu in reversed(hdus[1:])}
     readers: dict[str, Callable[[Any, str], Any]] = {
-        "TRUTH": _read_truth,
+        "TRUTH": read_truth,
         "SCENE": _read_scene,
         "PSF": _read_psf,
         "EXPECTED": _read_image,
@@ -220,7 +224,14 @@ def _read_psf(hdu: Any, where: str) -> tuple[AnyArray, int]:
     return image, oversampling
 
 
-def _read_truth(hdu: Any, where: str) -> Table:
+def read_truth(hdu: Any, where: str) -> Table:
+    """The TRUTH of a frame out of its HDU.
+
+    Raises
+    ------
+    InputError
+        A column is missing or holds something else.
+    """
     from astropy.table import Table
     from astropy.units import Unit, UnrecognizedUnit
 
@@ -261,7 +272,7 @@ def _native(image: AnyArray) -> AnyArray:
 
 
 @contextmanager
-def _opened(where: str) -> Iterator[BinaryIO]:
+def opened(where: str) -> Iterator[BinaryIO]:
     """The file, unpacked into memory where it is gzipped."""
     try:
         with open(where, "rb") as handle:

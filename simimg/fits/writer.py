@@ -93,8 +93,7 @@ def write_frame(
     with new_file(path, overwrite=overwrite) as handle:
         _write_image(handle, counts, simulated, "", {**coordinates, **own}, ())
         if truth is not None:
-            columns = _truth_columns(truth)
-            _write_table(handle, columns, len(truth), simulated, "TRUTH", _TRUTH_SAYS)
+            write_truth(handle, truth, simulated=simulated)
         if scene_files:
             columns = _scene_columns(scene_files)
             _write_table(handle, columns, len(scene_files), simulated, "SCENE", _SCENE_SAYS)
@@ -107,6 +106,25 @@ def write_frame(
             _write_image(handle, image, simulated, "PSF", finer, _PSF_SAYS)
         if mask is not None:
             _write_image(handle, mask, simulated, "MASK", coordinates, mask_says)
+
+
+def write_truth(
+    handle: BinaryIO, truth: Table, *, simulated: bool, says: Iterable[str] = ()
+) -> None:
+    """Write the TRUTH of a frame as an extension.
+
+    Parameters
+    ----------
+    handle : binary file
+        Open for writing at the place of the HDU.
+    truth : astropy.table.Table
+    simulated : bool
+        Whether its header says ``SIMULATE = T``.
+    says : iterable of str
+        Further comments.
+    """
+    columns = _truth_columns(truth)
+    _write_table(handle, columns, len(truth), simulated, "TRUTH", (*_TRUTH_SAYS, *says))
 
 
 def write_table_file(

@@ -201,7 +201,7 @@ def observe(
         sky = FieldSky(field_geometry(scene))
         readout = scene_readout(scene.camera, given)
     else:
-        sky = _foreign_sky(frame, given, notes)
+        sky = foreign_sky(frame, given, notes)
         readout = foreign_readout(frame, given)
     sourced = source_psf(
         frame,
@@ -242,8 +242,14 @@ def _scene(frame: Frame) -> tuple[Scene | None, Train | None]:
     return scene, assemble_train(scene)
 
 
-def _foreign_sky(frame: Frame, given: Given, notes: list[str]) -> Sky:
-    """Directions and scale of a foreign frame."""
+def foreign_sky(frame: Frame, given: Given, notes: list[str]) -> Sky:
+    """Directions and scale of a foreign frame; what was assumed goes to `notes`.
+
+    Raises
+    ------
+    InputError
+        Neither coordinates nor a pixel scale.
+    """
     told = given.pixel_scale_arcsec
     scale = None if told is None else radians(told / 3600.0)
     rows, columns = frame.counts.shape
