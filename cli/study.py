@@ -135,7 +135,8 @@ def command(
             run_pixel_advice(scene, opened, trials=trials, **shared)
         else:
             run_separation_map(scene, opened, **shared)
-        print_cautions(opened, quiet=quiet)
+        if not as_json:
+            print_cautions(opened, quiet=quiet)
         return
     planned = plan(opened, vary=_varied(vary), trials=trials, pair=pair)
     if strip is not None and len(planned.varied) != 1:
