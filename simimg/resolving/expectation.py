@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, replace
 from math import ceil, floor, hypot
+from typing import Any
 
 import numpy as np
 
@@ -113,18 +114,23 @@ class Expectation:
                 max(_REACH * width, float(apart.max(initial=0.0)) + (_MARGIN + 1.0) * width, 8.0)
             ),
         )
-        stars = np.ones(len(found), dtype=bool)
-        stars[: found.written] = [shape is None for shape in found.shapes]
         return cls(
             train=train,
             detector=detector,
             block=block,
             psf=PsfModel.from_image(image, oversampling=oversampling),
             variance=(detector.read_noise**2 + rounding) * block**2,
-            points=frozen(np.column_stack([found.x / block, found.y / block, found.electrons])),
-            stars=stars,
-            shapes=found.sources.shapes,
+            **_placed(found, block),
         )
+
+    def showing(self, found: Inventory) -> Expectation:
+        """The same view of other objects, no pair of which is wider than those it was made for.
+
+        Parameters
+        ----------
+        found : Inventory
+        """
+        return replace(self, **_placed(found, self.block))
 
     @property
     def sky(self) -> float:
@@ -203,3 +209,14 @@ class Expectation:
                 pixel_scale=self.scale,
             )
         return light
+
+
+def _placed(found: Inventory, block: int) -> dict[str, Any]:
+    """The objects of an inventory as a view holds them."""
+    stars = np.ones(len(found), dtype=bool)
+    stars[: found.written] = [shape is None for shape in found.shapes]
+    return {
+        "points": frozen(np.column_stack([found.x / block, found.y / block, found.electrons])),
+        "stars": stars,
+        "shapes": found.sources.shapes,
+    }

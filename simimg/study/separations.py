@@ -21,7 +21,8 @@ from simimg.assembly.objects import inventory
 from simimg.assembly.train import assemble_train
 from simimg.errors import InputError, mistake
 from simimg.fits.hdus import Column
-from simimg.resolving.bound import scene_bounds
+from simimg.resolving.bound import pair_precision
+from simimg.resolving.expectation import Expectation, pairs_of
 from simimg.resolving.resolution import Directions, computable
 from simimg.scene.file import replace, requirements_to_expose
 from simimg.scene.model import Scene
@@ -163,8 +164,12 @@ def _one(task: tuple[Scene, Question, float, float]) -> tuple[FloatArray, FloatA
     angle = found.geometry.direction(first.position_angle)
     limits = delivered.resolution(angle, difference)
     tried = _SEPARATIONS * limits.fwhm_arcsec
-    errors, spreads, seen = [], [], []
-    for separation in tried:
+    errors: list[float] = []
+    spreads: list[float] = []
+    seen: list[float] = []
+    view = None
+    # The widest first: the view made for it holds all the others.
+    for separation in tried[::-1]:
         there = replace(
             unequal,
             {
@@ -172,10 +177,13 @@ def _one(task: tuple[Scene, Question, float, float]) -> tuple[FloatArray, FloatA
                 f"pair.{index}.position_angle": f"{np.degrees(first.position_angle):.12g} deg",
             },
         )
-        bound = scene_bounds(there, train, inventory(there, train=train))[index]
-        errors.append(bound.separation_arcsec)
-        spreads.append(bound.magnitude_difference)
-        seen.append(bound.expected_significance)
+        objects = inventory(there, train=train)
+        view = Expectation.of(there, train, objects) if view is None else view.showing(objects)
+        assert view is not None  # a scene that can be exposed has a camera
+        bound = pair_precision(view, pairs_of(objects)[index])
+        errors.insert(0, bound.separation_arcsec)
+        spreads.insert(0, bound.magnitude_difference)
+        seen.insert(0, bound.expected_significance)
     equal = delivered.resolution(angle).sparrow_arcsec
     aside = limits if difference > 0.1 else delivered.resolution(angle, 0.5)
     rayleigh = [limits.rayleigh_arcsec] * len(tried)
