@@ -9,14 +9,16 @@ from __future__ import annotations
 
 import os
 from collections.abc import Collection
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from datetime import datetime, timedelta
 
 import numpy as np
 
 from simimg.arrays import AnyArray
 from simimg.assembly.brightness import dark_electrons, exposure_time, sky_electrons
+from simimg.assembly.dither import aimed_geometry, dither_offset
 from simimg.assembly.objects import Inventory, inventory
+from simimg.assembly.places import FieldGeometry
 from simimg.assembly.train import Train, assemble_train
 from simimg.assembly.truth import truth_table
 from simimg.camera.chain import CameraSettings, record
@@ -48,6 +50,19 @@ class Prepared:
     objects: Inventory
     expected: AnyArray
     settings: CameraSettings
+    base: FieldGeometry | None = None
+    memory_bytes: int | None = None
+
+    def aimed(self, index: int, *, threads: int | None = None) -> Prepared:
+        """The same at the aim of one exposure: itself unless the scene is dithered."""
+        if dither_offset(self.scene, index) == (0.0, 0.0):
+            return self
+        geometry = aimed_geometry(self.scene, index)
+        objects = inventory(self.scene, train=self.train, base=self.base, geometry=geometry)
+        expected = _expected(
+            self.scene, self.train, objects, memory_bytes=self.memory_bytes, threads=threads
+        )
+        return replace(self, objects=objects, expected=expected)
 
 
 def prepare(
@@ -84,7 +99,7 @@ def prepare(
         bit_depth=camera.bit_depth,
         serial=camera.serial,
     )
-    return Prepared(scene, train, objects, expected, settings)
+    return Prepared(scene, train, objects, expected, settings, base=None, memory_bytes=memory_bytes)
 
 
 def noise_free(
@@ -186,6 +201,7 @@ def expose_prepared(
     unknown = set(keep) - {"expected", "psf"}
     if index < 0 or unknown:
         raise ValueError(f"index must be 0 or more, got {index}; keep may not hold {unknown}")
+    prepared = prepared.aimed(index, threads=threads)
     scene, train = prepared.scene, prepared.train
     seed = scene.exposure.seed if scene.exposure is not None else 0
     recorded = record(
@@ -253,6 +269,10 @@ def frame_header(prepared: Prepared, index: int) -> dict[str, object]:
         header["TELESCOP"] = (scene.telescope.name, "telescope (simulated)")
     if scene.camera is not None and scene.camera.name is not None:
         header["INSTRUME"] = (scene.camera.name, "camera (simulated)")
+    if scene.exposure is not None and scene.exposure.dither is not None:
+        east, north = np.degrees(dither_offset(scene, index)) * 3600.0
+        header["OFFEAST"] = (float(east), "[arcsec] offset of the aim towards east")
+        header["OFFNORTH"] = (float(north), "[arcsec] offset of the aim towards north")
     if train.airmass is not None:
         header["AIRMASS"] = (train.airmass, "airmass")
     if train.seeing is not None:

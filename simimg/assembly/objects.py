@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
-from math import pi
+from math import cos, pi, sin
 from typing import Any
 
 import numpy as np
@@ -19,6 +19,7 @@ from simimg.assembly.basis import FOLLOWED
 from simimg.assembly.brightness import Photometry, photometry
 from simimg.assembly.catalogues import catalogue_rows
 from simimg.assembly.colours import colour_keys
+from simimg.assembly.dither import pointing_turn
 from simimg.assembly.motion import field_turn, moved_points, object_trail
 from simimg.assembly.orbits import pair_place
 from simimg.assembly.places import FieldGeometry, field_geometry
@@ -133,16 +134,17 @@ class Inventory:
         for row, shape in enumerate(self.shapes):
             if shape is not None:
                 point[row] = False
-                places = self._drawn(np.array([row]))
+                places = self.drawn(np.array([row]))
                 shapes += [
                     PlacedShape(float(x), float(y), float(light), shape, int(kind))
                     for x, y, light, kind in zip(
                         places.x, places.y, places.electrons, places.kind, strict=True
                     )
                 ]
-        return Sources(self._drawn(np.flatnonzero(point)), tuple(shapes))
+        return Sources(self.drawn(np.flatnonzero(point)), tuple(shapes))
 
-    def _drawn(self, rows: AnyArray) -> Points:
+    def drawn(self, rows: AnyArray) -> Points:
+        """The points of some rows (their numbers); what moves is drawn out."""
         trails = np.zeros((rows.size, 2))
         own = rows < self.written
         trails[own] = self.trails[rows[own]]
@@ -179,7 +181,13 @@ class Inventory:
         return (self.entry(row) for row in range(len(self)))
 
 
-def inventory(scene: Scene, *, train: Train | None = None) -> Inventory:
+def inventory(
+    scene: Scene,
+    *,
+    train: Train | None = None,
+    base: FieldGeometry | None = None,
+    geometry: FieldGeometry | None = None,
+) -> Inventory:
     """Count out the objects of a scene.
 
     Parameters
@@ -187,6 +195,10 @@ def inventory(scene: Scene, *, train: Train | None = None) -> Inventory:
     scene : Scene
     train : Train, optional
         The scene's train, where it has been assembled already.
+    base : FieldGeometry, optional
+        In which the objects are placed; the scene's own unless given.
+    geometry : FieldGeometry, optional
+        The detector that looks at them, where it points elsewhere.
 
     Raises
     ------
@@ -194,7 +206,10 @@ def inventory(scene: Scene, *, train: Train | None = None) -> Inventory:
         A catalogue or a picture that cannot serve; a magnitude without an exposure time.
     """
     train = assemble_train(scene) if train is None else train
-    geometry = field_geometry(scene)
+    base = field_geometry(scene) if base is None else base
+    geometry = base if geometry is None else geometry
+    directions = pointing_turn(base, geometry)
+    turned = directions.direction(0.0) - field_geometry(scene).direction(0.0)
     light = photometry(scene, area=train.pupil.area, airmass=train.airmass, palette=train.palette)
     followed = scene.pointing.track if scene.pointing is not None else None
     rows: list[dict[str, Any]] = []
@@ -206,11 +221,11 @@ def inventory(scene: Scene, *, train: Train | None = None) -> Inventory:
             common = {
                 "label": label,
                 "kind": kind,
-                "trail": (0.0, 0.0) if extra else object_trail(scene, one.motion),
+                "trail": (0.0, 0.0) if extra else _turned(object_trail(scene, one.motion), turned),
             }
-            x, y = _place(one, geometry)
+            x, y = _place(one, base)
             if isinstance(one, Pair):
-                made = _pair_rows(scene, one, x, y, geometry, len(rows), light, colours)
+                made = _pair_rows(scene, one, x, y, base, len(rows), light, colours)
             else:
                 made = [
                     {
@@ -221,7 +236,7 @@ def inventory(scene: Scene, *, train: Train | None = None) -> Inventory:
                         ),
                         "magnitude": np.nan if one.magnitude is None else one.magnitude,
                         "keys": {k: getattr(one, k) for k in SHAPE_KEYS if hasattr(one, k)},
-                        "shape": sky_shape(scene, f"{kind}[{number}]", one, geometry),
+                        "shape": sky_shape(scene, f"{kind}[{number}]", one, directions),
                     }
                 ]
             for row, colour in zip(made, colours, strict=True):
@@ -235,10 +250,12 @@ def inventory(scene: Scene, *, train: Train | None = None) -> Inventory:
     for name in ("x", "y", "electrons", "magnitude", "separation", "position_angle"):
         columns[name] = [np.array([r.get(name, np.nan) for r in rows], dtype=np.float64)]
     for number, catalogue in enumerate(scene.catalogue):
-        part = catalogue_rows(scene, number, catalogue, geometry, light)
+        part = catalogue_rows(scene, number, catalogue, base, light)
         for name, values in columns.items():
             values.append(part[name])
     joined = {name: np.concatenate(values) for name, values in columns.items()}
+    if geometry != base:
+        joined["x"], joined["y"] = _seen(joined["x"], joined["y"], base, geometry)
     return Inventory(
         **joined,
         keys=tuple(r["keys"] for r in rows),
@@ -249,6 +266,29 @@ def inventory(scene: Scene, *, train: Train | None = None) -> Inventory:
         train=train,
         where=scene.name,
     )
+
+
+def _seen(
+    x: FloatArray, y: FloatArray, base: FieldGeometry, geometry: FieldGeometry
+) -> tuple[FloatArray, FloatArray]:
+    """Pixels of one detector as pixels of another; far off where it cannot see them."""
+    ra, dec = base.to_sky(x, y)
+    cosine = np.sin(dec) * np.sin(geometry.dec) + np.cos(dec) * np.cos(geometry.dec) * np.cos(
+        ra - geometry.ra
+    )
+    seen = cosine > 0.01
+    far = np.full(x.size, 1e9)
+    there = far.copy(), far.copy()
+    there[0][seen], there[1][seen] = geometry.from_sky(ra[seen], dec[seen])
+    return there
+
+
+def _turned(trail: tuple[float, float], angle: float) -> tuple[float, float]:
+    """A trail turned by an angle from x towards y."""
+    if trail == (0.0, 0.0) or angle == 0.0:
+        return trail
+    c, s = cos(angle), sin(angle)
+    return trail[0] * c - trail[1] * s, trail[0] * s + trail[1] * c
 
 
 def _place(one: Placed, geometry: FieldGeometry) -> tuple[float, float]:

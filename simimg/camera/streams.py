@@ -23,6 +23,7 @@ class Stage(IntEnum):
     READ_NOISE = 2
     INJECTED = 40
     INJECTED_ROUNDING = 41
+    DITHER = 42
 
 
 def stream(seed: int, *, frame: int, stage: Stage | int, block: int) -> np.random.Generator:

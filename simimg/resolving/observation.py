@@ -15,7 +15,7 @@ from math import ceil, degrees, floor, hypot, radians
 import numpy as np
 
 from simimg.arrays import AnyArray, FloatArray
-from simimg.assembly.places import field_geometry
+from simimg.assembly.dither import aimed_geometry
 from simimg.assembly.train import Train, assemble_train
 from simimg.camera.masks import BAD_COLUMN, BLEEDING, COSMIC_RAY, DEAD, HOT, SATURATED
 from simimg.errors import InputError, mistake
@@ -198,7 +198,9 @@ def observe(
         if given.pixel_scale_arcsec is not None:
             what = "the frame carries its scene, which tells it"
             raise InputError(mistake("frame", "pixel scale", what, "leave it out"))
-        sky = FieldSky(field_geometry(scene))
+        number = frame.value("EXPNUM")
+        index = number if isinstance(number, int) and 0 <= number < 2**31 else 0
+        sky = FieldSky(aimed_geometry(scene, index))
         readout = scene_readout(scene.camera, given)
     else:
         sky = foreign_sky(frame, given, notes)

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from typing import Annotated, Any, ClassVar
 
+from simimg.scene.dither import Dither
 from simimg.scene.keys import Instant, Quantity, Whole
 from simimg.scene.table import Fault, Table, key
 
@@ -68,4 +69,10 @@ class Exposure(Table):
         0.0,
         absent="0 s",
         meaning="exposures follow one another at once",
+    )
+    dither: Dither | None = key(
+        "Offsets of the aim from exposure to exposure.",
+        None,
+        absent="none",
+        meaning="every exposure points at the field centre",
     )
