@@ -76,6 +76,14 @@ def _per(tops: tuple[str, ...], bottoms: Mapping[str, float]) -> dict[str, float
     return {f"{top}/{bottom}": 1.0 / size for top in tops for bottom, size in bottoms.items()}
 
 
+_AREAS = {"m2": 1.0, "cm2": 1e-4, "mm2": 1e-6}
+_HIT_RATES = {
+    form.format(area=area, time=time): 1.0 / (size * duration)
+    for area, size in _AREAS.items()
+    for time, duration in _TIMES.items()
+    for form in ("/({area} {time})", "/{area}/{time}", "1/({area} {time})", "{area}-1 {time}-1")
+}
+
 # An hour of angle an hour of time is no way to write how fast something turns.
 _HOURS = ("hourangle", "h", "hour", "hours")
 _ANGULAR_RATES = {
@@ -153,6 +161,13 @@ KINDS: Mapping[str, Kind] = {
         "electron/s",
         _per(_ELECTRON, _PER_TIME),
         ("electron / s", "electron / (s pix)"),
+    ),
+    "hit rate": Kind(
+        "a rate of hits",
+        "5 / (cm2 min)",
+        "/ (cm2 min)",
+        _HIT_RATES,
+        ("1 / (m2 s)",),
     ),
     "gain": Kind(
         "a gain",

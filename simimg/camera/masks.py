@@ -13,6 +13,7 @@ COSMIC_RAY: Final = 4
 HOT: Final = 8
 DEAD: Final = 16
 BAD_COLUMN: Final = 32
+FLICKERING: Final = 64
 
 MASK_BITS: Final = {
     SATURATED: "saturated: reached the full well or the top of the converter",
@@ -21,6 +22,7 @@ MASK_BITS: Final = {
     HOT: "hot: dark signal far above that of its neighbours",
     DEAD: "dead: does not respond to light",
     BAD_COLUMN: "bad column",
+    FLICKERING: "flickering: its dark signal jumps between frames",
 }
 
 MaskArray = NDArray[np.uint8]

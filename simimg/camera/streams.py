@@ -16,14 +16,45 @@ BLOCK_ROWS: Final = 64
 """Rows of a block; part of what a seed means, so it never changes."""
 
 
+_CAMERAS = 0x5EA1
+
+
 class Stage(IntEnum):
     """What is drawn. A number, once given, is never given to another stage."""
 
     PHOTONS = 1
     READ_NOISE = 2
+    COSMIC_RAYS = 3
+    FLICKER = 4
     INJECTED = 40
     INJECTED_ROUNDING = 41
     DITHER = 42
+
+
+class Fixed(IntEnum):
+    """What is drawn once for a camera, from its serial number; numbers are never given again."""
+
+    FLAT = 1
+    DUST = 2
+    DARK = 3
+    HOT = 4
+    FLICKER = 5
+    DEAD = 6
+    COLUMNS = 7
+
+
+def fixed_stream(serial: int, what: Fixed | int) -> np.random.Generator:
+    """The generator of one fixed pattern of a camera.
+
+    Parameters
+    ----------
+    serial : int
+        Which camera, 0 or above.
+    what : Fixed
+    """
+    # The camera's patterns and a run's noise are apart even where serial and seed are one number.
+    key = (_CAMERAS, int(what))
+    return np.random.Generator(np.random.PCG64(np.random.SeedSequence(serial, spawn_key=key)))
 
 
 def stream(seed: int, *, frame: int, stage: Stage | int, block: int) -> np.random.Generator:

@@ -5,13 +5,14 @@ from __future__ import annotations
 from collections.abc import Iterator
 from typing import Annotated, ClassVar
 
+from simimg.scene.detector import Detector
 from simimg.scene.keys import Flag, Quantity, Several, Text, Whole
 from simimg.scene.readers import RatioOrFile
-from simimg.scene.table import Fault, Table, key
+from simimg.scene.table import Fault, key
 from simimg.scene.telescope import Angle
 
 
-class Camera(Table):
+class Camera(Detector):
     """The detector; electrons until the gain, counts (ADU) after it."""
 
     heading: ClassVar[str] = "[camera]"
@@ -104,7 +105,14 @@ class Camera(Table):
     )
 
     def agree(self) -> Iterator[Fault]:
-        """The bias must leave room for counts."""
+        """The bias must leave room for counts; tracks need the size of a pixel."""
+        yield from super().agree()
+        if self.cosmic_ray_rate and self.pixel_size is None:
+            yield Fault(
+                ("cosmic_ray_rate",),
+                "needs camera.pixel_size, which is missing",
+                'add pixel_size = "9 um"',
+            )
         largest = 2**self.bit_depth - 1
         if self.bias >= largest:
             yield Fault(

@@ -70,7 +70,7 @@ def test_converter_range(bits, top, kind):
 
 def test_mask_bits_are_single_and_apart():
     assert all(bit.bit_count() == 1 and bit < 256 for bit in MASK_BITS)
-    assert len(MASK_BITS) == 6
+    assert len(MASK_BITS) == 7
 
 
 def test_streams_depend_on_every_part_of_their_name():

@@ -1,0 +1,61 @@
+"""From the camera of a scene to what the chain must know of it. SI inside; electrons and counts."""
+
+from __future__ import annotations
+
+from simimg.assembly.brightness import exposure_time
+from simimg.camera.settings import CameraSettings, CosmicRays, Patterns, Shutter
+from simimg.scene.camera import Camera
+from simimg.scene.model import Scene
+
+
+def camera_settings(scene: Scene) -> CameraSettings:
+    """The camera and the exposure of a scene, for the chain.
+
+    Parameters
+    ----------
+    scene : Scene
+        With a camera.
+    """
+    camera = scene.camera
+    assert camera is not None
+    return CameraSettings(
+        time=exposure_time(scene),
+        gain=camera.gain,
+        read_noise=camera.read_noise,
+        dark_current=camera.dark_current,
+        bias=camera.bias,
+        full_well=camera.full_well,
+        bleeding=camera.bleeding,
+        bit_depth=camera.bit_depth,
+        serial=camera.serial,
+        patterns=_patterns(camera),
+        cosmic_rays=_cosmic_rays(camera),
+        shutter=None
+        if camera.shutter is None
+        else Shutter(kind=camera.shutter.kind, travel=camera.shutter.travel),
+    )
+
+
+def _patterns(camera: Camera) -> Patterns:
+    return Patterns(
+        flat_rms=camera.flat_rms,
+        vignetting=camera.vignetting,
+        dust_rings=camera.dust_rings,
+        dark_rms=camera.dark_rms,
+        hot_fraction=camera.hot_pixel_fraction,
+        hot_current=camera.hot_pixel_current,
+        flickering_fraction=camera.flickering_pixel_fraction,
+        flicker_current=camera.flicker_current,
+        dead_fraction=camera.dead_pixel_fraction,
+        bad_columns=camera.bad_columns,
+    )
+
+
+def _cosmic_rays(camera: Camera) -> CosmicRays | None:
+    if not camera.cosmic_ray_rate or camera.pixel_size is None:
+        return None
+    return CosmicRays(
+        rate=camera.cosmic_ray_rate,
+        pixel_size=camera.pixel_size,
+        thickness=camera.detector_thickness,
+    )
