@@ -29,6 +29,7 @@ COMMANDS = {
     "measure": "Measure pairs in frames: resolved or not, and how sure.",
     "study": "Trade studies: limits, bounds and trials as a key varies.",
     "solve": "The value of a key at which a target is just reached.",
+    "calibrate": "Make bias, dark and flat frames of a scene's camera.",
     "inject": "Put a scene's objects into a frame that exists.",
     "figure": "Draw a frame and a pair's profile for a proposal.",
 }

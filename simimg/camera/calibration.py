@@ -14,14 +14,14 @@ from math import inf
 import numpy as np
 
 from simimg.arrays import AnyArray, FloatArray
+from simimg.camera.chain import CameraSettings
 from simimg.camera.converter import converter_top
-from simimg.camera.settings import CameraSettings
 
 FLAT_SHARE = 0.5
 """Of what a pixel can record, the light of a flat."""
 
 RAMP_SHARE = 1.0
-"""Of what a pixel can record, the light of a ramp's last frame: where it is not straight any more."""
+"""Of what a pixel can record, the light of a ramp's last frame: where it bends."""
 
 TRANSFER_SHARE = 0.8
 """Of what a pixel can record, the light of the brightest photon-transfer pair."""
