@@ -119,6 +119,76 @@ class Shutter:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Readout:
+    """What happens to charge on its way from the pixels to the counts.
+
+    Parameters
+    ----------
+    inefficiency : float
+        Share of the charge left behind at each shift of the rows, 0 to below 0.1.
+    trail_length : float
+        Rows over which such a trail falls to 1/e, above 0.
+    binning : int
+        Pixels to the side of a bin, 1 or more.
+    em_gain : float
+        Of an electron-multiplying register, 1 (none) or more.
+    em_well : float or None
+        Electrons that the register holds; None without end.
+    coupling : float
+        Share of a pixel's signal that each neighbour takes, 0 to 0.2.
+    noise_spread : float
+        Scatter of the logarithm of the pixels' read noise, 0 or above; its rms over the pixels
+        stays.
+    nonlinearity : float
+        Share by which a full signal falls short, 0 to 0.4.
+    gains, biases : tuple of float
+        Of each of 2 or 4 amplifiers; empty where one reads all.
+    crosstalk : float
+        Share of each other amplifier's signal that leaks in, 0 to 0.1.
+    bias_rms, bias_drift : float
+        Scatter of the columns' bias, and of its drift between rows, counts.
+    prescan, overscan : int
+        Columns read before the first and after the last, without charge.
+    """
+
+    inefficiency: float = 0.0
+    trail_length: float = 2.0
+    binning: int = 1
+    em_gain: float = 1.0
+    em_well: float | None = None
+    coupling: float = 0.0
+    noise_spread: float = 0.0
+    nonlinearity: float = 0.0
+    gains: tuple[float, ...] = ()
+    biases: tuple[float, ...] = ()
+    crosstalk: float = 0.0
+    bias_rms: float = 0.0
+    bias_drift: float = 0.0
+    prescan: int = 0
+    overscan: int = 0
+
+    def __post_init__(self) -> None:
+        _within(self, ("inefficiency", "crosstalk"), below=0.1 + 1e-12)
+        _within(self, ("coupling",), below=0.2 + 1e-12)
+        _within(self, ("nonlinearity",), below=0.4 + 1e-12)
+        _within(self, ("noise_spread", "bias_rms", "bias_drift", "prescan", "overscan"))
+        if not (math.isfinite(self.trail_length) and self.trail_length > 0.0):
+            raise ValueError(f"trail_length must be above 0, got {self.trail_length!r}")
+        if self.binning < 1 or not 1.0 <= self.em_gain < math.inf:
+            raise ValueError(
+                f"binning and em_gain must be 1 or more, got {self.binning!r}, {self.em_gain!r}"
+            )
+        for name in ("gains", "biases"):
+            if len(getattr(self, name)) not in (0, 2, 4):
+                raise ValueError(f"{name} must be of 2 or 4 amplifiers, got {getattr(self, name)}")
+
+    @property
+    def amplifiers(self) -> int:
+        """How many read the detector."""
+        return max(len(self.gains), len(self.biases), 1)
+
+
+@dataclass(frozen=True, kw_only=True)
 class CameraSettings:
     """What the chain must know of a camera and an exposure.
 
@@ -145,6 +215,7 @@ class CameraSettings:
     patterns : Patterns
     cosmic_rays : CosmicRays or None
     shutter : Shutter or None
+    readout : Readout
 
     Raises
     ------
@@ -164,6 +235,7 @@ class CameraSettings:
     patterns: Patterns = field(default_factory=Patterns)
     cosmic_rays: CosmicRays | None = None
     shutter: Shutter | None = None
+    readout: Readout = field(default_factory=Readout)
 
     def __post_init__(self) -> None:
         _within(self, ("time", "read_noise", "dark_current"))

@@ -26,6 +26,8 @@ class Stage(IntEnum):
     READ_NOISE = 2
     COSMIC_RAYS = 3
     FLICKER = 4
+    MULTIPLICATION = 5
+    BIAS_DRIFT = 6
     INJECTED = 40
     INJECTED_ROUNDING = 41
     DITHER = 42
@@ -41,6 +43,8 @@ class Fixed(IntEnum):
     FLICKER = 5
     DEAD = 6
     COLUMNS = 7
+    READ_NOISE = 8
+    BIAS = 9
 
 
 def fixed_stream(serial: int, what: Fixed | int) -> np.random.Generator:

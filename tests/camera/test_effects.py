@@ -2,9 +2,8 @@
 
 import numpy as np
 import pytest
-from numpy.testing import assert_allclose, assert_array_equal
+from numpy.testing import assert_array_equal
 
-from simimg.camera.amplifier import amplify
 from simimg.camera.converter import converter_top, counts_type, digitise
 from simimg.camera.dark import dark_signal
 from simimg.camera.masks import MASK_BITS
@@ -38,12 +37,6 @@ def test_no_read_noise_draws_nothing():
     add_read_noise(electrons, 0.0, rng)
     assert electrons.tolist() == [1.0, 1.0, 1.0]
     assert rng.random() == np.random.default_rng(1).random()
-
-
-def test_amplifier():
-    level = np.array([0.0, 28.0])
-    amplify(level, gain=1.4, bias=400.0)
-    assert_allclose(level, [400.0, 420.0], rtol=1e-15)
 
 
 def test_converter_rounds_halves_to_even_and_cuts():
