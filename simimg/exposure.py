@@ -15,18 +15,21 @@ from datetime import datetime, timedelta
 import numpy as np
 
 from simimg.arrays import AnyArray
-from simimg.assembly.brightness import dark_electrons, exposure_time, sky_electrons
+from simimg.assembly.brightness import dark_electrons, sky_electrons
+from simimg.assembly.detector import camera_settings
 from simimg.assembly.dither import aimed_geometry, dither_offset
+from simimg.assembly.image import scene_image
 from simimg.assembly.objects import Inventory, inventory
-from simimg.assembly.places import FieldGeometry
+from simimg.assembly.places import FieldGeometry, field_geometry
+from simimg.assembly.sections import shifted_truth, shifted_wcs
 from simimg.assembly.train import Train, assemble_train
 from simimg.assembly.truth import truth_table
+from simimg.camera.binning import binned
+from simimg.camera.cards import detector_cards
 from simimg.camera.chain import CameraSettings, record
-from simimg.camera.converter import converter_top
 from simimg.errors import InputError, mistake
 from simimg.frame import Frame, PsfImage
 from simimg.imaging.profile import sampled_psf
-from simimg.imaging.render import expected_image
 from simimg.scene.file import requirements_to_expose, scene_id, scene_record
 from simimg.scene.model import Scene
 
@@ -43,15 +46,31 @@ receivers measure waves, and thermal light fluctuates more than Poisson's law sa
 
 @dataclass(frozen=True, eq=False)
 class Prepared:
-    """What the exposures of one scene share: everything up to the first random draw."""
+    """What the exposures of one scene share: everything up to the first random draw.
+
+    Attributes
+    ----------
+    scene : Scene
+    train : Train
+    objects : Inventory
+    light : ndarray
+        Expected electrons of objects and sky in the pixels of the detector.
+    settings : CameraSettings
+    base : FieldGeometry or None
+        In which the objects are placed, where that is not the scene's own detector.
+    memory_bytes : int or None
+    first_draw : int
+        Number of the first exposure's noise.
+    """
 
     scene: Scene
     train: Train
     objects: Inventory
-    expected: AnyArray
+    light: AnyArray
     settings: CameraSettings
     base: FieldGeometry | None = None
     memory_bytes: int | None = None
+    first_draw: int = 0
 
     def aimed(self, index: int, *, threads: int | None = None) -> Prepared:
         """The same at the aim of one exposure: itself unless the scene is dithered."""
@@ -59,14 +78,29 @@ class Prepared:
             return self
         geometry = aimed_geometry(self.scene, index)
         objects = inventory(self.scene, train=self.train, base=self.base, geometry=geometry)
-        expected = _expected(
-            self.scene, self.train, objects, memory_bytes=self.memory_bytes, threads=threads
+        light = scene_image(
+            self.scene,
+            self.train,
+            objects,
+            memory_bytes=self.memory_bytes,
+            threads=_threads(threads),
         )
-        return replace(self, objects=objects, expected=expected)
+        return replace(self, objects=objects, light=light)
+
+    @property
+    def expected(self) -> AnyArray:
+        """Expected electrons of objects and sky in the pixels of the frame."""
+        side = self.settings.readout.binning
+        return self.light if side == 1 else binned(self.light, side)
 
 
 def prepare(
-    scene: Scene, *, memory_bytes: int | None = None, threads: int | None = None
+    scene: Scene,
+    *,
+    memory_bytes: int | None = None,
+    threads: int | None = None,
+    base: FieldGeometry | None = None,
+    first_draw: int = 0,
 ) -> Prepared:
     """Compute what all exposures of a scene have in common.
 
@@ -77,6 +111,10 @@ def prepare(
         Most memory that the image may take; 2 GiB unless given.
     threads : int, optional
         All processors unless given; of no effect on the result.
+    base : FieldGeometry, optional
+        In which the objects are placed, where that is not the scene's own detector.
+    first_draw : int, optional
+        Number of the first exposure's noise.
 
     Raises
     ------
@@ -85,21 +123,19 @@ def prepare(
     """
     train = _ready(scene)
     _require_photons(scene, train)
-    objects = inventory(scene, train=train)
-    expected = _expected(scene, train, objects, memory_bytes=memory_bytes, threads=threads)
-    camera = scene.camera
-    assert camera is not None
-    settings = CameraSettings(
-        time=exposure_time(scene),
-        gain=camera.gain,
-        read_noise=camera.read_noise,
-        dark_current=camera.dark_current,
-        bias=camera.bias,
-        full_well=camera.full_well,
-        bit_depth=camera.bit_depth,
-        serial=camera.serial,
+    objects = inventory(scene, train=train, base=base, geometry=field_geometry(scene))
+    light = scene_image(scene, train, objects, memory_bytes=memory_bytes, threads=_threads(threads))
+    settings = camera_settings(scene)
+    return Prepared(
+        scene,
+        train,
+        objects,
+        light,
+        settings,
+        base=base,
+        memory_bytes=memory_bytes,
+        first_draw=first_draw,
     )
-    return Prepared(scene, train, objects, expected, settings, base=None, memory_bytes=memory_bytes)
 
 
 def noise_free(
@@ -126,37 +162,20 @@ def noise_free(
     """
     train = _ready(scene)
     objects = inventory(scene, train=train)
-    return _expected(scene, train, objects, memory_bytes=memory_bytes, threads=threads)
+    light = scene_image(scene, train, objects, memory_bytes=memory_bytes, threads=_threads(threads))
+    side = scene.camera.binning if scene.camera is not None else 1
+    return light if side == 1 else binned(light, side)
 
 
 def _ready(scene: Scene) -> Train:
     missing = requirements_to_expose(scene)
+    if scene.detector:
+        what = "a mosaic has a frame of its own kind"
+        mend = "use simimg expose, or simimg.mosaic.expose_mosaic in Python"
+        missing.append(mistake(scene.name, "detector", what, mend))
     if missing:
         raise InputError(*missing)
     return assemble_train(scene)
-
-
-def _expected(
-    scene: Scene,
-    train: Train,
-    objects: Inventory,
-    *,
-    memory_bytes: int | None,
-    threads: int | None,
-) -> AnyArray:
-    """Electrons of objects and sky in each pixel, without noise."""
-    geometry = objects.geometry
-    expected = expected_image(
-        train.basis,
-        objects.sources,
-        columns=geometry.columns,
-        rows=geometry.rows,
-        pixel_scale=geometry.pixel_scale,
-        memory_bytes=memory_bytes,
-        threads=_threads(threads),
-    )
-    expected += expected.dtype.type(sky_electrons(scene, area=train.pupil.area))
-    return expected
 
 
 def expose(
@@ -205,10 +224,10 @@ def expose_prepared(
     scene, train = prepared.scene, prepared.train
     seed = scene.exposure.seed if scene.exposure is not None else 0
     recorded = record(
-        prepared.expected,
+        prepared.light,
         settings=prepared.settings,
         seed=seed,
-        frame=index,
+        frame=prepared.first_draw + index,
         threads=_threads(threads),
     )
     psf = None
@@ -221,26 +240,34 @@ def expose_prepared(
             half_width_pixels=_PSF_HALF_WIDTH,
         )
         psf = PsfImage(image, PSF_OVERSAMPLING)
+    before = prepared.settings.readout.prescan
+    wcs, truth = prepared.objects.geometry.wcs(), truth_table(prepared.objects, train)
+    if before:
+        wcs, truth = shifted_wcs(wcs, before), shifted_truth(truth, before)
     return Frame(
         counts=recorded.counts,
         header=frame_header(prepared, index),
-        wcs=prepared.objects.geometry.wcs(),
-        truth=truth_table(prepared.objects, train),
-        expected=prepared.expected.astype(np.float32) if "expected" in keep else None,
+        wcs=wcs,
+        truth=truth,
+        expected=_kept_expected(prepared) if "expected" in keep else None,
         psf=psf,
         mask=recorded.mask if recorded.mask.any() else None,
         scene_files=tuple(scene_record(scene)),
     )
 
 
+def _kept_expected(prepared: Prepared) -> AnyArray:
+    """The expected image as a frame keeps it; 0 in columns without charge."""
+    readout = prepared.settings.readout
+    around = ((0, 0), (readout.prescan, readout.overscan))
+    return np.pad(prepared.expected.astype(np.float32), around)
+
+
 def frame_header(prepared: Prepared, index: int) -> dict[str, object]:
     """Header of an exposure: standard keywords where there is one, values in the trade's units."""
     scene, train, settings = prepared.scene, prepared.train, prepared.settings
     seed = scene.exposure.seed if scene.exposure is not None else 0
-    top = float(converter_top(settings.bit_depth))
-    full_well = np.inf if settings.full_well is None else settings.full_well
-    saturation = min(top, full_well / settings.gain + settings.bias)
-    band = scene.band
+    band, geometry = scene.band, prepared.objects.geometry
     filter_name = band.name or f"{(band.centre or 0) * 1e9:.6g} nm"
     header: dict[str, object] = {
         "OBJECT": (scene.title or "", "title of the scene"),
@@ -253,12 +280,9 @@ def frame_header(prepared: Prepared, index: int) -> dict[str, object]:
     header |= {
         "FILTER": (filter_name, "band"),
         "WAVELEN": (train.wavelength * 1e9, "[nm] centre of the band"),
-        "GAIN": (settings.gain, "[electron/adu] gain"),
-        "RDNOISE": (settings.read_noise, "[electron] read noise"),
-        "BIASLVL": (settings.bias, "[adu] bias level"),
+        **detector_cards(settings, geometry.columns, geometry.rows),
         "DARKSIG": (dark_electrons(scene), "[electron] dark signal in a pixel"),
         "SKYLVL": (sky_electrons(scene, area=train.pupil.area), "[electron] sky in a pixel"),
-        "SATURATE": (saturation, "[adu] saturation level"),
         "BUNIT": ("adu", "unit of the counts"),
         "PIXSCALE": (np.degrees(train.pixel_scale or 0.0) * 3600.0, "[arcsec] pixel scale"),
         "SEED": (seed, "seed of the noise"),

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from simimg.assembly.brightness import exposure_time
-from simimg.camera.settings import CameraSettings, CosmicRays, Patterns, Shutter
+from simimg.camera.settings import CameraSettings, CosmicRays, Patterns, Readout, Shutter
 from simimg.scene.camera import Camera
 from simimg.scene.model import Scene
 
@@ -33,6 +33,7 @@ def camera_settings(scene: Scene) -> CameraSettings:
         shutter=None
         if camera.shutter is None
         else Shutter(kind=camera.shutter.kind, travel=camera.shutter.travel),
+        readout=_readout(camera),
     )
 
 
@@ -58,4 +59,24 @@ def _cosmic_rays(camera: Camera) -> CosmicRays | None:
         rate=camera.cosmic_ray_rate,
         pixel_size=camera.pixel_size,
         thickness=camera.detector_thickness,
+    )
+
+
+def _readout(camera: Camera) -> Readout:
+    return Readout(
+        inefficiency=camera.transfer_inefficiency,
+        trail_length=camera.trail_length,
+        binning=camera.binning,
+        em_gain=camera.em_gain,
+        em_well=camera.em_full_well,
+        coupling=camera.pixel_coupling,
+        noise_spread=camera.read_noise_spread,
+        nonlinearity=camera.nonlinearity,
+        gains=camera.amplifier_gains,
+        biases=camera.amplifier_biases,
+        crosstalk=camera.crosstalk,
+        bias_rms=camera.bias_rms,
+        bias_drift=camera.bias_drift,
+        prescan=camera.prescan,
+        overscan=camera.overscan,
     )

@@ -28,8 +28,8 @@ Trail = tuple[float, float]
 
 
 def trembling(scene: Scene, transfer: Transfer) -> Transfer:
-    """A transfer function with the tremble and the drift of the aim."""
-    pointing = scene.pointing
+    """A transfer function with the tremble and the drift of the aim, and the spread of charge."""
+    pointing, transfer = scene.pointing, _diffused(scene, transfer)
     if pointing is None:
         return transfer
     across, along = pointing.jitter
@@ -52,6 +52,20 @@ def trembling(scene: Scene, transfer: Transfer) -> Transfer:
         trail = _trail(scene, drift.rate, drift.position_angle)
         transfer = drawn_out(transfer, trail)
     return transfer
+
+
+def _diffused(scene: Scene, transfer: Transfer) -> Transfer:
+    """A transfer function with the Gaussian spread of charge before it gathers in a pixel."""
+    camera, scale = scene.camera, scene.pixel_scale
+    if camera is None or scale is None or not camera.charge_diffusion:
+        return transfer
+    spread = camera.charge_diffusion * scale / camera.binning
+
+    def diffusion(f: FloatArray) -> FloatArray:
+        return jitter_transfer(f, np.zeros(()), rms=spread)
+
+    wings = replace(transfer.wings, core=transfer.wings.core + 4.0 * spread)
+    return replace(transfer, radial=(*transfer.radial, diffusion), wings=wings)
 
 
 def drawn_out(transfer: Transfer, trail: Trail) -> Transfer:

@@ -212,9 +212,10 @@ def _camera_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
                 f"the optics' own detail needs {_arcsec(nyquist):.3g} arcsec (Nyquist)",
             ),
         ]
-        if camera.pixels is not None:
-            sides = " x ".join(f"{_arcsec(scale * n) / 60.0:.3g}" for n in camera.pixels)
-            lines.append(("field", f"{sides} arcmin", f"{camera.pixels[0]} x {camera.pixels[1]}"))
+        if scene.image_size is not None:
+            columns, rows = scene.image_size
+            sides = " x ".join(f"{_arcsec(scale * n) / 60.0:.3g}" for n in scene.image_size)
+            lines.append(("field", f"{sides} arcmin", f"{columns} x {rows}"))
     sky, dark = sky_electrons(scene, area=train.pupil.area), dark_electrons(scene)
     noise = sqrt(sky + dark + camera.read_noise**2)
     lines += [

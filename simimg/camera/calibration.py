@@ -28,11 +28,18 @@ TRANSFER_SHARE = 0.8
 
 
 def recordable_electrons(settings: CameraSettings) -> float:
-    """Electrons that a pixel can record: the smaller of full well and converter range."""
-    range_ = (converter_top(settings.bit_depth) - settings.bias) * settings.gain
-    multiplied = float(getattr(settings, "em_gain", 1.0) or 1.0)
+    """Electrons that a pixel of the detector can record: its full well or the converter's range.
+
+    Where pixels are binned the converter counts them together, after multiplication.
+    """
+    readout = settings.readout
+    gain = min(readout.gains) if readout.gains else settings.gain
+    bias = max(readout.biases) if readout.biases else settings.bias
+    range_ = (converter_top(settings.bit_depth) - bias) * gain
+    if readout.em_gain > 1.0 and readout.em_well is not None:
+        range_ = min(range_, readout.em_well)
     well = inf if settings.full_well is None else settings.full_well
-    return float(min(well, range_ / max(multiplied, 1.0)))
+    return float(min(well, range_ / readout.em_gain / readout.binning**2))
 
 
 def flat_electrons(settings: CameraSettings) -> float:

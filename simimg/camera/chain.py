@@ -95,21 +95,21 @@ def record(
         signal[rows] = exposure.collect(block, rows)
 
     _each_block(gather, light.shape[0], threads)
-    signal, mask = shift_out(exposure, signal, mask)
-    rows, columns = (int(side) for side in np.shape(signal))
+    charge, marks = shift_out(exposure, signal, mask)
+    rows, columns = charge.shape
     reading = Reading.of(exposure, (rows, columns))
     counts = np.empty((rows, columns), dtype=counts_type(settings.bit_depth))
 
     def amplify(block: int, some: slice) -> None:
-        reading.amplify(block, some, signal[some])
+        reading.amplify(block, some, charge[some])
 
     def convert(_: int, some: slice) -> None:
-        reading.convert(some, signal[some], counts[some], mask[some])
+        reading.convert(some, charge[some], counts[some], marks[some])
 
     _each_block(amplify, rows, threads)
-    reading.between(signal)
+    reading.between(charge)
     _each_block(convert, rows, threads)
-    return _kept(counts, mask)
+    return _kept(counts, marks)
 
 
 def _in_blocks(exposure: Exposure, threads: int) -> Recorded:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from typing import Annotated, ClassVar
 
+from simimg.scene.electronics import Electronics
 from simimg.scene.keys import Choice, Flag, Quantity, Whole
 from simimg.scene.table import Fault, Table, key
 
@@ -26,7 +27,7 @@ class Shutter(Table):
     )
 
 
-class Detector(Table):
+class Detector(Electronics):
     """Fixed patterns, cosmic rays, bleeding, the shutter; all of one serial number."""
 
     flat_rms: Annotated[float, Quantity("ratio", at_least=0.0, at_most=0.2, sample="0.01")] = key(
@@ -100,7 +101,7 @@ class Detector(Table):
         float, Quantity("length", at_least="0.1 um", at_most="10 mm", sample="15 um")
     ] = key(
         "Thickness of the sensitive layer, through which cosmic rays leave their tracks.",
-        15e-6,
+        15.0 * 1e-6,
         absent="15 um",
         meaning="tracks through a thin detector",
         when=("cosmic_ray_rate",),
@@ -121,6 +122,7 @@ class Detector(Table):
 
     def agree(self) -> Iterator[Fault]:
         """Bleeding needs a full well."""
+        yield from super().agree()
         if self.bleeding and getattr(self, "full_well", None) is None:
             yield Fault(
                 ("bleeding",),

@@ -16,6 +16,7 @@ from math import hypot, inf
 import numpy as np
 
 from simimg.arrays import AnyArray
+from simimg.camera.binning import binned
 from simimg.camera.chain import CameraSettings, record
 from simimg.camera.dark import dark_signal
 from simimg.exposure import Prepared
@@ -32,8 +33,8 @@ class Recipe:
 
     Attributes
     ----------
-    expected : ndarray, shape (rows, columns)
-        Electrons of objects and sky.
+    light : ndarray, shape (rows, columns)
+        Expected electrons of objects and sky, in the pixels of the detector.
     settings : CameraSettings
     seed : int
     pairs : tuple of NamedPair
@@ -42,18 +43,28 @@ class Recipe:
         The scene as a frame carries it.
     """
 
-    expected: AnyArray
+    light: AnyArray
     settings: CameraSettings
     seed: int
     pairs: tuple[NamedPair, ...]
     scene_files: tuple[tuple[str, str, bytes], ...]
 
+    @property
+    def shape(self) -> tuple[int, int]:
+        """Rows and columns of a frame."""
+        rows, columns = self.light.shape
+        side = self.settings.readout.binning
+        return rows // side, columns // side
+
     @classmethod
     def of(cls, prepared: Prepared, pairs: Sequence[NamedPair], *, seed: int) -> Recipe:
         """The recipe of a prepared scene."""
         return cls(
-            expected=prepared.expected,
-            settings=prepared.settings,
+            light=prepared.light,
+            settings=replace(
+                prepared.settings,
+                readout=replace(prepared.settings.readout, prescan=0, overscan=0),
+            ),
             seed=seed,
             pairs=tuple(pairs),
             scene_files=tuple(scene_record(prepared.scene)),
@@ -74,9 +85,7 @@ class Exposures:
             (hypot(p.second[0] - p.first[0], p.second[1] - p.first[1]) for p in recipe.pairs),
             default=0.0,
         )
-        blank = Frame(
-            counts=np.zeros(recipe.expected.shape, np.uint16), scene_files=recipe.scene_files
-        )
+        blank = Frame(counts=np.zeros(recipe.shape, np.uint16), scene_files=recipe.scene_files)
         self._observation = observe(blank, widest=widest)
 
     @property
@@ -92,7 +101,7 @@ class Exposures:
         """Several exposures, added up; a pixel that is full in one of them does not count."""
         if len(numbers) == 1:
             return self.one(numbers[0])
-        total = np.zeros(self._recipe.expected.shape)
+        total = np.zeros(self._recipe.shape)
         for number in numbers:
             one = self.one(number)
             total += np.where(one.usable(), one.frame.counts, np.nan)
@@ -102,9 +111,10 @@ class Exposures:
     def noiseless(self, count: int = 1) -> Observation:
         """The expectation of as many exposures, added up."""
         settings = self._recipe.settings
-        light = self._recipe.expected.astype(np.float64)
-        light += dark_signal(settings.dark_current, settings.time)
-        counts = light / settings.gain + settings.bias
+        readout = settings.readout
+        light = binned(self._recipe.light.astype(np.float64), readout.binning)
+        light += dark_signal(settings.dark_current, settings.time) * readout.binning**2
+        counts = light * readout.em_gain / settings.gain + settings.bias
         counts[counts >= self._observation.saturation] = np.nan
         return self._added((counts - settings.bias) * count + settings.bias, count)
 
@@ -118,5 +128,5 @@ class Exposures:
 
     def _frame(self, number: int) -> Frame:
         recipe = self._recipe
-        made = record(recipe.expected, settings=recipe.settings, seed=recipe.seed, frame=number)
+        made = record(recipe.light, settings=recipe.settings, seed=recipe.seed, frame=number)
         return Frame(counts=made.counts, mask=made.mask if made.mask.any() else None)

@@ -22,7 +22,7 @@ from simimg.scene.keys import (
 )
 from simimg.scene.model import Scene
 from simimg.scene.readers import EachAxis, RatioOrFile, UpTo
-from simimg.scene.table import MANY, table_types
+from simimg.scene.table import MANY, REPEATED, table_types
 from simimg.scene.wavefront import LARGEST_TERM, Terms
 
 TABLES = [Scene, *table_types()]
@@ -72,7 +72,7 @@ def _plain(text):
 
 
 def test_many_are_the_tables_in_double_brackets():
-    assert {f"[[{name}]]" for name in MANY} == {
+    assert {f"[[{name}]]" for name in REPEATED} == {
         one.heading for one in table_types() if one.heading.startswith("[[")
     }
 

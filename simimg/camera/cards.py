@@ -1,0 +1,90 @@
+"""What a frame's header says of the detector: gains, noise, levels, sections.
+
+Keywords of the standard, and those of long custom (GAIN, RDNOISE, DATASEC, BIASSEC, TRIMSEC);
+pixels of a section count from 1, both ends included. With electron multiplication GAIN and RDNOISE
+are of electrons as they enter the register.
+"""
+
+from __future__ import annotations
+
+from math import inf
+
+from simimg.camera.converter import converter_top
+from simimg.camera.multiplication import excess_noise
+from simimg.camera.settings import CameraSettings
+
+
+def detector_cards(settings: CameraSettings, columns: int, rows: int) -> dict[str, object]:
+    """Header keywords of a detector, each with its value and comment.
+
+    Parameters
+    ----------
+    settings : CameraSettings
+    columns, rows : int
+        Of the part that sees the sky.
+    """
+    readout = settings.readout
+    gains = readout.gains or (settings.gain,) * readout.amplifiers
+    biases = readout.biases or (settings.bias,) * readout.amplifiers
+    gain, bias = sum(gains) / len(gains), sum(biases) / len(biases)
+    entering = readout.em_gain
+    cards: dict[str, object] = {
+        "GAIN": (gain / entering, "[electron/adu] gain"),
+        "RDNOISE": (settings.read_noise / entering, "[electron] read noise"),
+        "BIASLVL": (bias, "[adu] bias level"),
+        "SATURATE": (saturation(settings), "[adu] saturation level"),
+    }
+    if readout.amplifiers > 1:
+        for number, (one, level) in enumerate(zip(gains, biases, strict=True), start=1):
+            cards[f"GAIN{number}"] = (one / entering, f"[electron/adu] gain of amplifier {number}")
+            cards[f"BIASLV{number}"] = (level, f"[adu] bias level of amplifier {number}")
+    if readout.em_gain > 1.0:
+        cards["EMGAIN"] = (readout.em_gain, "gain of the multiplying register")
+        cards["EXCESS"] = (excess_noise(readout.em_gain), "square of the excess noise factor")
+    if readout.binning > 1:
+        cards["BINNING"] = (readout.binning, "pixels to the side of a bin")
+    if readout.prescan or readout.overscan:
+        cards |= section_cards(readout.prescan, readout.overscan, columns, rows)
+    return cards
+
+
+def section_cards(prescan: int, overscan: int, columns: int, rows: int) -> dict[str, object]:
+    """Where a frame holds light, and where only bias.
+
+    Parameters
+    ----------
+    prescan, overscan : int
+        Columns without charge before and after.
+    columns, rows : int
+        Of the part that sees the sky.
+    """
+    data = _section(prescan, columns, rows)
+    cards: dict[str, object] = {
+        "DATASEC": (data, "pixels that see the sky"),
+        "TRIMSEC": (data, "pixels to keep"),
+    }
+    bias = (prescan + columns, overscan) if overscan else (0, prescan)
+    cards["BIASSEC"] = (_section(*bias, rows), "pixels with bias alone")
+    if prescan and overscan:
+        cards["PRESEC"] = (_section(0, prescan, rows), "pixels with bias alone, before the data")
+    return cards
+
+
+def _section(before: int, columns: int, rows: int) -> str:
+    return f"[{before + 1}:{before + columns},1:{rows}]"
+
+
+def saturation(settings: CameraSettings) -> float:
+    """Counts at which a pixel of the frame is full.
+
+    Parameters
+    ----------
+    settings : CameraSettings
+    """
+    readout = settings.readout
+    gain = min(readout.gains) if readout.gains else settings.gain
+    bias = max(readout.biases) if readout.biases else settings.bias
+    well = inf if settings.full_well is None else settings.full_well
+    if readout.em_gain > 1.0:
+        well = min(well * readout.em_gain, inf if readout.em_well is None else readout.em_well)
+    return min(float(converter_top(settings.bit_depth)), well / gain + bias)
