@@ -21,7 +21,7 @@ from simimg.assembly.dither import aimed_geometry, dither_offset
 from simimg.assembly.image import scene_image
 from simimg.assembly.objects import Inventory, inventory
 from simimg.assembly.places import FieldGeometry, field_geometry
-from simimg.assembly.sections import shifted_truth, shifted_wcs
+from simimg.assembly.sections import written_geometry, written_truth
 from simimg.assembly.train import Train, assemble_train
 from simimg.assembly.truth import truth_table
 from simimg.camera.binning import binned
@@ -240,15 +240,15 @@ def expose_prepared(
             half_width_pixels=_PSF_HALF_WIDTH,
         )
         psf = PsfImage(image, PSF_OVERSAMPLING)
-    before = prepared.settings.readout.prescan
-    wcs, truth = prepared.objects.geometry.wcs(), truth_table(prepared.objects, train)
-    if before:
-        wcs, truth = shifted_wcs(wcs, before), shifted_truth(truth, before)
+    readout = prepared.settings.readout
+    written = written_geometry(
+        prepared.objects.geometry, prescan=readout.prescan, overscan=readout.overscan
+    )
     return Frame(
         counts=recorded.counts,
         header=frame_header(prepared, index),
-        wcs=wcs,
-        truth=truth,
+        wcs=written.wcs(),
+        truth=written_truth(truth_table(prepared.objects, train), prescan=readout.prescan),
         expected=_kept_expected(prepared) if "expected" in keep else None,
         psf=psf,
         mask=recorded.mask if recorded.mask.any() else None,

@@ -220,3 +220,58 @@ def test_amplifiers_are_told_in_the_header(scene):
 def test_wrong_cameras_name_the_key(scene, changes, says):
     with pytest.raises(InputError, match=says):
         replace(scene, changes)
+
+
+PAIR = """
+[[pair]]
+label = "P"
+x = 80.2
+y = 50.4
+electrons = ["60000 electron", "40000 electron"]
+separation = "2.6 arcsec"
+position_angle = "70 deg"
+"""
+
+
+@pytest.mark.parametrize(
+    "extra",
+    [
+        {"camera.prescan": 8, "camera.overscan": 32},
+        {"camera.em_gain": 150.0, "camera.gain": "20 e-/adu"},
+        {
+            "camera.cosmic_ray_rate": "60 / (cm2 min)",
+            "camera.hot_pixel_fraction": 0.005,
+            "camera.bad_columns": 2,
+        },
+    ],
+)
+def test_measured_within_errors_whatever_the_camera(tmp_path, extra):
+    path = tmp_path / "pair.toml"
+    path.write_text(SCENE + PAIR)
+    scene = replace(load_scene(path), extra)
+    pulls, light = [], []
+    for index in range(6):
+        frame = simimg.expose(scene, index=index)
+        (pair,) = [one for one in simimg.measure(frame) if one.label == "P"]
+        pulls.append((pair.separation_arcsec - 2.6) / pair.separation_error_arcsec)
+        assert pair.x == pytest.approx(80.2 + scene.camera.prescan, abs=0.2)
+    from simimg.resolving.measure import measure_frame
+
+    for single in measure_frame(frame).singles:
+        if single.label in ("A", "B"):
+            true = {"A": 2e5, "B": 9e4}[single.label]
+            light.append((single.electrons - true) / single.electrons_error)
+    assert abs(np.mean(pulls)) < 4 / math.sqrt(6)
+    assert np.std(pulls) < 2.0
+    assert len(light) == 2
+    assert np.abs(light).max() < 5.0
+
+
+def test_a_raw_frame_says_what_is_left_in_it(scene):
+    from simimg.resolving.measure import measure_frame
+
+    frame = simimg.expose(replace(scene, {"camera.flat_rms": 0.02, "camera.nonlinearity": 0.01}))
+    said = " ".join(measure_frame(frame, near=[(40.3, 30.8)]).warnings)
+    assert "flat response, non-linearity not corrected" in said
+    clean = measure_frame(simimg.expose(scene), near=[(40.3, 30.8)])
+    assert "not corrected" not in " ".join(clean.warnings)

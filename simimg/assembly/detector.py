@@ -16,10 +16,14 @@ def camera_settings(scene: Scene) -> CameraSettings:
     scene : Scene
         With a camera.
     """
-    camera = scene.camera
-    assert camera is not None
+    assert scene.camera is not None
+    return detector_settings(scene.camera, time=exposure_time(scene))
+
+
+def detector_settings(camera: Camera, *, time: float) -> CameraSettings:
+    """A camera in an exposure of so many seconds, for the chain."""
     return CameraSettings(
-        time=exposure_time(scene),
+        time=time,
         gain=camera.gain,
         read_noise=camera.read_noise,
         dark_current=camera.dark_current,

@@ -1,39 +1,44 @@
-"""Frames with columns before those that see the sky: places and coordinates move over by as many.
+"""Frames with columns that see no sky: places and coordinates move over by those before the data.
 
-Pixels of a frame count from 0 at the centre of its first pixel, whether that sees the sky or not.
+Pixels of a frame count from 0 at the centre of its first pixel, whether that sees the sky or not;
+places in a scene count from the first that does.
 """
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
+from simimg.assembly.places import FieldGeometry
 
-def shifted_wcs(wcs: Any, columns: int) -> Any:
-    """World coordinates of a frame with so many columns before the first.
+
+def written_geometry(geometry: FieldGeometry, *, prescan: int, overscan: int) -> FieldGeometry:
+    """The geometry of a frame as it is written.
 
     Parameters
     ----------
-    wcs : astropy.wcs.WCS
-    columns : int
+    geometry : FieldGeometry
+        Of the pixels that see the sky.
+    prescan, overscan : int
+        Columns without charge before and after them.
     """
-    moved = wcs.deepcopy()
-    moved.wcs.crpix = [moved.wcs.crpix[0] + columns, moved.wcs.crpix[1]]
-    if moved.sip is not None:
-        from astropy.wcs import Sip
-
-        sip = moved.sip
-        moved.sip = Sip(sip.a, sip.b, sip.ap, sip.bp, moved.wcs.crpix)
-    return moved
+    if not prescan and not overscan:
+        return geometry
+    x, y = geometry.centre
+    columns = geometry.columns + prescan + overscan
+    return replace(geometry, columns=columns, axis=(x + prescan, y))
 
 
-def shifted_truth(truth: Any, columns: int) -> Any:
-    """A table of truth whose places are those of such a frame.
+def written_truth(truth: Any, *, prescan: int) -> Any:
+    """A table of truth with the places of a frame as it is written.
 
     Parameters
     ----------
     truth : astropy.table.Table
-    columns : int
+    prescan : int
     """
+    if not prescan:
+        return truth
     moved = truth.copy()
-    moved["x"] = moved["x"] + columns
+    moved["x"] = moved["x"] + prescan
     return moved

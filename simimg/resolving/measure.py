@@ -198,7 +198,9 @@ def single_records(
     for star in stars:
         extended = star.wide.extended
         place = star.wide.place if extended else star.point.places[0]
-        error = float(np.sqrt(star.point.covariance[2, 2]))
+        light, error = float(star.point.electrons[0]), float(np.sqrt(star.point.covariance[2, 2]))
+        if extended:
+            light, error = star.wide.electrons, star.wide.electrons_error
         label = ""
         if labels is not None:
             away, nearest = labels[0].query(place)
@@ -207,8 +209,8 @@ def single_records(
             SingleMeasurement(
                 x=float(place[0]),
                 y=float(place[1]),
-                electrons=star.wide.electrons if extended else float(star.point.electrons[0]),
-                electrons_error=star.wide.electrons_error if extended else error,
+                electrons=light * observation.excess,
+                electrons_error=error * observation.excess,
                 verdict="extended" if extended else "point",
                 width_arcsec=star.wide.width * observation.arcsec,
                 width_error_arcsec=star.wide.width_error * observation.arcsec,

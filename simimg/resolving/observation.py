@@ -16,8 +16,8 @@ import numpy as np
 
 from simimg.arrays import AnyArray, FloatArray
 from simimg.assembly.dither import aimed_geometry
+from simimg.assembly.sections import written_geometry
 from simimg.assembly.train import Train, assemble_train
-from simimg.camera.masks import BAD_COLUMN, BLEEDING, COSMIC_RAY, DEAD, HOT, SATURATED
 from simimg.errors import InputError, mistake
 from simimg.frame import Frame
 from simimg.resolving.backdrop import Backdrop
@@ -27,13 +27,11 @@ from simimg.resolving.pairlimits import Cuts
 from simimg.resolving.psfmodel import PsfModel
 from simimg.resolving.psfsource import PsfChoice, SourcedPsf, source_psf
 from simimg.resolving.psfsource import spline_oversampling as spline_oversampling
-from simimg.resolving.readout import foreign_readout, scene_readout
+from simimg.resolving.readout import UNFIT, foreign_readout, scene_readout
 from simimg.resolving.skyplane import BareSky, FieldSky, Sky, coordinate_sky
 from simimg.resolving.starfit import Cutout
 from simimg.scene.file import scene_from_record
 from simimg.scene.model import Scene
-
-_UNFIT = SATURATED | BLEEDING | COSMIC_RAY | HOT | DEAD | BAD_COLUMN
 
 
 @dataclass(frozen=True, eq=False)
@@ -64,6 +62,8 @@ class Observation:
         Of a foreign frame, whose background may slope: it is then fitted as a plane.
     notes : tuple of str
         What was assumed.
+    excess : float
+        Electrons of the camera that one electron here stands for; 1 without multiplication.
     """
 
     frame: Frame
@@ -80,6 +80,7 @@ class Observation:
     barred: AnyArray | None = None
     backdrop: Backdrop | None = None
     notes: tuple[str, ...] = ()
+    excess: float = 1.0
 
     @property
     def fwhm(self) -> float:
@@ -112,7 +113,7 @@ class Observation:
         counts = self.frame.counts[box]
         good = np.isfinite(counts) & (counts < self.saturation)
         if self.frame.mask is not None:
-            good &= (self.frame.mask[box] & _UNFIT) == 0
+            good &= (self.frame.mask[box] & UNFIT) == 0
         if self.barred is not None:
             good &= ~self.barred[box]
         return np.asarray(good)
@@ -200,8 +201,14 @@ def observe(
             raise InputError(mistake("frame", "pixel scale", what, "leave it out"))
         number = frame.value("EXPNUM")
         index = number if isinstance(number, int) and 0 <= number < 2**31 else 0
-        sky = FieldSky(aimed_geometry(scene, index))
-        readout = scene_readout(scene.camera, given)
+        sky = FieldSky(
+            written_geometry(
+                aimed_geometry(scene, index),
+                prescan=scene.camera.prescan,
+                overscan=scene.camera.overscan,
+            )
+        )
+        readout = scene_readout(scene.camera, given, frame.counts.shape)
     else:
         sky = foreign_sky(frame, given, notes)
         readout = foreign_readout(frame, given)
@@ -229,6 +236,7 @@ def observe(
         barred=readout.barred,
         backdrop=readout.backdrop,
         notes=(*notes, *readout.notes, *sourced.notes),
+        excess=readout.excess,
     )
 
 

@@ -16,8 +16,18 @@ from math import inf, sqrt
 import numpy as np
 
 from simimg.arrays import AnyArray, frozen
-from simimg.camera.converter import converter_top
-from simimg.camera.masks import BAD_COLUMN, BLEEDING, COSMIC_RAY, DEAD, HOT, SATURATED
+from simimg.assembly.detector import detector_settings
+from simimg.camera.cards import saturation
+from simimg.camera.masks import (
+    BAD_COLUMN,
+    BLEEDING,
+    COSMIC_RAY,
+    DEAD,
+    FLICKERING,
+    HOT,
+    SATURATED,
+)
+from simimg.camera.multiplication import excess_noise
 from simimg.errors import InputError, mistake
 from simimg.frame import Frame
 from simimg.resolving.backdrop import Backdrop, find_backdrop
@@ -33,7 +43,9 @@ from simimg.resolving.headers import (
 )
 from simimg.scene.camera import Camera
 
-_UNFIT = SATURATED | BLEEDING | COSMIC_RAY | HOT | DEAD | BAD_COLUMN
+UNFIT = SATURATED | BLEEDING | COSMIC_RAY | HOT | DEAD | BAD_COLUMN | FLICKERING
+"""Bits of a mask that take a pixel out."""
+
 _CLEAR = 5.0  # noises above zero from which a level is that of a sky that was left in
 _COUNTED = 2.0  # counts of noise from which pixels may well be counts of one electron each
 _ELECTRONS = 25.0  # of background where nothing tells how many: Gaussian enough
@@ -62,6 +74,8 @@ class Readout:
         The background, where it is read from the pixels.
     notes : tuple of str
         What was assumed.
+    excess : float
+        Electrons of the camera that one electron here stands for.
     """
 
     gain: float
@@ -71,22 +85,69 @@ class Readout:
     barred: AnyArray | None = None
     backdrop: Backdrop | None = None
     notes: tuple[str, ...] = ()
+    excess: float = 1.0
 
 
-def scene_readout(camera: Camera, given: Given) -> Readout:
-    """The read-out of a frame that simimg exposed; what is given goes before the scene."""
-    gain = camera.gain if given.gain is None else given.gain
-    bias = camera.bias if given.bias is None else given.bias
-    read_noise = camera.read_noise if given.read_noise is None else given.read_noise
-    full_well = inf if camera.full_well is None else camera.full_well
-    top = float(converter_top(camera.bit_depth))
-    saturation = min(top, np.floor(full_well / camera.gain + camera.bias))
+def scene_readout(camera: Camera, given: Given, shape: tuple[int, ...]) -> Readout:
+    """The read-out of a frame that simimg exposed; what is given goes before the scene.
+
+    With electron multiplication the noise of light is twice that of counting: gain and read noise
+    are then those of a camera without, whose every electron stands for two
+    (`simimg.camera.multiplication`), and ``excess`` says how many.
+    """
+    excess = excess_noise(camera.em_gain)
+    factor = camera.em_gain * excess
+    gains = camera.amplifier_gains or (camera.gain,)
+    biases = camera.amplifier_biases or (camera.bias,)
+    gain = sum(gains) / len(gains) / factor if given.gain is None else given.gain
+    bias = sum(biases) / len(biases) if given.bias is None else given.bias
+    read_noise = camera.read_noise / factor if given.read_noise is None else given.read_noise
+    full = saturation(detector_settings(camera, time=0.0))
     rounding = 0.0 if read_noise == 0.0 and gain == 1.0 else gain**2 / 12.0
     return Readout(
         gain=gain,
         bias=bias,
-        saturation=float(saturation if given.saturation is None else given.saturation),
+        saturation=float(np.floor(full) if given.saturation is None else given.saturation),
         variance=read_noise**2 + rounding,
+        excess=excess,
+        barred=_without_charge(camera, shape),
+        notes=_raw(camera),
+    )
+
+
+def _without_charge(camera: Camera, shape: tuple[int, ...]) -> AnyArray | None:
+    """Pixels that see no sky; None where all do."""
+    if not camera.prescan and not camera.overscan:
+        return None
+    barred = np.ones((shape[0], shape[1]), dtype=bool)
+    barred[:, camera.prescan : shape[1] - camera.overscan] = False
+    return frozen(barred)
+
+
+def _raw(camera: Camera) -> tuple[str, ...]:
+    """What a frame still has in it that a reduction would take out."""
+    left = [
+        words
+        for words, there in (
+            ("flat response", camera.flat_rms or camera.vignetting or camera.dust_rings),
+            ("the shutter's pattern", camera.shutter is not None),
+            ("the dark pattern", camera.dark_rms),
+            ("non-linearity", camera.nonlinearity),
+            ("several gains", len(set(camera.amplifier_gains)) > 1),
+            (
+                "the structure of the bias",
+                camera.bias_rms or camera.bias_drift or len(set(camera.amplifier_biases)) > 1,
+            ),
+            ("trailing charge", camera.transfer_inefficiency),
+            ("coupling between pixels", camera.pixel_coupling),
+        )
+        if there
+    ]
+    if not left:
+        return ()
+    return (
+        f"the frame is raw, and its noise is taken as that of a reduced one: {', '.join(left)} "
+        "not corrected",
     )
 
 
@@ -135,7 +196,7 @@ def foreign_readout(frame: Frame, given: Given) -> Readout:
 
 def unfit(frame: Frame) -> AnyArray | None:
     """Pixels that a frame's mask takes out; None without a mask."""
-    return None if frame.mask is None else np.asarray((frame.mask & _UNFIT) != 0)
+    return None if frame.mask is None else np.asarray((frame.mask & UNFIT) != 0)
 
 
 def _whole_numbers(counts: AnyArray, good: AnyArray) -> bool:
