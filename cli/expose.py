@@ -78,6 +78,24 @@ def command(
                 note(f"warning: {line}")
         print_cautions(source.scene, quiet=quiet)
 
+    if source.scene.detector:
+        if preview or "psf" in keep:
+            what = "have no preview and no PSF extension"
+            raise InputError(mistake(scene, "detector", f"mosaics {what}", "leave them out"))
+        _expose_mosaics(
+            source,
+            indices,
+            frames,
+            keep=keep,
+            memory=memory,
+            threads=threads,
+            overwrite=overwrite,
+            as_json=as_json,
+            quiet=quiet,
+            warnings=warnings,
+        )
+        return
+
     from simimg.exposure import expose_prepared, prepare
 
     kept = keep or _kept(source)
@@ -95,6 +113,43 @@ def command(
         written.append(record)
         if not (quiet or as_json):
             say(_line(record))
+    if as_json:
+        payload = {"frames": written, "cautions": cautions(source.scene)}
+        say(document(payload, scene_id=scene_id(source.scene), warnings=warnings))
+
+
+def _expose_mosaics(
+    source: Source,
+    indices: Sequence[int],
+    paths: Sequence[str],
+    *,
+    keep: tuple[str, ...],
+    memory: int | None,
+    threads: int | None,
+    overwrite: bool,
+    as_json: bool,
+    quiet: bool,
+    warnings: Sequence[str],
+) -> None:
+    """Make the frames of several detectors, an image extension each."""
+    from simimg.assembly.report import cautions
+    from simimg.mosaic import expose_prepared_mosaic, prepare_mosaic
+    from simimg.scene.file import scene_id
+    from simimg_cli.progress import with_progress
+
+    prepared = prepare_mosaic(source.scene, memory_bytes=memory, threads=threads)
+    written = []
+    jobs = list(zip(indices, paths))
+    for index, path in with_progress(jobs, "exposures", quiet=quiet, lines=not as_json):
+        mosaic = expose_prepared_mosaic(prepared, index=index, keep=keep, threads=threads)
+        mosaic.write(path, overwrite=overwrite)
+        detectors = [
+            {"name": name, **_figures(frame)} for name, frame in zip(mosaic.names, mosaic.frames)
+        ]
+        written.append({"file": path, "preview": None, "index": index, "detectors": detectors})
+        if not (quiet or as_json):
+            for record in detectors:
+                say(_line({**record, "file": f"{path}[{record['name']}]", "preview": None}))
     if as_json:
         payload = {"frames": written, "cautions": cautions(source.scene)}
         say(document(payload, scene_id=scene_id(source.scene), warnings=warnings))

@@ -43,14 +43,17 @@ def open_scene(
     if not _is_frame(where):
         scene = load_scene(where, overrides=overrides, without=without)
         return Source(where, scene, None)
+    from simimg.fits.reader import read_scene_files
     from simimg.frame import Frame
 
     frame = Frame.read(where)
-    if not frame.scene_files:
+    # The images of a mosaic are extensions; the scene stands beside them.
+    files = frame.scene_files or read_scene_files(where)
+    if not files:
         mend = "give a scene file, or a frame that simimg made"
         raise InputError(mistake(where, "", "carries no scene", mend))
     scene = scene_from_record(
-        frame.scene_files,
+        files,
         name=where,
         directory=Path(where).parent,
         overrides=overrides,

@@ -147,10 +147,13 @@ def _places(
     unit = errors.radius / scene.pixel_scale
     half_x, half_y = geometry.columns / 2.0 / unit, geometry.rows / 2.0 / unit
     nodes = field_nodes(half_x, half_y, count=FIELD_NODES)
+    # The lattice spans the detector, which the field centre may lie aside of.
+    aside_x = (geometry.middle[0] - geometry.centre[0]) / unit
+    aside_y = (geometry.middle[1] - geometry.centre[1]) / unit
 
     def mix(points: Points) -> FloatArray:
-        x = (points.x - geometry.centre[0]) / unit
-        y = (points.y - geometry.centre[1]) / unit
+        x = (points.x - geometry.middle[0]) / unit
+        y = (points.y - geometry.middle[1]) / unit
         return nodes.weights(x, y)
 
-    return list(nodes.places), mix
+    return [(x + aside_x, y + aside_y) for x, y in nodes.places], mix

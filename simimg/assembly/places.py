@@ -1,7 +1,8 @@
 """Where things are: between offsets on the sky, right ascension and declination, and pixels.
 
 The field is a tangent plane (gnomonic projection, TAN of Calabretta & Greisen 2002, A&A 395, 1077)
-touching the sphere at the pointing, which falls on the middle of the detector. East and north are
+touching the sphere at the pointing, which falls on the middle of the detector unless the scene
+puts it on another pixel. East and north are
 the standard coordinates of that plane, in radians. The detector's +y has the position angle rho,
 north through east, and an odd number of reflections turns east to the right (p = -1):
 ``x - xc = p (-E cos rho + N sin rho) / s`` and ``y - yc = (E sin rho + N cos rho) / s``; a radial
@@ -39,10 +40,12 @@ class FieldGeometry:
     mirrored : bool
         True for an odd number of reflections.
     ra, dec : float
-        Pointing (rad): the sky at the middle of the detector.
+        Pointing (rad): the sky at the field centre.
     distortion : float
         Radial distortion in units of 1 over pixels squared: a place r pixels from the middle is
         moved outwards by ``distortion r^3``.
+    axis : (x, y) or None
+        Pixel on which the pointing falls; the middle of the detector unless given.
     """
 
     columns: int
@@ -53,9 +56,15 @@ class FieldGeometry:
     ra: float = 0.0
     dec: float = 0.0
     distortion: float = 0.0
+    axis: tuple[float, float] | None = None
 
     @property
     def centre(self) -> tuple[float, float]:
+        """Where the pointing falls (x, y) in pixels: the field centre."""
+        return self.middle if self.axis is None else self.axis
+
+    @property
+    def middle(self) -> tuple[float, float]:
         """Middle of the detector (x, y) in pixels."""
         return (self.columns - 1) / 2, (self.rows - 1) / 2
 
@@ -164,7 +173,9 @@ class FieldGeometry:
         """
         k = self.distortion
         forward, back = np.zeros((10, 10)), np.zeros((4, 4))
-        farthest = (self.columns**2 + self.rows**2) / 4.0
+        aside = (abs(c - m) for c, m in zip(self.centre, self.middle, strict=True))
+        sides = (self.columns / 2.0, self.rows / 2.0)
+        farthest = sum((a + side) ** 2 for a, side in zip(aside, sides, strict=True))
         # Chebyshev's points of the squared radius, where a fit is nearly the best there is.
         t = 0.5 - 0.5 * np.cos(np.pi * (np.arange(200) + 0.5) / 200)
         powers = t[:, None] ** np.arange(1, 5)
@@ -184,7 +195,7 @@ def field_geometry(scene: Scene) -> FieldGeometry:
     directions and offsets hold, sizes do not.
     """
     camera, pointing = scene.camera, scene.pointing
-    columns, rows = camera.pixels if camera is not None and camera.pixels is not None else (1, 1)
+    columns, rows = scene.image_size or (1, 1)
     return FieldGeometry(
         columns=columns,
         rows=rows,
@@ -194,6 +205,7 @@ def field_geometry(scene: Scene) -> FieldGeometry:
         ra=pointing.ra if pointing is not None else 0.0,
         dec=pointing.dec if pointing is not None else 0.0,
         distortion=_distortion(scene),
+        axis=camera.field_centre if camera is not None else None,
     )
 
 

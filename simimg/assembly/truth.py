@@ -46,8 +46,8 @@ def truth_table(objects: Inventory, train: Train) -> Table:
 
     geometry = objects.geometry
     ra, dec = geometry.to_sky(objects.x, objects.y)
-    inside = (np.abs(objects.x - geometry.centre[0]) <= geometry.columns / 2) & (
-        np.abs(objects.y - geometry.centre[1]) <= geometry.rows / 2
+    inside = (np.abs(objects.x - geometry.middle[0]) <= geometry.columns / 2) & (
+        np.abs(objects.y - geometry.middle[1]) <= geometry.rows / 2
     )
     position_angle = np.degrees(objects.position_angle)
     for row, keys in enumerate(objects.keys):

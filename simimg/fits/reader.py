@@ -71,6 +71,23 @@ def read_parts(path: str | os.PathLike[str], *, hdu: int | str | None = None) ->
         return _parts(hdus, where, hdu)
 
 
+def read_scene_files(path: str | os.PathLike[str]) -> tuple[tuple[str, str, bytes], ...]:
+    """The scene that a file of simimg carries, of whatever images; empty where it carries none.
+
+    Raises
+    ------
+    InputError
+        As for `read_parts`.
+    """
+    where = os.fspath(path)
+    with open_hdus(where) as hdus:
+        creator = str(hdus[0].header.get("CREATOR", ""))
+        if "SCENE" not in [one.name for one in hdus[1:]] or not creator.startswith("simimg"):
+            return ()
+        with _damage(where, "SCENE"):
+            return _read_scene(hdus["SCENE"], where)
+
+
 def read_psf_file(path: str | os.PathLike[str]) -> tuple[AnyArray, int | None]:
     """An image of a PSF, and its samples to the pixel where the header says (OVERSAMP).
 

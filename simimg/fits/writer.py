@@ -108,6 +108,60 @@ def write_frame(
             _write_image(handle, mask, simulated, "MASK", coordinates, mask_says)
 
 
+def write_mosaic_file(
+    path: str | os.PathLike[str],
+    *,
+    overwrite: bool,
+    header: Mapping[str, object],
+    detectors: Sequence[tuple[str, Mapping[str, object], WCS | None, Mapping[str, AnyArray]]],
+    truth: Table | None,
+    scene_files: Sequence[tuple[str, str, bytes]],
+    mask_says: Sequence[str] = (),
+    truth_says: Sequence[str] = (),
+) -> None:
+    """Write the frames of a mosaic's detectors as one file, an image extension each.
+
+    Parameters
+    ----------
+    path : path
+    overwrite : bool
+        Whether a file of that name may be replaced.
+    header : mapping
+        Of the primary HDU, which holds no image.
+    detectors : sequence of (name, header, wcs, images)
+        Images by name: ``counts``, then of what there is MASK and EXPECTED, which follow it with
+        the detector's number, from 1, as EXTVER.
+    truth, scene_files
+        As the attributes of `simimg.frame.Frame`; a truth of None is left out.
+    mask_says, truth_says : sequence of str
+        What the bits of the masks mean, and further words on the truth.
+
+    Raises
+    ------
+    InputError, RunError
+        As `simimg.newfile.new_file`.
+    """
+    layout: dict[str, object] = {"BITPIX": (8, "no image"), "NAXIS": (0, "no image")}
+    with new_file(path, overwrite=overwrite) as handle:
+        write_hdu(handle, _header("IMAGE", layout, True, "", header, ()), ())
+        for number, (name, own, wcs, images) in enumerate(detectors, start=1):
+            coordinates = {} if wcs is None else coordinate_cards(wcs)
+            cards = {"INHERIT": (True, "keywords of the primary header hold, too"), **own}
+            _write_image(handle, images["counts"], True, name, {**coordinates, **cards}, ())
+            version = {"EXTVER": (number, f"of the detector {name}")}
+            if "MASK" in images:
+                cards = {**version, **coordinates}
+                _write_image(handle, images["MASK"], True, "MASK", cards, mask_says)
+            if "EXPECTED" in images:
+                cards = {**version, "BUNIT": "electron", **coordinates}
+                _write_image(handle, images["EXPECTED"], True, "EXPECTED", cards, _EXPECTED_SAYS)
+        if truth is not None:
+            write_truth(handle, truth, simulated=True, says=truth_says)
+        if scene_files:
+            columns = _scene_columns(scene_files)
+            _write_table(handle, columns, len(scene_files), True, "SCENE", _SCENE_SAYS)
+
+
 def write_truth(
     handle: BinaryIO, truth: Table, *, simulated: bool, says: Iterable[str] = ()
 ) -> None:

@@ -91,6 +91,15 @@ class Camera(Detector):
         absent="0",
         meaning="the detector with serial number 0",
     )
+    field_centre: Annotated[
+        tuple[float, float] | None,
+        Several(Quantity("pixels", at_least=-1e7, at_most=1e7, sample="1023.5"), 2),
+    ] = key(
+        "Pixel (x, y) on which the field centre falls, from 0 at the centre of the first.",
+        None,
+        absent="none",
+        meaning="the field centre falls on the middle of the detector",
+    )
     rotation: Annotated[float, Angle] = key(
         "Position angle of the detector's +y, north through east.",
         0.0,
@@ -107,6 +116,12 @@ class Camera(Detector):
     def agree(self) -> Iterator[Fault]:
         """The bias must leave room for counts; tracks need the size of a pixel."""
         yield from super().agree()
+        if self.pixels is not None and self.binning > min(self.pixels):
+            yield Fault(
+                ("binning",),
+                f"is more than the detector's pixels, {self.pixels[0]} x {self.pixels[1]}",
+                "write a smaller binning, or more pixels",
+            )
         if self.cosmic_ray_rate and self.pixel_size is None:
             yield Fault(
                 ("cosmic_ray_rate",),

@@ -17,7 +17,7 @@ from simimg.scene.colours import ABROAD, COLOURS, PAIR_COLOURS
 from simimg.scene.keys import Choice, FileName, Text, nearest
 from simimg.scene.model import Scene
 from simimg.scene.places import ROUTES
-from simimg.scene.table import MANY, Table, table_types
+from simimg.scene.table import REPEATED, Table, table_types
 from simimg.scene.telescope import PUPIL_PARTS
 from simimg.scene.text import parse_value
 
@@ -153,7 +153,7 @@ def _step_into(here: Any, path: Path, step: str | int) -> Any:
     if isinstance(here, list):
         return here[_index(here, path, step)]
     if isinstance(here, dict) and isinstance(step, str):
-        if step in MANY and step not in here:
+        if step in REPEATED and step not in here:
             raise MisplacedKeyError(
                 f"there is no [[{step}]] in the scene", f"write a [[{step}]] there"
             )

@@ -23,6 +23,7 @@ from simimg.scene.exposure import Exposure, Sky
 from simimg.scene.header import Header
 from simimg.scene.inputs import InputFile
 from simimg.scene.keys import Text
+from simimg.scene.mosaic import MosaicDetector, detector_faults
 from simimg.scene.motion import Pointing
 from simimg.scene.objects import (
     Catalogue,
@@ -36,7 +37,7 @@ from simimg.scene.objects import (
 )
 from simimg.scene.psf import Psf
 from simimg.scene.study import Study
-from simimg.scene.table import MANY, Fault, Table, key
+from simimg.scene.table import MANY, REPEATED, Fault, Table, key
 from simimg.scene.telescope import Telescope
 
 MOST_OBJECTS = 10_000
@@ -90,6 +91,7 @@ class Scene(Table):
     ring: tuple[Ring, ...] = key("Flat rings.", ())
     picture: tuple[Picture, ...] = key("Pictures from files.", ())
     catalogue: tuple[Catalogue, ...] = key("Stars from tables.", ())
+    detector: tuple[MosaicDetector, ...] = key("Detectors of a mosaic, in place of one.", ())
 
     hints: ClassVar[Mapping[str, tuple[str, str]]] = {
         "base": ("is read only at the top of a scene file", "write base in the file itself"),
@@ -128,14 +130,22 @@ class Scene(Table):
 
     @property
     def pixel_scale(self) -> float | None:
-        """Angle of a pixel's side, radians; None without a camera or a route to it."""
+        """Angle of a side of a pixel of the frame, radians; None without a route to it."""
         if self.camera is None:
             return None
         if self.camera.pixel_scale is not None:
-            return self.camera.pixel_scale
+            return self.camera.pixel_scale * self.camera.binning
         if self.camera.pixel_size is not None and self.telescope.focal_length is not None:
-            return self.camera.pixel_size / self.telescope.focal_length
+            return self.camera.pixel_size / self.telescope.focal_length * self.camera.binning
         return None
+
+    @property
+    def image_size(self) -> tuple[int, int] | None:
+        """Columns and rows of the frame's pixels that see the sky; None where none are given."""
+        if self.camera is None or self.camera.pixels is None:
+            return None
+        columns, rows = self.camera.pixels
+        return columns // self.camera.binning, rows // self.camera.binning
 
     @property
     def objects(self) -> tuple[Star | Pair | Galaxy | Disc | Ring | Picture, ...]:
@@ -177,7 +187,7 @@ class Scene(Table):
                 wrong = Header.check(keyword, value)
                 if wrong is not None:
                     yield Fault(("header", keyword), *wrong)
-        for kind in MANY:
+        for kind in REPEATED:
             tables = given.get(kind, [])
             if isinstance(tables, Mapping):
                 yield Fault((kind,), "is a single table", f"write [[{kind}]], in double brackets")
@@ -202,6 +212,7 @@ class Scene(Table):
         """One route to the pixel scale; objects where the telescope looks; what needs what."""
         yield from self._pixel_scale_faults()
         yield from scene_faults(self)
+        yield from detector_faults(self.detector, self.camera)
         if self.pointing is not None:
             for kind in MANY:
                 for index, one in enumerate(getattr(self, kind)):

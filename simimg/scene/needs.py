@@ -7,7 +7,7 @@ from typing import Any
 
 from simimg.errors import mistake
 from simimg.scene.model import Scene
-from simimg.scene.table import MANY, Table
+from simimg.scene.table import MANY, REPEATED, Table
 
 
 def requirements_to_expose(scene: Scene) -> list[str]:
@@ -95,7 +95,7 @@ def defaults_used(scene: Scene) -> list[tuple[str, str, str]]:
         value = getattr(scene, name)
         if isinstance(value, Table):
             rows.extend(_within(value, document[name], f"{name}."))
-    for kind in MANY:
+    for kind in REPEATED:
         rows.extend(_of_objects(scene, document, kind))
     return rows
 

@@ -189,4 +189,7 @@ def table_types() -> Iterator[type[Table]]:
 
 
 MANY = ("star", "pair", "galaxy", "disc", "ring", "picture", "catalogue")
-"""The tables that may stand in a scene many times."""
+"""The objects, which may stand in a scene many times."""
+
+REPEATED = (*MANY, "detector")
+"""The tables that may stand in a scene many times: objects, and detectors of a mosaic."""

@@ -47,7 +47,7 @@ class CalibrationFrame:
     time : float
         Exposure (s).
     light : float
-        Mean electrons of light in a pixel.
+        Mean electrons of light in a pixel of the detector.
     number : int
         Of the exposure among its like, from 0.
     draw : int
@@ -83,9 +83,9 @@ class Calibration:
         """Record one of the frames."""
         prepared = self.prepared
         settings = replace(prepared.settings, time=one.time)
-        if one.kind != "flat" and hasattr(settings, "shutter"):
+        if one.kind != "flat":
             settings = replace(settings, shutter=None)
-        light = np.full(prepared.expected.shape, one.light, dtype=np.float32)
+        light = np.full(prepared.light.shape, one.light, dtype=np.float32)
         seed = self.scene.exposure.seed if self.scene.exposure is not None else 0
         recorded = record(
             light,
@@ -113,7 +113,8 @@ class Calibration:
         # Of the sky and the night nothing holds; no clock tells when a calibration is taken.
         absent = ["SKYLVL", "SEEING", "AIRMASS", "DATE-OBS", "MJD-OBS", "TIMESYS"]
         if one.kind == "flat":
-            header["FLATLVL"] = (one.light, "[electron] mean light in a pixel")
+            light = one.light * prepared.settings.readout.binning**2
+            header["FLATLVL"] = (light, "[electron] mean light in a pixel of the frame")
         else:
             absent += ["FILTER", "WAVELEN"]
         return {key: value for key, value in header.items() if key not in absent}

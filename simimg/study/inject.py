@@ -269,6 +269,10 @@ def _matched(scene: Scene, frame: Frame, sky: Sky, notes: list[str]) -> Scene:
         "camera.rotation": f"{degrees(atan2(axes[0, 1], axes[1, 1])) % 360.0!r} deg",
         "camera.mirrored": bool(np.linalg.det(axes) > 0.0),
         "camera.dark_current": None,
+        "camera.binning": None,
+        "camera.field_centre": None,
+        "exposure.dither": None,
+        "detector": None,
         "sky": None,
     }
     ra, dec = sky.to_sky(x, y)
