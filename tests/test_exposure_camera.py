@@ -180,7 +180,7 @@ def test_multiplication_keeps_electrons_in_the_header(scene):
     frame = simimg.expose(replace(scene, {"camera.em_gain": 100.0, "camera.gain": "30 e-/adu"}))
     assert float(frame.value("GAIN")) == pytest.approx(0.3)
     assert float(frame.value("RDNOISE")) == pytest.approx(0.04)
-    assert frame.value("EXCESS") == 2.0
+    assert frame.value("EXCESS") == pytest.approx(1.99)
     light = (frame.counts.astype(float) - 500.0) * 0.3
     corner = light[60:, 70:]
     assert corner.mean() == pytest.approx(50.0, rel=0.05)
@@ -195,6 +195,7 @@ def test_amplifiers_are_told_in_the_header(scene):
     )  # fmt: skip
     assert [frame.value(f"GAIN{i}") for i in (1, 2)] == [1.0, 2.0]
     assert [frame.value(f"BIASLV{i}") for i in (1, 2)] == [400.0, 800.0]
+    assert [frame.value(f"AMPSEC{i}") for i in (1, 2)] == ["[1:60,1:96]", "[61:120,1:96]"]
     assert frame.counts[60:, :50].mean() == pytest.approx(450, abs=2)
     assert frame.counts[60:, 70:].mean() == pytest.approx(825, abs=2)
 
@@ -214,6 +215,7 @@ def test_amplifiers_are_told_in_the_header(scene):
         ({"camera.pixel_coupling": 0.3}, "pixel_coupling"),
         ({"camera.shutter": {"kind": "door", "travel": "1 s"}}, "shutter.kind"),
         ({"camera.binning": 0}, "binning"),
+        ({"camera.binning": 32, "camera.pixels": [20, 20]}, "binning"),
         ({"camera.hot_pixel_fraction": 1.0}, "hot_pixel_fraction"),
     ],
 )
@@ -238,6 +240,11 @@ position_angle = "70 deg"
     [
         {"camera.prescan": 8, "camera.overscan": 32},
         {"camera.em_gain": 150.0, "camera.gain": "20 e-/adu"},
+        {
+            "camera.amplifier_gains": ["1.4 e-/adu", "1.7 e-/adu", "1.3 e-/adu", "1.5 e-/adu"],
+            "camera.amplifier_biases": ["450 adu", "520 adu", "480 adu", "500 adu"],
+            "camera.overscan": 16,
+        },
         {
             "camera.cosmic_ray_rate": "60 / (cm2 min)",
             "camera.hot_pixel_fraction": 0.005,
@@ -275,3 +282,40 @@ def test_a_raw_frame_says_what_is_left_in_it(scene):
     assert "flat response, non-linearity not corrected" in said
     clean = measure_frame(simimg.expose(scene), near=[(40.3, 30.8)])
     assert "not corrected" not in " ".join(clean.warnings)
+
+
+def test_the_saturation_level_is_where_frames_saturate(scene):
+    bright = {"star.0.electrons": "3e6 electron", "camera.full_well": "20000 electron"}
+    for extra in ({}, {"camera.nonlinearity": 0.1}, {"camera.em_gain": 3.0}):
+        frame = simimg.expose(replace(scene, bright | extra))
+        top, level = float(frame.counts.max()), float(frame.value("SATURATE"))
+        assert top == pytest.approx(level, rel=0.02)
+    binned = simimg.expose(replace(scene, bright | {"camera.binning": 2, "star.0.x": 20.0}))
+    assert float(binned.value("SATURATE")) == pytest.approx(4 * 20000 / 1.5 + 500)
+
+
+def test_patterns_stay_whatever_is_read_about_them(scene):
+    wide = {"camera.prescan": 8, "camera.overscan": 30}
+    pattern = {"camera.bias_rms": "30 adu", "star": None, "sky": None}
+    narrow = simimg.expose(replace(scene, pattern)).counts.mean(axis=0)
+    about = simimg.expose(replace(scene, pattern | wide)).counts.mean(axis=0)[8:128]
+    assert np.corrcoef(narrow, about)[0, 1] > 0.99
+
+
+def test_a_multiplied_frame_read_by_its_header_alone(scene, tmp_path):
+    from simimg.resolving.measure import measure_frame
+
+    frame = simimg.expose(replace(scene, {"camera.em_gain": 150.0, "camera.gain": "20 e-/adu"}))
+    own = measure_frame(frame).singles
+    frame.write(tmp_path / "f.fits")
+    with fits.open(tmp_path / "f.fits") as hdus:
+        hdus[0].writeto(tmp_path / "bare.fits")
+    bare = simimg.Frame.read(tmp_path / "bare.fits")
+    from simimg.resolving.psfsource import PsfChoice
+
+    alone = measure_frame(bare, psf=PsfChoice(profile=True)).singles
+    by_place = {round(one.x): one for one in alone}
+    for one in own:
+        other = by_place[round(one.x)]
+        assert other.electrons == pytest.approx(one.electrons, rel=0.05)
+        assert other.electrons_error == pytest.approx(one.electrons_error, rel=0.15)

@@ -9,7 +9,10 @@ from __future__ import annotations
 
 from math import inf
 
+import numpy as np
+
 from simimg.camera.converter import converter_top
+from simimg.camera.linearity import bend, full_signal
 from simimg.camera.multiplication import excess_noise
 from simimg.camera.settings import CameraSettings
 
@@ -38,6 +41,8 @@ def detector_cards(settings: CameraSettings, columns: int, rows: int) -> dict[st
         for number, (one, level) in enumerate(zip(gains, biases, strict=True), start=1):
             cards[f"GAIN{number}"] = (one / entering, f"[electron/adu] gain of amplifier {number}")
             cards[f"BIASLV{number}"] = (level, f"[adu] bias level of amplifier {number}")
+            section = _amplifier_section(number, readout.amplifiers, readout.prescan, columns, rows)
+            cards[f"AMPSEC{number}"] = (section, f"pixels that amplifier {number} reads")
     if readout.em_gain > 1.0:
         cards["EMGAIN"] = (readout.em_gain, "gain of the multiplying register")
         cards["EXCESS"] = (excess_noise(readout.em_gain), "square of the excess noise factor")
@@ -70,6 +75,15 @@ def section_cards(prescan: int, overscan: int, columns: int, rows: int) -> dict[
     return cards
 
 
+def _amplifier_section(number: int, count: int, prescan: int, columns: int, rows: int) -> str:
+    """The part of the data that one of 2 or 4 amplifiers reads."""
+    right, upper = (number - 1) % 2, (number - 1) // 2
+    middle, half = columns // 2, rows // 2
+    left, end = (middle + 1, columns) if right else (1, middle)
+    bottom, top = (1, rows) if count == 2 else ((half + 1, rows) if upper else (1, half))
+    return f"[{prescan + left}:{prescan + end},{bottom}:{top}]"
+
+
 def _section(before: int, columns: int, rows: int) -> str:
     return f"[{before + 1}:{before + columns},1:{rows}]"
 
@@ -84,7 +98,11 @@ def saturation(settings: CameraSettings) -> float:
     readout = settings.readout
     gain = min(readout.gains) if readout.gains else settings.gain
     bias = max(readout.biases) if readout.biases else settings.bias
-    well = inf if settings.full_well is None else settings.full_well
+    well = inf if settings.full_well is None else settings.full_well * readout.binning**2
     if readout.em_gain > 1.0:
         well = min(well * readout.em_gain, inf if readout.em_well is None else readout.em_well)
+    if readout.nonlinearity and well < inf:
+        level = np.array([well], dtype=np.float64)
+        bend(level, share=readout.nonlinearity, full=full_signal(settings))
+        well = float(level[0])
     return min(float(converter_top(settings.bit_depth)), well / gain + bias)

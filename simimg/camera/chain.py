@@ -84,6 +84,8 @@ def record(
         raise ValueError(f"expected must be a 2-D array that is not empty, got {light.shape}")
     if threads < 1:
         raise ValueError(f"threads must be at least 1, got {threads!r}")
+    if settings.readout.binning > min(light.shape):
+        raise ValueError(f"no bin of {settings.readout.binning} pixels fits {light.shape}")
     exposure = Exposure.of(light, settings, seed, frame)
     if exposure.alone:
         return _in_blocks(exposure, threads)

@@ -10,6 +10,8 @@ from __future__ import annotations
 import numpy as np
 
 from simimg.arrays import AnyArray
+from simimg.camera.converter import converter_top
+from simimg.camera.settings import CameraSettings
 
 
 def bend(electrons: AnyArray, *, share: float, full: float) -> None:
@@ -26,3 +28,11 @@ def bend(electrons: AnyArray, *, share: float, full: float) -> None:
     """
     level = np.minimum(electrons, full)
     electrons -= electrons * level * electrons.dtype.type(share / full)
+
+
+def full_signal(settings: CameraSettings) -> float:
+    """Electrons at the full range of what is read: the well's, or the converter's."""
+    top = (converter_top(settings.bit_depth) - settings.bias) * settings.gain
+    if settings.full_well is None or settings.readout.em_gain > 1.0:
+        return max(top, 1.0)
+    return min(settings.full_well * settings.readout.binning**2, max(top, 1.0))

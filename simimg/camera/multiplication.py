@@ -1,10 +1,12 @@
 """Electron multiplication: each electron becomes many in a register before it is read.
 
-``n`` electrons leave as a number that is gamma distributed with shape ``n`` and the gain as its
-scale (Basden, Haniff & Mackay 2003, MNRAS 345, 985). The mean is multiplied by the gain; the
-variance by its square and, for light, once more by the excess noise factor squared, which is 2 at
-high gain (Robbins & Hadwen 2003, IEEE Trans. Electron Devices 50, 1227). The register holds so
-much and no more. Charge that the clocks themselves make is not modelled.
+Each of the register's many stages adds to every electron, with a small chance, one more: in the
+limit of many stages one electron leaves as a geometrically distributed number, and ``n`` as their
+sum, ``n`` and a negative binomial. At high gain that is the gamma distribution of shape ``n`` whose
+scale is the gain (Basden, Haniff & Mackay 2003, MNRAS 345, 985). The mean is multiplied by the
+gain; the variance of light by its square and by the excess noise factor squared, ``2 - 1 / gain``
+(Robbins & Hadwen 2003, IEEE Trans. Electron Devices 50, 1227, for many stages). The register holds
+so much and no more. Charge that the clocks themselves make is not modelled.
 """
 
 from __future__ import annotations
@@ -23,7 +25,7 @@ def multiply(
     Parameters
     ----------
     electrons : ndarray of float
-        Whole electrons; changed. What is no whole number is rounded first.
+        Electrons; changed. What is no whole number is rounded first.
     gain : float
         Mean electrons that leave for each that enters, above 1.
     rng : numpy.random.Generator
@@ -35,8 +37,11 @@ def multiply(
     ndarray of bool
         True where the register was full.
     """
-    entered = np.rint(electrons)
-    electrons[...] = np.where(entered > 0.0, rng.gamma(np.maximum(entered, 1.0), gain), 0.0)
+    entered = np.maximum(np.rint(electrons), 0.0)
+    some = entered > 0.0
+    left = np.zeros(entered.shape)
+    left[some] = entered[some] + rng.negative_binomial(entered[some], 1.0 / gain)
+    electrons[...] = left
     if well is None:
         return np.zeros(electrons.shape, dtype=np.bool_)
     full = electrons >= well
@@ -55,6 +60,6 @@ def excess_noise(gain: float) -> float:
     Returns
     -------
     float
-        ``1 + 1`` for any register whose output is gamma distributed; 1 without multiplication.
+        ``2 - 1 / gain``: 1 without multiplication, 2 at high gain.
     """
-    return 2.0 if gain > 1.0 else 1.0
+    return 2.0 - 1.0 / gain

@@ -13,9 +13,9 @@ import numpy as np
 from simimg.arrays import AnyArray, FloatArray
 from simimg.camera.amplifiers import amplifier_numbers, leak, per_amplifier
 from simimg.camera.biaspattern import column_offsets, row_drift
-from simimg.camera.converter import converter_top, digitise
+from simimg.camera.converter import digitise
 from simimg.camera.gathering import Exposure
-from simimg.camera.linearity import bend
+from simimg.camera.linearity import bend, full_signal
 from simimg.camera.masks import SATURATED, MaskArray
 from simimg.camera.readout import add_read_noise, relative_noise
 from simimg.camera.settings import CameraSettings
@@ -48,7 +48,10 @@ class Reading:
         settings, readout = exposure.settings, exposure.settings.readout
         noise = None
         if readout.noise_spread:
-            noise = relative_noise(shape, readout.noise_spread, settings.serial)
+            data = (shape[0], shape[1] - readout.prescan - readout.overscan)
+            noise = _around(
+                relative_noise(data, readout.noise_spread, settings.serial), settings, 1.0
+            )
         gain: FloatArray | float = settings.gain
         bias: FloatArray | float = settings.bias
         if readout.amplifiers > 1:
@@ -59,7 +62,10 @@ class Reading:
         if readout.bias_rms:
             fixed = fixed_stream(settings.serial, Fixed.BIAS)
             bias = np.zeros(shape, dtype=np.float32) + np.float32(bias)
-            bias += column_offsets(shape[1], readout.bias_rms, fixed)
+            offsets = column_offsets(
+                shape[1] - readout.prescan - readout.overscan, readout.bias_rms, fixed
+            )
+            bias += _around(offsets[np.newaxis, :], settings, 0.0)
         if readout.bias_drift:
             rng = exposure.stream(Stage.BIAS_DRIFT)
             drift = row_drift(shape[0], readout.bias_drift, rng)
@@ -96,14 +102,6 @@ class Reading:
         mask |= np.where(top, np.uint8(SATURATED), np.uint8(0))
 
 
-def full_signal(settings: CameraSettings) -> float:
-    """Electrons at the full range of what is read: the well's, or the converter's."""
-    top = (converter_top(settings.bit_depth) - settings.bias) * settings.gain
-    if settings.full_well is None or settings.readout.em_gain > 1.0:
-        return max(top, 1.0)
-    return min(settings.full_well * settings.readout.binning**2, max(top, 1.0))
-
-
 def _of(value: FloatArray | float, rows: slice) -> FloatArray | float:
     return value if isinstance(value, float) else value[rows]
 
@@ -114,3 +112,12 @@ def _numbers(shape: tuple[int, int], settings: CameraSettings) -> AnyArray:
     columns = shape[1] - readout.prescan - readout.overscan
     numbers = amplifier_numbers((shape[0], columns), readout.amplifiers)
     return np.pad(numbers, ((0, 0), (readout.prescan, readout.overscan)), mode="edge")
+
+
+def _around(pattern: FloatArray, settings: CameraSettings, beyond: float) -> FloatArray:
+    """A pattern of the data, with what columns without charge have."""
+    readout = settings.readout
+    if not readout.prescan and not readout.overscan:
+        return pattern
+    sides = ((0, 0), (readout.prescan, readout.overscan))
+    return np.pad(pattern, sides, constant_values=beyond)

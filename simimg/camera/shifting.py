@@ -52,7 +52,7 @@ def shift_out(exposure: Exposure, signal: AnyArray, mask: MaskArray) -> tuple[An
             full = fill_well(signal, settings.full_well)
         mask[full] |= SATURATED
     if readout.inefficiency:
-        trail(signal, inefficiency=readout.inefficiency, length=readout.trail_length)
+        _trail(exposure, signal)
     if readout.binning > 1:
         signal, mask = binned(signal, readout.binning), binned_mask(mask, readout.binning)
     if readout.em_gain > 1.0:
@@ -64,3 +64,12 @@ def shift_out(exposure: Exposure, signal: AnyArray, mask: MaskArray) -> tuple[An
         around = ((0, 0), (readout.prescan, readout.overscan))
         signal, mask = np.pad(signal, around), np.pad(mask, around)
     return signal, mask
+
+
+def _trail(exposure: Exposure, signal: AnyArray) -> None:
+    """Let charge lag on its way to the first row, or with four amplifiers to either end."""
+    readout, rng = exposure.settings.readout, exposure.stream(Stage.TRAILING)
+    half = signal.shape[0] // 2 if readout.amplifiers == 4 else signal.shape[0]
+    for part in (signal[:half], signal[half:][::-1]):
+        if part.size:
+            trail(part, inefficiency=readout.inefficiency, length=readout.trail_length, rng=rng)

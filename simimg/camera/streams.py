@@ -28,6 +28,7 @@ class Stage(IntEnum):
     FLICKER = 4
     MULTIPLICATION = 5
     BIAS_DRIFT = 6
+    TRAILING = 7
     INJECTED = 40
     INJECTED_ROUNDING = 41
     DITHER = 42

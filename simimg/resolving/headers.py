@@ -84,6 +84,13 @@ def header_read_noise(frame: Frame, gain: float) -> Found | None:
     return None
 
 
+def header_excess(frame: Frame) -> float:
+    """Square of the excess noise factor of a multiplying register; 1 where none is told."""
+    value, gain = number(frame, "EXCESS"), number(frame, "EMGAIN")
+    told = value is not None and gain is not None and gain > 1.0 and 1.0 <= value <= 2.0
+    return value if told and value is not None else 1.0
+
+
 def header_saturation(frame: Frame) -> Found | None:
     """Counts from which a pixel is full."""
     return _first(frame, SATURATIONS)

@@ -21,6 +21,7 @@ from simimg.assembly.train import Train, assemble_train
 from simimg.errors import InputError, mistake
 from simimg.frame import Frame
 from simimg.resolving.backdrop import Backdrop
+from simimg.resolving.evened import evened
 from simimg.resolving.given import Given
 from simimg.resolving.headers import header_pixel_scale
 from simimg.resolving.pairlimits import Cuts
@@ -209,6 +210,7 @@ def observe(
             )
         )
         readout = scene_readout(scene.camera, given, frame.counts.shape)
+        frame = evened(frame, scene.camera)
     else:
         sky = foreign_sky(frame, given, notes)
         readout = foreign_readout(frame, given)

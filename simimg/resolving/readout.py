@@ -34,6 +34,7 @@ from simimg.resolving.backdrop import Backdrop, find_backdrop
 from simimg.resolving.given import Given
 from simimg.resolving.headers import (
     header_bias,
+    header_excess,
     header_gain,
     header_read_noise,
     header_saturation,
@@ -99,9 +100,12 @@ def scene_readout(camera: Camera, given: Given, shape: tuple[int, ...]) -> Reado
     factor = camera.em_gain * excess
     gains = camera.amplifier_gains or (camera.gain,)
     biases = camera.amplifier_biases or (camera.bias,)
-    gain = sum(gains) / len(gains) / factor if given.gain is None else given.gain
+    # What is given is meant as a header says it: of electrons as they enter the register.
+    gain = sum(gains) / len(gains) / factor if given.gain is None else given.gain / excess
     bias = sum(biases) / len(biases) if given.bias is None else given.bias
-    read_noise = camera.read_noise / factor if given.read_noise is None else given.read_noise
+    read_noise = camera.read_noise / factor
+    if given.read_noise is not None:
+        read_noise = given.read_noise / excess
     full = saturation(detector_settings(camera, time=0.0))
     rounding = 0.0 if read_noise == 0.0 and gain == 1.0 else gain**2 / 12.0
     return Readout(
@@ -133,11 +137,7 @@ def _raw(camera: Camera) -> tuple[str, ...]:
             ("the shutter's pattern", camera.shutter is not None),
             ("the dark pattern", camera.dark_rms),
             ("non-linearity", camera.nonlinearity),
-            ("several gains", len(set(camera.amplifier_gains)) > 1),
-            (
-                "the structure of the bias",
-                camera.bias_rms or camera.bias_drift or len(set(camera.amplifier_biases)) > 1,
-            ),
+            ("the structure of the bias", camera.bias_rms or camera.bias_drift),
             ("trailing charge", camera.transfer_inefficiency),
             ("coupling between pixels", camera.pixel_coupling),
         )
@@ -172,8 +172,10 @@ def foreign_readout(frame: Frame, given: Given) -> Readout:
     whole = _whole_numbers(frame.counts, good)
     brightest = float(frame.counts[good].max()) - backdrop.level
     quiet = backdrop.noise <= _NOISELESS * brightest
-    gain = _gain(frame, given, backdrop, 0.0 if quiet else backdrop.noise, whole, notes)
-    bias, read_noise = _overscan(frame, given, gain, backdrop)
+    excess = header_excess(frame)
+    gain = _gain(frame, given, backdrop, 0.0 if quiet else backdrop.noise, whole, notes) / excess
+    bias, read_noise = _overscan(frame, given, gain * excess, backdrop)
+    read_noise = None if read_noise is None else read_noise / excess
     rounding = gain**2 / 12.0 if whole else 0.0
     scatter = (gain * backdrop.noise) ** 2
     if quiet or scatter == 0.0:
@@ -191,6 +193,7 @@ def foreign_readout(frame: Frame, given: Given) -> Readout:
         barred=barred,
         backdrop=backdrop,
         notes=tuple(notes),
+        excess=excess,
     )
 
 

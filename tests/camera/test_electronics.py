@@ -17,15 +17,26 @@ from simimg.camera.trailing import trail
 
 def test_a_trail_conserves_charge_and_falls_exponentially():
     electrons = np.zeros((2000, 3))
-    electrons[999, 1] = 1e6
-    trail(electrons, inefficiency=1e-4, length=5.0)
-    left = 1e6 * (1.0 - 1e-4) ** 1000
-    assert electrons[999, 1] == pytest.approx(left, rel=1e-9)
-    assert electrons.sum() == pytest.approx(1e6, rel=1e-9)
+    electrons[999, 1] = 1e12
+    trail(electrons, inefficiency=1e-4, length=5.0, rng=np.random.default_rng(3))
+    left = 1e12 * (1.0 - 1e-4) ** 1000
+    assert electrons[999, 1] == pytest.approx(left, rel=5e-6)
+    assert electrons.sum() == 1e12
     tail = electrons[1000:1020, 1]
-    assert_allclose(tail[1:] / tail[:-1], math.exp(-0.2), rtol=1e-9)
+    assert_allclose(tail[1:] / tail[:-1], math.exp(-0.2), rtol=1e-3)
     assert (electrons[:999] == 0).all()
     assert (electrons[:, [0, 2]] == 0).all()
+
+
+def test_light_that_lags_keeps_the_variance_of_its_mean():
+    # A trail of means alone would leave row 199 with about two thirds of its variance.
+    rng = np.random.default_rng(1)
+    electrons = rng.poisson(400.0, (200, 20_000)).astype(np.float32)
+    trail(electrons, inefficiency=1e-3, length=2.0, rng=rng)
+    for row in (1, 50, 199):
+        near = 4 * math.sqrt(2 / electrons.shape[1])
+        assert electrons[row].var() == pytest.approx(electrons[row].mean(), rel=near)
+    assert abs(np.corrcoef(electrons[150], electrons[151])[0, 1]) < 4 / math.sqrt(20_000)
 
 
 def test_coupling_conserves_and_correlates():
@@ -47,19 +58,21 @@ def test_coupling_conserves_and_correlates():
     assert_allclose([point[1, 2], point[3, 2], point[2, 1], point[2, 3]], 2.0)
 
 
-@pytest.mark.parametrize("gain", [20.0, 500.0])
-def test_multiplication_has_its_gain_and_an_excess_noise_of_two(gain):
+@pytest.mark.parametrize("gain", [1.2, 2.0, 20.0, 500.0])
+def test_multiplication_has_its_gain_and_its_excess_noise(gain):
     rng = np.random.default_rng(4)
-    light = rng.poisson(30.0, 200_000).astype(float)
-    out = light.copy()
+    out = rng.poisson(30.0, 400_000).astype(float)
     multiply(out, gain, rng, well=None)
     assert out.mean() == pytest.approx(30.0 * gain, rel=4 * math.sqrt(2 / 30.0 / out.size))
-    # Photon transfer: variance over gain squared and mean, against the published factor of 2
-    # (Robbins & Hadwen 2003).
     factor = out.var() / (gain**2 * 30.0)
-    assert factor == pytest.approx(2.0, abs=0.03)
-    assert excess_noise(gain) == 2.0
+    # A register of 600 stages (Robbins & Hadwen 2003), where this one has endlessly many; towards
+    # the published factor of 2 at high gain.
+    stages = 600
+    published = 2 * (gain - 1) * gain ** (-(stages + 1) / stages) + 1 / gain
+    assert factor == pytest.approx(excess_noise(gain), abs=0.02)
+    assert factor == pytest.approx(published, abs=0.04)
     assert excess_noise(1.0) == 1.0
+    assert excess_noise(1e6) == pytest.approx(2.0, abs=1e-5)
     assert (multiply(np.zeros(10), gain, rng, well=None) == 0).all()
 
 
