@@ -6,6 +6,7 @@ Arcseconds and degrees in the record; detector pixels before.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 from math import degrees, hypot, nan
 
 import numpy as np
@@ -14,6 +15,7 @@ from simimg.resolving.interval import is_lopsided, separation_interval
 from simimg.resolving.observation import Observation
 from simimg.resolving.pairfit import PairGeometry, pair_geometry
 from simimg.resolving.pairlimits import PairLimits
+from simimg.resolving.posterior import PairPosterior, pair_posterior
 from simimg.resolving.records import CriterionVerdict, PairMeasurement, PairTruth
 from simimg.resolving.resolution import to_arcsec
 from simimg.resolving.saddle import saddle_seen
@@ -22,6 +24,8 @@ from simimg.resolving.skyplane import SkyStep, sky_step
 from simimg.resolving.starfit import StarFit
 from simimg.resolving.verdict import SURELY_DOUBLE, Limit, probability_beyond, verdict
 
+_SMALL = 0.015  # of the separation: smaller errors are the same at the limit as at the fit
+_PLAIN = 1e-3  # probability that needs no better figure, nor its complement
 _REST = 6.0  # standard errors of the magnitude difference over which Sparrow's limit is tabulated
 
 
@@ -59,6 +63,7 @@ def judge(
     limits: PairLimits,
     *,
     named: NamedPair | None = None,
+    verdicts_only: bool = False,
 ) -> Judgement:
     """Turn a sighting into a record.
 
@@ -70,6 +75,8 @@ def judge(
         Of the observation's PSF.
     named : NamedPair, optional
         The pair of TRUTH that stands here: it settles which star is first, and nothing else.
+    verdicts_only : bool, optional
+        Leave out what takes time and no verdict needs: the saddle, the separation's interval.
     """
     fit = sighting.double
     if fit is None or sighting.empty:
@@ -80,13 +87,16 @@ def judge(
     x, y = (float(value) for value in fit.places[first])
     axes = observation.sky.axes(x, y)
     step = sky_step(axes, length=geometry.separation, angle=geometry.angle)
-    rayleigh, sparrow_verdict = _criteria(observation, limits, geometry, chance, step.scale_arcsec)
+    asked = _Asked(sighting, fit, first, second, geometry)
+    rayleigh, sparrow_verdict = _criteria(observation, limits, asked, step.scale_arcsec)
     resolved = "resolved" in (rayleigh.verdict, sparrow_verdict.verdict)
-    saddle, saddle_error = _saddle(sighting, fit, first, second)
+    saddle = saddle_error = low = high = nan
+    if not verdicts_only:
+        saddle, saddle_error = _saddle(sighting, fit, first, second)
+        low, high = _interval(sighting, geometry, step.length_arcsec)
     difference, spread = geometry.magnitude_difference, geometry.errors[2]
     ra, dec = _sky(observation, x, y)
     errors = _errors(step, geometry)
-    low, high = _interval(sighting, geometry, step.length_arcsec)
     record = PairMeasurement(
         label="" if named is None else named.label,
         x=x,
@@ -143,10 +153,10 @@ def _errors(step: SkyStep, geometry: PairGeometry) -> tuple[float, float]:
 def _interval(sighting: Sighting, geometry: PairGeometry, arcsec: float) -> tuple[float, float]:
     """The separation's interval (arcsec), NaN where its error says all.
 
-    Nor is there one without the pixels. `arcsec` is the separation on the sky.
+    `arcsec` is the separation on the sky.
     """
     double, cutouts, chance = sighting.double, sighting.cutouts, sighting.probability_single
-    if double is None or not cutouts or not geometry.separation > 0.0:
+    if double is None or not geometry.separation > 0.0:
         return nan, nan
     if not is_lopsided(geometry, chance=chance, fwhm=cutouts[0].psf.fwhm):
         return nan, nan
@@ -158,8 +168,7 @@ def _interval(sighting: Sighting, geometry: PairGeometry, arcsec: float) -> tupl
 def _criteria(
     observation: Observation,
     limits: PairLimits,
-    geometry: PairGeometry,
-    chance: float,
+    asked: _Asked,
     arcsec: float,
 ) -> tuple[CriterionVerdict, CriterionVerdict]:
     """Both delivered limits along the pair's own line, with probabilities and verdicts.
@@ -167,18 +176,14 @@ def _criteria(
     `arcsec` is the length of a pixel along that line.
     """
     scale = observation.sky.pixel_scale
+    geometry = asked.geometry
     spread = geometry.errors[2]
     reach = _REST * spread if np.isfinite(spread) else 0.0
     limit = limits.of(geometry.angle, geometry.magnitude_difference, reach)
-    covariance = [geometry.covariance[i][::2] for i in (0, 2)]
 
     def answer(value: float, beyond: float | Limit) -> CriterionVerdict:
-        probability = probability_beyond(
-            beyond,
-            separation=geometry.separation,
-            magnitude_difference=geometry.magnitude_difference,
-            covariance=covariance,
-        )
+        probability = asked.beyond(beyond)
+        chance = asked.sighting.probability_single
         return CriterionVerdict(
             limit_arcsec=value / scale * arcsec,
             probability=probability,
@@ -189,6 +194,42 @@ def _criteria(
         answer(limit.rayleigh, limit.rayleigh / scale),
         answer(limit.sparrow, lambda differences: limit.sparrow_for(differences) / scale),
     )
+
+
+class _Asked:
+    """A fitted pair, asked whether it lies beyond a limit.
+
+    Where the errors are small against the separation, or the answer is plain, the Gaussian of the
+    errors tells; elsewhere the likelihood itself (`simimg.resolving.posterior`), once for all
+    limits.
+    """
+
+    def __init__(
+        self, sighting: Sighting, fit: StarFit, first: int, second: int, geometry: PairGeometry
+    ) -> None:
+        self.sighting = sighting
+        self.geometry = geometry
+        self._fit, self._order = fit, (first, second)
+        self._covariance = [geometry.covariance[i][::2] for i in (0, 2)]
+
+    def beyond(self, limit: float | Limit) -> float:
+        """The probability that the pair's separation (pixels) is beyond a limit."""
+        geometry = self.geometry
+        plain = probability_beyond(
+            limit,
+            separation=geometry.separation,
+            magnitude_difference=geometry.magnitude_difference,
+            covariance=self._covariance,
+        )
+        rough = geometry.errors[0] > _SMALL * geometry.separation
+        if not (rough and _PLAIN < plain < 1.0 - _PLAIN) or self._posterior is None:
+            return plain
+        return self._posterior.beyond(limit)
+
+    @cached_property
+    def _posterior(self) -> PairPosterior | None:
+        first, second = self._order
+        return pair_posterior(self.sighting.cutouts, self._fit, first=first, second=second)
 
 
 def _saddle(sighting: Sighting, fit: StarFit, first: int, second: int) -> tuple[float, float]:

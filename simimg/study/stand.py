@@ -5,7 +5,7 @@ A stand holds what all trials of a scene share and can be set up in any process 
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 
@@ -84,6 +84,6 @@ class Stand:
         return results
 
     def _measured(self, observation: Observation, pair: KnownPair) -> FloatArray:
-        # Without its cutouts a sighting is judged without the saddle, which nothing here asks for.
-        sighting = replace(pair.look(observation), cutouts=())
-        return kept(judge(observation, sighting, self._limits, named=pair.named).record)
+        sighting, limits = pair.look(observation), self._limits
+        judgement = judge(observation, sighting, limits, named=pair.named, verdicts_only=True)
+        return kept(judgement.record)
