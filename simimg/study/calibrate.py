@@ -14,11 +14,17 @@ from typing import Final
 import numpy as np
 
 from simimg.assembly.brightness import exposure_time
-from simimg.camera.calibration import flat_electrons, ramp_electrons, transfer_electrons
+from simimg.camera.calibration import (
+    flat_electrons,
+    ramp_electrons,
+    recordable_electrons,
+    transfer_electrons,
+)
 from simimg.camera.chain import record
 from simimg.errors import InputError, mistake
 from simimg.exposure import Prepared, frame_header, prepare
 from simimg.frame import Frame
+from simimg.mosaic import Mosaic, prepare_mosaic
 from simimg.scene.file import replace as changed
 from simimg.scene.file import scene_id
 from simimg.scene.model import Scene
@@ -70,18 +76,24 @@ class Calibration:
     ----------
     scene : Scene
         As given.
-    prepared : Prepared
-        Its camera before no sky.
+    names : tuple of str
+        Of the detectors of a mosaic; empty for a single camera.
+    detectors : tuple of Prepared
+        The camera before no sky, or each detector of a mosaic.
     frames : tuple of CalibrationFrame
     """
 
     scene: Scene
-    prepared: Prepared
+    names: tuple[str, ...]
+    detectors: tuple[Prepared, ...]
     frames: tuple[CalibrationFrame, ...]
 
-    def frame(self, one: CalibrationFrame, *, threads: int | None = None) -> Frame:
-        """Record one of the frames."""
-        prepared = self.prepared
+    def frame(self, one: CalibrationFrame, *, threads: int | None = None) -> Frame | Mosaic:
+        """Record one of the frames; of a mosaic all detectors at once."""
+        made = tuple(self._recorded(prepared, one, threads) for prepared in self.detectors)
+        return Mosaic(self.names, made, truth=None) if self.names else made[0]
+
+    def _recorded(self, prepared: Prepared, one: CalibrationFrame, threads: int | None) -> Frame:
         settings = replace(prepared.settings, time=one.time)
         if one.kind != "flat":
             settings = replace(settings, shutter=None)
@@ -91,7 +103,7 @@ class Calibration:
             light,
             settings=settings,
             seed=seed,
-            frame=one.draw,
+            frame=prepared.first_draw + one.draw,
             threads=threads or os.cpu_count() or 1,
         )
         return Frame(
@@ -125,9 +137,8 @@ class Calibration:
             frame = Frame.read(path)
         except InputError:
             return False
-        wanted = self._header(
-            replace(self.prepared, settings=replace(self.prepared.settings, time=one.time)), one
-        )
+        first = self.detectors[0]
+        wanted = self._header(replace(first, settings=replace(first.settings, time=one.time)), one)
         from simimg.version import __version__
 
         told = {"CREATOR": f"simimg {__version__}", "EXPNUM": one.number}
@@ -183,8 +194,14 @@ def calibration(
                 'add time = "30 s" to [exposure], or leave out the dark frames',
             )
         )
-    prepared = prepare(_dark_scene(scene), threads=threads)
-    settings = prepared.settings
+    unlit = _dark_scene(scene)
+    if scene.detector:
+        several = prepare_mosaic(unlit, threads=threads)
+        names, detectors = several.names, several.detectors
+    else:
+        names, detectors = (), (prepare(unlit, threads=threads),)
+    # One light shines on all detectors of a mosaic: none may get too much.
+    settings = min((one.settings for one in detectors), key=recordable_electrons)
     level = flat_electrons(settings)
 
     def of(kind: str, file: str, number: int, seconds: float, light: float) -> CalibrationFrame:
@@ -203,7 +220,7 @@ def calibration(
         for j, letter in enumerate("ab"):
             name = f"transfer-{_n(i, transfer)}{letter}.fits"
             frames.append(of("transfer", name, 2 * i + j, seconds, float(light)))
-    return Calibration(scene, prepared, tuple(frames))
+    return Calibration(scene, names, detectors, tuple(frames))
 
 
 def _n(number: int, count: int) -> str:

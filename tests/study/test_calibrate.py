@@ -330,3 +330,33 @@ def test_what_cannot_be(tmp_path):
         calibration(scene(tmp_path, exposure__time=None, camera__dark_current=None), dark=1)
     with pytest.raises(InputError, match="too many"):
         calibration(scene(tmp_path), bias=100_001)
+
+
+def test_the_detectors_of_a_mosaic_together(tmp_path):
+    chips = """
+[[detector]]
+name = "a"
+offset = ["-140 px", "0 px"]
+[[detector]]
+name = "b"
+offset = ["140 px", "0 px"]
+pixels = [100, 90]
+full_well = "60000 electron"
+"""
+    (tmp_path / "m.toml").write_text(TEXT.split("[[star]]")[0] + chips)
+    s = load_scene(tmp_path / "m.toml")
+    made = calibration(s, bias=2, dark=1, flat=1)
+    for one in made.frames:
+        made.frame(one).write(tmp_path / one.file)
+        assert verified(tmp_path / one.file)
+        assert made.made_before(one, tmp_path / one.file)
+    with fits.open(tmp_path / "flat-000.fits") as hdus:
+        assert [one.name for one in hdus] == ["PRIMARY", "A", "MASK", "B", "MASK"]
+        assert hdus["B"].data.shape == (90, 100)
+        assert hdus[0].header["OBSTYPE"] == hdus["B"].header["OBSTYPE"] == "flat"
+        # Half of the smaller well, on both.
+        assert hdus["A"].header["FLATLVL"] == hdus["B"].header["FLATLVL"] == 30000.0
+    biases = [fits.getdata(tmp_path / "bias-000.fits", name)[:90, :100] for name in "AB"]
+    biases.append(fits.getdata(tmp_path / "bias-001.fits", "A")[:90, :100])
+    found = np.corrcoef([one.astype(float).ravel() for one in biases])
+    assert np.abs(found[np.triu_indices(3, 1)]).max() < 5 / np.sqrt(9000)
