@@ -313,7 +313,7 @@ def test_a_multiplied_frame_read_by_its_header_alone(scene, tmp_path):
     bare = simimg.Frame.read(tmp_path / "bare.fits")
     from simimg.resolving.psfsource import PsfChoice
 
-    alone = measure_frame(bare, psf=PsfChoice(profile=True)).singles
+    alone = measure_frame(bare, psf=PsfChoice(source="profile")).singles
     by_place = {round(one.x): one for one in alone}
     for one in own:
         other = by_place[round(one.x)]
