@@ -24,6 +24,7 @@ from simimg.arrays import AnyArray, FloatArray, frozen
 from simimg.assembly.objects import Inventory, inventory
 from simimg.assembly.train import assemble_train
 from simimg.assembly.truth import truth_table
+from simimg.camera.multiplication import multiply
 from simimg.camera.poisson import arrivals
 from simimg.camera.streams import BLOCK_ROWS, Stage, stream
 from simimg.errors import InputError, mistake
@@ -32,11 +33,13 @@ from simimg.frame import Frame
 from simimg.imaging.render import expected_image
 from simimg.resolving.given import Given
 from simimg.resolving.headers import (
+    header_excess,
     header_gain,
     header_saturation,
     header_section,
     header_time,
     header_unit,
+    number,
 )
 from simimg.resolving.observation import foreign_sky
 from simimg.resolving.skyplane import CoordinateSky, Sky, equatorial
@@ -197,16 +200,17 @@ def inject(
     saturation = given.saturation
     if saturation is None:
         saturation = told.value if told is not None else original.value_range[1]
-    number = frame.value("EXPNUM", 0)
+    exposure = frame.value("EXPNUM", 0)
     if seed is None:
         seed = scene.exposure.seed if scene.exposure is not None else 0
     stored, saturated = _with_electrons(
         original,
         expected,
-        gain=gain,
+        gain=_gains(frame, given, gain),
+        multiplied=_multiplied(frame),
         saturation=saturation,
         seed=seed,
-        frame=number if isinstance(number, int) and 0 <= number < 2**31 else 0,
+        frame=exposure if isinstance(exposure, int) and 0 <= exposure < 2**31 else 0,
     )
     rows = truth_table(objects, train)
     rows["ra"], rows["dec"] = np.degrees(ra), np.degrees(dec)
@@ -252,6 +256,28 @@ def _gain(frame: Frame, given: Given, where: str, notes: list[str]) -> float:
         what = "no gain is in its header"
         raise InputError(mistake(where, "gain", what, "give --gain, electrons to the count"))
     return told.value * time
+
+
+def _gains(frame: Frame, given: Given, gain: float) -> FloatArray:
+    """Electrons to the count of each pixel: where several amplifiers read, each its own.
+
+    Told by ``GAIN1``, ``GAIN2``, ... for the sections ``AMPSEC1``, ``AMPSEC2``, ...
+    """
+    gains = np.full(frame.counts.shape, gain)
+    if given.gain is not None:
+        return gains
+    for amplifier in range(1, 17):
+        section = header_section(frame, f"AMPSEC{amplifier}")
+        own = number(frame, f"GAIN{amplifier}")
+        if section is not None and own is not None and own > 0.0:
+            gains[section] = own
+    return gains
+
+
+def _multiplied(frame: Frame) -> float:
+    """Gain of a multiplying register, by whose excess the electrons' noise grows; 1 for none."""
+    gain = number(frame, "EMGAIN")
+    return gain if gain is not None and header_excess(frame) > 1.0 else 1.0
 
 
 def _matched(scene: Scene, frame: Frame, sky: Sky, notes: list[str]) -> Scene:
@@ -367,7 +393,8 @@ def _with_electrons(
     original: Original,
     expected: FloatArray,
     *,
-    gain: float,
+    gain: FloatArray,
+    multiplied: float,
     saturation: float,
     seed: int,
     frame: int,
@@ -383,8 +410,11 @@ def _with_electrons(
         electrons = np.empty(expected[rows].shape)
         rng = stream(seed, frame=frame, stage=Stage.INJECTED, block=block)
         arrivals(np.array(expected[rows]), rng, out=electrons)
+        if multiplied > 1.0:
+            multiply(electrons, multiplied, rng, well=None)
+            electrons /= multiplied
         value = original.values(before[rows])
-        level = value + electrons / gain
+        level = value + electrons / gain[rows]
         ceiling = np.minimum(np.maximum(saturation, value), most)
         touched = (electrons > 0.0) & np.isfinite(value)
         level = np.clip(level, least, ceiling)

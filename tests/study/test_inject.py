@@ -295,6 +295,46 @@ def test_our_own_frame_grows_its_truth(tmp_path):
     assert verified(tmp_path / "h.fits")
 
 
+CAMERA = """
+[camera]
+pixels = [150, 150]
+pixel_scale = "0.4 arcsec"
+bias = "500 adu"
+read_noise = "3 electron"
+prescan = 6
+overscan = 10
+"""
+
+
+def test_each_amplifier_at_its_own_gain(tmp_path):
+    text = CAMERA + 'amplifier_gains = ["1 electron/adu", "4 electron/adu"]\n'
+    (tmp_path / "f.toml").write_text(TELESCOPE + text)
+    expose(load_scene(tmp_path / "f.toml")).write(tmp_path / "f.fits")
+    made = inject(tmp_path / "f.fits", grid_scene(tmp_path))
+    gained = made.original.values(made.stored) - made.original.values(made.original.stored)
+    assert_array_equal(gained[:, :6], 0.0)
+    assert_array_equal(gained[:, 156:], 0.0)
+    for half, gain in ((np.s_[:, 6:81], 1.0), (np.s_[:, 81:156], 4.0)):
+        total = made.expected[half].sum()
+        assert total > 1e5
+        assert abs(gained[half].sum() * gain - total) < 4 * np.sqrt(2 * total)
+
+
+def test_behind_a_multiplying_register_noise_is_twice_as_large(tmp_path):
+    # Each electron becomes 200, and 20 of them are a count.
+    text = CAMERA + 'gain = "20 electron/adu"\nem_gain = 200\nbit_depth = 24\n'
+    (tmp_path / "f.toml").write_text(TELESCOPE + text)
+    expose(load_scene(tmp_path / "f.toml")).write(tmp_path / "f.fits")
+    made = inject(tmp_path / "f.fits", grid_scene(tmp_path))
+    assert made.gain == pytest.approx(0.1)
+    gained = made.original.values(made.stored) - made.original.values(made.original.stored)
+    lit = made.expected > 20.0
+    chi = (gained * 0.1 - made.expected)[lit] ** 2 / made.expected[lit]
+    # 2 - 1 / gain; its scatter is that of chi-square and a little more.
+    assert_allclose(chi.mean(), 2 - 1 / 200, atol=4 * 2 * np.sqrt(2.5 / lit.sum()))
+    assert lit.sum() > 1000
+
+
 def test_same_seed_same_bytes(tmp_path):
     foreign(tmp_path / "f.fits")
     scene = grid_scene(tmp_path)
