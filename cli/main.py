@@ -27,6 +27,7 @@ COMMANDS = {
     "expose": "Make the frame that a scene's set-up would record.",
     "limits": "What can be resolved: diffraction, air, pixel, each object.",
     "measure": "Measure pairs in frames: resolved or not, and how sure.",
+    "batch": "Many frames with drawn values, resumable, for a pipeline.",
     "study": "Trade studies: limits, bounds and trials as a key varies.",
     "solve": "The value of a key at which a target is just reached.",
     "calibrate": "Make bias, dark and flat frames of a scene's camera.",

@@ -101,6 +101,7 @@ def prepare(
     threads: int | None = None,
     base: FieldGeometry | None = None,
     first_draw: int = 0,
+    train: Train | None = None,
 ) -> Prepared:
     """Compute what all exposures of a scene have in common.
 
@@ -115,13 +116,16 @@ def prepare(
         In which the objects are placed, where that is not the scene's own detector.
     first_draw : int, optional
         Number of the first exposure's noise.
+    train : Train, optional
+        Of a scene that differs in the places and brightnesses of its objects alone.
 
     Raises
     ------
     InputError
         The scene lacks what an exposure needs, or the image cannot fit into the memory.
     """
-    train = _ready(scene)
+    if train is None:
+        train = _ready(scene)
     _require_photons(scene, train)
     objects = inventory(scene, train=train, base=base, geometry=field_geometry(scene))
     light = scene_image(scene, train, objects, memory_bytes=memory_bytes, threads=_threads(threads))

@@ -305,7 +305,8 @@ def test_patterns_stay_whatever_is_read_about_them(scene):
 def test_a_multiplied_frame_read_by_its_header_alone(scene, tmp_path):
     from simimg.resolving.measure import measure_frame
 
-    frame = simimg.expose(replace(scene, {"camera.em_gain": 150.0, "camera.gain": "20 e-/adu"}))
+    full = replace(scene, {"camera.em_gain": 150.0, "camera.gain": "20 e-/adu"})
+    frame = simimg.expose(full, keep=("psf",))
     own = measure_frame(frame).singles
     frame.write(tmp_path / "f.fits")
     with fits.open(tmp_path / "f.fits") as hdus:
@@ -313,7 +314,7 @@ def test_a_multiplied_frame_read_by_its_header_alone(scene, tmp_path):
     bare = simimg.Frame.read(tmp_path / "bare.fits")
     from simimg.resolving.psfsource import PsfChoice
 
-    alone = measure_frame(bare, psf=PsfChoice(source="profile")).singles
+    alone = measure_frame(bare, psf=PsfChoice(source="file", image=frame.psf)).singles
     by_place = {round(one.x): one for one in alone}
     for one in own:
         other = by_place[round(one.x)]

@@ -29,6 +29,7 @@ class Stage(IntEnum):
     MULTIPLICATION = 5
     BIAS_DRIFT = 6
     TRAILING = 7
+    DRAW = 50
     INJECTED = 40
     INJECTED_ROUNDING = 41
     DITHER = 42

@@ -18,9 +18,10 @@ from simimg.errors import InputError, mistake
 from simimg.quantities import shown
 from simimg.scene.build import build, read_layers
 from simimg.scene.inputs import InputFile, UnusableFileError, read_bounded, read_input
-from simimg.scene.layers import MisplacedKeyError, change, parse_path
+from simimg.scene.layers import change
 from simimg.scene.model import Scene
 from simimg.scene.needs import defaults_used, requirements_to_expose
+from simimg.scene.paths import MisplacedKeyError, parse_path
 from simimg.scene.text import LARGEST_SCENE, parse_toml, to_toml
 
 __all__ = [

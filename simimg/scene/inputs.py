@@ -10,7 +10,7 @@ import hashlib
 import os
 import stat
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
 
@@ -87,6 +87,10 @@ class InputFile:
         if hashlib.sha256(content).hexdigest() != self.sha256:
             raise InputError(f"{self.name}: has changed since the scene was read; read it again")
         return content
+
+    def renamed(self, name: str) -> InputFile:
+        """The same file under another name, wherever it was read."""
+        return replace(self, name=name)
 
 
 def read_bounded(path: Path, most: int) -> bytes:
@@ -168,6 +172,10 @@ def files_named(document: Mapping[str, Any]) -> Iterator[tuple[tuple[str | int, 
             value = value.get(step) if isinstance(value, Mapping) else None
         if isinstance(value, str) and (place not in _FILE_OR_RATIO or names_a_file(value)):
             yield place, value
+    drawn = document.get("draw")
+    for name, one in drawn.items() if isinstance(drawn, Mapping) else ():
+        if isinstance(one, Mapping) and isinstance(one.get("table"), str):
+            yield ("draw", name, "table"), one["table"]
     for kind, names in _OBJECT_FILES.items():
         tables = document.get(kind)
         for index, one in enumerate(tables if isinstance(tables, list) else []):

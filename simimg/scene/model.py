@@ -19,6 +19,7 @@ from simimg.scene.agreement import scene_faults
 from simimg.scene.air import Air
 from simimg.scene.band import Band
 from simimg.scene.camera import Camera
+from simimg.scene.draw import Draw, DrawnKeys
 from simimg.scene.exposure import Exposure, Sky
 from simimg.scene.header import Header
 from simimg.scene.inputs import InputFile
@@ -80,6 +81,9 @@ class Scene(Table):
         meaning="the centre of the field in the header's world coordinates",
     )
     psf: Psf | None = key("A measured PSF in place of optics and air.", None)
+    draw: Annotated[dict[str, Draw], DrawnKeys()] = key(
+        "Keys that are drawn anew for every frame of a batch.", {}
+    )
     study: Study | None = key("What `simimg study` varies.", None)
     header: Annotated[dict[str, str | int | float | bool], Header()] = key(
         "Extra keywords for the frame's header.", {}

@@ -13,8 +13,8 @@ from math import exp, log
 from simimg.errors import InputError, mistake
 from simimg.quantities import shown
 from simimg.scene.file import replace
-from simimg.scene.layers import MisplacedKeyError, parse_path
 from simimg.scene.model import Scene
+from simimg.scene.paths import MisplacedKeyError, parse_path
 from simimg.scene.steps import split_value, written
 
 _FACTOR, _STEP = 100.0, 5.0

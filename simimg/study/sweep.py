@@ -14,8 +14,8 @@ from math import nan
 
 from simimg.errors import InputError, mistake
 from simimg.scene.file import replace
-from simimg.scene.layers import MisplacedKeyError, dotted, parse_path
 from simimg.scene.model import Scene
+from simimg.scene.paths import MisplacedKeyError, dotted, parse_path
 from simimg.scene.steps import Steps
 from simimg.study.point import COLUMNS, TRIAL_COLUMNS, Question, question, work_out
 from simimg.study.workforce import Jobs

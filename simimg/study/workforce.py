@@ -11,7 +11,7 @@ from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import ProcessPoolExecutor, as_completed
 from concurrent.futures.process import BrokenProcessPool
 from dataclasses import dataclass
-from typing import TypeVar
+from typing import Any, TypeVar
 
 from simimg.errors import InputError, RunError, mistake
 from simimg.interrupts import holding_interrupts
@@ -106,19 +106,9 @@ def single_threaded(function: Callable[[Task], Result], task: Task) -> Result:
 def _abroad(
     address: str, function: Callable[[Task], Result], tasks: Sequence[Task]
 ) -> Iterator[tuple[int, Result]]:
-    try:
-        from distributed import Client
+    with cluster_client(address) as client:
         from distributed import as_completed as as_done
-    except ImportError:
-        mend = "install simimg with its extra: pip install 'simimg[cluster]'"
-        raise InputError(mistake("--cluster", "", "needs dask.distributed", mend)) from None
-    try:
-        client = Client(address, timeout="15 s", set_as_default=False)
-    except (OSError, ValueError) as error:
-        what = f"no scheduler answers at {address}: {' '.join(str(error).split())}"
-        mend = "give the address that the scheduler printed, as tcp://HOST:8786"
-        raise InputError(mistake("--cluster", "", what, mend)) from None
-    with client:
+
         futures = [
             client.submit(single_threaded, function, task, key=f"simimg-{number}", pure=False)
             for number, task in enumerate(tasks)
@@ -126,3 +116,24 @@ def _abroad(
         numbers = {future.key: number for number, future in enumerate(futures)}
         for future in as_done(futures):
             yield numbers[future.key], future.result()
+
+
+def cluster_client(address: str) -> Any:
+    """A client of a Dask scheduler.
+
+    Raises
+    ------
+    InputError
+        No scheduler answers at the address, or what it needs is not installed.
+    """
+    try:
+        from distributed import Client
+    except ImportError:
+        mend = "install simimg with its extra: pip install 'simimg[cluster]'"
+        raise InputError(mistake("--cluster", "", "needs dask.distributed", mend)) from None
+    try:
+        return Client(address, timeout="15 s", set_as_default=False)
+    except (OSError, ValueError) as error:
+        what = f"no scheduler answers at {address}: {' '.join(str(error).split())}"
+        mend = "give the address that the scheduler printed, as tcp://HOST:8786"
+        raise InputError(mistake("--cluster", "", what, mend)) from None
