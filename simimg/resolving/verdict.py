@@ -2,7 +2,10 @@
 
 The separation has a flat prior above zero; with the magnitude difference it has the joint Gaussian
 error of the fit. Rayleigh's delivered limit is one number, Sparrow's depends on the magnitude
-difference, so that its uncertainty counts, too. Any unit of length, the same throughout.
+difference, so that its uncertainty counts, too: near the equal pair, whose limit is the least and
+rises steeply to either side (with the power of 2/3), it is most of what is uncertain. Of stars that
+are known to be exactly equal, which no prior says here, the probability is therefore too low. Any
+unit of length, the same throughout.
 """
 
 from __future__ import annotations
