@@ -281,12 +281,15 @@ def frame_header(prepared: Prepared, index: int) -> dict[str, object]:
     start = scene.exposure.start if scene.exposure is not None else None
     if start is not None and scene.exposure is not None:
         header |= _times(start, index * (settings.time + scene.exposure.overhead))
+    detector = detector_cards(settings, geometry.columns, geometry.rows)
+    saturation = detector.pop("SATURATE")
     header |= {
         "FILTER": (filter_name, "band"),
         "WAVELEN": (train.wavelength * 1e9, "[nm] centre of the band"),
-        **detector_cards(settings, geometry.columns, geometry.rows),
+        **detector,
         "DARKSIG": (dark_electrons(scene), "[electron] dark signal in a pixel"),
         "SKYLVL": (sky_electrons(scene, area=train.pupil.area), "[electron] sky in a pixel"),
+        "SATURATE": saturation,
         "BUNIT": ("adu", "unit of the counts"),
         "PIXSCALE": (np.degrees(train.pixel_scale or 0.0) * 3600.0, "[arcsec] pixel scale"),
         "SEED": (seed, "seed of the noise"),
