@@ -53,6 +53,7 @@ def command(
     pixel together. SCENE may be a frame of simimg, which carries its scene.
     """
     from simimg.assembly.report import cautions, describe
+    from simimg.errors import InputError, mistake
     from simimg.resolving.ephemeris import ephemeris
     from simimg.resolving.limits import limits
     from simimg.scene.file import replace, scene_id
@@ -61,6 +62,10 @@ def command(
 
     opened = open_scene(scene, overrides=overrides, without=without).scene
     identity = scene_id(opened)
+    if dates is None and _undated(opened):
+        what = "is needed to place a pair on its orbit and missing"
+        mend = 'add start = "2026-04-12T03:00:00" to [exposure], or give --dates 2026:2036:1'
+        raise InputError(mistake(opened.name, "exposure.start", what, mend))
     rows = None if dates is None else ephemeris(opened, dates)
     warnings: list[str] = []
     if dates and _undated(opened):

@@ -29,6 +29,8 @@ FIELD_NODES = 5
 """Places a side of the field whose PSFs are mixed for the others."""
 
 Delivered = Callable[[FloatArray, tuple[float, float] | None], Transfer]
+StarTransfer = Callable[[int, float, float], Transfer]
+"""PSF, with the pixel, of a kind of source at a place of the detector (pixels)."""
 
 
 def scene_basis(
@@ -37,8 +39,8 @@ def scene_basis(
     aperture: Aperture,
     wavelengths: FloatArray,
     delivered: Delivered,
-) -> tuple[PsfBasis, Transfer]:
-    """The basis of a scene, and the PSF of its first object in the middle of the field.
+) -> tuple[PsfBasis, Transfer, StarTransfer]:
+    """The basis of a scene, the PSF of its first object in the middle of the field, and any star's.
 
     Parameters
     ----------
@@ -56,8 +58,10 @@ def scene_basis(
         With the pixel, where the scene has one.
     focal : Transfer
         Without.
+    star : callable
+        The PSF of one kind of source at one place, worked out there and not mixed from members.
     """
-    first = _first_kind(scene, palette)
+    first = first_kind(scene, palette)
     own = [palette.weights(spectrum, wavelengths) for spectrum in palette.spectra]
     shared = palette.members(wavelengths) if _catalogue_colours(scene) else None
     weights = [*own, *(shared.weights if shared is not None else ())]
@@ -79,9 +83,10 @@ def scene_basis(
     scale = scene.pixel_scale
     if scale is not None:
         members = [member.with_pixel(scale) for member in members]
+    star = _star(scene, palette, aperture, wavelengths, delivered)
     focal = drawn_out(focal, trail)
     if len(members) == 1:
-        return PsfBasis((members[0],)), focal
+        return PsfBasis((members[0],)), focal, one_for_all(members[0])
 
     def weigh(points: Points) -> FloatArray:
         kind = points.kind % FOLLOWED
@@ -94,10 +99,55 @@ def scene_basis(
             together = together[:, :, :, None] * pair[:, None, None, :]
         return np.asarray(together.reshape(len(points), -1))
 
-    return PsfBasis(tuple(members), weigh), focal
+    return PsfBasis(tuple(members), weigh), focal, star
 
 
-def _first_kind(scene: Scene, palette: Palette) -> int:
+def one_for_all(transfer: Transfer) -> StarTransfer:
+    """The PSF of every kind at every place, where there is but one."""
+
+    def star(kind: int, x: float, y: float) -> Transfer:  # noqa: ARG001
+        return transfer
+
+    return star
+
+
+def _star(
+    scene: Scene,
+    palette: Palette,
+    aperture: Aperture,
+    wavelengths: FloatArray,
+    delivered: Delivered,
+) -> StarTransfer:
+    """The PSF of one kind of source at one place; each is worked out once."""
+    trail, scale, geometry = followed_trail(scene), scene.pixel_scale, field_geometry(scene)
+    unit = _field_unit(scene, aperture)
+    kept: dict[tuple[int, tuple[float, float] | None], Transfer] = {}
+
+    def star(kind: int, x: float, y: float) -> Transfer:
+        place = None
+        if unit is not None:
+            place = (x - geometry.centre[0]) / unit, (y - geometry.centre[1]) / unit
+        key = kind, place
+        if key not in kept:
+            weights = palette.weights(palette.spectrum(kind % FOLLOWED), wavelengths)
+            made = delivered(weights, place)
+            if kind < FOLLOWED:
+                made = drawn_out(made, trail)
+            kept[key] = made if scale is None else made.with_pixel(scale)
+        return kept[key]
+
+    return star
+
+
+def _field_unit(scene: Scene, aperture: Aperture) -> float | None:
+    """Pixels to the radius at which the field's errors are stated; None without any."""
+    errors = scene.telescope.field
+    if aperture.field is None or errors is None or scene.pixel_scale is None:
+        return None
+    return errors.radius / scene.pixel_scale
+
+
+def first_kind(scene: Scene, palette: Palette) -> int:
     """Kind of the first pair's first star, or else of the first object."""
     for one in (*scene.pair, *scene.objects):
         return palette.kinds[colour_keys(one)[0]]
@@ -141,10 +191,9 @@ def _places(
     scene: Scene, aperture: Aperture
 ) -> tuple[list[tuple[float, float] | None], Callable[[Points], FloatArray]]:
     """Places of the field whose PSFs are mixed, and each source's shares in them."""
-    errors, geometry = scene.telescope.field, field_geometry(scene)
-    if aperture.field is None or errors is None or scene.pixel_scale is None:
+    unit, geometry = _field_unit(scene, aperture), field_geometry(scene)
+    if unit is None:
         return [None], lambda points: np.ones((len(points), 1))
-    unit = errors.radius / scene.pixel_scale
     half_x, half_y = geometry.columns / 2.0 / unit, geometry.rows / 2.0 / unit
     nodes = field_nodes(half_x, half_y, count=FIELD_NODES)
     # The lattice spans the detector, which the field centre may lie aside of.

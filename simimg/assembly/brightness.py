@@ -9,14 +9,15 @@ as observed, so that no extinction is applied to it; its spectrum is flat in f_n
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import degrees
+from math import degrees, log10, nan
 
 import numpy as np
 
 from simimg.arrays import AnyArray, FloatArray
-from simimg.assembly.colours import KELVIN, Palette, scene_palette
+from simimg.assembly.colours import KELVIN, Palette, colour_keys, scene_palette
 from simimg.errors import InputError, mistake
 from simimg.scene.model import Scene
+from simimg.scene.objects import Pair
 
 # Temperatures at which a catalogue's zero points are computed; between them in log, cubic by far.
 _TEMPERATURES = 96
@@ -66,9 +67,37 @@ class Photometry:
         InputError
             Where a spectrum or a zero point does not reach over a band.
         """
+        return self.rate(magnitude, kind, band=band, system=system) * self.time
+
+    def rate(
+        self,
+        magnitude: FloatArray | float,
+        kind: AnyArray | int = 0,
+        *,
+        band: str | None = None,
+        system: str | None = None,
+    ) -> FloatArray:
+        """Electrons per second; parameters and errors as of `electrons`."""
         faint = 10.0 ** (-0.4 * np.asarray(magnitude, dtype=np.float64))
-        factor = self._factors(np.asarray(kind, dtype=np.int64), band, system)
-        return np.asarray(faint * factor * self.time)
+        return np.asarray(faint * self._factors(np.asarray(kind, dtype=np.int64), band, system))
+
+    def difference(self, pair: Pair) -> float:
+        """A pair's magnitude difference as the detector sees it, second minus first.
+
+        That of the detected electrons, which is what decides whether the stars come apart. It
+        differs from that of the catalogue where the stars' spectra differ or the magnitudes are
+        known in another band.
+        """
+        light = pair.electrons
+        if light is None:
+            assert pair.magnitudes is not None
+            kinds = [self.palette.kinds[key] for key in colour_keys(pair)]
+            first, second = (
+                float(self.rate(one, kind, band=pair.magnitude_band, system=pair.magnitude_system))
+                for one, kind in zip(pair.magnitudes, kinds, strict=True)
+            )
+            light = first, second
+        return 2.5 * log10(light[0] / light[1]) if min(light) > 0.0 else nan
 
     def _factors(self, kind: AnyArray, band: str | None, system: str | None) -> FloatArray:
         def one(number: int) -> float:
@@ -149,4 +178,6 @@ def sky_electrons(scene: Scene, *, area: float) -> float:
 
 def dark_electrons(scene: Scene) -> float:
     """Electrons of the dark signal in a pixel and an exposure."""
-    return 0.0 if scene.camera is None else scene.camera.dark_current * exposure_time(scene)
+    if scene.camera is None:
+        return 0.0
+    return scene.camera.dark_current * exposure_time(scene) * scene.camera.binning**2

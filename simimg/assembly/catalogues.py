@@ -45,6 +45,15 @@ def catalogue_rows(
     nothing = np.full(size, np.nan)
     magnitude = table.get("magnitude", nothing)
     electrons = table.get("electrons")
+    abroad = catalogue.magnitude_band not in (None, scene.band.name)
+    if electrons is None and abroad and "temperature" not in table:
+        line = mistake(
+            scene.name,
+            f"catalogue[{number}].magnitude_band",
+            f"{source.name} has no temperatures that would carry its magnitudes over to the band",
+            'name their column, as in columns = { temperature = "teff" }, or leave it out',
+        )
+        raise InputError(line)
     colour = _catalogue_kinds(scene, number, table.get("temperature"), size)
     if electrons is None:
         electrons = light.electrons(

@@ -136,6 +136,14 @@ def scene_palette(scene: Scene) -> Palette:
     palette = Palette(
         scene, band, scene_response(scene), spectra, {k: i for i, k in enumerate(keys)}
     )
+    if palette.system not in band.zero_flux_jy:
+        line = mistake(
+            scene.name,
+            "band.system",
+            f"there is no {palette.system} zero point at {band.centre * 1e9:.4g} nm",
+            'write system = "AB", and AB magnitudes',
+        )
+        raise InputError(line)
     try:
         for kind in range(len(palette.spectra)):
             palette.rate(kind)

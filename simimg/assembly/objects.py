@@ -223,7 +223,7 @@ def inventory(
                 "kind": kind,
                 "trail": (0.0, 0.0) if extra else _turned(object_trail(scene, one.motion), turned),
             }
-            x, y = _place(one, base)
+            x, y = object_place(one, base)
             if isinstance(one, Pair):
                 made = _pair_rows(scene, one, x, y, base, len(rows), light, colours)
             else:
@@ -291,7 +291,8 @@ def _turned(trail: tuple[float, float], angle: float) -> tuple[float, float]:
     return trail[0] * c - trail[1] * s, trail[0] * s + trail[1] * c
 
 
-def _place(one: Placed, geometry: FieldGeometry) -> tuple[float, float]:
+def object_place(one: Placed, geometry: FieldGeometry) -> tuple[float, float]:
+    """Where an object is on the detector (pixels); of a pair the first star."""
     if one.x is not None and one.y is not None:
         return one.x, one.y
     if one.ra is not None and one.dec is not None:

@@ -30,6 +30,7 @@ class Optics:
 
     def __init__(self, aperture: Aperture) -> None:
         self.aperture = aperture
+        self._kept: dict[tuple[float, tuple[float, float] | None], Transfer] = {}
 
     @cached_property
     def _shifted(self) -> PupilTransfer:
@@ -64,6 +65,12 @@ class Optics:
         place : (x, y) or None
             In the field, in units of the radius at which its errors are stated; None for the axis.
         """
+        key = wavelength, place
+        if key not in self._kept:
+            self._kept[key] = self._aberrated(wavelength, place)
+        return self._kept[key]
+
+    def _aberrated(self, wavelength: float, place: tuple[float, float] | None) -> Transfer:
         aperture, perfect = self.aperture, self.perfect(wavelength)
         path = aperture.path
         if place is not None and aperture.field is not None and place != (0.0, 0.0):

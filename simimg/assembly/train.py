@@ -23,7 +23,7 @@ from simimg.assembly.atmosphere import (
     scene_dispersion,
     through_air,
 )
-from simimg.assembly.basis import scene_basis
+from simimg.assembly.basis import StarTransfer, first_kind, one_for_all, scene_basis
 from simimg.assembly.colours import Palette, scene_palette
 from simimg.assembly.measured import measured_transfer
 from simimg.assembly.motion import trembling
@@ -76,6 +76,10 @@ class Train:
         scene's first object, in the middle of the field.
     basis : PsfBasis
         What the engine paints with.
+    star : callable
+        ``star(kind, x, y)`` is the PSF with the pixel of one kind of source at one place (pixels).
+    first : int
+        Kind of the first pair's first star, or else of the first object.
     """
 
     wavelength: float
@@ -92,6 +96,8 @@ class Train:
     focal: Transfer
     effective: Transfer
     basis: PsfBasis
+    star: StarTransfer
+    first: int
 
     @property
     def pupil(self) -> Pupil:
@@ -136,10 +142,11 @@ def assemble_train(scene: Scene) -> Train:
 
     scale = scene.pixel_scale
     if scene.psf is not None:
-        focal = effective = measured_transfer(scene)
-        basis = PsfBasis((effective,))
+        focal = measured_transfer(scene)
+        basis, star = PsfBasis((focal,)), one_for_all(focal)
+        effective = focal
     else:
-        basis, focal = scene_basis(scene, palette, aperture, wavelengths, delivered)
+        basis, focal, star = scene_basis(scene, palette, aperture, wavelengths, delivered)
         effective = focal if scale is None else focal.with_pixel(scale)
     return Train(
         wavelength=wavelength,
@@ -156,6 +163,8 @@ def assemble_train(scene: Scene) -> Train:
         focal=focal,
         effective=effective,
         basis=basis,
+        star=star,
+        first=first_kind(scene, palette),
     )
 
 

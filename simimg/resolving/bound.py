@@ -17,7 +17,7 @@ Arcseconds, degrees and magnitudes in what is returned; detector pixels and elec
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from math import degrees, hypot, inf, isfinite, sqrt
 
 import numpy as np
@@ -28,6 +28,7 @@ from simimg.assembly.train import Train, assemble_train
 from simimg.errors import InputError
 from simimg.resolving.expectation import Expectation, StarPair, pairs_of
 from simimg.resolving.pairfit import pair_geometry
+from simimg.resolving.psfmodel import PsfModel
 from simimg.resolving.resolution import to_arcsec
 from simimg.resolving.starfit import Cutout, Likelihood, StarFit, covariance_of, fit_stars
 from simimg.scene.file import requirements_to_expose
@@ -101,6 +102,9 @@ def precision(scene: Scene, *, exposures: int = 1) -> list[PairPrecision]:
     objects is known, but its noise counts. Pixels in which the expected image is full are left out,
     and those off the detector.
 
+    Stars whose PSFs differ (by colour, place or motion) each have their own; the single star that
+    is set against them has their mean, weighted by light.
+
     ``expected_significance`` is S, with ``S^2 = 2 sum(d ln(d / m) - d + m)`` over the pixels. Here
     d is the expected electrons of the two stars and all else, read noise squared and rounding added
     (a Poisson number of that mean has the noise of the pixel), and m the same of the single star
@@ -139,7 +143,8 @@ def pair_precision(view: Expectation, pair: StarPair, *, exposures: int = 1) -> 
     stars = view.rows(pair)
     if images and float(stars[:, 2].min()) > 0.0:
         sky = np.full(len(images), view.sky)
-        separation, angle, difference = pair_errors(images, stars=stars, background=sky)
+        own = view.models(pair)[:2]
+        separation, angle, difference = pair_errors(images, stars=stars, background=sky, psfs=own)
         significance = second_star_significance(images, stars=stars)
     fewer = 1.0 / sqrt(exposures)
     return PairPrecision(
@@ -154,7 +159,11 @@ def pair_precision(view: Expectation, pair: StarPair, *, exposures: int = 1) -> 
 
 
 def pair_errors(
-    images: Sequence[Cutout], *, stars: FloatArray, background: FloatArray
+    images: Sequence[Cutout],
+    *,
+    stars: FloatArray,
+    background: FloatArray,
+    psfs: tuple[PsfModel, PsfModel] | None = None,
 ) -> tuple[float, float, float]:
     """Bounds on separation (pixels), angle (radians) and magnitude difference of two stars.
 
@@ -166,8 +175,10 @@ def pair_errors(
         x, y and electrons of each.
     background : ndarray, shape (images,)
         Electrons a pixel.
+    psfs : tuple of two PsfModel, optional
+        Of the two stars; that of the images unless given.
     """
-    likelihood = Likelihood(images, 2)
+    likelihood = Likelihood(images, 2) if psfs is None else _OwnPsfs(images, psfs)
     expansion = likelihood.expand(np.concatenate([stars.ravel(), background]))
     fit = StarFit(
         places=frozen(stars[:, :2]),
@@ -179,6 +190,22 @@ def pair_errors(
         converged=True,
     )
     return pair_geometry(fit).errors
+
+
+class _OwnPsfs(Likelihood):
+    """The likelihood of two stars that have a PSF each."""
+
+    def __init__(self, cutouts: Sequence[Cutout], psfs: tuple[PsfModel, PsfModel]) -> None:
+        super().__init__(cutouts, 2)
+        self.each = [Likelihood([replace(c, psf=psf) for c in cutouts], 2) for psf in psfs]
+
+    def jacobian(self, vector: FloatArray, index: int) -> tuple[FloatArray, FloatArray]:
+        """Expectation and derivatives, each star's part by its own PSF."""
+        one, two = (likelihood.jacobian(vector, index) for likelihood in self.each)
+        derivatives = one[1].copy()
+        derivatives[3:6] = two[1][3:6]
+        second = vector[5] * (two[1][5] - one[1][5])
+        return one[0] + second, derivatives
 
 
 def second_star_significance(images: Sequence[Cutout], *, stars: FloatArray) -> float:

@@ -1,24 +1,30 @@
 """When the pairs of a scene come apart: separation and angle at given dates, against the limits.
 
-The limits are the delivered ones along the pair's direction at each date: Rayleigh's, and Sparrow's
-for the pair's own magnitude difference. Dates in Julian years; arcseconds and degrees.
+The limits are the delivered ones of the pair's own PSF along its direction at each date:
+Rayleigh's, and Sparrow's for the pair's own magnitude difference as the detector sees it. Dates in
+Julian years; arcseconds and degrees.
 """
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import asdict, dataclass
-from math import degrees, isfinite, log10, radians
+from math import degrees, isfinite, radians
 from typing import Any
 
 import numpy as np
 
+from simimg.assembly.basis import FOLLOWED
 from simimg.assembly.brightness import photometry
 from simimg.assembly.colours import colour_keys
+from simimg.assembly.motion import drawn_out, object_trail
+from simimg.assembly.objects import object_place
 from simimg.assembly.orbits import places_at
 from simimg.assembly.places import field_geometry
 from simimg.assembly.train import Train, assemble_train
+from simimg.imaging.basis import Transfer
 from simimg.resolving.resolution import Directions, computable, to_arcsec
+from simimg.resolving.starpsfs import pair_psf
 from simimg.scene.model import Scene
 from simimg.scene.objects import Pair
 
@@ -79,7 +85,6 @@ def ephemeris(scene: Scene, dates: Sequence[float]) -> tuple[DatedPair, ...]:
     if years.ndim != 1 or years.size > MOST_DATES or not np.isfinite(years).all():
         raise ValueError(f"dates must be at most {MOST_DATES} finite Julian years")
     train = assemble_train(scene)
-    delivered = Directions(computable(train.effective))
     geometry = field_geometry(scene)
     light = photometry(scene, area=train.pupil.area, airmass=train.airmass, palette=train.palette)
     rows = []
@@ -87,8 +92,9 @@ def ephemeris(scene: Scene, dates: Sequence[float]) -> tuple[DatedPair, ...]:
     for number, pair in enumerate(scene.pair):
         if orbiting and pair.orbit is None:
             continue
-        fainter = _magnitude_difference(pair, [light.zero_point(k) for k in _kinds(train, pair)])
+        fainter = light.difference(pair)
         separations, angles = places_at(pair, years)
+        delivered = Directions(computable(_pair_transfer(scene, train, pair, fainter)))
         limits: dict[float, tuple[float, float]] = {}
         for year, separation, angle in zip(years, separations, angles, strict=True):
             direction = geometry.direction(float(angle))
@@ -112,17 +118,18 @@ def ephemeris(scene: Scene, dates: Sequence[float]) -> tuple[DatedPair, ...]:
     return tuple(rows)
 
 
-def _kinds(train: Train, pair: Pair) -> list[int]:
-    return [train.palette.kinds[key] for key in colour_keys(pair)]
-
-
-def _magnitude_difference(pair: Pair, zero_points: Sequence[float]) -> float:
-    """Second minus first, as the detector sees it."""
-    if pair.electrons is not None:
-        first, second = pair.electrons
-        return -2.5 * log10(second / first)
-    assert pair.magnitudes is not None
-    return pair.magnitudes[1] - pair.magnitudes[0] - 2.5 * log10(zero_points[1] / zero_points[0])
+def _pair_transfer(scene: Scene, train: Train, pair: Pair, difference: float) -> Transfer:
+    """The PSF that stands for both stars, both at the first one's place."""
+    geometry = field_geometry(scene)
+    place = object_place(pair, geometry)
+    followed = scene.pointing is not None and pair.label == scene.pointing.track is not None
+    trail = (0.0, 0.0) if followed else object_trail(scene, pair.motion)
+    first, second = (
+        drawn_out(train.star(train.palette.kinds[key] + FOLLOWED * followed, *place), trail)
+        for key in colour_keys(pair)
+    )
+    light = np.array([1.0, 10.0 ** (-0.4 * difference)])
+    return pair_psf(first, second, light, geometry.pixel_scale).mean
 
 
 def julian_years(start: float, stop: float, step: float) -> list[float]:

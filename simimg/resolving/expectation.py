@@ -1,13 +1,14 @@
 """The expected image about any pair of a scene, as cutouts that a fit could be made to.
 
-The stars come from the effective PSF's model, sky and dark signal are even, extended objects are
-painted by the engine. Where the PSF is very many pixels wide, blocks of pixels are taken together,
+The pair's stars come from models of their effective PSFs, each from its own where they differ;
+other stars too as long as all share one PSF; sky and dark signal are even, all else is painted by
+the engine. Where the PSF is very many pixels wide, blocks of pixels are taken together,
 which loses nothing: it hardly changes over one. Blocks (mostly of one pixel) and electrons.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from math import ceil, floor, hypot
 from typing import Any
 
@@ -16,20 +17,23 @@ import numpy as np
 from simimg.arrays import AnyArray, FloatArray, frozen
 from simimg.assembly.objects import Entry, Inventory
 from simimg.assembly.train import Train, half_light_width
+from simimg.imaging.basis import PsfBasis, Transfer
 from simimg.imaging.profile import effective_band, sampled_psf
 from simimg.imaging.render import expected_image
-from simimg.imaging.sources import PlacedShape, Sources, no_points
+from simimg.imaging.sources import PlacedShape, Points, Sources, no_points
 from simimg.resolving.neighbours import PlacedStar, star_light
 from simimg.resolving.psfmodel import PsfModel
 from simimg.resolving.resolution import computable
 from simimg.resolving.signal import Detector, scene_detector
 from simimg.resolving.starfit import Cutout
+from simimg.resolving.starpsfs import StarPsfs
 from simimg.scene.model import Scene
 
 _MARGIN = 4.0  # FWHM of sky about the stars
 _APART = 3.0 * _MARGIN  # FWHM beyond which each star has a square of its own
 _REACH = 12.0  # FWHM from a star beyond which its light is not modelled
 _FINEST = 12.0  # blocks to the FWHM above which pixels are taken together
+_KEPT = 64  # models of PSFs held at once
 _SAMPLES = 8.0, 24  # of the PSF: to the wave of highest frequency, at most to the block
 
 StarPair = tuple[Entry, Entry]
@@ -55,7 +59,7 @@ class Expectation:
     block : int
         Pixels to the side of a block.
     psf : PsfModel
-        In blocks.
+        In blocks; of the scene's first object in the middle of the field.
     variance : float
         Gaussian variance of a block, electrons squared.
     points : ndarray, shape (n, 3)
@@ -64,6 +68,10 @@ class Expectation:
         Which of them are stars.
     shapes : tuple of PlacedShape
         The others.
+    psfs : StarPsfs
+        Of each star and pair.
+    near : int
+        Half side (blocks) of the models of PSFs that are a star's own: the square about its pair.
     """
 
     train: Train
@@ -74,6 +82,9 @@ class Expectation:
     points: FloatArray
     stars: AnyArray
     shapes: tuple[PlacedShape, ...]
+    psfs: StarPsfs
+    near: int
+    _models: dict[Transfer, PsfModel] = field(default_factory=dict)
 
     @classmethod
     def of(cls, scene: Scene, train: Train, found: Inventory) -> Expectation | None:
@@ -103,22 +114,16 @@ class Expectation:
         scale, width = block * detector.pixel_scale, pixels / block
         apart = found.separation[: found.written] / scale
         apart = apart[apart <= _APART * width]
-        effective = computable(train.effective)
-        samples = ceil(_SAMPLES[0] * effective_band(effective) * scale)
-        oversampling = min(max(samples, 1), _SAMPLES[1])
-        image = sampled_psf(
-            effective,
-            pixel_scale=scale,
-            oversampling=oversampling,
-            half_width_pixels=ceil(
-                max(_REACH * width, float(apart.max(initial=0.0)) + (_MARGIN + 1.0) * width, 8.0)
-            ),
+        half, near = (
+            ceil(max(reach * width, float(apart.max(initial=0.0)) + (_MARGIN + 1.0) * width, 8.0))
+            for reach in (_REACH, 2.0 * _MARGIN)
         )
         return cls(
             train=train,
             detector=detector,
             block=block,
-            psf=PsfModel.from_image(image, oversampling=oversampling),
+            psf=_model(train.effective, scale, half),
+            near=near,
             variance=(detector.read_noise**2 + rounding) * block**2,
             **_placed(found, block),
         )
@@ -144,12 +149,26 @@ class Expectation:
 
     def rows(self, pair: StarPair) -> FloatArray:
         """Places (blocks) and electrons of a pair's stars, shape (2, 3)."""
-        return self.points[[pair[1].partner, pair[0].partner]]
+        return self.points[[*_numbers(pair)]]
+
+    def models(self, pair: StarPair) -> tuple[PsfModel, PsfModel, PsfModel]:
+        """The PSFs (in blocks) of a pair's two stars, and the one that stands for both."""
+        if self.psfs.shared:
+            return self.psf, self.psf, self.psf
+        of = self.psfs.pair(*_numbers(pair))
+        return self._model(of.first), self._model(of.second), self._model(of.mean)
+
+    def _model(self, transfer: Transfer) -> PsfModel:
+        if transfer not in self._models:
+            if len(self._models) >= _KEPT:
+                self._models.clear()
+            self._models[transfer] = _model(transfer, self.scale, self.near)
+        return self._models[transfer]
 
     def cutouts(self, pair: StarPair) -> list[Cutout]:
         """The expected image about a pair: one square about both stars, or one about each."""
         first, second = self.rows(pair)[:, :2]
-        fwhm = self.psf.fwhm
+        fwhm = self.models(pair)[2].fwhm
         apart = hypot(*(second - first))
         if apart > _APART * fwhm:
             squares = [(*first, _MARGIN * fwhm), (*second, _MARGIN * fwhm)]
@@ -167,20 +186,22 @@ class Expectation:
             bottom, top = max(0, bottom), min((self.detector.rows - 1) // self.block, top)
         if right < left or top < bottom:
             return None
+        *own, mean = self.models(pair)
         blank = Cutout.of(
             np.zeros((top - bottom + 1, right - left + 1)),
             variance=self.variance,
-            psf=self.psf,
+            psf=mean,
             x0=left,
             y0=bottom,
         )
         known = self._others(blank, pair)
-        own = [PlacedStar(*row) for row in self.rows(pair)]
-        expected = known + star_light(own, blank) + self.sky
+        expected = known + self.sky
+        for row, model in zip(self.rows(pair), own, strict=True):
+            expected += star_light([PlacedStar(*row)], replace(blank, psf=model))
         return Cutout.of(
             expected,
             variance=self.variance,
-            psf=self.psf,
+            psf=mean,
             x0=left,
             y0=bottom,
             used=expected < self.detector.saturation * self.block**2,
@@ -194,21 +215,57 @@ class Expectation:
         x, y, _ = self.points.T
         near = self.stars & (x > cutout.x0 - reach) & (x < cutout.x0 + columns + reach)
         near &= (y > cutout.y0 - reach) & (y < cutout.y0 + rows + reach)
-        near[[pair[0].partner, pair[1].partner]] = False
-        light = star_light([PlacedStar(*row) for row in self.points[near]], cutout)
-        if self.shapes:
+        near[[*_numbers(pair)]] = False
+        light = np.zeros((rows, columns))
+        painted = no_points()
+        if self.psfs.shared:
+            light += star_light([PlacedStar(*row) for row in self.points[near]], cutout)
+        elif near.any():
+            drawn = self.psfs.found.drawn(np.flatnonzero(near))
+            places = drawn.x / self.block - cutout.x0, drawn.y / self.block - cutout.y0
+            painted = Points(*places, drawn.electrons, drawn.kind)
+        if self.shapes or len(painted):
             moved = tuple(
                 replace(one, x=one.x / self.block - cutout.x0, y=one.y / self.block - cutout.y0)
                 for one in self.shapes
             )
             light += expected_image(
-                self.train.basis,
-                Sources(no_points(), moved),
+                self._basis(cutout),
+                Sources(painted, moved),
                 columns=columns,
                 rows=rows,
                 pixel_scale=self.scale,
             )
         return light
+
+    def _basis(self, cutout: Cutout) -> PsfBasis:
+        """The scene's basis, its rule told where on the detector the things on a cutout are."""
+        basis, block = self.train.basis, self.block
+        weigh = basis.weigh
+        if weigh is None:
+            return basis
+
+        def there(points: Points) -> FloatArray:
+            x, y = (points.x + cutout.x0) * block, (points.y + cutout.y0) * block
+            return weigh(Points(x, y, points.electrons, points.kind))
+
+        return PsfBasis(basis.members, there)
+
+
+def _numbers(pair: StarPair) -> tuple[int, int]:
+    """Rows of the inventory that hold a pair's first and second star."""
+    return pair[1].partner, pair[0].partner
+
+
+def _model(transfer: Transfer, scale: float, half_width: float) -> PsfModel:
+    """The model of a PSF in blocks of a side of `scale` (rad)."""
+    effective = computable(transfer)
+    samples = ceil(_SAMPLES[0] * effective_band(effective) * scale)
+    oversampling = min(max(samples, 1), _SAMPLES[1])
+    image = sampled_psf(
+        effective, pixel_scale=scale, oversampling=oversampling, half_width_pixels=half_width
+    )
+    return PsfModel.from_image(image, oversampling=oversampling)
 
 
 def _placed(found: Inventory, block: int) -> dict[str, Any]:
@@ -219,4 +276,5 @@ def _placed(found: Inventory, block: int) -> dict[str, Any]:
         "points": frozen(np.column_stack([found.x / block, found.y / block, found.electrons])),
         "stars": stars,
         "shapes": found.sources.shapes,
+        "psfs": StarPsfs(found),
     }

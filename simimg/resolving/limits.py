@@ -13,7 +13,7 @@ from dataclasses import dataclass, fields, is_dataclass
 from math import degrees, isfinite, pi
 from typing import Any
 
-from simimg.assembly.brightness import exposure_time
+from simimg.assembly.brightness import exposure_time, photometry
 from simimg.assembly.objects import inventory
 from simimg.assembly.train import Train, assemble_train
 from simimg.imaging.circles import encircled_diameters
@@ -26,6 +26,7 @@ from simimg.resolving.listing import Listing, ObjectLimits
 from simimg.resolving.notes import bound_notes, limit_notes, nyquist_pixel
 from simimg.resolving.resolution import Directions, Resolution, computable, to_arcsec
 from simimg.resolving.signal import scene_detector
+from simimg.resolving.starpsfs import StarPsfs, psf_notes
 from simimg.scene.model import Scene
 
 DAWES = 116.0
@@ -159,6 +160,8 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
     diffraction = Directions(train.optics, dark_ring=_dark_ring(train), saddle=False)
     effective = computable(train.effective)
     delivered, focal = Directions(effective), Directions(train.focal)
+    psfs = StarPsfs(found)
+    light = photometry(scene, area=train.pupil.area, airmass=train.airmass, palette=train.palette)
     of_optics, of_all = diffraction.resolution(angle), delivered.resolution(angle)
     listing = Listing(
         train=train,
@@ -166,12 +169,15 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
         detector=scene_detector(scene, train),
         diffraction=diffraction,
         delivered=delivered,
+        psfs=psfs,
         width=delivered.profile(angle).width,
         expectation=expectation,
+        differences=tuple(light.difference(pair) for pair in scene.pair),
     )
     objects = listing.objects(found)
     apart = [(o.separation_arcsec, o.bound) for o in objects if o.separation_arcsec is not None]
     notes = limit_notes(scene, train, diffraction, focal, angle, of_optics, of_all)
+    notes += psf_notes(psfs, catalogue=all_stars and bool(scene.catalogue))
     notes += bound_notes(apart, fwhm_arcsec=of_all.fwhm_arcsec)
     half_light, most_light = encircled_diameters(effective, (0.5, 0.8))
     scale = train.pixel_scale

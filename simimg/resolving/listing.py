@@ -6,18 +6,20 @@ one; what needs an exposure time is None where a brightness is a magnitude and n
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from math import degrees, isfinite, log10, nan, radians
+from dataclasses import dataclass, field
+from math import degrees, isfinite, radians
 
 import numpy as np
 
 from simimg.arrays import AnyArray, FloatArray
 from simimg.assembly.objects import Entry, Inventory
 from simimg.assembly.train import Train
+from simimg.imaging.basis import Transfer
 from simimg.resolving.bound import PairPrecision, pair_precision
 from simimg.resolving.expectation import Expectation
-from simimg.resolving.resolution import Directions, Resolution, to_arcsec
+from simimg.resolving.resolution import Directions, Resolution, computable, to_arcsec
 from simimg.resolving.signal import Detector, Signal, StarLight, pair_signal, shape_signal
+from simimg.resolving.starpsfs import StarPsfs
 
 _MANY = 16  # pairs whose directions are all taken exactly; those of more share them
 _SHARED = radians(5.0)
@@ -49,7 +51,8 @@ class ObjectLimits:
     snr, snr_fit : float or None
         Signal to noise of the whole object: see `simimg.resolving.signal`.
     separation_arcsec, position_angle_deg, magnitude_difference : float or None
-        Of a pair's second star about its first.
+        Of a pair's second star about its first; the magnitudes are those of the detected
+        electrons, which decide whether the stars come apart.
     diffraction, delivered : Resolution or None
         A pair's own limits, along its own angle and for its own magnitude difference.
     bound : PairPrecision or None
@@ -85,10 +88,15 @@ class Listing:
         False where magnitudes cannot be turned into electrons.
     detector : Detector or None
     diffraction, delivered : Directions
+        Of the scene's first object in the middle of the field.
+    psfs : StarPsfs
+        Of each object.
     width : float
         FWHM delivered (rad), roughly.
     expectation : Expectation or None
         Of the image about pairs, all objects shown.
+    differences : tuple of float
+        Magnitude difference of each pair as the detector sees it.
     """
 
     train: Train
@@ -96,16 +104,18 @@ class Listing:
     detector: Detector | None
     diffraction: Directions
     delivered: Directions
+    psfs: StarPsfs
     width: float
     expectation: Expectation | None
+    differences: tuple[float, ...]
+    _lights: dict[Transfer, StarLight] = field(default_factory=dict)
+    _directions: dict[Transfer, Directions] = field(default_factory=dict)
 
     def objects(self, found: Inventory) -> tuple[ObjectLimits, ...]:
         """Every object of an inventory, a pair once, in its order."""
-        light = None
-        if self.detector is not None and len(found):
-            light = StarLight(self.delivered.transfer, self.detector, width=self.width)
         known = np.isnan(found.magnitude) | self.timed
-        peaks, snr, snr_fit = _of_stars(light, found, known)
+        peaks, snr, snr_fit = self._of_stars(found, known)
+        differences = iter(self.differences)
         pairs = int(np.count_nonzero(found.partner[: found.written] >= 0)) // 2
         listed = []
         for row, one in enumerate(found.entries):
@@ -125,10 +135,18 @@ class Listing:
                     for i in (row, one.partner)
                 )
                 listed.append(
-                    self._pair((one, second), both, alone, light, found, coarse=pairs > _MANY)
+                    self._pair(
+                        (one, second),
+                        both,
+                        alone,
+                        found,
+                        next(differences),
+                        coarse=pairs > _MANY,
+                    )
                 )
             elif one.shape is not None and self.detector is not None and known[row]:
-                signal = shape_signal(self.train.basis, one, self.detector, width=self.width)
+                psf = computable(self.psfs.star(row))
+                signal = shape_signal(psf, one, self.detector, width=self.width)
                 listed.append(self._single(one, electrons, signal))
             else:
                 star = None
@@ -162,18 +180,19 @@ class Listing:
         stars: tuple[Entry, Entry],
         known: bool,
         alone: tuple[StarSignal, ...],
-        light: StarLight | None,
         found: Inventory,
+        difference: float,
         *,
         coarse: bool,
     ) -> ObjectLimits:
         signal = bound = None
-        if light is not None and known:
-            signal = pair_signal(light, stars)
+        psf = self.psfs.pair(stars[1].partner, stars[0].partner)
+        if self.detector is not None and known:
+            lights = self._light(psf.first, self.detector), self._light(psf.second, self.detector)
+            signal = pair_signal(lights[0], stars, second=lights[1])
         if self.expectation is not None and known:
             bound = pair_precision(self.expectation, stars)
         first = stars[0]
-        difference = magnitude_difference(stars)
         angle = found.geometry.direction(first.position_angle)
         if coarse:
             angle = _SHARED * round(angle / _SHARED)
@@ -186,44 +205,46 @@ class Listing:
             position_angle_deg=degrees(first.position_angle) % 360.0,
             magnitude_difference=_number(difference),
             diffraction=self.diffraction.resolution(angle, difference),
-            delivered=self.delivered.resolution(angle, difference),
+            delivered=self._cuts(psf.mean).resolution(angle, difference),
             bound=bound,
             stars=alone,
         )
 
+    def _light(self, psf: Transfer, detector: Detector) -> StarLight:
+        own = self.delivered.transfer if self.psfs.shared else computable(psf)
+        if own not in self._lights:
+            self._lights[own] = StarLight(own, detector, width=self.width)
+        return self._lights[own]
 
-def magnitude_difference(stars: tuple[Entry, Entry]) -> float:
-    """Second star's magnitude minus the first's, from electrons where need be; NaN if one is dark.
+    def _cuts(self, psf: Transfer) -> Directions:
+        if self.psfs.shared:
+            return self.delivered
+        if psf not in self._directions:
+            self._directions[psf] = Directions(computable(psf))
+        return self._directions[psf]
 
-    Parameters
-    ----------
-    stars : tuple of Entry
-        First and second.
-    """
-    difference = stars[1].magnitude - stars[0].magnitude
-    if isfinite(difference):
-        return difference
-    bright = [star.electrons for star in stars]
-    if min(bright) <= 0.0:
-        return nan
-    return 2.5 * log10(bright[0] / bright[1])
-
-
-def _of_stars(
-    light: StarLight | None, found: Inventory, known: AnyArray
-) -> tuple[FloatArray, FloatArray, FloatArray]:
-    """Peak, signal to noise and that of a fit for every row as a star; NaN where unknown."""
-    nothing = np.full(len(found), np.nan)
-    if light is None:
-        return nothing, nothing, nothing
-    electrons = np.where(known, found.electrons, 0.0)
-    values = (
-        light.peaks(found.x, found.y, electrons),
-        light.snr(electrons),
-        light.snr_fit(electrons),
-    )
-    peaks, snr, snr_fit = (np.where(known, value, np.nan) for value in values)
-    return peaks, snr, snr_fit
+    def _of_stars(
+        self, found: Inventory, known: AnyArray
+    ) -> tuple[FloatArray, FloatArray, FloatArray]:
+        """Peak, signal to noise and that of a fit for every row as a star; NaN where unknown."""
+        values = np.full((3, len(found)), np.nan)
+        if self.detector is None:
+            return values[0], values[1], values[2]
+        rows: list[tuple[StarLight, AnyArray]] = []
+        together = 0 if self.psfs.shared else found.written
+        for row in range(together):
+            if found.shapes[row] is None:
+                rows.append((self._light(self.psfs.star(row), self.detector), np.array([row])))
+        if len(found) > together:
+            common = self._light(self.delivered.transfer, self.detector)
+            rows.append((common, np.arange(together, len(found))))
+        for light, chosen in rows:
+            electrons = np.where(known[chosen], found.electrons[chosen], 0.0)
+            values[0, chosen] = light.peaks(found.x[chosen], found.y[chosen], electrons)
+            values[1, chosen] = light.snr(electrons)
+            values[2, chosen] = light.snr_fit(electrons)
+        values[:, ~known] = np.nan
+        return values[0], values[1], values[2]
 
 
 def _number(value: float) -> float | None:

@@ -25,7 +25,8 @@ from simimg.resolving.finding import SingleStar, search_field
 from simimg.resolving.given import Given
 from simimg.resolving.judging import NamedPair, judge
 from simimg.resolving.observation import Observation, observe
-from simimg.resolving.pairlimits import PairLimits
+from simimg.resolving.ownpsfs import OwnPsfs
+from simimg.resolving.pairlimits import Cuts, PairLimits
 from simimg.resolving.psfquality import PsfReport, judge_psf, psf_warnings
 from simimg.resolving.psfsource import PsfChoice
 from simimg.resolving.records import PairMeasurement, PairTruth, SingleMeasurement
@@ -120,9 +121,10 @@ def measure(
     choice = as_choice(psf, oversampling=psf_oversampling, stars=psf_stars)
     named = [] if near is not None else named_pairs(frame)
     observation = _observe(frame, near or (), named, given=given, psf=choice)
+    own = OwnPsfs(observation)
     if near is None and not named:
-        return _records(observation, _found(observation))
-    return _records(observation, [*_named(observation, named), *_placed(observation, near or ())])
+        return _records(own, _found(observation))
+    return _records(own, [*_named(own, named), *_placed(own, near or ())])
 
 
 def measure_all(frame: Frame, *, near: Sequence[Place] | None = None) -> list[PairMeasurement]:
@@ -164,12 +166,13 @@ def measure_frame(
     observation = _observe(frame, places, named, given=given, psf=psf)
     besides = [*places, *_places(named)]
     field = search_field(observation, besides=besides, workers=workers)
+    own = OwnPsfs(observation)
     seen: list[_Seen] = [
-        *_named(observation, named),
-        *_placed(observation, places),
+        *_named(own, named),
+        *_placed(own, places),
         *((sighting, None) for sighting in field.pairs),
     ]
-    records = _records(observation, seen)
+    records = _records(own, seen)
     quality = judge_psf(observation, apart=besides)
     names = [record.label or f"x {record.x:.5g}, y {record.y:.5g}" for record in records]
     doubts = psf_warnings(
@@ -178,7 +181,7 @@ def measure_frame(
     return FrameMeasurement(
         pairs=tuple(records),
         psf=quality.report,
-        warnings=(*observation.notes, *doubts),
+        warnings=(*observation.notes, *own.notes(named), *doubts),
         singles=single_records(observation, field.singles),
     )
 
@@ -301,12 +304,12 @@ def checked_places(frame: Frame, places: Sequence[Place]) -> list[Place]:
     return list(places)
 
 
-def _named(observation: Observation, named: Sequence[NamedPair]) -> list[_Seen]:
-    return [(look(observation, pair.first, other=pair.second), pair) for pair in named]
+def _named(own: OwnPsfs, named: Sequence[NamedPair]) -> list[_Seen]:
+    return [(look(own.pair(pair), pair.first, other=pair.second), pair) for pair in named]
 
 
-def _placed(observation: Observation, places: Sequence[Place]) -> list[_Seen]:
-    return [(look(observation, place), None) for place in places]
+def _placed(own: OwnPsfs, places: Sequence[Place]) -> list[_Seen]:
+    return [(look(own.place(place), place), None) for place in places]
 
 
 def _found(observation: Observation, besides: Sequence[Place] = ()) -> list[_Seen]:
@@ -315,12 +318,16 @@ def _found(observation: Observation, besides: Sequence[Place] = ()) -> list[_See
     return [(sighting, None) for sighting in find_pairs(observation, besides=besides)]
 
 
-def _records(observation: Observation, seen: Sequence[_Seen]) -> list[PairMeasurement]:
+def _records(own: OwnPsfs, seen: Sequence[_Seen]) -> list[PairMeasurement]:
     """Judge what was seen; where there is much of it, with brief advice."""
-    limits = PairLimits(observation.delivered, pairs=len(seen))
+    limits: dict[Cuts, PairLimits] = {}
     records = []
     for sighting, pair in seen:
-        judgement = judge(observation, sighting, limits, named=pair)
+        observation = own.of(sighting.cutouts[0].psf)
+        cuts = observation.delivered
+        if cuts not in limits:
+            limits[cuts] = PairLimits(cuts, pairs=len(seen))
+        judgement = judge(observation, sighting, limits[cuts], named=pair)
         advice = advise(observation, judgement, brief=len(seen) > _ADVISED)
         records.append(replace(judgement.record, advice=advice))
     return records

@@ -149,11 +149,26 @@ def _of_scene(train: Train | None, scale: float, widest: float) -> SourcedPsf:
     if train is None:
         what = "the frame carries no scene to compute a PSF from"
         raise InputError(mistake("frame", "psf", what, _MENDS))
-    delivered = Directions(train.effective)
+    return transfer_psf(train.effective, scale, widest)
+
+
+def transfer_psf(transfer: Transfer, scale: float, widest: float) -> SourcedPsf:
+    """The effective PSF of a transfer function of a scene.
+
+    Parameters
+    ----------
+    transfer : Transfer
+        Pixel included.
+    scale : float
+        Side of a pixel (rad).
+    widest : float
+        Largest separation that will be fitted, pixels.
+    """
+    delivered = Directions(transfer)
     width = delivered.profile(0.0).width / scale
-    oversampling = spline_oversampling(train.effective, scale)
+    oversampling = spline_oversampling(transfer, scale)
     image = sampled_psf(
-        train.effective,
+        transfer,
         pixel_scale=scale,
         oversampling=oversampling,
         half_width_pixels=ceil(max(_REACH * width, widest + 5.0 * width, 8.0)),

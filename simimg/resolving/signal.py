@@ -16,7 +16,7 @@ two stars together. Electrons an exposure and a pixel; places in pixels; angles 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import ceil, floor, inf, sqrt
+from math import ceil, floor, hypot, inf, sqrt
 
 import numpy as np
 from scipy.interpolate import RectBivariateSpline
@@ -87,7 +87,7 @@ def scene_detector(scene: Scene, train: Train) -> Detector | None:
     if camera is None or scale is None:
         return None
     full_well = inf if camera.full_well is None else camera.full_well
-    columns, rows = camera.pixels if camera.pixels is not None else (None, None)
+    columns, rows = scene.image_size or (None, None)
     return Detector(
         pixel_scale=scale,
         sky=sky_electrons(scene, area=train.pupil.area),
@@ -246,8 +246,20 @@ def _vertex(image: FloatArray) -> float:
     return peak
 
 
-def pair_signal(light: StarLight, stars: tuple[Entry, Entry]) -> Signal:
-    """Signal of the two stars of a pair together, at their own places on the pixels."""
+def pair_signal(
+    light: StarLight, stars: tuple[Entry, Entry], *, second: StarLight | None = None
+) -> Signal:
+    """Signal of the two stars of a pair together, at their own places on the pixels.
+
+    Parameters
+    ----------
+    light : StarLight
+        Of the PSF of both, or of the first.
+    stars : tuple of Entry
+    second : StarLight, optional
+        Of the second star's PSF, of the same width.
+    """
+    lights = light, light if second is None else second
     variance, stride = light.detector.variance, light.stride
     apart = max(abs(stars[1].x - stars[0].x), abs(stars[1].y - stars[0].y))
     x = np.array([star.x for star in stars])
@@ -255,28 +267,46 @@ def pair_signal(light: StarLight, stars: tuple[Entry, Entry]) -> Signal:
     electrons = np.array([star.electrons for star in stars])
     total = float(electrons.sum())
     if apart > 0.5 * light.reach_pixels:
-        peak = float(light.peaks(x, y, electrons).max())
+        rows = [slice(0, 1), slice(1, 2)]
+        peak = max(
+            float(one.peaks(x[i], y[i], electrons[i]).max())
+            for one, i in zip(lights, rows, strict=True)
+        )
         if total <= 0.0:
             return Signal(peak, 0.0, 0.0)
         # Apart, their squares add.
-        noise_pixels = light.noise_pixels * total**2 / float((electrons**2).sum())
-        snr = total / sqrt(total + noise_pixels * variance)
-        return Signal(peak, snr, float(np.sqrt((light.snr_fit(electrons) ** 2).sum())))
+        squares = float(sum(n**2 / one.noise_pixels for n, one in zip(electrons, lights)))
+        snr = total / sqrt(total + total**2 / squares * variance)
+        fits = [float(one.snr_fit(electrons[i])[0]) for one, i in zip(lights, rows, strict=True)]
+        return Signal(peak, snr, hypot(*fits))
     parts = electrons / total if total > 0.0 else np.array([0.5, 0.5])
-    share = np.zeros(light.share.shape)
+    side = min(one.share.shape[0] for one in lights)
+    share = np.zeros((side, side))
     # A pixel near the brighter star in the middle, so that its brightest pixel is a sample.
     brighter = int(np.argmax(electrons))
     middle = np.rint(x[brighter]), np.rint(y[brighter])
-    for part, at_x, at_y in zip(parts, x, y):
-        share += part * light.image(float(middle[0] - at_x), float(middle[1] - at_y))
+    for one, part, at_x, at_y in zip(lights, parts, x, y, strict=True):
+        edge = (one.share.shape[0] - side) // 2
+        image = one.image(float(middle[0] - at_x), float(middle[1] - at_y))
+        share += part * image[edge : edge + side, edge : edge + side]
     return image_signal(share, total, variance, area=float(stride**2))
 
 
-def shape_signal(basis: PsfBasis, one: Entry, detector: Detector, *, width: float) -> Signal:
+def shape_signal(psf: Transfer, one: Entry, detector: Detector, *, width: float) -> Signal:
     """Signal of an extended object, painted alone on a stamp of its own.
 
-    An object of more than 512 pixels a side is sampled more coarsely. `width` is the FWHM of the
-    PSF (rad), roughly.
+    Parameters
+    ----------
+    psf : Transfer
+        The object's own, pixel included.
+    one : Entry
+    detector : Detector
+    width : float
+        FWHM of the PSF (rad), roughly.
+
+    Notes
+    -----
+    An object of more than 512 pixels a side is sampled more coarsely.
     """
     shape = one.shape
     if shape is None:
@@ -289,7 +319,7 @@ def shape_signal(basis: PsfBasis, one: Entry, detector: Detector, *, width: floa
     x, y = (half + (place - round(place)) / stride for place in (one.x, one.y))
     sources = Sources(no_points(), (PlacedShape(x, y, 1.0, shape),))
     image = expected_image(
-        basis,
+        PsfBasis((psf,)),
         sources,
         columns=2 * half + 1,
         rows=2 * half + 1,

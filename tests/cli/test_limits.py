@@ -142,3 +142,12 @@ def test_impossible_dates(run, scene, dates):
     done = run("limits", scene, "--dates", dates)
     assert done.code == 2
     assert "START:STOP:STEP" in done.err
+
+
+def test_an_orbit_without_a_date_says_both_mends(run, scene):
+    Path(scene).write_text(Path(scene).read_text() + ORBIT)
+    done = run("limits", scene)
+    assert done.code == 2
+    assert done.out == ""
+    assert "exposure.start" in done.err
+    assert "--dates" in done.err

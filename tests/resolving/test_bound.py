@@ -10,10 +10,16 @@ import simimg
 from simimg.assembly.objects import inventory
 from simimg.assembly.train import assemble_train
 from simimg.errors import InputError
+from simimg.imaging.basis import PsfBasis
 from simimg.imaging.render import expected_image
 from simimg.imaging.sources import Points, Sources
-from simimg.resolving.bound import pair_errors, precision, second_star_significance
-from simimg.resolving.expectation import Expectation
+from simimg.resolving.bound import (
+    pair_errors,
+    pair_precision,
+    precision,
+    second_star_significance,
+)
+from simimg.resolving.expectation import Expectation, pairs_of
 from simimg.resolving.psfmodel import PsfModel
 from simimg.resolving.starfit import Cutout
 from tests.study.pairs import AIR, SPACE, pair_scene
@@ -315,3 +321,119 @@ def test_pairs_without_an_answer(tmp_path):
         precision(none, exposures=0)
     with pytest.raises(InputError, match=r"camera\.pixels"):
         precision(pair_scene(tmp_path, camera=None))
+
+
+LOW_AIR = """
+[telescope]
+aperture = "1 m"
+obstruction = 0.3
+
+[telescope.field]
+radius = "9 arcsec"
+coma = "50 nm"
+curvature = "40 nm"
+
+[air]
+seeing = "0.8 arcsec"
+altitude = "40 deg"
+parallactic_angle = "30 deg"
+dispersion = true
+
+[band]
+name = "B"
+nodes = 2
+
+[camera]
+pixels = [72, 72]
+pixel_scale = "0.25 arcsec"
+read_noise = "5 electron"
+gain = "1.4 electron/adu"
+
+[sky]
+electrons = "150 electron"
+
+[exposure]
+time = "10 s"
+seed = 3
+
+[[pair]]
+x = 50.3
+y = 46.8
+magnitudes = [12.5, 13.2]
+separation = "0.9 arcsec"
+position_angle = "40 deg"
+temperatures = ["20000 K", "3500 K"]
+
+[[star]]
+x = 36.0
+y = 52.5
+magnitude = 13.0
+temperature = "20000 K"
+"""
+
+
+@pytest.fixture(scope="module")
+def in_low_air(tmp_path_factory):
+    path = tmp_path_factory.mktemp("low") / "scene.toml"
+    path.write_text(LOW_AIR)
+    scene = simimg.load_scene(path)
+    train = assemble_train(scene)
+    return scene, train, inventory(scene, train=train)
+
+
+def painted_by(basis, found, points):
+    geometry = found.geometry
+    image = expected_image(
+        basis,
+        Sources(points),
+        columns=geometry.columns,
+        rows=geometry.rows,
+        pixel_scale=geometry.pixel_scale,
+    )
+    return np.asarray(image, dtype=np.float64)
+
+
+def test_stars_of_two_colours_off_the_axis_have_a_psf_each(in_low_air):
+    """The image about the pair, and the bound, against images that the engine paints."""
+    scene, train, found = in_low_air
+    view = Expectation.of(scene, train, found)
+    (pair,) = pairs_of(found)
+    (image,) = view.cutouts(pair)
+    rows, columns = image.electrons.shape
+    left, bottom = int(image.x0), int(image.y0)
+    box = slice(bottom, bottom + rows), slice(left, left + columns)
+    whole = painted_by(train.basis, found, found.points)[box] + 150.0
+    # The engine mixes the field's PSFs from those of some places, to 1e-3 of the peak here.
+    assert_allclose(image.electrons, whole, atol=1e-3 * whole.max())
+    # The PSF of the first object in the middle of the field for all would not do.
+    common = painted_by(PsfBasis((train.effective,)), found, found.points)[box] + 150.0
+    assert np.abs(common - whole).max() > 0.02 * whole.max()
+    # Derivatives by differences of the images of each star alone, whose PSF goes along with it.
+    ours, h = (pair[1].partner, pair[0].partner), 0.02
+
+    def alone(row, dx=0.0, dy=0.0):
+        x, y, light = found.x[row], found.y[row], found.electrons[row]
+        basis = PsfBasis((train.star(int(found.colour[row]), float(x), float(y)),))
+        moved = Points(np.array([x + dx]), np.array([y + dy]), np.array([light]))
+        return painted_by(basis, found, moved)[box].ravel()
+
+    slopes = [
+        slope
+        for row in ours
+        for slope in (
+            (alone(row, dx=h) - alone(row, dx=-h)) / (2 * h),
+            (alone(row, dy=h) - alone(row, dy=-h)) / (2 * h),
+            alone(row) / found.electrons[row],
+        )
+    ]
+    slopes = np.array([*slopes, np.ones(whole.size)])
+    variance = whole.ravel() + 25.0 + 1.4**2 / 12.0
+    covariance = np.linalg.inv((slopes / variance) @ slopes.T)
+    stars = np.column_stack([found.x, found.y, found.electrons])[[*ours]]
+    separation, angle, difference = geometry_errors(covariance, stars)
+    bound = pair_precision(view, pair)
+    assert_allclose(
+        [bound.separation_arcsec, bound.position_angle_deg, bound.magnitude_difference],
+        [separation * 0.25, np.degrees(angle), difference],
+        rtol=2e-3,
+    )
