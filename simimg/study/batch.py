@@ -198,7 +198,8 @@ class _Crew:
                 self._here(chunk)
             return self._failed
         while chunks:
-            chunks = self._shared_out(chunks)
+            chunks, suspects = self._shared_out(chunks)
+            self._one_by_one(suspects)
         return self._failed
 
     def _here(self, chunk: tuple[int, ...]) -> None:
@@ -215,8 +216,11 @@ class _Crew:
         folder = str(self._home.path.absolute())
         return identity, plan, self._keep, self._compress, folder, chunk
 
-    def _shared_out(self, chunks: list[tuple[int, ...]]) -> list[tuple[int, ...]]:
-        """Hand out chunks until none is left or a process dies; what is still to be done."""
+    def _shared_out(self, chunks: list[tuple[int, ...]]) -> tuple[list[tuple[int, ...]], list[int]]:
+        """Hand out chunks until none is left or a process dies.
+
+        What is still to be done, and the frames that were in hand when a process died.
+        """
         rest = list(reversed(chunks))
         hands: dict[Future[Any], tuple[int, ...]] = {}
         with _executor(self._workers, self._cluster) as (executor, most):
@@ -228,13 +232,27 @@ class _Crew:
                             hands[executor.submit(make_frames, self._task(chunk))] = chunk
                     done, _ = wait(hands, return_when=FIRST_COMPLETED)
                     for future in done:
-                        chunk = hands[future]
-                        rest += [(number,) for number in self._result(future, chunk)]
+                        again = self._result(future, hands[future])
                         del hands[future]
+                        rest += [(number,) for number in again]
             except BrokenProcessPool:
                 suspects = [number for chunk in hands.values() for number in chunk]
-                return [*self._after_death(suspects), *reversed(rest)]
-        return []
+                self._say(f"a process died; {len(suspects)} frames are tried once more")
+                return list(reversed(rest)), suspects
+        return [], []
+
+    def _one_by_one(self, suspects: Sequence[int]) -> None:
+        """Frames that were in hand when a process died, each in a process of its own."""
+        for number in suspects:
+            self._tries[number] = "its process died"
+            with _executor(1, None) as (executor, _):
+                try:
+                    with holding_interrupts():
+                        future = executor.submit(make_frames, self._task((number,)))
+                    told = future.result()
+                except BrokenProcessPool:
+                    told = [(number, "its process died, twice")]
+            self._taken(told)
 
     def _result(self, future: Future[Any], chunk: tuple[int, ...]) -> list[int]:
         """Take what a chunk came to; the frames to be tried once more."""
@@ -261,12 +279,6 @@ class _Crew:
         if self._progress is not None:
             self._progress(self._done, self._home.plan.count)
         return again
-
-    def _after_death(self, suspects: Sequence[int]) -> list[tuple[int, ...]]:
-        """Frames that a process had in hand when it died: each by itself once more."""
-        wrong = "its process died"
-        self._say(f"a process died; {len(suspects)} frames are tried once more")
-        return [(number,) for number in self._taken([(one, wrong) for one in suspects])]
 
     def _say(self, line: str) -> None:
         if self._tell is not None:

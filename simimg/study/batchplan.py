@@ -8,7 +8,6 @@ key. Values are those a scene would have.
 from __future__ import annotations
 
 import hashlib
-import io
 import os
 from collections.abc import Mapping
 from dataclasses import dataclass
@@ -205,7 +204,7 @@ def _table(scene: Scene, name: str) -> Any:
     content = one.read()
     form = "ascii.ecsv" if Path(name).suffix.lower() == ".ecsv" else "ascii.csv"
     try:
-        found = Table.read(io.StringIO(content.decode("utf-8")), format=form)
+        found = Table.read(content.decode("utf-8").splitlines(), format=form)
     except Exception as error:
         # Whatever a reader of strangers' tables raises.
         what = f"cannot be read as a table: {' '.join(str(error).split())[:200]}"
