@@ -13,6 +13,7 @@ Electrons, counts, seconds; angles in radians, places in pixels from 0 at the ce
 from __future__ import annotations
 
 import os
+import warnings
 from dataclasses import dataclass
 from dataclasses import replace as changed_fields
 from math import atan2, degrees, pi
@@ -42,7 +43,7 @@ from simimg.resolving.headers import (
     number,
 )
 from simimg.resolving.observation import foreign_sky
-from simimg.resolving.skyplane import CoordinateSky, Sky, equatorial
+from simimg.resolving.skyplane import CoordinateSky, Sky, equatorial, sky_places
 from simimg.scene.file import replace, requirements_to_expose, scene_id
 from simimg.scene.model import Scene
 from simimg.version import __version__
@@ -54,6 +55,7 @@ _SAYS = (
     "injected: true for an object that simimg put into a frame that existed; its electrons are of "
     "the frame's exposure.",
 )
+_FAR = 1e9  # pixels: out of every frame
 _SQUARE = 0.01  # relative difference of a pixel's sides that is worth a line
 
 
@@ -213,6 +215,8 @@ def inject(
         frame=exposure if isinstance(exposure, int) and 0 <= exposure < 2**31 else 0,
     )
     rows = truth_table(objects, train)
+    if len(objects) and not rows["inside"].any():
+        notes.append("none of the objects lies on the frame")
     rows["ra"], rows["dec"] = np.degrees(ra), np.degrees(dec)
     rows["ra"].unit = rows["dec"].unit = "deg"
     return Injection(
@@ -336,24 +340,19 @@ def _placed(
         return objects, np.asarray(ra), np.asarray(dec)
     by_pixel = _by_pixel(scene, objects)
     x, y = np.array(objects.x), np.array(objects.y)
-    if not by_pixel.all():
-        there = ~by_pixel
-        try:
-            x[there], y[there] = _pixels(frame, ra[there], dec[there])
-        except Exception as error:  # strangers' coordinates fail in any way they like
-            what = "its coordinates do not reach the objects' places"
-            raise InputError(mistake(where, "coordinates", what, "place them nearer")) from error
     ra, dec = np.array(ra), np.array(dec)
-    for row in np.flatnonzero(by_pixel)[:100_000]:
-        ra[row], dec[row] = sky.to_sky(float(x[row]), float(y[row]))
-    if not (np.isfinite(x).all() and np.isfinite(y).all()):
+    try:
+        x[~by_pixel], y[~by_pixel] = _pixels(frame, ra[~by_pixel], dec[~by_pixel])
+        places = sky_places(frame.wcs, np.column_stack([x[by_pixel], y[by_pixel]]))
+    except Exception as error:  # strangers' coordinates fail in any way they like
         what = "its coordinates do not reach the objects' places"
-        raise InputError(mistake(where, "coordinates", what, "place them nearer"))
+        raise InputError(mistake(where, "coordinates", what, "place them nearer")) from error
+    ra[by_pixel], dec[by_pixel] = places.T
     return changed_fields(objects, x=x, y=y), ra % (2.0 * pi), dec
 
 
 def _pixels(frame: Frame, ra: FloatArray, dec: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """Pixels of ICRS places (rad) in the coordinates of a frame."""
+    """Pixels of ICRS places (rad) in a frame's coordinates; far off where these do not reach."""
     from astropy.coordinates import SkyCoord
     from astropy.wcs.utils import wcs_to_celestial_frame
 
@@ -365,7 +364,12 @@ def _pixels(frame: Frame, ra: FloatArray, dec: FloatArray) -> tuple[FloatArray, 
         first, second = there.spherical.lon.deg, there.spherical.lat.deg
     if wcs.wcs.lng == 1:
         first, second = second, first
-    places = wcs.all_world2pix(np.column_stack([first, second]), 0, tolerance=1e-6)
+    if first.size == 0:
+        return first, second
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore")
+        places = wcs.all_world2pix(np.column_stack([first, second]), 0, tolerance=1e-6, quiet=True)
+    places = np.where(np.isfinite(places).all(axis=1, keepdims=True), places, _FAR)
     return places[:, 0], places[:, 1]
 
 

@@ -187,6 +187,35 @@ def test_without_pointing_offsets_count_from_the_middle(tmp_path):
     assert_allclose(made.truth["y"], (ROWS - 1) / 2, atol=1e-5)
 
 
+def test_distorted_coordinates_and_places_beyond_them(tmp_path):
+    from astropy.wcs import Sip
+
+    wcs = tan()
+    bend = np.zeros((4, 4))
+    bend[2, 0] = bend[0, 2] = 4e-5
+    wcs.wcs.ctype = ["RA---TAN-SIP", "DEC--TAN-SIP"]
+    wcs.sip = Sip(bend, bend.T, None, None, wcs.wcs.crpix)
+    counts = np.full((ROWS, COLUMNS), 400.0, "f4")
+    hdu = fits.PrimaryHDU(counts, header=wcs.to_header(relax=True))
+    hdu.header.update({"GAIN": GAIN, "EXPTIME": 1.0})
+    hdu.writeto(tmp_path / "f.fits")
+    star = '[[star]]\nelectrons = 1e6\nra = "{:.12f} deg"\ndec = "{:.12f} deg"\n'
+    near = wcs.all_pix2world([[30.25, 120.5], [150.0, 20.0]], 0)
+    text = '[pointing]\nra = "214.5 deg"\ndec = "31.25 deg"\n'
+    text += "".join(star.format(*place) for place in [*near, (214.5, 50.0)])
+    (tmp_path / "s.toml").write_text(TELESCOPE + text)
+    made = inject(tmp_path / "f.fits", load_scene(tmp_path / "s.toml"))
+    assert_allclose(made.truth["x"][:2], [30.25, 150.0], atol=1e-4)
+    assert_allclose(made.truth["y"][:2], [120.5, 20.0], atol=1e-4)
+    assert list(made.truth["inside"]) == [True, True, False]
+    # The bend counts: without it the places are pixels off.
+    straight = tan().all_world2pix(near, 0)
+    assert np.abs(straight - [[30.25, 120.5], [150.0, 20.0]]).max() > 0.2
+    (tmp_path / "s.toml").write_text(TELESCOPE + "[[star]]\nx = 5000\ny = 3\nelectrons = 9\n")
+    lost = inject(tmp_path / "f.fits", load_scene(tmp_path / "s.toml"))
+    assert "none of the objects lies on the frame" in lost.notes
+
+
 def test_the_frame_says_how_long(tmp_path):
     foreign(tmp_path / "f.fits")
     text = TELESCOPE.replace("seed = 9", 'seed = 9\ntime = "10 s"')
