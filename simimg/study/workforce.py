@@ -107,15 +107,13 @@ def _abroad(
     address: str, function: Callable[[Task], Result], tasks: Sequence[Task]
 ) -> Iterator[tuple[int, Result]]:
     with cluster_client(address) as client:
-        from distributed import as_completed as as_done
-
-        futures = [
-            client.submit(single_threaded, function, task, key=f"simimg-{number}", pure=False)
+        executor = client.get_executor(pure=False)
+        waiting = {
+            executor.submit(single_threaded, function, task): number
             for number, task in enumerate(tasks)
-        ]
-        numbers = {future.key: number for number, future in enumerate(futures)}
-        for future in as_done(futures):
-            yield numbers[future.key], future.result()
+        }
+        for future in as_completed(waiting):
+            yield waiting[future], future.result()
 
 
 def cluster_client(address: str) -> Any:
