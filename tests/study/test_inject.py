@@ -364,6 +364,19 @@ def test_behind_a_multiplying_register_noise_is_twice_as_large(tmp_path):
     assert lit.sum() > 1000
 
 
+def test_a_scenes_own_camera_is_of_no_effect(tmp_path):
+    foreign(tmp_path / "f.fits")
+    plain = grid_scene(tmp_path)
+    text = CAMERA.replace('pixel_scale = "0.4 arcsec"', 'pixel_size = "9 um"')
+    text += 'binning = 2\ncosmic_ray_rate = "5 / (cm2 min)"\nflat_rms = 0.01\nmirrored = true\n'
+    text += 'em_gain = 200\ndark_current = "5 electron/s"\n[sky]\nsurface_brightness = 20\n'
+    text = TELESCOPE.replace('"1 m"', '"1 m"\nfocal_length = "8 m"') + text
+    (tmp_path / "c.toml").write_text(text)
+    full = replace(load_scene(tmp_path / "c.toml"), {"star": plain.document["star"]})
+    found = [inject(tmp_path / "f.fits", one) for one in (plain, full)]
+    assert_array_equal(found[0].stored, found[1].stored)
+
+
 def test_same_seed_same_bytes(tmp_path):
     foreign(tmp_path / "f.fits")
     scene = grid_scene(tmp_path)
