@@ -320,3 +320,24 @@ def test_a_multiplied_frame_read_by_its_header_alone(scene, tmp_path):
         other = by_place[round(one.x)]
         assert other.electrons == pytest.approx(one.electrons, rel=0.05)
         assert other.electrons_error == pytest.approx(one.electrons_error, rel=0.15)
+
+
+def test_limits_know_the_noise_of_multiplication(tmp_path):
+    path = tmp_path / "pair.toml"
+    path.write_text(SCENE + PAIR)
+    scene = load_scene(path)
+    plain = {one.label: one for one in simimg.limits(scene).objects}
+    many = replace(scene, {"camera.em_gain": 400.0, "camera.bit_depth": 31})
+    found = {one.label: one for one in simimg.limits(many).objects}
+    # Bright: light's noise alone, with twice its variance; the read noise is gone.
+    n, b = 2e5, 50.0
+    pixels = (n**2 / plain["A"].snr ** 2 - n) / (b + 16.0)
+    excess = 2.0 - 1.0 / 400.0
+    expected = n / math.sqrt(excess * (n + pixels * b) + pixels * (4.0 / 400.0) ** 2)
+    assert found["A"].snr == pytest.approx(expected, rel=1e-6)
+    assert found["A"].peak_electrons == pytest.approx(plain["A"].peak_electrons)
+    assert 1.2 < found["P"].bound.separation_arcsec / plain["P"].bound.separation_arcsec < 1.42
+    told = simimg.trials(many, count=60)[0]
+    assert told.scatter.separation_arcsec == pytest.approx(
+        found["P"].bound.separation_arcsec, rel=0.3
+    )

@@ -106,3 +106,20 @@ def saturation(settings: CameraSettings) -> float:
         bend(level, share=readout.nonlinearity, full=full_signal(settings))
         well = float(level[0])
     return min(float(converter_top(settings.bit_depth)), well / gain + bias)
+
+
+def full_electrons(settings: CameraSettings) -> float:
+    """Electrons of a pixel of the frame, as they gathered, at which it is full.
+
+    Parameters
+    ----------
+    settings : CameraSettings
+    """
+    readout = settings.readout
+    gain = min(readout.gains) if readout.gains else settings.gain
+    bias = max(readout.biases) if readout.biases else settings.bias
+    top = (float(converter_top(settings.bit_depth)) - bias) * gain
+    if readout.em_well is not None and readout.em_gain > 1.0:
+        top = min(top, readout.em_well)
+    well = inf if settings.full_well is None else settings.full_well * readout.binning**2
+    return min(well, top / readout.em_gain)

@@ -107,8 +107,10 @@ class Expectation:
         detector = scene_detector(scene, train)
         if detector is None or scene.camera is None:
             return None
-        exact = scene.camera.read_noise == 0.0 and scene.camera.gain == 1.0
-        rounding = 0.0 if exact else scene.camera.gain**2 / 12.0
+        # Counted in so many electrons at a time, light has the variance of its number.
+        noise, gain = detector.read_noise / detector.excess, scene.camera.gain
+        exact = noise == 0.0 and gain == 1.0
+        rounding = 0.0 if exact else (gain / scene.camera.em_gain / detector.excess) ** 2 / 12.0
         pixels = hypot(half_light_width(train.focal) / detector.pixel_scale, 0.8)
         block = max(1, floor(pixels / _FINEST))
         scale, width = block * detector.pixel_scale, pixels / block
@@ -124,8 +126,8 @@ class Expectation:
             block=block,
             psf=_model(train.effective, scale, half),
             near=near,
-            variance=(detector.read_noise**2 + rounding) * block**2,
-            **_placed(found, block),
+            variance=(noise**2 + rounding) * block**2,
+            **_placed(found, block, detector.excess),
         )
 
     def showing(self, found: Inventory) -> Expectation:
@@ -135,12 +137,13 @@ class Expectation:
         ----------
         found : Inventory
         """
-        return replace(self, **_placed(found, self.block))
+        return replace(self, **_placed(found, self.block, self.detector.excess))
 
     @property
     def sky(self) -> float:
         """Electrons of sky and dark signal in a block."""
-        return (self.detector.sky + self.detector.dark) * self.block**2
+        light = (self.detector.sky + self.detector.dark) / self.detector.excess
+        return light * self.block**2
 
     @property
     def scale(self) -> float:
@@ -204,7 +207,7 @@ class Expectation:
             psf=mean,
             x0=left,
             y0=bottom,
-            used=expected < self.detector.saturation * self.block**2,
+            used=expected < self.detector.saturation / self.detector.excess * self.block**2,
             known=known,
         )
 
@@ -223,7 +226,7 @@ class Expectation:
         elif near.any():
             drawn = self.psfs.found.drawn(np.flatnonzero(near))
             places = drawn.x / self.block - cutout.x0, drawn.y / self.block - cutout.y0
-            painted = Points(*places, drawn.electrons, drawn.kind)
+            painted = Points(*places, drawn.electrons / self.detector.excess, drawn.kind)
         if self.shapes or len(painted):
             moved = tuple(
                 replace(one, x=one.x / self.block - cutout.x0, y=one.y / self.block - cutout.y0)
@@ -268,13 +271,16 @@ def _model(transfer: Transfer, scale: float, half_width: float) -> PsfModel:
     return PsfModel.from_image(image, oversampling=oversampling)
 
 
-def _placed(found: Inventory, block: int) -> dict[str, Any]:
+def _placed(found: Inventory, block: int, excess: float) -> dict[str, Any]:
     """The objects of an inventory as a view holds them."""
+    electrons = found.electrons / excess
     stars = np.ones(len(found), dtype=bool)
     stars[: found.written] = [shape is None for shape in found.shapes]
     return {
-        "points": frozen(np.column_stack([found.x / block, found.y / block, found.electrons])),
+        "points": frozen(np.column_stack([found.x / block, found.y / block, electrons])),
         "stars": stars,
-        "shapes": found.sources.shapes,
+        "shapes": tuple(
+            replace(one, electrons=one.electrons / excess) for one in found.sources.shapes
+        ),
         "psfs": StarPsfs(found),
     }

@@ -16,16 +16,18 @@ two stars together. Electrons an exposure and a pixel; places in pixels; angles 
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import ceil, floor, hypot, inf, sqrt
+from math import ceil, floor, hypot, sqrt
 
 import numpy as np
 from scipy.interpolate import RectBivariateSpline
 
 from simimg.arrays import FloatArray, frozen
 from simimg.assembly.brightness import dark_electrons, sky_electrons
+from simimg.assembly.detector import detector_settings
 from simimg.assembly.objects import Entry
 from simimg.assembly.train import Train
-from simimg.camera.converter import converter_top
+from simimg.camera.cards import full_electrons
+from simimg.camera.multiplication import excess_noise
 from simimg.imaging.basis import PsfBasis, Transfer
 from simimg.imaging.profile import effective_band, peak_place, sampled_psf
 from simimg.imaging.render import expected_image
@@ -55,6 +57,9 @@ class Detector:
         Electrons at which a pixel or its converter is full; infinite where neither ends.
     columns, rows : int or None
         Size; None where the scene does not say.
+    excess : float, optional
+        Square of the excess noise factor: by how much the variance of light and dark signal
+        exceeds their electrons.
     """
 
     pixel_scale: float
@@ -64,11 +69,16 @@ class Detector:
     saturation: float
     columns: int | None
     rows: int | None
+    excess: float = 1.0
 
     @property
     def variance(self) -> float:
-        """Variance of a pixel without an object."""
-        return self.sky + self.dark + self.read_noise**2
+        """Variance of a pixel without an object, in squares of `excess` electrons.
+
+        Counted in so many electrons at a time, light has again the variance of its number.
+        """
+        light = (self.sky + self.dark) / self.excess
+        return light + (self.read_noise / self.excess) ** 2
 
     def holds(self, x: float, y: float) -> bool:
         """True for a place on the detector, or where its size is not known."""
@@ -86,16 +96,17 @@ def scene_detector(scene: Scene, train: Train) -> Detector | None:
     camera, scale = scene.camera, train.pixel_scale
     if camera is None or scale is None:
         return None
-    full_well = inf if camera.full_well is None else camera.full_well
+    settings = detector_settings(camera, time=0.0)
     columns, rows = scene.image_size or (None, None)
     return Detector(
         pixel_scale=scale,
         sky=sky_electrons(scene, area=train.pupil.area),
         dark=dark_electrons(scene),
-        read_noise=camera.read_noise,
-        saturation=min(full_well, (converter_top(camera.bit_depth) - camera.bias) * camera.gain),
+        read_noise=camera.read_noise / camera.em_gain,
+        saturation=full_electrons(settings),
         columns=columns,
         rows=rows,
+        excess=excess_noise(camera.em_gain),
     )
 
 
@@ -191,12 +202,13 @@ class StarLight:
 
     def snr(self, electrons: FloatArray) -> FloatArray:
         """Signal to noise in the equivalent aperture."""
-        noise = np.sqrt(electrons + self.noise_pixels * self.detector.variance)
-        return np.asarray(electrons / np.where(noise > 0.0, noise, 1.0))
+        number = electrons / self.detector.excess
+        noise = np.sqrt(number + self.noise_pixels * self.detector.variance)
+        return np.asarray(number / np.where(noise > 0.0, noise, 1.0))
 
     def snr_fit(self, electrons: FloatArray) -> FloatArray:
         """Signal to noise of a weighted fit."""
-        variance = self.detector.variance
+        variance, electrons = self.detector.variance, electrons / self.detector.excess
         if variance == 0.0:
             return np.sqrt(electrons)
         nodes = np.asarray(electrons, dtype=np.float64)
@@ -210,7 +222,7 @@ class StarLight:
         return np.asarray(electrons * np.sqrt(sums))
 
 
-def image_signal(share: FloatArray, electrons: float, variance: float, *, area: float) -> Signal:
+def image_signal(share: FloatArray, electrons: float, detector: Detector, *, area: float) -> Signal:
     """Signal of an object from its image.
 
     Parameters
@@ -219,10 +231,10 @@ def image_signal(share: FloatArray, electrons: float, variance: float, *, area: 
         Share of its light in a pixel, at samples that each stand for `area` pixels.
     electrons : float
         Of the object.
-    variance : float
-        Of a pixel without it.
+    detector : Detector
     """
     peak = electrons * (float(share.max()) if area == 1.0 else _vertex(share))
+    variance, electrons = detector.variance, electrons / detector.excess
     if electrons <= 0.0:
         return Signal(peak, 0.0, 0.0)
     noise_pixels = 1.0 / float((share**2).sum() * area)
@@ -260,7 +272,7 @@ def pair_signal(
         Of the second star's PSF, of the same width.
     """
     lights = light, light if second is None else second
-    variance, stride = light.detector.variance, light.stride
+    detector, stride = light.detector, light.stride
     apart = max(abs(stars[1].x - stars[0].x), abs(stars[1].y - stars[0].y))
     x = np.array([star.x for star in stars])
     y = np.array([star.y for star in stars])
@@ -276,7 +288,8 @@ def pair_signal(
             return Signal(peak, 0.0, 0.0)
         # Apart, their squares add.
         squares = float(sum(n**2 / one.noise_pixels for n, one in zip(electrons, lights)))
-        snr = total / sqrt(total + total**2 / squares * variance)
+        number = total / detector.excess
+        snr = number / sqrt(number + total**2 / squares * detector.variance)
         fits = [float(one.snr_fit(electrons[i])[0]) for one, i in zip(lights, rows, strict=True)]
         return Signal(peak, snr, hypot(*fits))
     parts = electrons / total if total > 0.0 else np.array([0.5, 0.5])
@@ -289,7 +302,7 @@ def pair_signal(
         edge = (one.share.shape[0] - side) // 2
         image = one.image(float(middle[0] - at_x), float(middle[1] - at_y))
         share += part * image[edge : edge + side, edge : edge + side]
-    return image_signal(share, total, variance, area=float(stride**2))
+    return image_signal(share, total, detector, area=float(stride**2))
 
 
 def shape_signal(psf: Transfer, one: Entry, detector: Detector, *, width: float) -> Signal:
@@ -326,4 +339,4 @@ def shape_signal(psf: Transfer, one: Entry, detector: Detector, *, width: float)
         pixel_scale=stride * detector.pixel_scale,
     )
     share = np.asarray(image, dtype=np.float64) / stride**2
-    return image_signal(share, one.electrons, detector.variance, area=float(stride**2))
+    return image_signal(share, one.electrons, detector, area=float(stride**2))
