@@ -11,11 +11,14 @@ from numpy.testing import assert_allclose
 
 import simimg
 from simimg.assembly.report import describe
+from simimg.camera.masks import BAD_COLUMN, BLEEDING, COSMIC_RAY, DEAD, HOT, SATURATED
 from simimg.resolving.ephemeris import ephemeris, julian_years
+from simimg.study.batchplan import plan_batch
 from tests.show import drawn
 
 FOLDER = Path(__file__).parents[1] / "scenes"
 BASES = ("orbiter", "station")
+RAW = "raw-frame"  # clips, bleeds and is marked on purpose
 DEMOS = sorted(path.stem for path in FOLDER.glob("*.toml") if path.stem not in BASES)
 PAIRS = ("close-pair", "close-pair-in-space", "mirror-segments", "turning-pair", "unequal-pair")
 SECONDS = 30.0  # of this test's patience; a demo takes about one
@@ -63,7 +66,7 @@ def test_its_comment_says_what_to_look_for(name):
     assert text.isascii()
 
 
-@pytest.mark.parametrize("name", [*DEMOS, *BASES])
+@pytest.mark.parametrize("name", [*(one for one in DEMOS if one != RAW), *BASES])
 def test_it_runs_in_seconds_and_clips_nothing(name, exposed):
     began = time.perf_counter()
     frame = exposed(name)
@@ -82,7 +85,35 @@ def test_its_figure_can_be_read(name, exposed):
     assert drawn.outside(figure) == []
     assert drawn.overlaps(figure) == []
     residuals = figure.axes[1].get_ylim()
-    assert max(residuals) < 7.0
+    # A raw frame has in it what the model has not.
+    assert max(residuals) < (7.0 if name != RAW else 100.0)
+
+
+def test_the_raw_frame_shows_what_its_comment_promises(exposed):
+    frame = exposed(RAW)
+    for bit in (SATURATED, BLEEDING, COSMIC_RAY, HOT, DEAD, BAD_COLUMN):
+        assert ((frame.mask & bit) > 0).any()
+    bled = np.flatnonzero(((frame.mask & BLEEDING) > 0).any(axis=0))
+    star = frame.truth[frame.truth["label"] == "too bright"]
+    assert abs(np.median(bled) - float(star["x"][0])) < 3
+    # Bias alone on the right.
+    assert frame.counts.shape == (256, 280)
+    beyond, sky = frame.counts[:, 256:], frame.counts[:, :256]
+    assert beyond.max() < 430
+    assert np.median(sky) > np.median(beyond) + 5
+
+
+def test_the_drawn_pairs_are_drawn():
+    plan = plan_batch(simimg.load_scene(FOLDER / "drawn-pairs.toml"), count=200)
+    columns = {one.name: one.values for one in plan.columns(np.arange(200))}
+    assert set(columns) == {
+        "pair_0_separation",
+        "pair_0_position_angle",
+        "pair_0_magnitudes_1",
+        "air_seeing",
+    }
+    # Fainter second stars are more common: the median lies beyond the middle.
+    assert np.median(columns["pair_0_magnitudes_1"]) > 16.6
 
 
 @pytest.mark.parametrize("name", PAIRS)

@@ -22,7 +22,7 @@ from simimg.scene.keys import (
 )
 from simimg.scene.model import Scene
 from simimg.scene.readers import EachAxis, RatioOrFile, UpTo
-from simimg.scene.table import MANY, REPEATED, table_types
+from simimg.scene.table import REPEATED, table_types
 from simimg.scene.wavefront import LARGEST_TERM, Terms
 
 TABLES = [Scene, *table_types()]
