@@ -20,6 +20,8 @@ from pathlib import Path
 
 import numpy as np
 
+from tests.benchmarks.many import bench_batch, bench_measure
+
 SIDE = 4096
 STARS = 100_000
 SCENE = """
@@ -267,6 +269,8 @@ BENCHMARKS = {
     "scaling": bench_scaling,
     "colour": bench_colour,
     "help": bench_help,
+    "measure": bench_measure,
+    "batch": bench_batch,
 }
 
 
