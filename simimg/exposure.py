@@ -257,6 +257,7 @@ def expose_prepared(
         psf=psf,
         mask=recorded.mask if recorded.mask.any() else None,
         scene_files=tuple(scene_record(scene)),
+        directory=str(scene.directory.absolute()),
     )
 
 

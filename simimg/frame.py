@@ -77,6 +77,9 @@ class Frame:
         large to keep.
     simulated : bool
         False only for an image read from a file that does not say ``SIMULATE = T``.
+    directory : str
+        Folder in which files are that the scene keeps only by their hash: that of the frame's own
+        file where it was read from one.
     """
 
     counts: AnyArray
@@ -88,6 +91,7 @@ class Frame:
     mask: AnyArray | None = None
     scene_files: Sequence[tuple[str, str, bytes]] = ()
     simulated: bool = True
+    directory: str = "."
 
     def __post_init__(self) -> None:
         counts = np.asarray(self.counts)
@@ -188,7 +192,7 @@ class Frame:
             parts["mask"] = np.where(parts["mask"], DEAD, 0).astype(np.uint8)
         if "psf" in parts:
             parts["psf"] = PsfImage(*parts["psf"])
-        return cls(**parts)
+        return cls(**parts, directory=os.path.dirname(os.path.abspath(os.fspath(path))))
 
 
 def _kept(array: AnyArray) -> AnyArray:

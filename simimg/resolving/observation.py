@@ -246,7 +246,7 @@ def _scene(frame: Frame) -> tuple[Scene | None, Train | None]:
     """The scene that a frame carries, and its train."""
     if not frame.scene_files:
         return None, None
-    scene = scene_from_record(frame.scene_files, name="frame", directory=".")
+    scene = scene_from_record(frame.scene_files, name="frame", directory=frame.directory)
     if scene.camera is None or scene.pixel_scale is None:
         raise InputError(
             mistake("frame", "SCENE", "has no camera", "measure a frame that simimg exposed")

@@ -23,7 +23,6 @@ from simimg.exposure import Prepared
 from simimg.frame import Frame
 from simimg.resolving.judging import NamedPair
 from simimg.resolving.observation import Observation, observe
-from simimg.resolving.pairlimits import Cuts
 from simimg.scene.file import scene_record
 
 
@@ -41,6 +40,8 @@ class Recipe:
         Pairs that will be looked at.
     scene_files : tuple of (name, sha256, content)
         The scene as a frame carries it.
+    directory : str
+        Folder in which files are that it keeps only by their hash.
     """
 
     light: AnyArray
@@ -48,6 +49,7 @@ class Recipe:
     seed: int
     pairs: tuple[NamedPair, ...]
     scene_files: tuple[tuple[str, str, bytes], ...]
+    directory: str
 
     @property
     def shape(self) -> tuple[int, int]:
@@ -68,6 +70,7 @@ class Recipe:
             seed=seed,
             pairs=tuple(pairs),
             scene_files=tuple(scene_record(prepared.scene)),
+            directory=str(prepared.scene.directory.absolute()),
         )
 
 
@@ -85,13 +88,17 @@ class Exposures:
             (hypot(p.second[0] - p.first[0], p.second[1] - p.first[1]) for p in recipe.pairs),
             default=0.0,
         )
-        blank = Frame(counts=np.zeros(recipe.shape, np.uint16), scene_files=recipe.scene_files)
+        blank = Frame(
+            counts=np.zeros(recipe.shape, np.uint16),
+            scene_files=recipe.scene_files,
+            directory=recipe.directory,
+        )
         self._observation = observe(blank, widest=widest)
 
     @property
-    def delivered(self) -> Cuts:
-        """Limits of the effective PSF."""
-        return self._observation.delivered
+    def blank(self) -> Observation:
+        """The observation without any exposure in it."""
+        return self._observation
 
     def one(self, number: int) -> Observation:
         """Exposure of this number."""

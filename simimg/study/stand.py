@@ -5,13 +5,14 @@ A stand holds what all trials of a scene share and can be set up in any process 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from simimg.arrays import FloatArray
 from simimg.resolving.judging import judge
 from simimg.resolving.observation import Observation
+from simimg.resolving.ownpsfs import OwnPsfs
 from simimg.resolving.pairlimits import PairLimits
 from simimg.study.exposures import Exposures, Recipe
 from simimg.study.knownpair import KnownPair
@@ -48,13 +49,16 @@ class Stand:
 
     def __init__(self, setup: Setup) -> None:
         self._draws = Exposures(setup.recipe)
-        self._limits = PairLimits(self._draws.delivered, pairs=_MANY)
         self._count = setup.exposures
         counts = [1] if self._count == 1 else [1, self._count]
+        own = OwnPsfs(self._draws.blank)
+        self._seen = [own.pair(pair) for pair in setup.recipe.pairs]
+        cuts = dict.fromkeys(one.delivered for one in self._seen)
+        self._limits = {one: PairLimits(one, pairs=_MANY) for one in cuts}
         self._pairs = [
             [
-                KnownPair.prepare(self._draws.noiseless(count), pair, alone=alone)
-                for pair, alone in zip(setup.recipe.pairs, setup.alone)
+                KnownPair.prepare(_as(self._draws.noiseless(count), seen), pair, alone=alone)
+                for pair, seen, alone in zip(setup.recipe.pairs, self._seen, setup.alone)
             ]
             for count in counts
         ]
@@ -79,11 +83,16 @@ class Stand:
             else:
                 begin = number * self._count
                 observation = self._draws.together(range(begin, begin + self._count))
-            for index, pair in enumerate(pairs):
-                results[kind, index] = self._measured(observation, pair)
+            for index, (pair, seen) in enumerate(zip(pairs, self._seen)):
+                results[kind, index] = self._measured(_as(observation, seen), pair)
         return results
 
     def _measured(self, observation: Observation, pair: KnownPair) -> FloatArray:
-        sighting, limits = pair.look(observation), self._limits
+        sighting, limits = pair.look(observation), self._limits[observation.delivered]
         judgement = judge(observation, sighting, limits, named=pair.named, verdicts_only=True)
         return kept(judgement.record)
+
+
+def _as(observation: Observation, seen: Observation) -> Observation:
+    """An exposure with the PSF of one of its pairs."""
+    return replace(observation, psf=seen.psf, delivered=seen.delivered, sourced=seen.sourced)

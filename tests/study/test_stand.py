@@ -116,7 +116,7 @@ def test_short_cut_finds_what_the_whole_search_finds(tmp_path, case):
     text, changes = CASES[case]
     made, pair, _ = draws(pair_scene(tmp_path, text, **changes))
     known = KnownPair.prepare(made.noiseless(), pair, alone=True)
-    limits = PairLimits(made.delivered, pairs=1000)
+    limits = PairLimits(made.blank.delivered, pairs=1000)
     quick = 0
     for number in range(40):
         observation = made.one(number)

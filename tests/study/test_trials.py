@@ -241,3 +241,34 @@ def test_wrong_wishes(tmp_path):
         trials(pair_scene(tmp_path, camera=None), count=3)
     alone = "\n".join(AIR.split("\n")[:-8]) + "\n"
     assert trials(pair_scene(tmp_path, alone), count=3) == []
+
+
+def test_trials_of_two_colours_are_those_of_measure(tmp_path):
+    scene = pair_scene(
+        tmp_path,
+        pair__0__temperatures=["20000 K", "3500 K"],
+        air__dispersion=True,
+        air__airmass=2.0,
+        pair__0__separation="1.6 arcsec",
+    )
+    told = trials(scene, count=6)[0]
+    seen = [simimg.measure(simimg.expose(scene, index=index))[0] for index in range(6)]
+    off = np.array([one.separation_arcsec - 1.6 for one in seen])
+    assert told.bias.separation_arcsec == pytest.approx(off.mean(), abs=1e-4)
+    assert told.scatter.separation_arcsec == pytest.approx(off.std(ddof=1), rel=1e-2)
+
+
+def test_files_too_large_to_keep_are_read_where_they_are(tmp_path, monkeypatch):
+    from astropy.io import fits
+
+    monkeypatch.setattr("simimg.scene.inputs.LARGEST_KEPT", 1000)
+    rows, columns = np.mgrid[:64, :64] - 31.5
+    fits.PrimaryHDU((np.hypot(rows, columns) < 31).astype(np.float32)).writeto(
+        tmp_path / "pupil.fits"
+    )
+    scene = pair_scene(tmp_path, telescope__pupil="pupil.fits")
+    assert trials(scene, count=2)[0].trials == 2
+    frame = simimg.expose(scene)
+    assert len(simimg.measure(frame)) == 1
+    frame.write(tmp_path / "frame.fits")
+    assert len(simimg.measure(simimg.Frame.read(tmp_path / "frame.fits"))) == 1
