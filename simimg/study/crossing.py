@@ -104,7 +104,7 @@ def _fit(place: FloatArray, count: FloatArray, won: FloatArray, level: float) ->
         return -float(found.fun)
 
     wide = high - low + 0.5 * span
-    grid = np.linspace(low - wide, high + wide, 241)
+    grid = np.linspace(low - wide, high + wide, 81)
     values = np.array([best(one) for one in grid])
     top = int(values.argmax())
     step = float(grid[1] - grid[0])

@@ -21,7 +21,7 @@ def test_rerun_at_the_answer_finds_the_target(tmp_path):
         "pair.0.separation",
         until="resolved=0.7",
         between=("0.5 arcsec", "1.5 arcsec"),
-        trials=300,
+        trials=150,
         workers=2,
     )
     assert found.reached
@@ -37,7 +37,7 @@ def test_rerun_at_the_answer_finds_the_target(tmp_path):
     assert _share(scene, off) < 0.7 - 5.0 * _ERROR
 
 
-_FRESH = 1500
+_FRESH = 800
 _ERROR = math.sqrt(0.7 * 0.3 / _FRESH)
 
 
@@ -82,8 +82,6 @@ def test_rayleigh_by_diffraction_is_solved_for_the_aperture(tmp_path):
     ("changes", "key", "between", "says"),
     [
         ({}, "camera.read_noise", ("1 electron", "9 electron"), r"resolution \(the air\)"),
-        ({"air": None, "telescope.aperture": "0.1 m", "camera.pixel_scale": "0.1 arcsec"},
-         "camera.read_noise", ("1 electron", "9 electron"), r"resolution \(the telescope\)"),
         ({"air": None, "pair.0.separation": "0.2 arcsec"}, "camera.read_noise",
          ("1 electron", "9 electron"), "sampling"),
         ({"pair.0.separation": "1.3 arcsec", "pair.0.electrons": ["60 electron", "60 electron"]},
