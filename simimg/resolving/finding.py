@@ -1,17 +1,14 @@
 """Pairs found in a frame that nobody pointed out.
 
-photutils finds what stands out; brightest first, each is fitted as a single star with the light of
-those already fitted taken off (which also drops the rings and spikes of bright stars that a finder
-takes for stars), twice over. What then shows a second star within two delivered FWHM, so good that
-no single star of the whole frame is likely to look that double, is a pair; what two stars do not
-explain, a galaxy say, is left out.
+Of the stars that are found, those that show a second star within two delivered FWHM, so good that
+no single star of the whole frame is likely to look that double, are pairs; stars in company are
+fitted together; what point sources do not explain, a galaxy say, is left out.
 
 Electrons and detector pixels.
 """
 
 from __future__ import annotations
 
-import warnings
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from math import hypot
@@ -22,36 +19,18 @@ from scipy.sparse import coo_matrix
 from scipy.sparse.csgraph import connected_components
 from scipy.spatial import cKDTree
 
-from simimg.arrays import AnyArray, FloatArray
 from simimg.resolving.crew import crew_map
-from simimg.resolving.doubles import probability_single
-from simimg.resolving.neighbours import CLEAR, PlacedStar, star_light
+from simimg.resolving.crowd import REACH, look_among
+from simimg.resolving.fieldsingles import SingleStar, single_at, without_fragments
+from simimg.resolving.neighbours import CLEAR, PlacedStar
 from simimg.resolving.observation import Observation
 from simimg.resolving.psfmodel import PsfModel
-from simimg.resolving.secondstar import scan_second_star
-from simimg.resolving.sighting import Sighting, look
-from simimg.resolving.starfit import Cutout, Likelihood, StarFit, fit_stars
-from simimg.resolving.width import WidthFit, fit_width
+from simimg.resolving.sighting import Sighting
+from simimg.resolving.starlist import LIGHT, find_stars
+from simimg.resolving.suspect import pair_at
 
-_THRESHOLD = 5.0  # standard deviations of the background at which a star is looked at
-_ACCEPTED = 6.0  # standard errors of its electrons at which it is kept
-_LIGHT = 8.0  # FWHM within which the light of another star is taken off
-_MOST = 5000
-_FALSE = 0.01  # chance that any single star of the frame passes for a pair
-_FITS = 1.5  # reduced chi-square within a FWHM that two point sources may leave
-_DEARER = 4.0  # deviance that two parameters more must win (Akaike 1974)
-_TILE = 512.0  # pixels of a side
 _BATCH = 40  # groups that a process takes at a time
-_COMPANY = 6  # neighbours fitted with a star
-_SHOWN = 10.0  # of a first screen's squared score: below this no fit can reach certainty
-
-
-@dataclass(frozen=True, eq=False)
-class SingleStar:
-    """A single object: its fit as a point and with a width, in the company of its neighbours."""
-
-    point: StarFit
-    wide: WidthFit
+_COMPANY = 7  # neighbours fitted with a star
 
 
 @dataclass(frozen=True, eq=False)
@@ -121,7 +100,7 @@ def search_field(
     tasks = []
     for group in groups:
         around = sorted(
-            {j for i in group for j in tree.query_ball_point(stars[i][:2], (_LIGHT + 4.0) * fwhm)}
+            {j for i in group for j in tree.query_ball_point(stars[i][:2], (LIGHT + 4.0) * fwhm)}
         )
         own = [around.index(i) for i in group]
         tasks.append(
@@ -137,7 +116,7 @@ def search_field(
         alone += [(group[i], star) for i, star in single]
     return FieldSearch(
         tuple(sighting for _, sighting in sorted(pairs, key=lambda one: one[0])),
-        tuple(star for _, star in sorted(alone, key=lambda one: one[0])),
+        tuple(without_fragments([star for _, star in sorted(alone, key=lambda one: one[0])], fwhm)),
     )
 
 
@@ -168,243 +147,131 @@ _Found = tuple[list[tuple[int, Sighting]], list[tuple[int, SingleStar]]]
 
 
 def _search_groups(observation: Observation, groups: Sequence[_Group]) -> list[_Found]:
-    return [_search_group(observation, group) for group in groups]
+    return [_Search(observation, group).found() for group in groups]
 
 
-def _search_group(observation: Observation, group: _Group) -> _Found:
-    """Pairs and singles of a group, by their number in it."""
-    fwhm, stars = observation.fwhm, group.stars
-    taken = list(group.taken)
-    pairs: list[tuple[int, Sighting]] = []
-    places = {i: number for number, i in enumerate(group.own)}
-    for number, index in enumerate(group.own):
-        if taken[number]:
-            continue
-        star = stars[index]
-        close = [
-            i
-            for i in group.own
-            if i != index and hypot(stars[i].x - star.x, stars[i].y - star.y) <= CLEAR * fwhm
-        ]
-        sighting = _pair_at(observation, stars, index, close, range(len(stars)), count=group.count)
-        if sighting is None or sighting.double is None:
-            continue
-        pairs.append((number, _psf_of(sighting, None)))
-        taken[number] = True
-        for other in close:
-            x, y = stars[other][:2]
-            near = np.hypot(*(sighting.double.places - (x, y)).T).min() < 0.5 * fwhm
-            taken[places[other]] = taken[places[other]] or bool(near)
-    if not group.singles:
-        return pairs, []
-    paired = [star for _, sighting in pairs for star in sighting.stars]
-    replaced = {i for number, i in enumerate(group.own) if taken[number] != group.taken[number]}
-    others = [star for i, star in enumerate(stars) if i not in replaced] + paired
-    alone = []
-    for number, index in enumerate(group.own):
-        if not taken[number]:
-            single = _single_at(observation, stars[index], others)
+class _Search:
+    """A group as it becomes known: its stars, those hidden at first, and the pairs they make."""
+
+    def __init__(self, observation: Observation, group: _Group) -> None:
+        self.observation = observation
+        self.group = group
+        self.stars = list(group.stars)
+        self.own = list(group.own)
+        self.given = {i for i, taken in zip(group.own, group.taken) if taken}
+        self.paired: set[int] = set()
+        self.pairs: list[tuple[int, Sighting]] = []
+
+    def found(self) -> _Found:
+        """Pairs and singles, by the number of their first star in the group."""
+        for number, index in enumerate(self.group.own):
+            if index not in self.given:
+                self._look(number, index)
+        alone = []
+        for number, index in enumerate(self.group.own if self.group.singles else []):
+            if index in self.given or index in self.paired:
+                continue
+            others = [star for i, star in enumerate(self.stars) if i != index]
+            single = single_at(self.observation, self.stars[index], others)
             if single is not None:
                 alone.append((number, single))
-    return pairs, alone
+        return self.pairs, alone
 
+    def _look(self, number: int, index: int) -> None:
+        """The pairs in which a star is the brighter."""
+        close = self._near(index, CLEAR)
+        fainter = [i for i in close if i not in self.paired and self._leader(i) == index]
+        if index in self.paired and not fainter:
+            return
+        if not close or (len(fainter) == 1 and len(self._near(index, REACH)) == 1):
+            sighting = self._alone(index, close)
+            if sighting is not None and self._settle(index, close, sighting):
+                self.pairs.append((number, _psf_of(sighting, None)))
+                return
+        if close:
+            self._among(number, index, fainter)
 
-def _single_at(
-    observation: Observation, star: PlacedStar, others: Sequence[PlacedStar]
-) -> SingleStar | None:
-    """A star fitted as a point and with a width, those within two FWHM fitted with it."""
-    fwhm = observation.fwhm
-    away = [hypot(one.x - star.x, one.y - star.y) for one in others]
-    close = [one for one, far in zip(others, away) if 0.0 < far <= CLEAR * fwhm][:_COMPANY]
-    known = [one for one, far in zip(others, away) if far > 0.0 and one not in close]
-    half = 3.0 * fwhm
-    for _ in range(2):
-        cutout = observation.cutout(star.x, star.y, half)
-        cutout = cutout.with_known(star_light(known, cutout))
-        point = fit_stars([cutout], places=[one[:2] for one in (star, *close)])
-        if not point.electrons[0] > 0.0:
-            return None
-        wide = fit_width(cutout, point)
-        wanted = 3.0 * fwhm + 2.5 * wide.width
-        if not wide.extended or wanted < half + fwhm:
-            break
-        half = wanted
-    return SingleStar(point, wide)
+    def _near(self, index: int, reach: float) -> list[int]:
+        """Stars within some FWHM of one, the nearest first."""
+        away = {i: self._apart(i, index) for i in self.own if i != index}
+        most = reach * self.observation.fwhm
+        near = [i for i, far in away.items() if far <= most and i not in self.given]
+        return sorted(near, key=lambda i: (away[i], i))[:_COMPANY]
+
+    def _apart(self, one: int, other: int) -> float:
+        a, b = self.stars[one], self.stars[other]
+        return hypot(a.x - b.x, a.y - b.y)
+
+    def _leader(self, index: int) -> int | None:
+        """The nearest brighter star within two FWHM, with which a star makes a pair."""
+        light = self.stars[index].electrons
+        brighter = [i for i in self._near(index, CLEAR) if self.stars[i].electrons >= light]
+        return brighter[0] if brighter else None
+
+    def _alone(self, index: int, close: Sequence[int]) -> Sighting | None:
+        """A pair of this star and at most one that was seen beside it."""
+        known = [star for i, star in enumerate(self.stars) if i != index and i not in close]
+        return pair_at(
+            self.observation,
+            self.stars[index],
+            close=len(close),
+            known=known,
+            count=self.group.count,
+        )
+
+    def _settle(self, index: int, close: Sequence[int], sighting: Sighting) -> bool:
+        """Put a pair's stars in place of what was seen, unless it leaves out the one beside it."""
+        assert sighting.double is not None
+        first, second = sighting.stars
+        if close:
+            seen = self.stars[close[0]]
+            if hypot(second.x - seen.x, second.y - seen.y) > hypot(
+                first.x - seen.x, first.y - seen.y
+            ):
+                first, second = second, first
+            if hypot(second.x - seen.x, second.y - seen.y) > 0.5 * self.observation.fwhm:
+                return False
+            self.stars[close[0]] = second
+            self.paired.add(close[0])
+        else:
+            self._add(second)
+        self.stars[index] = first
+        self.paired.add(index)
+        return True
+
+    def _add(self, star: PlacedStar) -> int:
+        """A star that was hidden: known from now on, and part of a pair."""
+        self.stars.append(star)
+        self.own.append(len(self.stars) - 1)
+        self.paired.add(len(self.stars) - 1)
+        return len(self.stars) - 1
+
+    def _among(self, number: int, index: int, fainter: Sequence[int]) -> None:
+        """The pairs of a star in company, all fitted together."""
+        near = self._near(index, REACH)
+        inside = {index, *near}
+        crowd = look_among(
+            self.observation,
+            self.stars[index],
+            [self.stars[i] for i in near],
+            wanted=[near.index(i) for i in fainter],
+            known=[star for i, star in enumerate(self.stars) if i not in inside],
+            count=self.group.count,
+        )
+        if crowd is None or not crowd.pairs:
+            return
+        for place, star in zip((index, *near), crowd.stars):
+            self.stars[place] = star
+        for member, sighting in crowd.pairs:
+            if member > len(near):
+                self._add(crowd.stars[member])
+            else:
+                self.paired.add(near[member - 1])
+            self.pairs.append((number, _psf_of(sighting, None)))
+        self.paired.add(index)
 
 
 def _psf_of(sighting: Sighting, psf: PsfModel | None) -> Sighting:
     """The sighting with another PSF in its cutouts: none on its way between processes."""
     cutouts = tuple(replace(one, psf=cast(PsfModel, psf)) for one in sighting.cutouts)
     return replace(sighting, cutouts=cutouts)
-
-
-def find_stars(observation: Observation, *, workers: int = 1) -> list[PlacedStar]:
-    """Find the stars of a frame, each fitted alone with the light of the others taken off.
-
-    Returns
-    -------
-    list of PlacedStar
-        By decreasing electrons, at most 5,000.
-    """
-    places = _detect(observation)
-    if not len(places):
-        return []
-    reach = _LIGHT * observation.fwhm
-    tiles = np.floor(places / _TILE).astype(np.int64)
-    tasks = []
-    for column, row in sorted({(int(a), int(b)) for a, b in tiles}):
-        inside = (tiles[:, 0] == column) & (tiles[:, 1] == row)
-        low = np.array([column, row]) * _TILE - reach
-        near = ((places >= low) & (places < low + _TILE + 2.0 * reach)).all(axis=1)
-        tasks.append((places[near], inside[near]))
-    parts = crew_map(_fit_tile, observation, tasks, workers=workers, stars=len(places))
-    kept = sorted((star for part in parts for star in part), key=lambda star: -star.electrons)
-    single: list[PlacedStar] = []
-    for star in kept:
-        if all(hypot(star.x - s.x, star.y - s.y) > 0.5 * observation.fwhm for s in single[-200:]):
-            single.append(star)
-    return single
-
-
-def _fit_tile(observation: Observation, task: tuple[FloatArray, AnyArray]) -> list[PlacedStar]:
-    """Fit the stars of a tile and of its rim, and return its own."""
-    places, inside = task
-    stars: list[PlacedStar | None] = [None] * len(places)
-    tree = cKDTree(places)
-    reach = _LIGHT * observation.fwhm
-    for _ in range(2):
-        for index, place in enumerate(places):
-            around = [
-                star
-                for i in tree.query_ball_point(place, reach)
-                if i != index and (star := stars[i]) is not None
-            ]
-            stars[index] = _fit_alone(observation, (place[0], place[1]), around)
-    return [star for star, own in zip(stars, inside) if own and star is not None]
-
-
-def _detect(observation: Observation) -> FloatArray:
-    """Places that stand out, brightest first, shape (n, 2)."""
-    from astropy.stats import sigma_clipped_stats
-    from photutils.detection import DAOStarFinder
-    from photutils.utils.exceptions import NoDetectionsWarning
-
-    electrons, good = observation.flattened(), observation.usable()
-    _, background, noise = sigma_clipped_stats(electrons, mask=~good, sigma=3.0, maxiters=5)
-    # A frame without noise of its own still has that of counting.
-    noise = max(float(noise), float(np.sqrt(max(background, 0.0) + observation.variance)), 0.3)
-    finder = DAOStarFinder(
-        fwhm=max(observation.fwhm, 1.2),
-        threshold=_THRESHOLD * noise,
-        n_brightest=_MOST,
-        min_separation=0.5 * observation.fwhm,
-    )
-    filled = np.where(good, electrons - background, _bright(electrons - background, good))
-    with warnings.catch_warnings():
-        warnings.simplefilter("ignore", NoDetectionsWarning)
-        table = finder(filled)
-    if table is None:
-        return np.empty((0, 2))
-    x, y = (
-        next(np.asarray(table[name]) for name in names if name in table.colnames)
-        for names in (("x_centroid", "xcentroid"), ("y_centroid", "ycentroid"))
-    )
-    order = np.argsort(-np.asarray(table["peak"]), kind="stable")
-    inside = [i for i in order if observation.holds(float(x[i]), float(y[i]))]
-    return np.column_stack([x[inside], y[inside]]).astype(np.float64)
-
-
-def _bright(electrons: FloatArray, good: AnyArray) -> float:
-    """What stands for pixels that do not count: a saturated star is still a star."""
-    return float(electrons[good].max(initial=0.0)) if good.any() else 0.0
-
-
-def _fit_alone(
-    observation: Observation, place: tuple[float, float], around: Sequence[PlacedStar]
-) -> PlacedStar | None:
-    """One star near a place; None when no star is left there."""
-    cutout = observation.cutout(*place, 1.2 * observation.fwhm)
-    if cutout.used.sum() < 9:
-        return None
-    cutout = cutout.with_known(star_light(around, cutout))
-    fit = fit_stars([cutout], places=[place])
-    x, y = (float(value) for value in fit.places[0])
-    error = float(np.sqrt(fit.covariance[2, 2]))
-    if not float(fit.electrons[0]) > _ACCEPTED * error or not observation.holds(x, y):
-        return None
-    if hypot(x - place[0], y - place[1]) > observation.fwhm:
-        return None
-    return PlacedStar(x, y, float(fit.electrons[0]))
-
-
-def _pair_at(
-    observation: Observation,
-    stars: Sequence[PlacedStar],
-    index: int,
-    close: Sequence[int],
-    around: Sequence[int],
-    *,
-    count: int,
-) -> Sighting | None:
-    """The pair that a star belongs to, or None."""
-    star = stars[index]
-    known = [stars[i] for i in around if i != index and i not in close]
-    if not close and not _looks_double(observation, star, known, count):
-        return None
-    sighting = look(observation, star[:2], known=known)
-    if sighting.double is None or not sighting.probability_single < _FALSE / count:
-        return None
-    apart = hypot(*(sighting.double.places[1] - sighting.double.places[0]))
-    if apart > 0.999 * CLEAR * observation.fwhm:
-        return None
-    if not _explained(sighting):
-        return None
-    if len(sighting.cutouts) == 1:
-        # A second star must explain the light better than a round width does.
-        wide = fit_width(
-            sighting.cutouts[0], fit_stars(sighting.cutouts, places=sighting.single.places)
-        )
-        if wide.deviance < sighting.double.deviance + _DEARER:
-            return None
-    return sighting
-
-
-def _looks_double(
-    observation: Observation, star: PlacedStar, known: Sequence[PlacedStar], count: int
-) -> bool:
-    """A quick look whether a fit of two stars could be worth its time."""
-    cutout = observation.cutout(star.x, star.y, 3.0 * observation.fwhm)
-    cutout = cutout.with_known(star_light(known, cutout))
-    fit = fit_stars([cutout], places=[star[:2]])
-    scan = scan_second_star([cutout], fit, radius=CLEAR * observation.fwhm, geometry=False)
-    # The scan's places are coarse and its score is to first order only: ask for half.
-    best = max(scan.highest, 0.0) ** 2
-    rough = probability_single(2.0 * best, area=40.0, rim=22.0)
-    return best > _SHOWN and rough < _FALSE / count
-
-
-def _explained(sighting: Sighting) -> bool:
-    """Whether two point sources leave no more than noise within a FWHM of either."""
-    fit = sighting.double
-    assert fit is not None
-    total, degrees = 0.0, 0
-    for index, cutout in enumerate(sighting.cutouts):
-        value, count = _chi_square(cutout, fit, index)
-        total, degrees = total + value, degrees + count
-    return degrees < 8 or total < _FITS * degrees
-
-
-def _chi_square(cutout: Cutout, fit: StarFit, index: int) -> tuple[float, int]:
-    """Pearson's chi-square of the pixels within a FWHM of a fitted star, and their number."""
-    model = Likelihood([cutout], len(fit.places)).jacobian(fit.own(index), 0)[0]
-    rows, columns = cutout.electrons.shape
-    x = cutout.x0 + np.arange(columns)
-    y = cutout.y0 + np.arange(rows)[:, None]
-    inside = np.zeros((rows, columns), dtype=bool)
-    for place in fit.places:
-        inside |= np.hypot(x - place[0], y - place[1]) <= cutout.psf.fwhm
-    inside &= cutout.used > 0
-    expected = model.reshape(rows, columns)
-    variance = np.maximum(expected, 0.0) + max(cutout.variance, 1e-3)
-    deviation = (cutout.electrons - expected) ** 2 / variance
-    return float(deviation[inside].sum()), int(inside.sum())

@@ -21,7 +21,8 @@ from simimg.errors import InputError, mistake
 from simimg.frame import Frame, PsfImage
 from simimg.resolving.advice import advise
 from simimg.resolving.asked import as_choice, as_frame
-from simimg.resolving.finding import SingleStar, search_field
+from simimg.resolving.fieldsingles import SingleStar
+from simimg.resolving.finding import search_field
 from simimg.resolving.given import Given
 from simimg.resolving.judging import NamedPair, judge
 from simimg.resolving.observation import Observation, observe

@@ -6,10 +6,11 @@ import numpy as np
 import pytest
 from numpy.testing import assert_allclose
 
-from simimg.resolving.finding import find_pairs, find_stars
+from simimg.resolving.finding import find_pairs
 from simimg.resolving.measure import measure
 from simimg.resolving.neighbours import PlacedStar, find_neighbours
 from simimg.resolving.observation import observe
+from simimg.resolving.starlist import find_stars
 from tests.resolving.scenes import frame, pair, star
 
 
