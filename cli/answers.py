@@ -38,6 +38,7 @@ class Answers:
         self._given = wanted.given()
         self._choice = wanted.choice()
         self.rows: list[Row] = []
+        self._alone: list[Row] = []
         self.warnings: list[str] = []
         self.simulated: list[bool] = []
 
@@ -63,7 +64,7 @@ class Answers:
             "warnings": list(found.warnings),
             "psf": plain(found.psf.to_dict()),
             "pairs": self._pairs(path, found),
-            "singles": [plain(single.to_dict()) for single in found.singles],
+            "singles": self._singles(path, found),
         }
 
     def together(self, paths: Sequence[str]) -> dict[str, Any]:
@@ -106,6 +107,7 @@ class Answers:
                 {"frame": path, **plain(psf.to_dict())} for path, psf in zip(paths, found.psfs)
             ],
             "pairs": self._pairs(paths[0], found.answer),
+            "singles": self._singles(paths[0], found.answer),
         }
 
     def _read(self, path: str) -> Frame:
@@ -122,12 +124,18 @@ class Answers:
         self.rows += [Row(path, pair, found.psf) for pair in found.pairs]
         return [{"file": path, **plain(pair.to_dict())} for pair in found.pairs]
 
+    def _singles(self, path: str, found: FrameMeasurement) -> list[dict[str, Any]]:
+        from simimg.resolving.recordtable import Row
+
+        self._alone += [Row(path, single, found.psf) for single in found.singles]
+        return [plain(single.to_dict()) for single in found.singles]
+
     def write(self, path: str, *, overwrite: bool) -> None:
         """Write all that was measured as a table."""
         from simimg.resolving.recordtable import write_records
 
         write_records(
-            self.rows,
+            [*self.rows, *self._alone],
             path,
             simulated=bool(self.simulated) and all(self.simulated),
             overwrite=overwrite,

@@ -9,7 +9,7 @@ Electrons and detector pixels.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, replace
 from math import hypot
 from typing import Any, cast
@@ -74,6 +74,7 @@ def search_field(
     besides: Sequence[tuple[float, float]] = (),
     singles: bool = True,
     workers: int = 1,
+    psf_at: Callable[[tuple[float, float]], PsfModel] | None = None,
 ) -> FieldSearch:
     """Find the pairs of a frame, and fit what is single.
 
@@ -86,6 +87,8 @@ def search_field(
         Whether single stars are fitted, too.
     workers : int, optional
         Processes at most; the result does not depend on it.
+    psf_at : callable, optional
+        The PSF at a place, where that of the observation does not hold everywhere.
     """
     stars = find_stars(observation, workers=workers)
     if not stars:
@@ -103,16 +106,19 @@ def search_field(
             {j for i in group for j in tree.query_ball_point(stars[i][:2], (LIGHT + 4.0) * fwhm)}
         )
         own = [around.index(i) for i in group]
+        psf = None if psf_at is None else psf_at(stars[group[0]][:2])
         tasks.append(
-            _Group([stars[i] for i in around], own, [taken[i] for i in group], count, singles)
+            _Group([stars[i] for i in around], own, [taken[i] for i in group], count, singles, psf)
         )
     size = max(1, min(_BATCH, len(tasks) // 8))
     batches = [tasks[i : i + size] for i in range(0, len(tasks), size)]
     pairs: list[tuple[int, Sighting]] = []
     alone: list[tuple[int, SingleStar]] = []
     answers = crew_map(_search_groups, observation, batches, workers=workers, stars=count)
-    for group, (seen, single) in zip(groups, (one for answer in answers for one in answer)):
-        pairs += [(group[i], _psf_of(sighting, observation.psf)) for i, sighting in seen]
+    found = (one for answer in answers for one in answer)
+    for group, task, (seen, single) in zip(groups, tasks, found):
+        psf = task.psf or observation.psf
+        pairs += [(group[i], _psf_of(sighting, psf)) for i, sighting in seen]
         alone += [(group[i], star) for i, star in single]
     return FieldSearch(
         tuple(sighting for _, sighting in sorted(pairs, key=lambda one: one[0])),
@@ -141,6 +147,7 @@ class _Group:
     taken: list[bool]
     count: int
     singles: bool
+    psf: PsfModel | None
 
 
 _Found = tuple[list[tuple[int, Sighting]], list[tuple[int, SingleStar]]]
@@ -155,6 +162,8 @@ class _Search:
 
     def __init__(self, observation: Observation, group: _Group) -> None:
         self.observation = observation
+        if group.psf is not None:
+            self.observation = replace(observation, psf=group.psf)
         self.group = group
         self.stars = list(group.stars)
         self.own = list(group.own)

@@ -13,15 +13,12 @@ from dataclasses import dataclass, replace
 from math import hypot, isfinite, log10, nan
 from typing import Any
 
-import numpy as np
-from scipy.spatial import cKDTree
-
 from simimg.arrays import AnyArray
 from simimg.errors import InputError, mistake
 from simimg.frame import Frame, PsfImage
 from simimg.resolving.advice import advise
 from simimg.resolving.asked import as_choice, as_frame
-from simimg.resolving.fieldsingles import SingleStar
+from simimg.resolving.fieldcheck import confirmed
 from simimg.resolving.finding import search_field
 from simimg.resolving.given import Given
 from simimg.resolving.judging import NamedPair, judge
@@ -32,6 +29,7 @@ from simimg.resolving.psfquality import PsfReport, judge_psf, psf_warnings
 from simimg.resolving.psfsource import PsfChoice
 from simimg.resolving.records import PairMeasurement, PairTruth, SingleMeasurement
 from simimg.resolving.sighting import Sighting, look
+from simimg.resolving.singlerecords import single_records
 
 Place = tuple[float, float]
 _Seen = tuple[Sighting, NamedPair | None]
@@ -124,7 +122,8 @@ def measure(
     observation = _observe(frame, near or (), named, given=given, psf=choice)
     own = OwnPsfs(observation)
     if near is None and not named:
-        return _records(own, _found(observation))
+        found = confirmed(own, search_field(observation, singles=False, psf_at=own.psf_at))
+        return _records(own, [(sighting, None) for sighting in found.pairs])
     return _records(own, [*_named(own, named), *_placed(own, near or ())])
 
 
@@ -166,8 +165,9 @@ def measure_frame(
     named = named_pairs(frame)
     observation = _observe(frame, places, named, given=given, psf=psf)
     besides = [*places, *_places(named)]
-    field = search_field(observation, besides=besides, workers=workers)
     own = OwnPsfs(observation)
+    field = search_field(observation, besides=besides, workers=workers, psf_at=own.psf_at)
+    field = confirmed(own, field)
     seen: list[_Seen] = [
         *_named(own, named),
         *_placed(own, places),
@@ -183,45 +183,10 @@ def measure_frame(
         pairs=tuple(records),
         psf=quality.report,
         warnings=(*observation.notes, *own.notes(named), *doubts),
-        singles=single_records(observation, field.singles),
+        singles=single_records(
+            observation, field.singles, floor=quality.floor(observation.sourced.noise)
+        ),
     )
-
-
-def single_records(
-    observation: Observation, stars: Sequence[SingleStar]
-) -> tuple[SingleMeasurement, ...]:
-    """Turn fitted single stars into records, with TRUTH's labels."""
-    table: Any = observation.frame.truth
-    labels = None
-    if table is not None and len(table) and {"label", "x", "y"} <= set(table.colnames):
-        at = np.column_stack([np.asarray(table["x"]), np.asarray(table["y"])])
-        finite = np.flatnonzero(np.isfinite(at).all(axis=1))
-        if finite.size:
-            labels = cKDTree(at[finite]), [str(table["label"][int(i)]) for i in finite]
-    records = []
-    for star in stars:
-        extended = star.wide.extended
-        place = star.wide.place if extended else star.point.places[0]
-        light, error = float(star.point.electrons[0]), float(np.sqrt(star.point.covariance[2, 2]))
-        if extended:
-            light, error = star.wide.electrons, star.wide.electrons_error
-        label = ""
-        if labels is not None:
-            away, nearest = labels[0].query(place)
-            label = labels[1][int(nearest)] if away < 0.5 * observation.fwhm else ""
-        records.append(
-            SingleMeasurement(
-                x=float(place[0]),
-                y=float(place[1]),
-                electrons=light * observation.excess,
-                electrons_error=error * observation.excess,
-                verdict="extended" if extended else "point",
-                width_arcsec=star.wide.width * observation.arcsec,
-                width_error_arcsec=star.wide.width_error * observation.arcsec,
-                label=label,
-            )
-        )
-    return tuple(records)
 
 
 def named_pairs(frame: Frame) -> list[NamedPair]:
@@ -311,12 +276,6 @@ def _named(own: OwnPsfs, named: Sequence[NamedPair]) -> list[_Seen]:
 
 def _placed(own: OwnPsfs, places: Sequence[Place]) -> list[_Seen]:
     return [(look(own.place(place), place), None) for place in places]
-
-
-def _found(observation: Observation, besides: Sequence[Place] = ()) -> list[_Seen]:
-    from simimg.resolving.finding import find_pairs
-
-    return [(sighting, None) for sighting in find_pairs(observation, besides=besides)]
 
 
 def _records(own: OwnPsfs, seen: Sequence[_Seen]) -> list[PairMeasurement]:

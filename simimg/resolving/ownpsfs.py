@@ -7,6 +7,7 @@ first object there, or near there: places are rounded to a sixteenth of the fram
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import replace
 from math import hypot
 
@@ -18,7 +19,9 @@ from simimg.resolving.psfmodel import PsfModel
 from simimg.resolving.psfsource import transfer_psf
 from simimg.resolving.starpsfs import StarPsfs, displacement_note
 
+Place = tuple[float, float]
 _CELLS = 16
+_SEARCHED = 8  # cells along a side for a search of the whole frame
 
 
 class OwnPsfs:
@@ -48,17 +51,35 @@ class OwnPsfs:
         psf = self._psfs.pair(row, int(self._psfs.found.partner[row]))
         return self._seen(psf.mean, named)
 
-    def place(self, place: tuple[float, float]) -> Observation:
-        """As a star at a place is seen."""
+    def place(self, place: Place, *, exact: bool = False, cells: int = _CELLS) -> Observation:
+        """As a star at a place is seen.
+
+        Parameters
+        ----------
+        place : (x, y)
+        exact : bool, optional
+            Whether the very place counts, not the middle of its cell.
+        cells : int, optional
+            Along a side of the frame.
+        """
         train = self._base.train
         if self._psfs is None or train is None:
             return self._base
         rows, columns = self._base.frame.counts.shape
-        x, y = (
-            0.5 * (size - 1) + size / _CELLS * round((at - 0.5 * (size - 1)) * _CELLS / size)
-            for at, size in zip(place, (columns, rows), strict=True)
-        )
+        x, y = place
+        if not exact:
+            x, y = (
+                0.5 * (size - 1) + size / cells * round((at - 0.5 * (size - 1)) * cells / size)
+                for at, size in zip(place, (columns, rows), strict=True)
+            )
         return self._seen(train.star(train.first, x, y), None)
+
+    @property
+    def psf_at(self) -> Callable[[Place], PsfModel] | None:
+        """The PSF of a star near a place, where it is not the same everywhere."""
+        if self._psfs is None:
+            return None
+        return lambda place: self.place(place, cells=_SEARCHED).psf
 
     def of(self, psf: PsfModel) -> Observation:
         """The observation of which a PSF is."""

@@ -90,6 +90,21 @@ class PsfQuality:
     error: float
     typical: float
 
+    @property
+    def sure(self) -> bool:
+        """Whether the misfit stands out of the noise."""
+        return isfinite(self.misfit) and self.misfit > _SURE * self.error
+
+    def floor(self, noise: float) -> float:
+        """Deviance over squared signal to noise that the PSF leaves in any star, 0 or more.
+
+        Parameters
+        ----------
+        noise : float
+            The same, that the PSF has from the noise of the stars it was measured from.
+        """
+        return max(self.misfit if self.sure else 0.0, noise)
+
 
 @dataclass(frozen=True)
 class _Judged:
@@ -145,15 +160,13 @@ def psf_warnings(
         What was measured.
     """
     source, report = observation.sourced, quality.report
-    sure = isfinite(quality.misfit) and quality.misfit > _SURE * quality.error
-    if sure and quality.misfit > source.noise:
-        misfit = quality.misfit
+    misfit = quality.floor(source.noise)
+    if misfit > source.noise:
         cause = (
             f"the PSF leaves a reduced chi-square of {report.reduced_chi_square:.3g} in "
             f"{_count(report.stars, 'single star')} of the frame"
         )
     else:
-        misfit = source.noise
         cause = f"the PSF rests on {_count(len(source.stars), 'star')} and has their noise"
     powers = [(name, signal_power(observation, one)) for name, one in seen if not one.empty]
     if not powers and isfinite(quality.typical):
@@ -180,10 +193,14 @@ def _count(number: int, what: str) -> str:
 def signal_power(observation: Observation, sighting: Sighting) -> float:
     """Square of the signal to noise of all the light of a sighting, as if it were one star."""
     fit = sighting.double or sighting.single
-    electrons = float(fit.electrons.sum())
-    background = max(float(fit.background.min()), 0.0) + observation.variance
+    return star_power(observation, float(fit.electrons.sum()), float(fit.background.min()))
+
+
+def star_power(observation: Observation, electrons: float, background: float) -> float:
+    """Square of the signal to noise of a star of these electrons on this background a pixel."""
     share = _share(observation)
-    return float(((electrons * share) ** 2 / (electrons * share + background)).sum())
+    noise = electrons * share + max(background, 0.0) + observation.variance
+    return float(((electrons * share) ** 2 / noise).sum())
 
 
 def _share(observation: Observation) -> FloatArray:

@@ -115,9 +115,10 @@ class SingleMeasurement:
     x, y : float
         Pixels.
     electrons, electrons_error : float
+        Of several frames measured together: of the first, from all of them.
     verdict : str
-        ``"extended"`` where a point source would look so wide with a chance below 0.01, else
-        ``"point"``.
+        ``"extended"`` where a point source would look so wide with a chance below 0.01, what the
+        PSF's own misfit may feign allowed for, else ``"point"``.
     width_arcsec, width_error_arcsec : float
         Intrinsic standard deviation of a round Gaussian, 0 where it is no wider than the PSF, and
         how far it rises for one standard error of its square.

@@ -1,6 +1,7 @@
 """Measurements as a table file: ECSV for people and programs, or a FITS binary table.
 
-One row a pair, with units and a word on every column; the same measurements give the same bytes.
+One row a pair or a single object, with units and a word on every column, empty where a column does
+not apply; the same measurements give the same bytes.
 """
 
 from __future__ import annotations
@@ -20,13 +21,14 @@ from simimg.fits.hdus import Column
 from simimg.fits.writer import write_table_file
 from simimg.newfile import check_new_file, new_file
 from simimg.resolving.psfquality import PsfReport
-from simimg.resolving.records import PairMeasurement
+from simimg.resolving.records import PairMeasurement, SingleMeasurement
 
 FORMATS = (".ecsv", ".fits")
 
 _PLACE = "pixels from 0 at the centre of the first pixel"
 # Attribute, unit, what it holds; a dot leads into a part of the record.
 _COLUMNS = (
+    ("kind", "", "pair, or a single object"),
     ("label", "", "of the first star in TRUTH; empty for a place or a find"),
     ("x", "pix", f"first star, {_PLACE}"),
     ("y", "pix", f"first star, {_PLACE}"),
@@ -51,19 +53,30 @@ _COLUMNS = (
     ("sparrow.limit_arcsec", "arcsec", "delivered limit, for the pair's difference"),
     ("sparrow.probability", "", "that the pair lies beyond the limit"),
     ("sparrow.verdict", "", "resolved, borderline or unresolved"),
+    ("electrons", "", "electrons of a single object"),
+    ("electrons_error", "", "standard error, electrons"),
+    ("verdict", "", "of a single object: point or extended"),
+    ("width_arcsec", "arcsec", "of a single object, beyond the PSF: standard deviation"),
+    ("width_error_arcsec", "arcsec", "standard error"),
     ("truth.separation_arcsec", "arcsec", "as put into a simulated frame"),
     ("truth.position_angle_deg", "deg", "as put into a simulated frame"),
     ("truth.magnitude_difference", "mag", "as put into a simulated frame"),
 )
+_TEXT = ("kind", "label", "rayleigh.verdict", "sparrow.verdict", "verdict")
 
 
 @dataclass(frozen=True)
 class Row:
-    """A measured pair, the file that it was measured in, and the PSF with which."""
+    """A measured pair or single object, the file it is in, and the PSF it was measured with."""
 
     file: str
-    pair: PairMeasurement
+    record: PairMeasurement | SingleMeasurement
     psf: PsfReport
+
+    @property
+    def kind(self) -> str:
+        """What was measured: pair or single."""
+        return "pair" if isinstance(self.record, PairMeasurement) else "single"
 
 
 def check_table(path: str | os.PathLike[str], *, overwrite: bool = False) -> list[str]:
@@ -114,7 +127,7 @@ def write_records(
         write_table_file(
             path,
             columns,
-            name="PAIRS",
+            name="MEASURED",
             simulated=simulated,
             overwrite=overwrite,
             says=[f"warning: {text}" for text in warnings],
@@ -130,9 +143,10 @@ def _columns(rows: Sequence[Row]) -> list[Column]:
     """The table's columns."""
     columns = [Column("file", _values([row.file for row in rows], text=True), "", "measured in")]
     for name, unit, says in _COLUMNS:
-        values = [_part(row.pair, name) for row in rows]
-        text = name in ("label", "rayleigh.verdict", "sparrow.verdict")
+        text = name in _TEXT
         flag = name in ("elongated", "ambiguous_180")
+        nothing: Any = False if flag else "" if text else nan
+        values = [row.kind if name == "kind" else _part(row.record, name, nothing) for row in rows]
         held = np.array(values, dtype=bool) if flag else _values(values, text=text)
         columns.append(Column(name.replace(".", "_"), held, unit, says))
     columns.append(
@@ -146,18 +160,17 @@ def _columns(rows: Sequence[Row]) -> list[Column]:
             "of the frame's single stars",
         )
     )
-    columns.append(
-        Column("advice", _values([row.pair.advice for row in rows], text=True), "", "in words")
-    )
+    advice = [_part(row.record, "advice", "") for row in rows]
+    columns.append(Column("advice", _values(advice, text=True), "", "in words"))
     return columns
 
 
-def _part(pair: PairMeasurement, name: str) -> Any:
-    """A value of a record, or NaN where the part that holds it is not there."""
-    value: Any = pair
+def _part(record: PairMeasurement | SingleMeasurement, name: str, nothing: Any) -> Any:
+    """A value of a record, or what stands for one that the record does not have."""
+    value: Any = record
     for part in name.split("."):
-        value = None if value is None else getattr(value, part)
-    return nan if value is None else value
+        value = getattr(value, part, None)
+    return nothing if value is None else value
 
 
 def _values(values: Sequence[Any], *, text: bool = False) -> Any:

@@ -22,7 +22,8 @@ from simimg.frame import Frame
 from simimg.resolving.advice import advise
 from simimg.resolving.alignment import frame_view, transferred
 from simimg.resolving.doubles import probability_single
-from simimg.resolving.finding import find_pairs
+from simimg.resolving.fieldsingles import SingleStar
+from simimg.resolving.finding import search_field
 from simimg.resolving.given import Given
 from simimg.resolving.judging import NamedPair, judge
 from simimg.resolving.layout import FIRST, View
@@ -36,6 +37,7 @@ from simimg.resolving.psfsource import PsfChoice
 from simimg.resolving.records import PairMeasurement
 from simimg.resolving.secondstar import scan_second_star
 from simimg.resolving.sighting import Sighting, locate, look
+from simimg.resolving.singlerecords import joint_singles
 from simimg.resolving.stackedcut import StackedDirections
 from simimg.resolving.starfit import Cutout, StarFit, fit_stars
 
@@ -97,10 +99,11 @@ def measure_together(
     named = named_pairs(first)
     known = [*places, *(place for pair in named for place in (pair.first, pair.second))]
     observations = _observations(frames, known, named, given, psf, names)
+    found, alone = _found(observations, known)
     targets: list[tuple[Place, NamedPair | None]] = [
         *((pair.first, pair) for pair in named),
         *((place, None) for place in places),
-        *((place, None) for place in _found(observations, known)),
+        *((place, None) for place in found),
     ]
     seen = [(_look(observations, place, pair), pair, place) for place, pair in targets]
     records: list[PairMeasurement] = []
@@ -109,7 +112,7 @@ def measure_together(
         judgement = judge(whole, joint.sighting, PairLimits(joint.delivered), named=pair)
         advice = advise(whole, judgement, brief=True)
         records.append(replace(judgement.record, advice=advice))
-    psfs, warnings = [], []
+    psfs, warnings, floors = [], [], []
     for number, (observation, name) in enumerate(zip(observations, names)):
         apart = [p for one in known if (p := transferred(one, first, frames[number])) is not None]
         quality = judge_psf(observation, apart=apart)
@@ -118,9 +121,15 @@ def measure_together(
             for record, (joint, _, _) in zip(records, seen)
         ]
         psfs.append(quality.report)
+        floors.append(quality.floor(observation.sourced.noise))
         doubts = psf_warnings(observation, quality, looked)
         warnings += [f"{name}: {text}" for text in (*observation.notes, *doubts)]
-    answer = FrameMeasurement(pairs=tuple(records), psf=psfs[0], warnings=tuple(warnings))
+    answer = FrameMeasurement(
+        pairs=tuple(records),
+        psf=psfs[0],
+        warnings=tuple(warnings),
+        singles=joint_singles(observations, alone, floors=floors, apart=[*known, *found]),
+    )
     return Together(answer, tuple(psfs))
 
 
@@ -160,17 +169,22 @@ def _observations(
     return observations
 
 
-def _found(observations: Sequence[Observation], known: Sequence[Place]) -> list[Place]:
-    """Places of pairs that any of the frames shows, in the first frame's pixels."""
+def _found(
+    observations: Sequence[Observation], known: Sequence[Place]
+) -> tuple[list[Place], list[Sequence[SingleStar]]]:
+    """Places of pairs that any of the frames shows, in the first's pixels; each frame's singles."""
     first = observations[0]
     found: list[Place] = []
+    alone: list[Sequence[SingleStar]] = []
     for observation in observations:
         there = [
             p
             for one in (*known, *found)
             if (p := transferred(one, first.frame, observation.frame)) is not None
         ]
-        for sighting in find_pairs(observation, besides=there):
+        field = search_field(observation, besides=there)
+        alone.append(field.singles)
+        for sighting in field.pairs:
             if sighting.double is None:
                 continue
             x, y = (float(value) for value in sighting.double.places[0])
@@ -180,7 +194,7 @@ def _found(observations: Sequence[Observation], known: Sequence[Place]) -> list[
                 hypot(back[0] - p[0], back[1] - p[1]) > apart for p in (*known, *found)
             ):
                 found.append(back)
-    return found
+    return found, alone
 
 
 @dataclass(frozen=True, eq=False)

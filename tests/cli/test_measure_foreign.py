@@ -198,8 +198,12 @@ class TestSeveral:
         assert result.code == 0
         assert result.err == ""
         table = Table.read(f"t.{ending}", **({"hdu": 1} if ending == "fits" else {}))
-        assert list(table["file"]) == two
-        assert_allclose(table["separation_arcsec"], 1.04, rtol=0.1)
+        pairs, singles = (table[table["kind"] == kind] for kind in ("pair", "single"))
+        assert list(pairs["file"]) == two
+        assert_allclose(pairs["separation_arcsec"], 1.04, rtol=0.1)
+        assert len(singles) > 0
+        assert set(singles["verdict"]) <= {"point", "extended"}
+        assert np.all(singles["electrons"] > 6.0 * singles["electrons_error"])
         assert run("measure", *two, *PLAIN, "-o", f"t.{ending}").code == 2
         assert run("measure", two[0], *PLAIN, "-q", "-o", f"t.{ending}", "--overwrite").code == 0
 

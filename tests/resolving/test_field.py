@@ -6,10 +6,13 @@ from dataclasses import replace
 from math import hypot
 
 import numpy as np
+import pytest
 from numpy.testing import assert_allclose
 from scipy.spatial import cKDTree
 
+from simimg.resolving.finding import search_field
 from simimg.resolving.measure import measure_frame
+from simimg.resolving.observation import observe
 from tests.resolving.scenes import frame, pair, star
 
 DISC = """
@@ -99,3 +102,55 @@ def test_sixty_pairs_among_three_hundred_single_stars():
     assert_allclose(np.std(deviation), 1.0, atol=0.17)
     # A point passes for wide with a chance of 0.01: of 300, nine or more have one of 0.004.
     assert sum(single.verdict == "extended" for single in answer.singles) < 9
+
+
+COMA = ['telescope.field={ coma = "40 nm", radius = "3 arcsec" }', "band.nodes=1"]
+
+
+def test_stars_in_growing_coma_are_points_and_a_pair_among_them_is_found():
+    """With the PSF of the middle of the field the stars of the corners look double or wide."""
+    places = [(24.3, 23.8), (140.2, 139.9), (82.4, 80.3)]
+    objects = "".join(star(3e5, f"x = {x}\ny = {y}") for x, y in places)
+    objects += pair("0.07 arcsec", 40.0, (2e5, 1.2e5), "x = 81.2\ny = 138.3")
+    shot = frame(objects, columns=165, rows=165, overrides=COMA, air=False)
+    unseen = replace(shot, truth=None)
+    answer = measure_frame(unseen)
+    (found,) = answer.pairs
+    assert_allclose(
+        (found.separation_arcsec, found.position_angle_deg, found.magnitude_difference),
+        (0.07, 40.0, 2.5 * np.log10(2e5 / 1.2e5)),
+        atol=4.0 * max(found.separation_error_arcsec, 1e-3),
+        rtol=0.02,
+    )
+    assert len(answer.singles) == len(places)
+    assert [single.verdict for single in answer.singles].count("point") == len(places)
+    central = search_field(observe(unseen))
+    wrong = len(central.pairs) - 1 + sum(single.wide.extended for single in central.singles)
+    assert wrong >= 2
+
+
+GALAXY = """
+[[galaxy]]
+label = "G"
+x = 62.4
+y = 55.7
+electrons = 3e6
+sersic_index = {index}
+effective_radius = "{radius} arcsec"
+axis_ratio = 0.5
+position_angle = "30 deg"
+"""
+
+
+@pytest.mark.parametrize(("index", "radius"), [(1.0, 2.0), (4.0, 2.5), (1.0, 4.0)])
+def test_a_large_galaxy_is_one_object_and_a_star_on_it_another(index, radius):
+    galaxy = GALAXY.format(index=index, radius=radius)
+    shot = frame(galaxy + star(2e5, "x = 20.3\ny = 95.1"), columns=125, rows=115)
+    answer = measure_frame(replace(shot, truth=None))
+    assert answer.pairs == ()
+    assert sorted(single.verdict for single in answer.singles) == ["extended", "point"]
+    shot = frame(galaxy + star(2e5, "x = 78.3\ny = 61.1"), columns=125, rows=115)
+    answer = measure_frame(replace(shot, truth=None))
+    assert answer.pairs == ()
+    near = [single for single in answer.singles if hypot(single.x - 78.3, single.y - 61.1) < 0.5]
+    assert len(near) == 1

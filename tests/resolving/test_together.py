@@ -16,6 +16,7 @@ from simimg.resolving.asked import as_choice, as_frame
 from simimg.resolving.cutout import Cutout
 from simimg.resolving.given import Given
 from simimg.resolving.layout import FIRST, Layout, View, turned
+from simimg.resolving.measure import measure_frame
 from simimg.resolving.pairfit import fit_pair, pair_geometry
 from simimg.resolving.starfit import Likelihood, fit_stars
 from simimg.resolving.together import measure_together
@@ -265,3 +266,32 @@ def test_places_go_from_frame_to_frame():
         # Linear over a few pixels of a quarter arcsecond.
         assert_allclose(view.place(x, y), wanted, atol=1e-5)
     assert transferred((3.0, 4.0), replace(first, wcs=None), second) == (3.0, 4.0)
+
+
+def test_single_objects_of_two_frames_are_told_once_and_better():
+    """A star and a small galaxy: electrons at the first frame's scale, errors of both frames."""
+    objects = scenes.star(1e5, "x = 25.3\ny = 60.1", label="S") + (
+        '[[galaxy]]\nlabel = "G"\nx = 62.4\ny = 31.7\nelectrons = 60000\nsersic_index = 1.0\n'
+        'effective_radius = "0.3 arcsec"\n'
+    )
+    one = scenes.frame(objects)
+    longer = scenes.frame(objects, index=1)
+    both = measure_together([one, longer]).answer
+    assert [single.label for single in both.singles] == ["S", "G"]
+    assert [single.verdict for single in both.singles] == ["point", "extended"]
+    alone = measure_frame(one).singles
+    for joint, single in zip(both.singles, alone):
+        assert_allclose(joint.electrons_error, single.electrons_error / np.sqrt(2.0), rtol=0.02)
+        assert abs(joint.electrons - single.electrons) < 3.0 * single.electrons_error
+    assert_allclose(
+        both.singles[1].width_error_arcsec, alone[1].width_error_arcsec / np.sqrt(2.0), rtol=0.1
+    )
+
+
+def test_a_pair_of_one_frame_is_no_single_star_of_another():
+    objects = scenes.pair("0.6 arcsec", 40.0, (2e5, 1.5e5), "x = 45.3\ny = 44.1")
+    bright = replace(scenes.frame(objects), truth=None)
+    dim = scenes.frame(scenes.pair("0.6 arcsec", 40.0, (3e3, 1.5e3), "x = 45.3\ny = 44.1"), index=1)
+    answer = measure_together([replace(dim, truth=None), bright]).answer
+    assert len(answer.pairs) == 1
+    assert answer.singles == ()
