@@ -2,20 +2,21 @@
 
 from __future__ import annotations
 
-import textwrap
 from collections.abc import Sequence
-from typing import TYPE_CHECKING
+from math import hypot
+from typing import TYPE_CHECKING, Any
 
 import click
 
-from simimg.errors import InputError
+from simimg.errors import InputError, mistake
 from simimg_cli import options
-from simimg_cli.output import document, say
+from simimg_cli.output import document, paragraph, say
 from simimg_cli.scenes import named
 
 if TYPE_CHECKING:
     from simimg.frame import Frame
     from simimg.resolving.records import PairMeasurement
+    from simimg.study.trials import PairTrials
 
 
 @click.command("figure")
@@ -52,6 +53,14 @@ if TYPE_CHECKING:
     metavar="N",
     help="Iterations of the restored view; 30 unless given.",
 )
+@click.option(
+    "--trials",
+    type=click.IntRange(1, 1_000_000),
+    metavar="N",
+    help="Expose and measure N noise draws; the caption then gives the probability of a split.",
+)
+@options.width
+@options.workers
 @options.overwrite
 @options.as_json
 @options.quiet
@@ -65,6 +74,9 @@ def command(
     near: tuple[float, float] | None,
     restored: bool,
     iterations: int | None,
+    trials: int | None,
+    width: float | None,
+    workers: int | None,
     overwrite: bool,
     as_json: bool,
     quiet: bool,
@@ -75,10 +87,11 @@ def command(
     be a scene, too, and its optics are drawn.
     """
     if what is not None:
-        if pair is not None or near is not None or restored or iterations is not None:
+        others = (pair, near, iterations, trials, workers)
+        if restored or any(one is not None for one in others):
             raise click.UsageError("--what draws a scene's optics, not a frame; leave out the rest")
         _draw_optics(
-            frame, overrides, without, what, output, overwrite, as_json=as_json, quiet=quiet
+            frame, overrides, without, what, output, overwrite, width, as_json=as_json, quiet=quiet
         )
         return
     if overrides or without:
@@ -87,6 +100,8 @@ def command(
         raise click.UsageError("--pair and --near name two subjects; give one of them")
     if iterations is not None and not restored:
         raise click.UsageError("--iterations goes with --restored")
+    if workers is not None and trials is None:
+        raise click.UsageError("--workers goes with --trials")
     from simimg.frame import Frame
     from simimg.newfile import check_new_file
 
@@ -95,11 +110,17 @@ def command(
         raise InputError(*mistakes)
     read = Frame.read(frame)
 
+    from simimg.show.canvas import PAGE, figure_format
     from simimg.show.figure import write_figure
     from simimg.show.restored import ITERATIONS
 
+    figure_format(output, overwrite=overwrite)
     with named(frame):
         chosen, measurement = _subject(read, pair, near)
+        tried = None
+        if trials is not None:
+            measurement = _measured(read, chosen) if measurement is None else measurement
+            tried = _tried(frame, measurement, trials, workers, quiet=quiet or as_json)
         caption = write_figure(
             read,
             output,
@@ -107,12 +128,16 @@ def command(
             pair=chosen,
             measurement=measurement,
             restored=(iterations or ITERATIONS) if restored else None,
+            trials=tried,
+            width=PAGE if width is None else width,
         )
     if as_json:
-        payload = {"frame": frame, "figure": output, "caption": caption}
+        payload: dict[str, Any] = {"frame": frame, "figure": output, "caption": caption}
+        if tried is not None:
+            payload["trials"] = tried.to_dict()
         say(document(payload, scene_id=read.scene_id, simulated=read.simulated))
     elif not quiet:
-        say(textwrap.fill(caption, 96))
+        say(paragraph(caption))
 
 
 def _draw_optics(
@@ -122,6 +147,7 @@ def _draw_optics(
     what: Sequence[str],
     output: str,
     overwrite: bool,
+    width: float | None,
     *,
     as_json: bool,
     quiet: bool,
@@ -134,12 +160,12 @@ def _draw_optics(
 
     from simimg.show.optics import write_optics
 
-    caption = write_optics(scene, output, what=what, overwrite=overwrite)
+    caption = write_optics(scene, output, what=what, overwrite=overwrite, width=width)
     if as_json:
         payload = {"scene": path, "figure": output, "caption": caption}
         say(document(payload, scene_id=scene_id(scene)))
     elif not quiet:
-        say(textwrap.fill(caption, 96))
+        say(paragraph(caption))
 
 
 def _subject(
@@ -153,3 +179,42 @@ def _subject(
     if pair is None or frame.truth is None or pair in list(frame.truth["label"]):
         return pair, None
     return (int(pair) if pair.isdecimal() and len(pair) < 9 else pair), None
+
+
+def _measured(frame: Frame, pair: str | int | None) -> PairMeasurement | None:
+    """What is measured of the pair that the figure shows."""
+    from simimg.resolving.measure import measure
+    from simimg.show.subject import choose_pair
+
+    return choose_pair(measure(frame), pair)
+
+
+def _tried(
+    path: str,
+    measurement: PairMeasurement | None,
+    count: int,
+    workers: int | None,
+    *,
+    quiet: bool,
+) -> PairTrials:
+    """Noise draws of the pair that the figure shows, by the scene that the frame carries.
+
+    Raises
+    ------
+    InputError
+        The frame carries no scene, or what is shown is no pair of it.
+    """
+    from simimg.study.trials import trials
+    from simimg_cli.progress import progress_bar
+    from simimg_cli.scenes import open_scene
+    from simimg_cli.trials import workers_for
+
+    scene = open_scene(path).scene
+    with progress_bar("trials", quiet=quiet) as progress:
+        pairs = trials(scene, count=count, workers=workers or workers_for(count), progress=progress)
+    if pairs and measurement is not None and measurement.truth is not None:
+        # The frame's measured place is within the noise of the scene's.
+        return min(pairs, key=lambda one: hypot(one.x - measurement.x, one.y - measurement.y))
+    raise InputError(
+        mistake(path, "--trials", "what is shown is no pair of the scene", "name one by --pair")
+    )

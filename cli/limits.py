@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import textwrap
 from collections.abc import Sequence
 from datetime import datetime, timedelta
 from typing import TYPE_CHECKING
@@ -10,7 +9,7 @@ from typing import TYPE_CHECKING
 import click
 
 from simimg_cli import options
-from simimg_cli.output import document, say, table, warn
+from simimg_cli.output import document, paragraph, say, table, warn
 from simimg_cli.words import NONE, arcsec, figures, short
 
 if TYPE_CHECKING:
@@ -170,7 +169,7 @@ def _print(found: Limits, heading: str) -> None:
         _print_objects(found.objects)
     for text in found.notes:
         say()
-        say(textwrap.fill(text, 96))
+        say(paragraph(text))
 
 
 def _optional_rows(found: Limits) -> list[tuple[str, str, str]]:

@@ -33,6 +33,7 @@ COMMANDS = {
     "calibrate": "Make bias, dark and flat frames of a scene's camera.",
     "inject": "Put a scene's objects into a frame that exists.",
     "figure": "Draw a frame and a pair's profile for a proposal.",
+    "report": "One page: frame, limits, how sure a split is, and why.",
 }
 
 INTERRUPTED = 130
@@ -113,7 +114,9 @@ def _show_warning(message: Warning | str, *_: Any, **__: Any) -> None:
     click.echo(printable(f"simimg: warning: {first}"), err=True)
 
 
-@click.group(cls=Commands, context_settings={"help_option_names": ["-h", "--help"]})
+@click.group(
+    cls=Commands, context_settings={"help_option_names": ["-h", "--help"], "max_content_width": 120}
+)
 @click.version_option(__version__, prog_name="simimg", message="%(prog)s %(version)s")
 def simimg() -> None:
     """What a telescope's detector will record, and whether two stars will come apart.

@@ -13,7 +13,7 @@ from simimg.errors import InputError
 from simimg_cli import options
 from simimg_cli.answers import Answers, answers_document
 from simimg_cli.foreign import Wanted, frame_options
-from simimg_cli.output import note, say, table, warn
+from simimg_cli.output import note, page_width, say, table, warn
 from simimg_cli.progress import with_progress
 from simimg_cli.trials import run_trials
 from simimg_cli.words import arcsec, figures, probability, short, with_error, with_interval
@@ -64,7 +64,7 @@ _SOURCES = {
     "-o",
     type=click.Path(),
     metavar="TABLE",
-    help="Write a table, too, a row for each pair: .ecsv or .fits.",
+    help="Write a table, too, a row for each pair and single object: .ecsv or .fits.",
 )
 @options.overwrite
 @options.as_json
@@ -271,7 +271,7 @@ def _print_pair(pair: Mapping[str, Any], width: int) -> None:
     if pair["saddle_ratio"] is not None:
         saddle = with_error(pair["saddle_ratio"], pair["saddle_ratio_error"])
         lines.append(f"saddle   {saddle} of the fainter peak")
-    lines += textwrap.wrap(pair["advice"], 88)
+    lines += textwrap.wrap(pair["advice"], page_width() - width - 2)
     for number, line in enumerate(lines):
         name = _name(pair) if number == 0 else ""
         say(f"{name:<{width}}  {line}")

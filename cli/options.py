@@ -85,6 +85,27 @@ class Dates(click.ParamType):
             )
 
 
+class Width(click.ParamType):
+    """The width of a figure with its unit, such as ``88mm``; millimetres inside."""
+
+    name = "width"
+
+    def convert(
+        self, value: Any, param: click.Parameter | None, ctx: click.Context | None
+    ) -> float:
+        if isinstance(value, float):
+            return value
+        from simimg.quantities import QuantityError, parse_quantity
+        from simimg.show.canvas import check_width
+
+        try:
+            return check_width(round(1e3 * parse_quantity(value, "length"), 9))
+        except QuantityError:
+            self.fail(f"{value!r} is not a width; write 88mm, 18cm or 7inch", param, ctx)
+        except ValueError as error:
+            self.fail(str(error), param, ctx)
+
+
 class Degrees(click.ParamType):
     """An angle in degrees; radians inside."""
 
@@ -153,6 +174,12 @@ def scene(function: _F) -> _F:
     return click.argument("scene", type=click.Path())(changes(function))
 
 
+width = click.option(
+    "--width",
+    type=Width(),
+    metavar="WIDTH",
+    help="Width of the figure, as 88mm, 18cm or 7inch: that of your page's column.",
+)
 as_json = click.option("--json", "as_json", is_flag=True, help="Print JSON, and nothing else.")
 quiet = click.option("--quiet", "-q", is_flag=True, help="Print no progress, warning or summary.")
 overwrite = click.option("--overwrite", is_flag=True, help="Replace files that exist.")

@@ -7,13 +7,17 @@ from __future__ import annotations
 
 import json
 import math
+import shutil
 import sys
+import textwrap
 from collections.abc import Iterable, Mapping, Sequence
 from typing import Any, Literal
 
 import click
 
 from simimg.version import __version__
+
+_PIPED, _LEAST, _MOST = 80, 40, 120  # characters to a line
 
 
 def printable(text: str) -> str:
@@ -59,6 +63,25 @@ def plain(value: Any) -> Any:
 def say(text: str = "") -> None:
     """A line of the answer."""
     click.echo("\n".join(printable(line) for line in text.split("\n")))
+
+
+def page_width() -> int:
+    """Characters to a line: the terminal's where there is one, within reason, else 80."""
+    if not sys.stdout.isatty():
+        return _PIPED
+    return min(max(shutil.get_terminal_size((_PIPED, 24)).columns, _LEAST), _MOST)
+
+
+def paragraph(text: str, *, under: str = "") -> str:
+    """Text broken to the width of the page.
+
+    Parameters
+    ----------
+    text : str
+    under : str, optional
+        What every line but the first begins with.
+    """
+    return textwrap.fill(text, page_width(), subsequent_indent=under, break_long_words=False)
 
 
 def note(text: str) -> None:

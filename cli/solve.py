@@ -2,14 +2,13 @@
 
 from __future__ import annotations
 
-import textwrap
 from collections.abc import Sequence
 from typing import TYPE_CHECKING
 
 import click
 
 from simimg_cli import options
-from simimg_cli.output import document, say
+from simimg_cli.output import document, paragraph, say
 from simimg_cli.progress import progress_bar
 from simimg_cli.words import figures
 
@@ -111,7 +110,7 @@ def _print(found: Solution) -> None:
     under = "" if found.criterion is None else f" by {found.criterion.capitalize()}"
     unit = f" {found.unit}" if found.unit else ""
     if not found.reached:
-        say(textwrap.fill(f"{found.target}{under} cannot be reached: {found.reason}", 96))
+        say(paragraph(f"{found.target}{under} cannot be reached: {found.reason}"))
         return
     if found.reason:
         say(f"{found.target}{under} is {found.reason}")

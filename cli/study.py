@@ -10,7 +10,7 @@ import click
 
 from simimg.errors import InputError, mistake
 from simimg_cli import options
-from simimg_cli.output import document, note, say, table, warn
+from simimg_cli.output import document, note, paragraph, say, table, warn
 from simimg_cli.progress import progress_bar
 from simimg_cli.trade import rows_of
 from simimg_cli.words import figures
@@ -48,7 +48,10 @@ _TRIED = (("fraction_rayleigh", "by Rayleigh"), ("fraction_sparrow", "by Sparrow
 @click.option("--pair", metavar="LABEL", help="The pair that is studied; the first unless given.")
 @click.option("--output", "-o", type=click.Path(), metavar="TABLE", help="Write the study as ECSV.")
 @click.option(
-    "--plot", type=click.Path(), metavar="FILE", help="Draw it: curves of one key, a map of two."
+    "--plot",
+    type=click.Path(),
+    metavar="FILE",
+    help="Draw it: curves of one key, a map of two, the separation map.",
 )
 @click.option(
     "--column",
@@ -76,6 +79,7 @@ _TRIED = (("fraction_rayleigh", "by Rayleigh"), ("fraction_sparrow", "by Sparrow
     help="Say which separations are resolved against the magnitude difference, in place of varied "
     "keys.",
 )
+@options.width
 @options.workers
 @options.cluster
 @options.overwrite
@@ -95,6 +99,7 @@ def command(
     strip: str | None,
     pixel_advice: bool,
     separation_map: bool,
+    width: float | None,
     workers: int | None,
     cluster: str | None,
     overwrite: bool,
@@ -117,10 +122,12 @@ def command(
         raise InputError(*lines)
     opened = open_scene(scene, overrides=overrides, without=without).scene
     if pixel_advice or separation_map:
-        if vary or plot or strip or column or level or cluster or (pixel_advice and separation_map):
+        if vary or strip or column or level or cluster or (pixel_advice and separation_map):
             raise click.UsageError(
                 "--pixel-advice and --separation-map stand alone; leave out what is of varied keys"
             )
+        if pixel_advice and plot:
+            raise click.UsageError("--pixel-advice draws nothing; leave out --plot")
         from simimg_cli.trade import run_pixel_advice, run_separation_map
 
         shared: dict[str, Any] = {
@@ -134,7 +141,7 @@ def command(
         if pixel_advice:
             run_pixel_advice(scene, opened, trials=trials, **shared)
         else:
-            run_separation_map(scene, opened, **shared)
+            run_separation_map(scene, opened, plot=plot, width=width, **shared)
         if not as_json:
             print_cautions(opened, quiet=quiet)
         return
@@ -159,7 +166,7 @@ def command(
     if output is not None and checkpoint is not None:
         write_sweep(made, output, overwrite=overwrite)
         checkpoint.remove()
-    caption = _draw(made, plot, column, level, strip, planned, overwrite=overwrite)
+    caption = _draw(made, plot, column, level, strip, planned, width, overwrite=overwrite)
     warnings = list(dict.fromkeys(one for one in made.problems if one))
     if as_json:
         payload: dict[str, Any] = {
@@ -179,7 +186,7 @@ def command(
         _print(made)
     if caption and not quiet:
         say()
-        say(caption)
+        say("\n".join(paragraph(line) for line in caption.split("\n")))
     if not quiet:
         warn(warnings)
     print_cautions(opened, quiet=quiet)
@@ -253,21 +260,35 @@ def _draw(
     level: float | None,
     strip: str | None,
     planned: Plan,
+    width: float | None,
     *,
     overwrite: bool,
 ) -> str:
     """Draw what is asked for; the captions."""
+    from simimg.show.canvas import COLUMN, PAGE
+
     captions = []
     if plot is not None:
         from simimg.show.studyplot import write_study_plot
 
         captions.append(
-            write_study_plot(made, plot, column=column, level=level, overwrite=overwrite)
+            write_study_plot(
+                made,
+                plot,
+                column=column,
+                level=level,
+                overwrite=overwrite,
+                width=COLUMN if width is None else width,
+            )
         )
     if strip is not None:
         from simimg.show.studystrip import write_study_strip
 
-        captions.append(write_study_strip(planned, made, strip, overwrite=overwrite))
+        captions.append(
+            write_study_strip(
+                planned, made, strip, overwrite=overwrite, width=PAGE if width is None else width
+            )
+        )
     return "\n".join(captions)
 
 

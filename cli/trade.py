@@ -2,11 +2,10 @@
 
 from __future__ import annotations
 
-import textwrap
 from collections.abc import Sequence
 from typing import TYPE_CHECKING, Any
 
-from simimg_cli.output import document, say, table
+from simimg_cli.output import document, paragraph, say, table
 from simimg_cli.progress import progress_bar
 from simimg_cli.words import figures
 
@@ -60,7 +59,7 @@ def run_pixel_advice(
         "separation's bound is within a tenth of its best."
     )
     for reason in found.reasons:
-        say(textwrap.fill(f"- {reason}", 96, subsequent_indent="  "))
+        say(paragraph(f"- {reason}", under="  "))
 
 
 def run_separation_map(
@@ -69,6 +68,8 @@ def run_separation_map(
     *,
     pair: str | None,
     output: str | None,
+    plot: str | None,
+    width: float | None,
     workers: int,
     overwrite: bool,
     as_json: bool,
@@ -81,6 +82,14 @@ def run_separation_map(
         found = separation_map(scene, pair=pair, workers=workers, progress=progress)
     columns = found.columns()
     _write(columns, output, scene, overwrite=overwrite)
+    caption = ""
+    if plot is not None:
+        from simimg.show.canvas import COLUMN
+        from simimg.show.separationplot import write_separation_plot
+
+        caption = write_separation_plot(
+            found, scene, plot, overwrite=overwrite, width=COLUMN if width is None else width
+        )
     contrast = [
         {"separation": separation, "magnitude_difference": difference}
         for separation, difference in zip(
@@ -95,6 +104,8 @@ def run_separation_map(
             "points": rows_of(columns),
             "contrast": contrast,
         }
+        if caption:
+            own["caption"] = caption
         say(document(own, scene_id=_id(scene)))
         return
     say(f"Smallest separations ({found.share:.0%} of frames resolved), arcsec")
@@ -109,6 +120,9 @@ def run_separation_map(
         ],
         right=(0, 1),
     )
+    if caption and not quiet:
+        say()
+        say(paragraph(caption))
 
 
 def rows_of(columns: Sequence[Column]) -> list[dict[str, Any]]:

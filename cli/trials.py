@@ -37,7 +37,7 @@ def run_trials(
     opened = open_scene(path, overrides=overrides, without=without).scene
     warnings = describe(opened).warnings
     if workers is None:
-        workers = 1 if count < _FEW else processors()
+        workers = workers_for(count)
     with progress_bar("trials", quiet=quiet) as progress:
         pairs = trials(opened, count=count, workers=workers, progress=progress)
     if as_json:
@@ -57,6 +57,11 @@ def run_trials(
     if not quiet:
         warn(warnings)
     print_cautions(opened, quiet=quiet)
+
+
+def workers_for(count: int) -> int:
+    """Processes for so many trials, where the user asks for none."""
+    return 1 if count < _FEW else processors()
 
 
 def _print(pair: PairTrials) -> None:

@@ -18,6 +18,12 @@ from simimg.errors import InputError, mistake
 from simimg.newfile import check_new_file, new_file
 
 MILLIMETRE = 1.0 / 25.4
+COLUMN, PAGE = 88.0, 180.0
+"""Widths of a figure, mm: one column of a page, and two."""
+NARROWEST, WIDEST = 80.0, 400.0
+"""Widths that a figure can have, mm."""
+TWO_ABREAST = 150.0
+"""Width from which two panels stand side by side, mm; below it they stand over one another."""
 FORMATS = {".png": "png", ".pdf": "pdf", ".svg": "svg"}
 
 BLACK, BLUE, VERMILION, GREEN = "#000000", "#0072B2", "#D55E00", "#00795B"
@@ -63,6 +69,32 @@ def figure_format(path: str | os.PathLike[str], *, overwrite: bool = False) -> s
     if lines:
         raise InputError(*lines)
     return FORMATS[suffix]
+
+
+def check_width(width: float) -> float:
+    """The width of a figure (mm), if it can have it.
+
+    Raises
+    ------
+    ValueError
+        Narrower than text stays legible in, or wider than a sheet.
+    """
+    if not NARROWEST <= width <= WIDEST:
+        raise ValueError(
+            f"a figure is {NARROWEST:g} to {WIDEST:g} mm wide, got {width:g}; its text would not "
+            "be legible"
+        )
+    return width
+
+
+def sheet(width: float, height: float) -> Any:
+    """An empty matplotlib figure of a size in mm, to be called within `look`."""
+    from matplotlib.backends.backend_agg import FigureCanvasAgg
+    from matplotlib.figure import Figure
+
+    figure = Figure(figsize=(width * MILLIMETRE, height * MILLIMETRE))
+    FigureCanvasAgg(figure)
+    return figure
 
 
 @contextmanager

@@ -15,6 +15,7 @@ from simimg.show.subject import Subject
 
 if TYPE_CHECKING:
     from simimg.resolving.records import CriterionVerdict, PairMeasurement
+    from simimg.study.tally import Fraction, Tally
 
 _ARCSEC, _DEG, _PLUS_MINUS = "\N{DOUBLE PRIME}", "\N{DEGREE SIGN}", "\N{PLUS-MINUS SIGN}"
 _LEAST_CHANCE = 1e-6
@@ -51,6 +52,8 @@ def figure_caption(
     *,
     iterations: int | None = None,
     remark: str = "",
+    over: bool = False,
+    trials: Tally | None = None,
 ) -> str:
     """The caption of a figure, one paragraph.
 
@@ -65,14 +68,19 @@ def figure_caption(
         Of the restored view that stands to the right of the frame, the profile below.
     remark : str, optional
         What is to be said of that view.
+    over : bool, optional
+        Whether the panels stand over one another.
+    trials : Tally, optional
+        Of many noise draws, for the probability of a split.
     """
+    places = _places(over=over, restored=iterations is not None)
     sentences = [
         _of_what(frame),
         *_setup_sentences(frame, setup),
-        *_panel_sentences(frame, subject, profile, iterations, remark),
+        *_panel_sentences(frame, subject, profile, iterations, remark, places),
     ]
     if subject.measurement is not None:
-        sentences += _verdict_sentences(subject.measurement, drawable(subject.label))
+        sentences += _verdict_sentences(subject.measurement, drawable(subject.label), trials)
     if setup is not None:
         sentences += cautions(setup.scene)
     elif frame.simulated:
@@ -113,20 +121,31 @@ def _setup_sentences(frame: Frame, setup: Setup | None) -> list[str]:
     return [", ".join(stated) + "."] if stated else []
 
 
+def _places(*, over: bool, restored: bool) -> tuple[str, str, str]:
+    """Where frame, restored view and profile stand."""
+    if over:
+        return "Above", "In the middle", "Below"
+    return ("Upper left", "Upper right", "Below") if restored else ("Left", "", "Right")
+
+
 def _panel_sentences(
-    frame: Frame, subject: Subject, profile: Profile, iterations: int | None, remark: str
+    frame: Frame,
+    subject: Subject,
+    profile: Profile,
+    iterations: int | None,
+    remark: str,
+    places: tuple[str, str, str],
 ) -> list[str]:
     left_edge, right_edge, bottom, top = subject.window
     whole = (top - bottom, right_edge - left_edge) == frame.counts.shape
     part = "the frame" if whole else "part of the frame"
-    below = iterations is not None
-    left = f"{'Upper left' if below else 'Left'}: {part}, asinh stretch"
+    left = f"{places[0]}: {part}, asinh stretch"
     if profile.fit is not None:
         left += ", crosses at the fitted stars"
     left += "." if subject.compass.known else "; it carries no directions."
-    if below:
+    if iterations is not None:
         left += (
-            f" Upper right: the same, restored by {iterations} iterations of Richardson and Lucy "
+            f" {places[1]}: the same, restored by {iterations} iterations of Richardson and Lucy "
             f"with the effective PSF; {remark}."
         )
     if profile.offsets.size == 0:
@@ -139,10 +158,8 @@ def _panel_sentences(
         else f"along position angle {subject.position_angle:.1f}{_DEG}"
     )
     through = _THROUGH.get(subject.kind) or drawable(subject.label)
-    where = "Below" if below else "Right"
-    right = (
-        f"{where}: mean over a strip {width} wide through {through} {along}, with 1-sigma errors"
-    )
+    right = f"{places[2]}: mean over a strip {width} wide through {through} {along}"
+    right += ", with 1-sigma errors"
     if profile.fit is not None:
         stars = "two stars" if len(profile.fit.places) > 1 else "one star"
         right += f"; {stars} of the frame's own PSF fitted to the pixels"
@@ -154,10 +171,11 @@ def _panel_sentences(
     return [left, right + "."]
 
 
-def _verdict_sentences(measured: PairMeasurement, name: str) -> list[str]:
+def _verdict_sentences(measured: PairMeasurement, name: str, trials: Tally | None) -> list[str]:
     chance = f"chance of a single star {_chance(measured.probability_single)}"
+    split = _split_sentences(trials)
     if not isfinite(measured.separation_arcsec):
-        return [f"{name}: no second star found, {chance}."]
+        return [f"{name}: no second star found, {chance}.", *split]
     separation = _separation(measured)
     angle = with_error(measured.position_angle_deg, measured.position_angle_error_deg)
     difference = with_error(measured.magnitude_difference, measured.magnitude_difference_error)
@@ -167,9 +185,8 @@ def _verdict_sentences(measured: PairMeasurement, name: str) -> list[str]:
         f"magnitude difference {difference}, {chance}."
     )
     criteria = [_criterion("Rayleigh", measured.rayleigh), _criterion("Sparrow", measured.sparrow)]
-    if not measured.advice:
-        return [found, "; ".join(criteria) + "."]
-    return [found, "; ".join(criteria) + ".", measured.advice]
+    verdict = f"In this one exposure: {'; '.join(criteria)}."
+    return [one for one in (found, verdict, measured.advice, *split) if one]
 
 
 def _separation(measured: PairMeasurement) -> str:
@@ -185,7 +202,22 @@ def _criterion(name: str, outcome: CriterionVerdict) -> str:
     words = f"{name} (limit {limit}): {outcome.verdict}"
     if not isfinite(outcome.probability):
         return words
-    return f"{words}, probability {outcome.probability:.2f}"
+    return f"{words}, {outcome.probability:.2f} that what was measured lies beyond the limit"
+
+
+def _split_sentences(trials: Tally | None) -> list[str]:
+    """The probability of a split over many noise draws, or that one does not tell it."""
+    if trials is None:
+        return ["How often such a pair would be split, a single noise draw does not tell."]
+    shares = [
+        f"{one.fraction_resolved:.3g} by {name} (95 % interval {_interval(one)})"
+        for name, one in (("Rayleigh", trials.rayleigh), ("Sparrow", trials.sparrow))
+    ]
+    return [f"Probability of a split, from {trials.trials} noise draws: {', '.join(shares)}."]
+
+
+def _interval(share: Fraction) -> str:
+    return f"{share.low:.2g} to {share.high:.2g}"
 
 
 def _chance(value: float) -> str:

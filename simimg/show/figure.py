@@ -1,7 +1,8 @@
 """The proposal figure: a frame, the profile along its pair's axis, and a caption with the verdict.
 
 On request the frame stands beside a restored view of itself, with the profile below. Sized for two
-columns of a page (180 mm), as PNG, PDF or SVG; the same frame gives the same bytes.
+columns of a page (180 mm) unless another width is asked for; below 150 mm the panels stand over one
+another. PNG, PDF or SVG; the same frame gives the same bytes.
 """
 
 from __future__ import annotations
@@ -11,7 +12,16 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any
 
 from simimg.frame import Frame
-from simimg.show.canvas import MILLIMETRE, drawable, figure_format, look, save
+from simimg.show.canvas import (
+    PAGE,
+    TWO_ABREAST,
+    check_width,
+    drawable,
+    figure_format,
+    look,
+    save,
+    sheet,
+)
 from simimg.show.caption import figure_caption, panel_titles
 from simimg.show.framepanel import draw_frame
 from simimg.show.profile import Profile, subject_profile
@@ -29,8 +39,12 @@ from simimg.show.subject import (
 
 if TYPE_CHECKING:
     from simimg.resolving.records import PairMeasurement
+    from simimg.study.tally import Tally
 
-_WIDTH = 180.0  # mm
+_LEFT, _RIGHT, _LOW, _HIGH = 13.0, 2.0, 11.0, 10.0  # margins of the page, mm: labels and titles
+_BAR = 23.0  # to the right of a frame: its colour bar, mm
+_AXIS = 15.0  # to the left of a profile: its labels, mm
+_BETWEEN = _LOW + _HIGH + 1.0  # panels over one another, mm
 _RESIDUAL = 13.0  # of the profile's height, mm
 
 _Box = tuple[float, float, float, float]
@@ -40,16 +54,40 @@ _Box = tuple[float, float, float, float]
 class _Page:
     """Where the panels stand: left, bottom, width, height in mm."""
 
+    width: float
     height: float
     plate: _Box
     profile: _Box
     restored: _Box | None = None
 
 
-_PLAIN = _Page(83.0, (13.0, 11.0, 62.0, 62.0), (113.0, 11.0, 65.0, 62.0))
-_WITH_RESTORED = _Page(
-    150.0, (13.0, 80.0, 60.0, 60.0), (16.0, 11.0, 161.0, 50.0), (98.0, 80.0, 60.0, 60.0)
-)
+def _page(width: float, *, restored: bool) -> _Page:
+    """The places of the panels on a page of a width (mm)."""
+    if width < TWO_ABREAST:
+        side = width - _LEFT - _BAR
+        tall = 0.75 * side
+        profile = (_AXIS, _LOW, width - _AXIS - _RIGHT, tall)
+        steps = [_LOW + tall + _BETWEEN + number * (side + _BETWEEN) for number in range(2)]
+        boxes = [(_LEFT, bottom, side, side) for bottom in steps[::-1]]
+        if not restored:
+            return _Page(width, steps[0] + side + _HIGH, boxes[1], profile)
+        return _Page(width, steps[1] + side + _HIGH, boxes[0], profile, boxes[1])
+    if not restored:
+        # A frame takes as much of the page as a profile does.
+        side = 0.5 * (width - _LEFT - _BAR - _AXIS - _RIGHT)
+        plate = (_LEFT, _LOW, side, side)
+        right = width - side - _RIGHT
+        return _Page(width, _LOW + side + _HIGH, plate, (right, _LOW, side, side))
+    side = 0.5 * width - _LEFT - _BAR
+    tall = 0.8 * side
+    bottom = _LOW + tall + _BETWEEN
+    return _Page(
+        width,
+        bottom + side + _HIGH,
+        (_LEFT, bottom, side, side),
+        (_AXIS, _LOW, width - _AXIS - _RIGHT, tall),
+        (0.5 * width + _LEFT, bottom, side, side),
+    )
 
 
 def write_figure(
@@ -60,6 +98,8 @@ def write_figure(
     pair: str | int | None = None,
     measurement: PairMeasurement | None = None,
     restored: int | None = None,
+    trials: Tally | None = None,
+    width: float = PAGE,
 ) -> str:
     """Draw a frame and the profile along its pair's axis, and write the figure to a file.
 
@@ -77,6 +117,11 @@ def write_figure(
         What `simimg.measure` said of the pair; measured here unless given.
     restored : int, optional
         Iterations of a restored view beside the frame; none unless given.
+    trials : Tally, optional
+        What many noise draws say of the pair; the caption then gives the probability of a split,
+        which one draw does not tell.
+    width : float, optional
+        Of the figure, 80 to 400 mm; two columns of a page unless given.
 
     Returns
     -------
@@ -90,15 +135,25 @@ def write_figure(
         frame whose PSF is not to be had.
     RunError
         The system refused; no part of the file is left behind.
+    ValueError
+        A width that is out of range.
     """
+    check_width(width)
     file_format = figure_format(path, overwrite=overwrite)
     light, subject, profile, setup = figure_parts(frame, pair=pair, measurement=measurement)
     view = None if restored is None else restore(frame, subject, iterations=restored)
     caption = figure_caption(
-        frame, subject, profile, setup, iterations=restored, remark="" if view is None else REMARK
+        frame,
+        subject,
+        profile,
+        setup,
+        iterations=restored,
+        remark="" if view is None else REMARK,
+        over=width < TWO_ABREAST,
+        trials=trials,
     )
     with look():
-        figure = draw_figure(frame, light, subject, profile, view)
+        figure = draw_figure(frame, light, subject, profile, view, width=width)
         title = ("Simulated: " if frame.simulated else "") + (str(frame.value("OBJECT") or "frame"))
         save(
             figure,
@@ -137,17 +192,15 @@ def draw_figure(
     subject: Subject,
     profile: Profile,
     restored: Restored | None = None,
+    *,
+    width: float = PAGE,
 ) -> Any:
     """The figure as a matplotlib object; to be called within `simimg.show.canvas.look`."""
-    from matplotlib.backends.backend_agg import FigureCanvasAgg
-    from matplotlib.figure import Figure
+    page = _page(width, restored=restored is not None)
+    figure = sheet(page.width, page.height)
 
-    page = _PLAIN if restored is None else _WITH_RESTORED
-    figure = Figure(figsize=(_WIDTH * MILLIMETRE, page.height * MILLIMETRE))
-    FigureCanvasAgg(figure)
-
-    def panel(left: float, bottom: float, width: float, height: float) -> Any:
-        place = (left / _WIDTH, bottom / page.height, width / _WIDTH, height / page.height)
+    def panel(left: float, bottom: float, wide: float, tall: float) -> Any:
+        place = (left / page.width, bottom / page.height, wide / page.width, tall / page.height)
         return figure.add_axes(place)
 
     left_title, right_title = panel_titles(frame, subject)
@@ -158,15 +211,15 @@ def draw_figure(
     if restored is not None and page.restored is not None:
         sharp = panel(*page.restored)
         sharp.set_anchor("W")
-        draw_restored(sharp, restored, subject)
+        draw_restored(sharp, restored, subject, simulated=frame.simulated)
         sharp.set_title(f"Richardson-Lucy, {restored.iterations} iterations:\n{REMARK}", loc="left")
-    left, bottom, width, height = page.profile
+    left, bottom, wide, tall = page.profile
     if profile.residuals is None:
-        upper, below = panel(left, bottom, width, height), None
+        upper, below = panel(left, bottom, wide, tall), None
     else:
-        below = panel(left, bottom, width, _RESIDUAL)
+        below = panel(left, bottom, wide, _RESIDUAL)
         gap = 1.5
-        upper = panel(left, bottom + _RESIDUAL + gap, width, height - _RESIDUAL - gap)
+        upper = panel(left, bottom + _RESIDUAL + gap, wide, tall - _RESIDUAL - gap)
     draw_profile(upper, below, profile, subject, unit=light.unit)
     upper.set_title(right_title, loc="left", parse_math=False)
     return figure

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from math import cos, sin
 from typing import Any
 
@@ -10,38 +9,26 @@ import numpy as np
 
 from simimg.arrays import AnyArray
 from simimg.show.canvas import grouped
-from simimg.show.compass import Compass, round_length, round_number, shown_length
-from simimg.show.marks import draw_arrows, inked
+from simimg.show.compass import round_length, round_number, shown_length
+from simimg.show.marks import draw_arrows, draw_scale_bar, draw_word, inked
 from simimg.show.profile import Profile
 from simimg.show.signal import Light
-from simimg.show.stretch import choose_stretch
+from simimg.show.stretch import Stretch, choose_stretch
 from simimg.show.subject import Subject
 
 COLOUR_MAP = "magma"  # its lightness rises evenly: it survives grey print and colour blindness
 _MOST_SHOWN = 1200  # pixels in the side of a drawn image; more are averaged in blocks
 
 
-@dataclass(frozen=True)
-class Plate:
-    """The panel in numbers: what a reader measures on it.
-
-    Attributes
-    ----------
-    bar_pixels, bar_arcsec : float
-        Length of the scale bar; the angle is NaN where the frame has no scale.
-    north, east : (float, float)
-        Directions of the arrows (dx, dy), unit length; those of the compass.
-    """
-
-    bar_pixels: float
-    bar_arcsec: float
-    north: tuple[float, float]
-    east: tuple[float, float]
-
-
 def draw_frame(
-    axes: Any, light: Light, subject: Subject, profile: Profile, *, simulated: bool
-) -> Plate:
+    axes: Any,
+    light: Light,
+    subject: Subject,
+    profile: Profile,
+    *,
+    simulated: bool,
+    stretch: Stretch | None = None,
+) -> None:
     """Draw the window of a frame about a subject.
 
     Parameters
@@ -53,13 +40,16 @@ def draw_frame(
         Its strip is marked.
     simulated : bool
         Whether the panel says so.
+    stretch : Stretch, optional
+        That of other panels beside it; chosen for this one unless given.
     """
     from matplotlib.colors import AsinhNorm
 
     left, right, bottom, top = subject.window
     values = light.values[bottom:top, left:right]
     shown = _averaged(values)
-    stretch = choose_stretch(shown, noise=light.noise, field=subject.kind in ("star", "source"))
+    if stretch is None:
+        stretch = choose_stretch(shown, noise=light.noise, field=subject.kind in ("star", "source"))
     picture = axes.imshow(
         shown,
         origin="lower",
@@ -75,17 +65,11 @@ def draw_frame(
     axes.locator_params(nbins=5, integer=True)
     _colour_bar(axes, picture, stretch.ticks(), light.unit)
     if simulated:
-        axes.text(0.03, 0.97, "simulated", va="top", transform=axes.transAxes, gid="simulated")
-        inked(axes.texts[-1])
+        draw_word(axes)
     strip_ends = _mark_strip(axes, subject, profile)
     if profile.fit is not None:
         _mark_stars(axes, profile.fit.places)
-    plate = _scale_bar(axes, subject.compass, right - left, top - bottom, subject.window)
-    edges = (left - 0.5, right - 0.5, bottom - 0.5, top - 0.5)
-    draw_arrows(axes, subject.compass, edges, strip_ends)
-    axes.set_xlim(left - 0.5, right - 0.5)
-    axes.set_ylim(bottom - 0.5, top - 0.5)
-    return plate
+    orient(axes, subject, strip_ends)
 
 
 def _averaged(values: AnyArray) -> AnyArray:
@@ -146,32 +130,31 @@ def _mark_stars(axes: Any, places: AnyArray) -> None:
     )
 
 
-def _scale_bar(
-    axes: Any, compass: Compass, columns: int, rows: int, window: tuple[int, int, int, int]
-) -> Plate:
-    """A bar of round length in the lower left corner."""
-    left, _, bottom, _ = window
-    longest = 0.33 * min(columns, rows)
-    if compass.scale is None:
-        arcsec, pixels = float("nan"), round_number(max(longest, 1.0))
+def orient(
+    axes: Any, subject: Subject, taken: list[tuple[float, float]], *, suffix: str = ""
+) -> None:
+    """Scale bar, north and east on a picture of a subject's window, and the window's edges.
+
+    Parameters
+    ----------
+    axes : matplotlib.axes.Axes
+    subject : Subject
+    taken : list of (x, y)
+        Places in pixels that must stay free.
+    suffix : str, optional
+        Of the marks' names in the figure.
+    """
+    left, right, bottom, top = (edge - 0.5 for edge in subject.window)
+    edges = (left, right, bottom, top)
+    longest = 0.33 * min(right - left, top - bottom)
+    scale = subject.compass.scale
+    if scale is None:
+        pixels = round_number(max(longest, 1.0))
         words = f"{pixels:.6g} pixel" + ("s" if pixels > 1.0 else "")
     else:
-        arcsec = round_length(longest * compass.scale)
-        pixels = arcsec / compass.scale
-        words = shown_length(arcsec)
-    x, y = left - 0.5 + 0.05 * columns, bottom - 0.5 + 0.05 * rows
-    (bar,) = axes.plot(
-        [x, x + pixels], [y, y], linewidth=1.4, solid_capstyle="butt", gid="scale-bar"
-    )
-    inked(bar)
-    inked(
-        axes.annotate(
-            words,
-            (x + 0.5 * pixels, y),
-            (0, 3),
-            textcoords="offset points",
-            ha="center",
-            va="bottom",
-        )
-    )
-    return Plate(pixels, arcsec, compass.north, compass.east)
+        arcsec = round_length(longest * scale)
+        pixels, words = arcsec / scale, shown_length(arcsec)
+    draw_scale_bar(axes, edges, pixels, words, suffix=suffix)
+    draw_arrows(axes, subject.compass, edges, taken, suffix=suffix)
+    axes.set_xlim(left, right)
+    axes.set_ylim(bottom, top)

@@ -23,11 +23,59 @@ def inked(artist: Any) -> None:
     artist.set_path_effects([rim] if hasattr(artist, "get_text") else [rim, Normal()])
 
 
+def draw_scale_bar(
+    axes: Any,
+    edges: tuple[float, float, float, float],
+    length: float,
+    words: str,
+    *,
+    suffix: str = "",
+) -> None:
+    """A bar of round length in the lower left corner, with its length over it.
+
+    Parameters
+    ----------
+    axes : matplotlib.axes.Axes
+    edges : (float, float, float, float)
+        Left, right, bottom and top of the picture, in data.
+    length : float
+        In data.
+    words : str
+        The length with its unit.
+    suffix : str, optional
+        Of the bar's name in the figure, where it has several.
+    """
+    left, right, bottom, top = edges
+    x, y = left + 0.05 * (right - left), bottom + 0.05 * (top - bottom)
+    (bar,) = axes.plot([x, x + length], [y, y], linewidth=1.4, solid_capstyle="butt")
+    bar.set_gid(f"scale-bar{suffix}")
+    inked(bar)
+    inked(
+        axes.annotate(
+            words,
+            (x + 0.5 * length, y),
+            (0, 3),
+            textcoords="offset points",
+            ha="center",
+            va="bottom",
+        )
+    )
+
+
+def draw_word(axes: Any, *, suffix: str = "") -> None:
+    """The word "simulated" in the upper left corner of a picture."""
+    word = axes.text(0.03, 0.97, "simulated", va="top", transform=axes.transAxes)
+    word.set_gid(f"simulated{suffix}")
+    inked(word)
+
+
 def draw_arrows(
     axes: Any,
     compass: Compass,
     edges: tuple[float, float, float, float],
     taken: list[tuple[float, float]],
+    *,
+    suffix: str = "",
 ) -> None:
     """North and east in the upper right corner, or the lower where the upper is taken.
 
@@ -40,6 +88,8 @@ def draw_arrows(
         Left, right, bottom and top of the picture, in data.
     taken : list of (x, y)
         Places in data that must stay free.
+    suffix : str, optional
+        Of the arrows' names in the figure, where it has several pictures.
     """
     if not compass.known:
         return
@@ -65,7 +115,7 @@ def draw_arrows(
                 "linewidth": 0.9,
                 "color": INK,
             },
-            gid=f"arrow-{name}",
+            gid=f"arrow-{name}{suffix}",
         )
         _rimmed(arrow.arrow_patch)
         letter = axes.text(

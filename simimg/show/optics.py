@@ -1,7 +1,7 @@
 """The figure of a telescope's optics: pupil, wavefront, PSF and transfer function of a scene.
 
-Up to four panels with their scales, for two columns of a page (180 mm), as PNG, PDF or SVG; the
-same scene gives the same bytes.
+Up to four panels with their scales, two abreast unless the figure is narrow, as PNG, PDF or SVG;
+the same scene gives the same bytes.
 """
 
 from __future__ import annotations
@@ -13,14 +13,22 @@ from typing import Any
 
 from simimg.assembly.report import cautions, wavelength_text
 from simimg.scene.model import Scene
-from simimg.show.canvas import MILLIMETRE, drawable, figure_format, look, save
+from simimg.show.canvas import (
+    TWO_ABREAST,
+    check_width,
+    drawable,
+    figure_format,
+    look,
+    save,
+    sheet,
+)
 from simimg.show.opticspanels import DRAWN
 from simimg.show.opticsview import OpticsView, optics_view
 
 PANELS = tuple(DRAWN)
 """What can be drawn."""
 
-_PANEL = 58.0  # side of a panel, mm
+_PANEL = 58.0  # side of a panel unless the figure's width is given, mm
 _LEFT, _BETWEEN = 14.0, 34.0  # margins beside the panels, mm: labels and colour bars
 _BELOW, _ABOVE, _HEADING = 11.0, 6.0, 4.5
 _ARCSEC = "\N{DOUBLE PRIME}"
@@ -32,6 +40,7 @@ def write_optics(
     *,
     what: Sequence[str] = PANELS,
     overwrite: bool = False,
+    width: float | None = None,
 ) -> str:
     """Draw the optics of a scene and write the figure to a file.
 
@@ -45,6 +54,8 @@ def write_optics(
         The panels, in their order.
     overwrite : bool, optional
         Whether a file of that name may be replaced.
+    width : float, optional
+        Of the figure, 80 to 400 mm; 92 mm for each of two panels abreast unless given.
 
     Returns
     -------
@@ -58,8 +69,10 @@ def write_optics(
     RunError
         The system refused; no part of the file is left behind.
     ValueError
-        No panel, or a word that is none.
+        No panel, or a word that is none; a width that is out of range.
     """
+    if width is not None:
+        check_width(width)
     panels = list(dict.fromkeys(what))
     unknown = [one for one in panels if one not in DRAWN]
     if not panels or unknown:
@@ -68,7 +81,7 @@ def write_optics(
     view = optics_view(scene)
     caption = optics_caption(view, panels)
     with look():
-        figure = draw_optics(view, panels)
+        figure = draw_optics(view, panels, width=width)
         save(
             figure,
             path,
@@ -80,23 +93,21 @@ def write_optics(
     return caption
 
 
-def draw_optics(view: OpticsView, panels: Sequence[str]) -> Any:
+def draw_optics(view: OpticsView, panels: Sequence[str], *, width: float | None = None) -> Any:
     """The figure as a matplotlib object; to be called within `simimg.show.canvas.look`."""
-    from matplotlib.backends.backend_agg import FigureCanvasAgg
-    from matplotlib.figure import Figure
-
-    columns = min(len(panels), 2)
+    narrow = width is not None and width < TWO_ABREAST
+    columns = 1 if narrow else min(len(panels), 2)
+    side = _PANEL if width is None else width / columns - _BETWEEN
     rows = -(-len(panels) // columns)
-    step = _BELOW + _PANEL + _ABOVE
-    width = columns * (_LEFT + _PANEL) + (columns - 1) * (_BETWEEN - _LEFT) + _BETWEEN - _LEFT
+    step = _BELOW + side + _ABOVE
+    width = columns * (side + _BETWEEN)
     height = rows * step + _HEADING
-    figure = Figure(figsize=(width * MILLIMETRE, height * MILLIMETRE))
-    FigureCanvasAgg(figure)
+    figure = sheet(width, height)
     for number, name in enumerate(panels):
         row, column = divmod(number, columns)
-        left = _LEFT + column * (_PANEL + _BETWEEN)
+        left = _LEFT + column * (side + _BETWEEN)
         bottom = (rows - 1 - row) * step + _BELOW
-        axes = figure.add_axes((left / width, bottom / height, _PANEL / width, _PANEL / height))
+        axes = figure.add_axes((left / width, bottom / height, side / width, side / height))
         DRAWN[name](axes, view)
     top = 1.0 - 0.45 * _HEADING / height
     figure.text(
@@ -124,7 +135,7 @@ def optics_caption(view: OpticsView, panels: Sequence[str]) -> str:
     words = {
         "pupil": "Pupil: transmission of the pupil as projected on the detector",
         "wavefront": "Wavefront: its error on the axis as optical path, piston and tilt taken out, "
-        "grey where no light passes",
+        "white where no light passes",
         "psf": "PSF: as it falls on the focal plane, without the pixel, on a logarithmic scale; "
         f"its FWHM is {_angle(view.fwhm)}",
         "transfer": "Transfer: modulus of the transfer functions along the detector's axes",

@@ -12,8 +12,11 @@ from simimg.arrays import FloatArray
 from simimg.show.canvas import BLACK, BLUE, GREEN, VERMILION
 from simimg.show.compass import round_number
 from simimg.show.framepanel import COLOUR_MAP
-from simimg.show.marks import draw_arrows, inked
+from simimg.show.marks import draw_arrows, draw_scale_bar
 from simimg.show.opticsview import OpticsView
+
+PATH_COLOURS = "viridis"
+"""Of a wavefront: even in lightness, so that ahead and behind stay apart in grey print."""
 
 _LENGTHS = ((1.0, "m"), (1e-2, "cm"), (1e-3, "mm"))
 _PATHS = ((1.0, "m"), (1e-3, "mm"), (1e-6, "\N{MICRO SIGN}m"), (1e-9, "nm"))
@@ -52,14 +55,18 @@ def _colour_bar(axes: Any, picture: Any, label: str) -> Any:
     return bar
 
 
-def _on_pupil(axes: Any, view: OpticsView) -> tuple[float, float, float, float]:
-    """Axes in lengths on the pupil; the extent of its picture."""
+def _on_pupil(axes: Any, view: OpticsView, suffix: str) -> tuple[float, float, float, float]:
+    """Axes in lengths on the pupil, with its scale and directions; the extent of its picture."""
     size, name = _unit(0.5 * view.side, _LENGTHS)
     axes.set_xlabel(f"x in the pupil ({name})")
     axes.set_ylabel(f"y in the pupil ({name})")
     axes.locator_params(nbins=5)
     half = 0.5 * view.side / size
-    return -half, half, -half, half
+    edges = (-half, half, -half, half)
+    length = round_number(0.5 * half)
+    draw_scale_bar(axes, edges, length, f"{length:.6g} {name}", suffix=suffix)
+    draw_arrows(axes, view.compass, edges, [], suffix=suffix)
+    return edges
 
 
 def draw_pupil(axes: Any, view: OpticsView) -> None:
@@ -68,7 +75,7 @@ def draw_pupil(axes: Any, view: OpticsView) -> None:
     picture = axes.imshow(
         pupil.transmission,
         origin="lower",
-        extent=_on_pupil(axes, view),
+        extent=_on_pupil(axes, view, "-pupil"),
         cmap="gray",
         vmin=0.0,
         vmax=1.0,
@@ -88,14 +95,13 @@ def draw_wavefront(axes: Any, view: OpticsView) -> None:
     picture = axes.imshow(
         path / size,
         origin="lower",
-        extent=_on_pupil(axes, view),
-        cmap="RdBu_r",
+        extent=_on_pupil(axes, view, "-wavefront"),
+        cmap=PATH_COLOURS,
         vmin=-most,
         vmax=most,
         interpolation="nearest",
         gid="wavefront",
     )
-    axes.set_facecolor("0.35")
     _colour_bar(axes, picture, f"optical path ({name})")
     words = "no error"
     if rms > 0.0:
@@ -127,21 +133,7 @@ def draw_psf(axes: Any, view: OpticsView) -> None:
     axes.locator_params(nbins=5)
     draw_arrows(axes, view.compass, (-edge, edge, -edge, edge), [])
     length = round_number(0.6 * edge)
-    x, y = -0.9 * edge, -0.9 * edge
-    (line,) = axes.plot(
-        [x, x + length], [y, y], linewidth=1.4, solid_capstyle="butt", gid="scale-bar"
-    )
-    inked(line)
-    inked(
-        axes.annotate(
-            f"{length:.6g} {name}",
-            (x + 0.5 * length, y),
-            (0, 3),
-            textcoords="offset points",
-            ha="center",
-            va="bottom",
-        )
-    )
+    draw_scale_bar(axes, (-edge, edge, -edge, edge), length, f"{length:.6g} {name}")
     axes.set_xlim(-edge, edge)
     axes.set_ylim(-edge, edge)
     axes.set_title(f"PSF: FWHM {view.fwhm / size:.3g} {name}, Strehl {view.strehl:.2g}", loc="left")
@@ -167,19 +159,8 @@ def draw_transfer(axes: Any, view: OpticsView) -> None:
     end = float(frequency[-1]) * size
     scale = view.train.pixel_scale
     if scale is not None and 0.5 / scale * size < end:
-        axes.axvline(0.5 / scale * size, color="0.55", linewidth=0.7, linestyle="-", gid="nyquist")
-        axes.annotate(
-            "pixel's Nyquist",
-            (0.5 / scale * size, 0.48),
-            (-2, 0),
-            textcoords="offset points",
-            rotation=90,
-            ha="right",
-            va="center",
-            fontsize=6.5,
-            color="0.35",
-            bbox={"facecolor": "white", "edgecolor": "none", "pad": 0.5},
-        )
+        place = 0.5 / scale * size
+        axes.axvline(place, color="0.55", linewidth=0.7, label="pixel's Nyquist", gid="nyquist")
     axes.set_xlim(0.0, end)
     axes.set_ylim(-0.03, 1.04)
     axes.set_xlabel(f"spatial frequency (cycles per {name})")

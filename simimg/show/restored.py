@@ -21,7 +21,8 @@ from simimg.frame import Frame
 from simimg.resolving.given import Given
 from simimg.resolving.observation import Observation, observe
 from simimg.show.canvas import grouped
-from simimg.show.framepanel import COLOUR_MAP
+from simimg.show.framepanel import COLOUR_MAP, orient
+from simimg.show.marks import draw_word
 from simimg.show.signal import clipped_background
 from simimg.show.stretch import choose_stretch
 from simimg.show.subject import Subject
@@ -141,7 +142,7 @@ def _filled(seen: Observation, box: tuple[slice, slice]) -> FloatArray:
     return np.where(good, electrons, np.where(weight > 0.05, around, far))
 
 
-def draw_restored(axes: Any, restored: Restored, subject: Subject) -> None:
+def draw_restored(axes: Any, restored: Restored, subject: Subject, *, simulated: bool) -> None:
     """Draw a restored window.
 
     Parameters
@@ -149,6 +150,8 @@ def draw_restored(axes: Any, restored: Restored, subject: Subject) -> None:
     axes : matplotlib.axes.Axes
     restored : Restored
     subject : Subject
+    simulated : bool
+        Whether the panel says so.
     """
     from matplotlib.colors import AsinhNorm
 
@@ -165,9 +168,11 @@ def draw_restored(axes: Any, restored: Restored, subject: Subject) -> None:
         gid="restored",
     )
     axes.set_xlabel("x (pixel)")
+    axes.set_ylabel("y (pixel)")
     axes.locator_params(nbins=5, integer=True)
-    axes.set_xlim(left - 0.5, right - 0.5)
-    axes.set_ylim(bottom - 0.5, top - 0.5)
+    if simulated:
+        draw_word(axes, suffix="-restored")
+    orient(axes, subject, [], suffix="-restored")
     bar_axes = axes.inset_axes((1.03, 0.0, 0.045, 1.0))
     bar = axes.figure.colorbar(picture, cax=bar_axes)
     ticks = stretch.ticks()

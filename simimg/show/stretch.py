@@ -41,8 +41,14 @@ class Stretch:
         shade = (np.arcsinh(np.nan_to_num(values) / self.softening) - bottom) / (top - bottom)
         return np.asarray(np.clip(np.where(np.isnan(values), 0.0, shade), 0.0, 1.0))
 
-    def ticks(self) -> list[float]:
-        """Round values that stand apart on the scale: 0, powers of ten, and 5 and 2 times them."""
+    def ticks(self, *, apart: float = _APART) -> list[float]:
+        """Round values that stand apart on the scale: 0, powers of ten, and 5 and 2 times them.
+
+        Parameters
+        ----------
+        apart : float, optional
+            Least distance of two, as a share of the scale.
+        """
         chosen: list[tuple[float, float]] = []
         least = floor(log10(max(self.softening * 0.05, 1e-300)))
         powers = range(floor(log10(self.high)), least - 1, -1)
@@ -51,7 +57,7 @@ class Stretch:
             if not self.low <= value <= self.high:
                 continue
             shade = float(self.shades(np.array(value)))
-            if all(abs(shade - other) >= _APART for _, other in chosen):
+            if all(abs(shade - other) >= apart for _, other in chosen):
                 chosen.append((value, shade))
         return sorted(value for value, _ in chosen)
 

@@ -2,7 +2,7 @@
 
 Each panel is the same piece of sky about the same object, in electrons above the background, so
 that what changes from one to the next is what the key does. Sized for two columns of a page
-(180 mm).
+(180 mm) unless another width is asked for; in a narrow one the panels stand in rows.
 """
 
 from __future__ import annotations
@@ -19,20 +19,32 @@ from simimg.errors import InputError, mistake
 from simimg.exposure import expose
 from simimg.frame import Frame
 from simimg.scene.file import requirements_to_expose
-from simimg.show.canvas import MILLIMETRE, drawable, figure_format, grouped, look, save
+from simimg.show.canvas import (
+    PAGE,
+    TWO_ABREAST,
+    check_width,
+    drawable,
+    figure_format,
+    grouped,
+    look,
+    save,
+    sheet,
+)
 from simimg.show.compass import Compass, frame_compass, round_number
 from simimg.show.framepanel import COLOUR_MAP
-from simimg.show.marks import draw_arrows, inked
+from simimg.show.marks import draw_arrows, draw_scale_bar
 from simimg.show.signal import Light, frame_light
 from simimg.show.stretch import choose_stretch
+from simimg.show.studysheet import value_words
 from simimg.study.sweep import Plan, Sweep
 
 MOST_FRAMES = 6
 """Most frames side by side; of more points some are chosen, evenly."""
 
-_WIDTH = 180.0  # mm
+_ABREAST = 3  # frames in a row of a narrow figure
 _LEFT, _RIGHT, _TOP, _BOTTOM, _BETWEEN = 2.0, 17.0, 8.0, 9.0, 1.5
 _AROUND = 2.2  # FWHM of free sky about the object
+_TICKS = 3.3  # mm between two ticks of the colour bar
 _SECOND = "\N{DOUBLE PRIME}"
 
 
@@ -48,7 +60,12 @@ class _View:
 
 
 def write_study_strip(
-    planned: Plan, made: Sweep, path: str | os.PathLike[str], *, overwrite: bool = False
+    planned: Plan,
+    made: Sweep,
+    path: str | os.PathLike[str],
+    *,
+    overwrite: bool = False,
+    width: float = PAGE,
 ) -> str:
     """Draw the frames of a study of one key side by side.
 
@@ -61,6 +78,8 @@ def write_study_strip(
         Ends in .png, .pdf or .svg.
     overwrite : bool, optional
         Whether a file of that name may be replaced.
+    width : float, optional
+        Of the figure, 80 to 400 mm; two columns of a page unless given.
 
     Returns
     -------
@@ -74,7 +93,10 @@ def write_study_strip(
         needs.
     RunError
         The system refused; no part of the file is left behind.
+    ValueError
+        A width that is out of range.
     """
+    check_width(width)
     file_format = figure_format(path, overwrite=overwrite)
     views = _views(planned, made)
     one = planned.varied[0]
@@ -86,7 +108,7 @@ def write_study_strip(
         "observatory."
     )
     with look():
-        figure = _draw(views, planned)
+        figure = _draw(views, planned, width)
         save(
             figure,
             path,
@@ -112,7 +134,7 @@ def _views(planned: Plan, made: Sweep) -> list[_View]:
             raise InputError(*missing)
         frame = expose(scene)
         x, y = _centre(frame, planned.asked.pair)
-        views.append(_cut(frame, x, y, wide, str(planned.points[number][0])))
+        views.append(_cut(frame, x, y, wide, value_words(planned.varied[0], number)))
     return views
 
 
@@ -160,25 +182,25 @@ def _cut(frame: Frame, x: float, y: float, half: float, words: str) -> _View:
     return _View(light, values, extent, compass, words)
 
 
-def _draw(views: list[_View], planned: Plan) -> Any:
-    from matplotlib.backends.backend_agg import FigureCanvasAgg
+def _draw(views: list[_View], planned: Plan, page: float = PAGE) -> Any:
     from matplotlib.colors import AsinhNorm
-    from matplotlib.figure import Figure
 
-    count = len(views)
-    side = min((_WIDTH - _LEFT - _RIGHT - (count - 1) * _BETWEEN) / count, 60.0)
+    count = len(views) if page >= TWO_ABREAST else min(len(views), _ABREAST)
+    rows = -(-len(views) // count)
+    side = min((page - _LEFT - _RIGHT - (count - 1) * _BETWEEN) / count, 60.0)
     width = _LEFT + count * side + (count - 1) * _BETWEEN + _RIGHT
-    height = _TOP + side + _BOTTOM
-    figure = Figure(figsize=(width * MILLIMETRE, height * MILLIMETRE))
-    FigureCanvasAgg(figure)
+    step = side + _BOTTOM
+    height = _TOP + rows * step
+    figure = sheet(width, height)
     half = max(max(abs(edge) for edge in view.extent) for view in views)
     every = np.concatenate([view.values.ravel() for view in views])
     noise = float(np.median([view.light.noise for view in views]))
     stretch = choose_stretch(every, noise=noise)
     norm = AsinhNorm(stretch.softening, vmin=stretch.low, vmax=stretch.high)
     for number, view in enumerate(views):
-        left = _LEFT + number * (side + _BETWEEN)
-        axes = figure.add_axes((left / width, _BOTTOM / height, side / width, side / height))
+        row, column = divmod(number, count)
+        left, bottom = _LEFT + column * (side + _BETWEEN), (rows - 1 - row) * step + _BOTTOM
+        axes = figure.add_axes((left / width, bottom / height, side / width, side / height))
         picture = axes.imshow(
             view.values,
             origin="lower",
@@ -193,37 +215,24 @@ def _draw(views: list[_View], planned: Plan) -> Any:
         axes.set_ylim(-half, half)
         axes.set_xticks([])
         axes.set_yticks([])
-        axes.set_xlabel(drawable(view.words, ems=14.0))
-        draw_arrows(axes, view.compass, (-half, half, -half, half), [])
+        axes.set_xlabel(drawable(view.words, ems=min(14.0, side / 2.7)))
+        square = (-half, half, -half, half)
+        draw_arrows(axes, view.compass, square, [], suffix=f"-{number}")
         if number == 0:
-            _scale_bar(axes, half)
-    bar = figure.colorbar(picture, cax=axes.inset_axes((1.04, 0.0, 0.05, 1.0)))
-    ticks = stretch.ticks()
+            length = round_number(0.6 * half)
+            draw_scale_bar(axes, square, length, f"{length:.6g}{_SECOND}")
+        if number == count - 1:
+            beside = axes
+    bar = figure.colorbar(picture, cax=beside.inset_axes((1.04, 0.0, 0.05, 1.0)))
+    ticks = stretch.ticks(apart=max(_TICKS / side, 0.085))
     bar.set_ticks(ticks, labels=[grouped(tick) for tick in ticks])
     bar.ax.minorticks_off()
     bar.outline.set_linewidth(0.6)
     bar.set_label(f"{views[0].light.unit}s per pixel")
     top = 1.0 - 0.5 * _TOP / height
-    title = drawable(f"{planned.varied[0].key}: {planned.scene.title or ''}", ems=40.0)
+    title = drawable(
+        f"{planned.varied[0].key}: {planned.scene.title or ''}", ems=(width - 39.0) / 3.0
+    )
     figure.text(_LEFT / width, top, title, va="center", weight="bold", parse_math=False)
     figure.text(1.0 - _RIGHT / width, top, "simulated", va="center", ha="right", gid="simulated")
     return figure
-
-
-def _scale_bar(axes: Any, half: float) -> None:
-    length = round_number(0.6 * half)
-    x, y = -0.9 * half, -0.9 * half
-    (line,) = axes.plot(
-        [x, x + length], [y, y], linewidth=1.4, solid_capstyle="butt", gid="scale-bar"
-    )
-    inked(line)
-    inked(
-        axes.annotate(
-            f"{length:.6g}{_SECOND}",
-            (x + 0.5 * length, y),
-            (0, 3),
-            textcoords="offset points",
-            ha="center",
-            va="bottom",
-        )
-    )

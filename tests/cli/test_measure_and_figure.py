@@ -172,7 +172,7 @@ class TestFigure:
         assert (folder / f"figure.{ending}").read_bytes().startswith(start)
         assert "imulated" in result.out
         assert "SR-1" in result.out
-        assert max(len(line) for line in result.out.splitlines()) <= 96
+        assert max(len(line) for line in result.out.splitlines()) <= 80
 
     def test_as_json(self, run, frame):
         result = run("figure", frame, "-o", "figure.png", "--json")
@@ -181,6 +181,45 @@ class TestFigure:
         assert found["figure"] == "figure.png"
         assert "SR-1" in found["caption"]
         assert found["simulated"] is True
+
+    @pytest.mark.parametrize(
+        ("width", "inches"), [("88mm", 88 / 25.4), ("18 cm", 180 / 25.4), ("7inch", 7.0)]
+    )
+    def test_a_width(self, run, frame, folder, width, inches):
+        from PIL import Image
+
+        result = run("figure", frame, "-o", "figure.png", "--width", width)
+        assert result.code == 0
+        with Image.open(folder / "figure.png") as picture:
+            assert picture.width == pytest.approx(300 * inches, abs=1)
+        # Narrow figures have their panels over one another, and say so.
+        assert ("Above: " in result.out) == (width == "88mm")
+        assert ("Left: " in result.out) == (width != "88mm")
+
+    def test_trials_tell_the_probability_of_a_split(self, run, frame):
+        found = run("figure", frame, "-o", "a.png", "--trials", "12", "--json").json
+        caption, tried = found["caption"], found["trials"]
+        assert tried["trials"] == 12
+        for name in ("rayleigh", "sparrow"):
+            share = tried[name]
+            words = (
+                f"{share['fraction_resolved']:.3g} by {name.capitalize()} "
+                f"(95 % interval {share['low']:.2g} to {share['high']:.2g})"
+            )
+            assert words in caption
+        assert "Probability of a split, from 12 noise draws: " in caption
+        # The pair is well apart: it is split each time, which says no more than its interval.
+        assert tried["rayleigh"]["fraction_resolved"] == 1.0
+        assert tried["rayleigh"]["low"] < 0.8
+        # The same trials as measure --trials makes.
+        (pair,) = run("measure", "tiny.toml", "--trials", "12", "--json").json["pairs"]
+        assert tried == pair
+
+    def test_one_noise_draw_is_no_probability_of_a_split(self, run, frame):
+        out = " ".join(run("figure", frame, "-o", "a.png").out.split())
+        assert "robability of a split" not in out
+        assert "probability" not in out
+        assert "would be split, a single noise draw does not tell." in out
 
     @pytest.mark.parametrize(
         "arguments", [["--pair", "SR-1"], ["--pair", "0"], ["--near", "24,20"]]
@@ -197,6 +236,12 @@ class TestFigure:
             (["-o", "f.png", "--near", "999,1"], "999"),
             (["-o", "f.png", "--near", "1,1", "--pair", "SR-1"], "give one of them"),
             (["-o", "f.jpg"], "end it in .png, .pdf or .svg"),
+            (["-o", "f.png", "--width", "88"], "is not a width; write 88mm"),
+            (["-o", "f.png", "--width", "88 arcsec"], "is not a width; write 88mm"),
+            (["-o", "f.png", "--width", "4cm"], "80 to 400 mm wide, got 40"),
+            (["-o", "f.png", "--trials", "0"], "0 is not in the range"),
+            (["-o", "f.png", "--workers", "2"], "--workers goes with --trials"),
+            (["-o", "f.png", "--trials", "2", "--near", "24,20"], "no pair of the scene"),
             (["-o", "nowhere/f.png"], "does not exist"),
             (["-o", "frame.fits", "--overwrite"], "end it in"),
         ],
@@ -242,6 +287,7 @@ class TestOptics:
             (["--what", "pupil,rays"], "'rays' is none of pupil, wavefront, psf, transfer"),
             (["--what", "psf", "--near", "1,2"], "leave out the rest"),
             (["--what", "psf", "--restored"], "leave out the rest"),
+            (["--what", "psf", "--trials", "3"], "leave out the rest"),
             (["--set", "air.seeing='1 arcsec'"], "go with --what"),
             (["--what", "psf", "--set", "air.seing='1 arcsec'"], "seeing"),
         ],

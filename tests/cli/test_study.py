@@ -82,7 +82,7 @@ def test_a_map_shows_its_boundary(run, scene):
         2,
     )
     assert result.code == 0
-    assert "The white line is where it is 1.6" in result.out
+    assert "The white line is where it is 1.6" in " ".join(result.out.split())
     picture = np.asarray(Image.open("m.png").convert("RGB"))
     assert (picture == 255).all(axis=2).any()
     assert picture.std() > 20

@@ -20,14 +20,17 @@ def test_pixel_advice(run, scene, files):
     assert files() == ["p.ecsv", "tiny.toml"]
 
 
-def test_separation_map(run, scene, files):
-    found = run("study", scene, "--separation-map", "--workers", 2, "--json")
+def test_separation_map(run, scene, files, folder):
+    arguments = ["study", scene, "--separation-map", "--workers", 2, "--plot", "m.svg"]
+    found = run(*arguments, "--width", "120mm", "--json")
     assert (found.code, found.err) == (0, "")
+    assert found.json["caption"].startswith("Simulated: A tiny field. Above: the smallest")
+    assert 'width="340.157' in (folder / "m.svg").read_text()[:1500]
     points = found.json["points"]
     assert [one["magnitude_difference"] for one in points][:3] == [0.0, 0.5, 1.0]
     assert points[0]["sparrow_limit"] < points[4]["sparrow_limit"]
     assert found.json["contrast"][-1]["magnitude_difference"] > 1.0
-    assert files() == ["tiny.toml"]
+    assert files() == ["m.svg", "tiny.toml"]
 
 
 @pytest.mark.parametrize(
@@ -35,7 +38,9 @@ def test_separation_map(run, scene, files):
     [
         ["--pixel-advice", "--separation-map"],
         ["--pixel-advice", "--vary", "air.seeing=1:2 arcsec:2"],
-        ["--separation-map", "--plot", "x.png"],
+        ["--separation-map", "--plot", "x.gif"],
+        ["--separation-map", "--plot", "x.png", "--width", "1 m"],
+        ["--pixel-advice", "--plot", "x.png"],
         ["--pixel-advice", "--pair", "nobody"],
         ["--separation-map", "-o", "x.csv"],
     ],
