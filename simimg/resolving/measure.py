@@ -183,9 +183,7 @@ def measure_frame(
         pairs=tuple(records),
         psf=quality.report,
         warnings=(*observation.notes, *own.notes(named), *doubts),
-        singles=single_records(
-            observation, field.singles, floor=quality.floor(observation.sourced.noise)
-        ),
+        singles=single_records(observation, field.singles, quality=quality),
     )
 
 

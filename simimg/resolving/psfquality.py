@@ -21,7 +21,7 @@ from scipy.spatial import cKDTree
 from simimg.arrays import FloatArray
 from simimg.resolving.isolated import isolated_stars
 from simimg.resolving.observation import Observation
-from simimg.resolving.psfsource import star_field
+from simimg.resolving.psfsource import SourcedPsf, star_field
 from simimg.resolving.readout import Readout
 from simimg.resolving.sighting import Sighting
 from simimg.resolving.starfit import Likelihood, fit_stars
@@ -83,17 +83,18 @@ class PsfQuality:
         standard error; NaN without stars to judge by.
     typical : float
         Square of the signal to noise of the stars that were judged, their median.
+    judged : tuple of JudgedStar
+        The single stars.
+    fwhm : float
+        Of the PSF, pixels.
     """
 
     report: PsfReport
     misfit: float
     error: float
     typical: float
-
-    @property
-    def sure(self) -> bool:
-        """Whether the misfit stands out of the noise."""
-        return isfinite(self.misfit) and self.misfit > _SURE * self.error
+    judged: tuple[JudgedStar, ...] = ()
+    fwhm: float = nan
 
     def floor(self, noise: float) -> float:
         """Deviance over squared signal to noise that the PSF leaves in any star, 0 or more.
@@ -103,14 +104,52 @@ class PsfQuality:
         noise : float
             The same, that the PSF has from the noise of the stars it was measured from.
         """
-        return max(self.misfit if self.sure else 0.0, noise)
+        sure = isfinite(self.misfit) and self.misfit > _SURE * self.error
+        return max(self.misfit if sure else 0.0, noise)
+
+    def floor_at(self, place: FloatArray, source: SourcedPsf) -> float:
+        """The same for an object at a place, from all stars but itself.
+
+        A PSF of the frame's own scene leaves nothing; what alone does not fit is not its fault.
+        """
+        if source.source == "scene":
+            return 0.0
+        apart = 0.5 * self.fwhm
+        others = [one for one in self.judged if hypot(one.x - place[0], one.y - place[1]) > apart]
+        misfit, error = _misfit(others)
+        return max(misfit if others and misfit > _SURE * error else 0.0, source.noise)
 
 
 @dataclass(frozen=True)
-class _Judged:
+class JudgedStar:
+    """A single star that the PSF was judged by.
+
+    Attributes
+    ----------
+    x, y : float
+        Pixels.
+    chi_square : float
+        Pearson's, of the pixels about it.
+    freedom : int
+        Degrees of freedom.
+    power : float
+        Square of the signal to noise.
+    """
+
+    x: float
+    y: float
     chi_square: float
     freedom: int
     power: float
+
+
+def _misfit(judged: Sequence[JudgedStar]) -> tuple[float, float]:
+    """Deviance over squared signal to noise that is left in stars, and its standard error."""
+    power = sum(one.power for one in judged)
+    if not power > 0.0:
+        return nan, nan
+    excess = sum(one.chi_square - one.freedom for one in judged)
+    return excess / power, sqrt(2.0 * sum(one.freedom for one in judged)) / power
 
 
 def judge_psf(observation: Observation, *, apart: Sequence[tuple[float, float]] = ()) -> PsfQuality:
@@ -140,11 +179,8 @@ def judge_psf(observation: Observation, *, apart: Sequence[tuple[float, float]] 
     )
     if not judged:
         return PsfQuality(report, nan, nan, nan)
-    power = sum(one.power for one in judged)
-    excess = sum(one.chi_square - one.freedom for one in judged)
-    scatter = sqrt(2.0 * sum(one.freedom for one in judged))
     typical = float(np.median([one.power for one in judged]))
-    return PsfQuality(report, excess / power, scatter / power, typical)
+    return PsfQuality(report, *_misfit(judged), typical, tuple(judged), observation.fwhm)
 
 
 def psf_warnings(
@@ -267,7 +303,7 @@ def _of_truth(observation: Observation) -> list[tuple[float, float, float]] | No
     return found
 
 
-def _judge(observation: Observation, x: float, y: float, width: float) -> _Judged | None:
+def _judge(observation: Observation, x: float, y: float, width: float) -> JudgedStar | None:
     """Fit one star and weigh what is left of it; None where it is faint, full or at the edge."""
     if not observation.holds(x, y):
         return None
@@ -291,4 +327,4 @@ def _judge(observation: Observation, x: float, y: float, width: float) -> _Judge
     if power < _SIGNAL:
         return None
     rest = (cutout.electrons - model) ** 2 / variance
-    return _Judged(float(rest[seen].sum()), int(seen.sum()) - 3, power)
+    return JudgedStar(x, y, float(rest[seen].sum()), int(seen.sum()) - 3, power)

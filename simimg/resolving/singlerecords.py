@@ -22,7 +22,7 @@ from simimg.resolving.alignment import transferred
 from simimg.resolving.fieldsingles import SingleStar
 from simimg.resolving.neighbours import CLEAR
 from simimg.resolving.observation import Observation
-from simimg.resolving.psfquality import star_power
+from simimg.resolving.psfquality import PsfQuality, star_power
 from simimg.resolving.records import SingleMeasurement
 from simimg.resolving.width import EXTENDED
 
@@ -57,7 +57,7 @@ class Seen:
 
 
 def single_records(
-    observation: Observation, stars: Sequence[SingleStar], *, floor: float
+    observation: Observation, stars: Sequence[SingleStar], *, quality: PsfQuality
 ) -> tuple[SingleMeasurement, ...]:
     """Turn fitted single stars of a frame into records, with TRUTH's labels.
 
@@ -65,19 +65,20 @@ def single_records(
     ----------
     observation : Observation
     stars : sequence of SingleStar
-    floor : float
-        Deviance over squared signal to noise that the PSF itself leaves: see `PsfQuality.floor`.
+    quality : PsfQuality
+        Tells what the PSF itself leaves in a star.
     """
     label = _labels(observation)
-    return tuple(_record([seen(observation, star, floor=floor)], label) for star in stars)
+    return tuple(_record([seen(observation, star, quality=quality)], label) for star in stars)
 
 
-def seen(observation: Observation, star: SingleStar, *, floor: float) -> Seen:
+def seen(observation: Observation, star: SingleStar, *, quality: PsfQuality) -> Seen:
     """What a frame, for the time being the first, knows of a single object."""
     light, background = float(star.point.electrons[0]), float(star.point.background[0])
     wide, scale, excess = star.wide, observation.arcsec**2, observation.excess
     place = wide.place if wide.extended else star.point.places[0]
     error = float(np.sqrt(star.point.covariance[2, 2]))
+    floor = quality.floor_at(place, observation.sourced)
     return Seen(
         place=(float(place[0]), float(place[1])),
         point=(light * excess, error * excess),
@@ -93,7 +94,7 @@ def joint_singles(
     observations: Sequence[Observation],
     stars: Sequence[Sequence[SingleStar]],
     *,
-    floors: Sequence[float],
+    qualities: Sequence[PsfQuality],
     apart: Sequence[Place],
 ) -> tuple[SingleMeasurement, ...]:
     """Records of the single objects of a field, from all its frames.
@@ -103,17 +104,17 @@ def joint_singles(
     observations : sequence of Observation
     stars : sequence of sequence of SingleStar
         Of each frame.
-    floors : sequence of float
-        Of each frame: see `PsfQuality.floor`.
+    qualities : sequence of PsfQuality
+        Of each frame's PSF.
     apart : sequence of (x, y)
         Places of pairs in the first frame: what one frame takes for single there is none.
     """
     first = observations[0]
     objects: list[dict[int, Seen]] = []
-    for number, (observation, found, floor) in enumerate(zip(observations, stars, floors)):
+    for number, (observation, found, quality) in enumerate(zip(observations, stars, qualities)):
         tree = cKDTree([next(iter(one.values())).place for one in objects]) if objects else None
         for star in found:
-            one = seen(observation, star, floor=floor)
+            one = seen(observation, star, quality=quality)
             place = transferred(one.place, observation.frame, first.frame)
             if place is None or any(
                 hypot(place[0] - x, place[1] - y) < CLEAR * first.fwhm for x, y in apart
@@ -158,7 +159,8 @@ def _record(seen_by: Sequence[Seen], label: Callable[[Place], str]) -> SingleMea
     if len(seen_by) > 1:
         gain = copysign(max(0.0, sum(one.significance**2 for one in seen_by) - apart), variance)
     misfit = sum(one.misfit for one in seen_by)
-    extended = gain > EXTENDED**2 + misfit
+    # What the PSF leaves shifts the statistic; its noise comes on top.
+    extended = gain > (EXTENDED + sqrt(misfit)) ** 2
     light, light_error = _mean([one.wide if extended else one.point for one in seen_by])
     held = max(variance, 0.0)
     return SingleMeasurement(

@@ -112,7 +112,7 @@ def measure_together(
         judgement = judge(whole, joint.sighting, PairLimits(joint.delivered), named=pair)
         advice = advise(whole, judgement, brief=True)
         records.append(replace(judgement.record, advice=advice))
-    psfs, warnings, floors = [], [], []
+    psfs, warnings, qualities = [], [], []
     for number, (observation, name) in enumerate(zip(observations, names)):
         apart = [p for one in known if (p := transferred(one, first, frames[number])) is not None]
         quality = judge_psf(observation, apart=apart)
@@ -121,14 +121,14 @@ def measure_together(
             for record, (joint, _, _) in zip(records, seen)
         ]
         psfs.append(quality.report)
-        floors.append(quality.floor(observation.sourced.noise))
+        qualities.append(quality)
         doubts = psf_warnings(observation, quality, looked)
         warnings += [f"{name}: {text}" for text in (*observation.notes, *doubts)]
     answer = FrameMeasurement(
         pairs=tuple(records),
         psf=psfs[0],
         warnings=tuple(warnings),
-        singles=joint_singles(observations, alone, floors=floors, apart=[*known, *found]),
+        singles=joint_singles(observations, alone, qualities=qualities, apart=[*known, *found]),
     )
     return Together(answer, tuple(psfs))
 

@@ -10,10 +10,12 @@ import pytest
 from numpy.testing import assert_allclose
 from scipy.spatial import cKDTree
 
+import simimg
 from simimg.resolving.finding import search_field
 from simimg.resolving.measure import measure_frame
 from simimg.resolving.observation import observe
-from tests.resolving.scenes import frame, pair, star
+from simimg.resolving.psfsource import PsfChoice
+from tests.resolving.scenes import frame, pair, scene, star
 
 DISC = """
 [[disc]]
@@ -154,3 +156,22 @@ def test_a_large_galaxy_is_one_object_and_a_star_on_it_another(index, radius):
     assert answer.pairs == ()
     near = [single for single in answer.singles if hypot(single.x - 78.3, single.y - 61.1) < 0.5]
     assert len(near) == 1
+
+
+def test_what_a_poor_psf_leaves_is_not_called_a_width():
+    """Bright stars under a PSF three per cent too narrow: wide by it, points in the verdict."""
+    places = [(20.0 + 26.3 * (i % 4), 20.0 + 26.1 * (i // 4)) for i in range(12)]
+    objects = "".join(star(1.5e5, f"x = {x:.2f}\ny = {y:.2f}") for x, y in places)
+    disc = DISC.replace("x = 60.2", "x = 116.4").replace("0.45", "1.0")
+    shot = frame(objects + disc, columns=140, rows=96)
+    wrong = scene(star(1e5), overrides=['air.seeing="0.873 arcsec"'])
+    psf = simimg.expose(wrong, keep={"psf"}).psf
+    assert psf is not None
+    choice = PsfChoice(source="file", image=psf)
+    # By the statistic alone most of the stars would be extended.
+    observed = search_field(observe(shot, psf=choice))
+    assert sum(single.wide.extended for single in observed.singles) > 8
+    answer = measure_frame(replace(shot, truth=None), psf=choice)
+    verdicts = {single.verdict for single in answer.singles if single.x < 105.0}
+    assert verdicts == {"point"}
+    assert [single.verdict for single in answer.singles if single.x > 105.0] == ["extended"]
