@@ -31,6 +31,7 @@ FAILED = 1
     metavar="PARTS",
     help="Extensions to add to each frame: expected, psf, with commas between them.",
 )
+@options.compress
 @click.option("--dry-run", is_flag=True, help="Say how many frames, bytes and hours it would take.")
 @options.workers
 @options.cluster
@@ -43,6 +44,7 @@ def command(
     count: int,
     out: str,
     keep: tuple[str, ...],
+    compress: bool,
     dry_run: bool,
     workers: int | None,
     cluster: str | None,
@@ -63,7 +65,9 @@ def command(
     opened = open_scene(scene, overrides=overrides, without=without).scene
     crew = options.processors() if workers is None else workers
     if dry_run:
-        found = estimate(opened, count=count, folder=out, keep=keep, workers=crew)
+        found = estimate(
+            opened, count=count, folder=out, keep=keep, compress=compress, workers=crew
+        )
         if as_json:
             own = {"scene": scene, "folder": out, "workers": crew, **found.__dict__}
             say(document(own, scene_id=scene_id(opened)))
@@ -85,6 +89,7 @@ def command(
             count=count,
             folder=out,
             keep=keep,
+            compress=compress,
             workers=crew,
             cluster=cluster,
             progress=progress,

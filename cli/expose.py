@@ -33,6 +33,7 @@ _PACKED = (".gz", ".fz", ".bz2", ".xz", ".zip", ".Z")
 @click.option(
     "--preview", type=click.Path(), metavar="PNG", help="Write a picture of the frame, too."
 )
+@options.compress
 @options.memory
 @options.threads
 @options.overwrite
@@ -45,6 +46,7 @@ def command(
     output: str,
     keep: tuple[str, ...],
     preview: str | None,
+    compress: bool,
     memory: int | None,
     threads: int | None,
     overwrite: bool,
@@ -87,6 +89,7 @@ def command(
             indices,
             frames,
             keep=keep,
+            compress=compress,
             memory=memory,
             threads=threads,
             overwrite=overwrite,
@@ -104,7 +107,7 @@ def command(
     jobs = list(zip(indices, frames, pictures))
     for index, path, picture in with_progress(jobs, "exposures", quiet=quiet, lines=not as_json):
         frame = expose_prepared(prepared, index=index, keep=kept, threads=threads)
-        frame.write(path, overwrite=overwrite)
+        frame.write(path, overwrite=overwrite, compress=compress)
         if picture is not None:
             from simimg.show.preview import write_preview
 
@@ -124,6 +127,7 @@ def _expose_mosaics(
     paths: Sequence[str],
     *,
     keep: tuple[str, ...],
+    compress: bool,
     memory: int | None,
     threads: int | None,
     overwrite: bool,
@@ -142,7 +146,7 @@ def _expose_mosaics(
     jobs = list(zip(indices, paths))
     for index, path in with_progress(jobs, "exposures", quiet=quiet, lines=not as_json):
         mosaic = expose_prepared_mosaic(prepared, index=index, keep=keep, threads=threads)
-        mosaic.write(path, overwrite=overwrite)
+        mosaic.write(path, overwrite=overwrite, compress=compress)
         detectors = [
             {"name": name, **_figures(frame)} for name, frame in zip(mosaic.names, mosaic.frames)
         ]

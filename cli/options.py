@@ -182,6 +182,11 @@ width = click.option(
 )
 as_json = click.option("--json", "as_json", is_flag=True, help="Print JSON, and nothing else.")
 quiet = click.option("--quiet", "-q", is_flag=True, help="Print no progress, warning or summary.")
+compress = click.option(
+    "--compress",
+    is_flag=True,
+    help="Compress the images without loss: by tiles, with Rice's code, which FITS readers know.",
+)
 overwrite = click.option("--overwrite", is_flag=True, help="Replace files that exist.")
 memory = click.option(
     "--memory", type=Memory(), metavar="SIZE", help='Memory the image may take, such as "2 GiB".'

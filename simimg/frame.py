@@ -129,7 +129,9 @@ class Frame:
         value = self.value("SCENEID")
         return value if isinstance(value, str) else None
 
-    def write(self, path: str | os.PathLike[str], *, overwrite: bool = False) -> None:
+    def write(
+        self, path: str | os.PathLike[str], *, overwrite: bool = False, compress: bool = False
+    ) -> None:
         """Write the frame as FITS: whole, or not at all.
 
         The primary HDU holds the counts; the extensions TRUTH, SCENE, EXPECTED, PSF and MASK
@@ -140,6 +142,9 @@ class Frame:
         path : path
         overwrite : bool
             Whether a file of that name may be replaced.
+        compress : bool, optional
+            Whether counts and mask are compressed, without loss: by tiles, with Rice's code. The
+            counts are then the extension COUNTS. Counts of floating point stay as they are.
 
         Raises
         ------
@@ -163,6 +168,7 @@ class Frame:
             psf=None if self.psf is None else (self.psf.image, self.psf.oversampling),
             mask=self.mask,
             mask_says=tuple(f"{value}: {meaning}" for value, meaning in MASK_BITS.items()),
+            compress=compress,
         )
 
     @classmethod

@@ -81,8 +81,10 @@ class Mosaic:
     def __getitem__(self, name: str) -> Frame:
         return self.frames[self.names.index(name.upper())]
 
-    def write(self, path: str | os.PathLike[str], *, overwrite: bool = False) -> None:
-        """Write the mosaic as FITS: whole, or not at all.
+    def write(
+        self, path: str | os.PathLike[str], *, overwrite: bool = False, compress: bool = False
+    ) -> None:
+        """Write the mosaic as FITS: whole, or not at all; arguments as for `simimg.Frame.write`.
 
         Raises
         ------
@@ -102,6 +104,7 @@ class Mosaic:
             scene_files=self.scene_files,
             mask_says=tuple(f"{value}: {meaning}" for value, meaning in MASK_BITS.items()),
             truth_says=_SAYS,
+            compress=compress,
         )
 
 

@@ -23,6 +23,7 @@ from simimg.arrays import AnyArray
 from simimg.errors import InputError, mistake
 from simimg.fits.cards import COMMENTARY, ascii_text, is_coordinate, is_keyword, is_layout
 from simimg.fits.choosing import COUNT_TYPES, foreign_mask, image_hdu, inherited, plane_of
+from simimg.fits.packing import COUNTS
 from simimg.fits.survey import UNPACKED_LIMIT, survey
 
 if TYPE_CHECKING:
@@ -147,7 +148,8 @@ def _parts(hdus: HDUList, where: str, wanted: int | str | None) -> dict[str, Any
         "simulated": chosen.header.get("SIMULATE") is True,
     }
     ours = parts["simulated"] and str(header.get("CREATOR", "")).startswith("simimg")
-    if not ours or chosen is not hdus[0]:
+    main = chosen is hdus[0] or (chosen is hdus[1] and chosen.name == COUNTS)
+    if not ours or not main:
         # Extensions of the same names in other programs' files mean other things; but a mask is
         # a mask.
         with _damage(where, "mask"):
@@ -158,7 +160,7 @@ def _parts(hdus: HDUList, where: str, wanted: int | str | None) -> dict[str, Any
             with _damage(where, "TRUTH"):
                 parts["truth"] = read_truth(hdus["TRUTH"], where)
         return parts
-    extensions = {hdu.name: hdu for hdu in reversed(hdus[1:])}
+    extensions = {hdu.name: hdu for hdu in reversed(hdus[1:]) if hdu is not chosen}
     readers: dict[str, Callable[[Any, str], Any]] = {
         "TRUTH": read_truth,
         "SCENE": _read_scene,

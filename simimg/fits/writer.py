@@ -20,6 +20,7 @@ from simimg.fits.hdus import (
     word_sum,
     write_hdu,
 )
+from simimg.fits.packing import COUNTS, can_be_packed, packed_parts
 from simimg.newfile import new_file
 from simimg.version import __version__
 
@@ -50,6 +51,7 @@ _PSF_SAYS = (
     "Effective PSF (optics, air and pixel): the fraction of a star's light that falls on a "
     "detector pixel centred at the sample. The star is at the centre of the middle sample.",
 )
+_NO_IMAGE: dict[str, object] = {"BITPIX": (8, "no image"), "NAXIS": (0, "no image")}
 _NAME_LETTERS = "".join(chr(code) for code in range(32, 127) if chr(code) != "%")
 
 
@@ -67,6 +69,7 @@ def write_frame(
     psf: tuple[AnyArray, int] | None,
     mask: AnyArray | None,
     mask_says: Sequence[str] = (),
+    compress: bool = False,
 ) -> None:
     """Write the parts of a frame; see `simimg.frame.Frame` for what they are.
 
@@ -82,6 +85,9 @@ def write_frame(
     psf : (image, oversampling) or None
     mask_says : sequence of str
         What the bits of the mask mean, a line each.
+    compress : bool
+        Whether counts and mask are compressed; the primary HDU is empty then, and the counts are
+        the extension COUNTS.
 
     Raises
     ------
@@ -91,7 +97,12 @@ def write_frame(
     coordinates = {} if wcs is None else coordinate_cards(wcs)
     own = {key: value for key, value in header.items() if key not in ("SIMULATE", "CREATOR")}
     with new_file(path, overwrite=overwrite) as handle:
-        _write_image(handle, counts, simulated, "", {**coordinates, **own}, ())
+        compress = compress and can_be_packed(counts)
+        name = ""
+        if compress:
+            name = COUNTS
+            write_hdu(handle, _header("IMAGE", _NO_IMAGE, simulated, "", {}, ()), ())
+        _write_image(handle, counts, simulated, name, {**coordinates, **own}, (), pack=compress)
         if truth is not None:
             write_truth(handle, truth, simulated=simulated)
         if scene_files:
@@ -105,7 +116,7 @@ def write_frame(
             finer = {"OVERSAMP": (oversampling, "samples in the width of a detector pixel")}
             _write_image(handle, image, simulated, "PSF", finer, _PSF_SAYS)
         if mask is not None:
-            _write_image(handle, mask, simulated, "MASK", coordinates, mask_says)
+            _write_image(handle, mask, simulated, "MASK", coordinates, mask_says, pack=compress)
 
 
 def write_mosaic_file(
@@ -118,6 +129,7 @@ def write_mosaic_file(
     scene_files: Sequence[tuple[str, str, bytes]],
     mask_says: Sequence[str] = (),
     truth_says: Sequence[str] = (),
+    compress: bool = False,
 ) -> None:
     """Write the frames of a mosaic's detectors as one file, an image extension each.
 
@@ -135,23 +147,26 @@ def write_mosaic_file(
         As the attributes of `simimg.frame.Frame`; a truth of None is left out.
     mask_says, truth_says : sequence of str
         What the bits of the masks mean, and further words on the truth.
+    compress : bool
+        Whether counts and masks are compressed.
 
     Raises
     ------
     InputError, RunError
         As `simimg.newfile.new_file`.
     """
-    layout: dict[str, object] = {"BITPIX": (8, "no image"), "NAXIS": (0, "no image")}
     with new_file(path, overwrite=overwrite) as handle:
-        write_hdu(handle, _header("IMAGE", layout, True, "", header, ()), ())
+        write_hdu(handle, _header("IMAGE", _NO_IMAGE, True, "", header, ()), ())
         for number, (name, own, wcs, images) in enumerate(detectors, start=1):
             coordinates = {} if wcs is None else coordinate_cards(wcs)
             cards = {"INHERIT": (True, "keywords of the primary header hold, too"), **own}
-            _write_image(handle, images["counts"], True, name, {**coordinates, **cards}, ())
+            counts, pack = images["counts"], compress and can_be_packed(images["counts"])
+            _write_image(handle, counts, True, name, {**coordinates, **cards}, (), pack=pack)
             version = {"EXTVER": (number, f"of the detector {name}")}
             if "MASK" in images:
                 cards = {**version, **coordinates}
-                _write_image(handle, images["MASK"], True, "MASK", cards, mask_says)
+                mask = images["MASK"]
+                _write_image(handle, mask, True, "MASK", cards, mask_says, pack=compress)
             if "EXPECTED" in images:
                 cards = {**version, "BUNIT": "electron", **coordinates}
                 _write_image(handle, images["EXPECTED"], True, "EXPECTED", cards, _EXPECTED_SAYS)
@@ -213,8 +228,7 @@ def write_table_file(
     """
     rows = len(columns[0].values) if columns else 0
     with new_file(path, overwrite=overwrite) as handle:
-        layout: dict[str, object] = {"BITPIX": (8, "no image"), "NAXIS": (0, "no image")}
-        write_hdu(handle, _header("IMAGE", layout, simulated, "", {}, ()), ())
+        write_hdu(handle, _header("IMAGE", _NO_IMAGE, simulated, "", {}, ()), ())
         _write_table(handle, columns, rows, simulated, name, says)
 
 
@@ -225,7 +239,14 @@ def _write_image(
     name: str,
     cards: Mapping[str, object],
     says: Iterable[str],
+    *,
+    pack: bool = False,
 ) -> None:
+    if pack:
+        layout, data = packed_parts(image)
+        header = _header("BINTABLE", layout, simulated, name, cards, says)
+        write_hdu(handle, header, [(memoryview(data), word_sum(data))])
+        return
     layout = image_cards(image)
     scaling: dict[str, object] = {
         key: layout.pop(key) for key in ("BSCALE", "BZERO") if key in layout

@@ -96,7 +96,7 @@ class FrameMaker:
         target = Path(folder) / frame_name(number)
         try:
             if not target.exists():
-                self.frame(number).write(target, overwrite=True)
+                self.frame(number).write(target, overwrite=True, compress=self.compress)
         except (InputError, RunError) as error:
             return " ".join(error.lines)
         except MemoryError:

@@ -196,3 +196,13 @@ def test_no_keyword_that_simimg_fills_can_be_overruled(run, scene, folder):
         text = (folder / scene).read_text().replace("[sky]", f"[header]\n{keyword} = 'x'\n\n[sky]")
         (folder / "other.toml").write_text(text)
         assert run("check", "other.toml").code == 2, keyword
+
+
+def test_the_command_compresses_and_makes_the_same_frame_again(run, scene):
+    assert run("expose", scene, "-o", "plain.fits", "-q").code == 0
+    assert run("expose", scene, "-o", "packed.fits", "--compress", "-q").code == 0
+    assert run("expose", "packed.fits", "-o", "again.fits", "-q").code == 0
+    with open("plain.fits", "rb") as plain, open("again.fits", "rb") as again:
+        assert plain.read() == again.read()
+    told = run("measure", "packed.fits", "--json").json
+    assert told["pairs"][0]["separation_arcsec"] > 0.0
