@@ -17,17 +17,35 @@ if TYPE_CHECKING:
 
 
 @click.command("check")
-@options.scene
+@click.argument("scene", type=click.Path(), required=False)
+@options.changes
+@click.option(
+    "--schema",
+    is_flag=True,
+    help="Print the JSON schema of a scene file, for editors, in place of checking one.",
+)
 @options.as_json
 @options.quiet
 def command(
-    scene: str, overrides: Sequence[str], without: Sequence[str], as_json: bool, quiet: bool
+    scene: str | None,
+    overrides: Sequence[str],
+    without: Sequence[str],
+    schema: bool,
+    as_json: bool,
+    quiet: bool,
 ) -> None:
     """Say what SCENE means, list the defaults it uses, and find every mistake in it.
 
     SCENE may be a frame of simimg, which carries its scene. With --quiet nothing is printed of a
     scene without mistakes.
     """
+    if schema:
+        if scene is not None or overrides or without:
+            raise click.UsageError("--schema is that of every scene; leave out SCENE and changes")
+        _print_schema()
+        return
+    if scene is None:
+        raise click.UsageError("Missing argument 'SCENE'.")
     from simimg.scene.file import requirements_to_expose, scene_id
     from simimg_cli.cautions import print_cautions
     from simimg_cli.scenes import open_scene
@@ -59,6 +77,14 @@ def command(
         say("No mistake: ready to expose.")
     warn(meaning.warnings)
     print_cautions(opened)
+
+
+def _print_schema() -> None:
+    import json
+
+    from simimg.scene.schema import scene_schema
+
+    say(json.dumps(scene_schema(), indent=1, ensure_ascii=True))
 
 
 def _understood(scene: Scene, *, objects: bool) -> Description:

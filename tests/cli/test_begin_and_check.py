@@ -128,3 +128,22 @@ class TestCheck:
     def test_everything_is_a_simulation(self, run, scene):
         assert "confirmed with the observatory" in run("check", scene).err
         assert any("simulation" in text for text in run("check", scene, "--json").json["cautions"])
+
+
+class TestSchema:
+    def test_it_is_json_and_alone(self, run):
+        from simimg.scene.schema import scene_schema
+
+        result = run("check", "--schema")
+        assert (result.code, result.err) == (0, "")
+        assert result.json == scene_schema()
+
+    @pytest.mark.parametrize(
+        "arguments",
+        [["check"], ["check", "tiny.toml", "--schema"], ["check", "--schema", "--without", "air"]],
+    )
+    def test_of_no_scene_or_of_every_scene(self, run, scene, files, arguments):
+        result = run(*arguments)
+        assert (result.code, result.out) == (2, "")
+        assert "SCENE" in result.err
+        assert files() == [scene]
