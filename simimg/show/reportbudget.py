@@ -9,13 +9,14 @@ Arcseconds and electrons, as the names say.
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from dataclasses import replace as update
 from math import degrees, inf, nan, radians
 from typing import Any
 
 import numpy as np
 
-from simimg.assembly.objects import inventory
+from simimg.assembly.objects import Inventory, inventory
 from simimg.assembly.places import field_geometry
 from simimg.assembly.train import Train, assemble_train
 from simimg.errors import InputError
@@ -86,32 +87,43 @@ def width_budget(scene: Scene, found: Limits, pair: int | None) -> list[Without]
     """
     train = assemble_train(scene)
     steady = _steady(scene, train)
-    difference = 0.0
-    angle = radians(found.position_angle_deg)
+    difference, angle, base = 0.0, radians(found.position_angle_deg), _whole(found)
     if pair is not None:
         own = [one for one in found.objects if one.kind == "pair"][pair]
         difference = own.magnitude_difference or 0.0
         angle = radians(own.position_angle_deg or 0.0)
+        base = _whole_pair(own)
     asked = _Asked(angle, difference, pair)
-    rows = [asked.row(steady, "", "as the scene is")]
+    rows = [base]
     for part, remark, changes in _parts(steady, train):
-        blurs = part not in _NOISE
-        if not blurs and pair is None:
-            continue  # it touches no width, and no bound is asked for
         try:
             other = replace(steady, changes)
         except InputError:
             continue  # the scene does not hold together without it
-        if blurs:
+        if part not in _NOISE:
             rows.append(asked.row(other, part, remark))
-        else:
+        elif pair is not None:
             bounds = asked.bounds(other, train)
-            rows.append(Without(part, remark, rows[0].fwhm_arcsec, rows[0].sparrow_arcsec, *bounds))
+            rows.append(Without(part, remark, base.fwhm_arcsec, base.sparrow_arcsec, *bounds))
     if scene.psf is None:
         rows.append(asked.width(steady, train.focal, "pixel", "in the focal plane"))
         remark = "diffraction at the centre of the band"
         rows.append(asked.width(steady, train.optics, "all but the pupil", remark))
     return rows
+
+
+def _whole(found: Limits) -> Without:
+    one = found.delivered
+    return Without("", "as the scene is", one.fwhm_arcsec, one.sparrow_arcsec)
+
+
+def _whole_pair(own: ObjectLimits) -> Without:
+    one, bound = own.delivered, own.bound
+    width = (nan, nan) if one is None else (one.fwhm_arcsec, one.sparrow_arcsec)
+    bounds = (nan, nan, nan)
+    if bound is not None:
+        bounds = bound.separation_arcsec, bound.position_angle_deg, bound.magnitude_difference
+    return Without("", "as the scene is", *width, *bounds)
 
 
 def largest(rows: list[Without]) -> Without | None:
@@ -178,13 +190,14 @@ def _parts(scene: Scene, train: Train) -> Iterator[tuple[str, str, Mapping[str, 
         yield "read noise", "", {"camera.read_noise": None}
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class _Asked:
     """Along which direction, for which difference, of which pair."""
 
     angle: float
     difference: float
     pair: int | None
+    _views: dict[Train, Expectation] = field(default_factory=dict)
 
     def row(self, scene: Scene, part: str, remark: str) -> Without:
         """Width and bounds of a scene."""
@@ -203,7 +216,7 @@ class _Asked:
     def bounds(self, scene: Scene, train: Train) -> tuple[float, float, float]:
         """Cramer-Rao bounds: arcseconds, degrees, magnitudes; NaN without a pair."""
         found = inventory(scene, train=train)
-        view = None if self.pair is None else Expectation.of(scene, train, found)
+        view = None if self.pair is None else self._view(scene, train, found)
         if view is None or self.pair is None:
             return nan, nan, nan
         stars = pairs_of(found)[self.pair]
@@ -215,6 +228,17 @@ class _Asked:
             images, stars=rows, background=sky, psfs=view.models(stars)[:2]
         )
         return to_arcsec(separation * view.scale), degrees(angle), difference
+
+    def _view(self, scene: Scene, train: Train, found: Inventory) -> Expectation | None:
+        """The expected image about the pairs; that of another sky through the same optics."""
+        known, detector = self._views.get(train), scene_detector(scene, train)
+        noise = None if detector is None else detector.read_noise
+        if known is not None and detector is not None and known.detector.read_noise == noise:
+            return update(known, detector=detector)
+        view = Expectation.of(scene, train, found)
+        if view is not None:
+            self._views[train] = view
+        return view
 
     def width(self, scene: Scene, psf: Transfer, part: str, remark: str) -> Without:
         """Width and limit of one PSF."""

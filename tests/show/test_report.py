@@ -292,7 +292,10 @@ class TestBudget:
         pupil = rows["all but the pupil"]
         assert pupil.fwhm_arcsec == pytest.approx(found.diffraction.fwhm_arcsec, rel=1e-9)
         assert rows["pixel"].fwhm_arcsec < 0.99 * rows[""].fwhm_arcsec
-        for part in ("sky", "read noise"):
+        for part, key in (("sky", "sky"), ("read noise", "camera.read_noise")):
+            (bound,) = simimg.precision(replace(one, {key: None}))
+            expected = pytest.approx(bound.separation_arcsec, rel=1e-9)
+            assert rows[part].separation_arcsec == expected
             assert rows[part].fwhm_arcsec == rows[""].fwhm_arcsec
             assert rows[part].separation_arcsec < rows[""].separation_arcsec
         assert "dark signal" not in rows
