@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from simimg.assembly.brightness import exposure_time
-from simimg.camera.settings import CameraSettings, CosmicRays, Patterns, Readout, Shutter
+from simimg.camera.settings import CameraSettings, CosmicRays, Patterns, Readout, Shutter, Window
 from simimg.scene.camera import Camera
 from simimg.scene.model import Scene
 
@@ -38,7 +38,16 @@ def detector_settings(camera: Camera, *, time: float) -> CameraSettings:
         if camera.shutter is None
         else Shutter(kind=camera.shutter.kind, travel=camera.shutter.travel),
         readout=_readout(camera),
+        window=_window(camera),
     )
+
+
+def _window(camera: Camera) -> Window | None:
+    if camera.sub_frame is None or camera.pixels is None:
+        return None
+    x, y, columns, rows = camera.sub_frame
+    whole = camera.pixels[::-1]
+    return Window(shape=whole, rows=slice(y, y + rows), columns=slice(x, x + columns))
 
 
 def _patterns(camera: Camera) -> Patterns:

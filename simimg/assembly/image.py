@@ -49,10 +49,10 @@ def scene_image(
     sources, columns, rows = objects.sources, geometry.columns, geometry.rows
     if side > 1:
         assert scene.camera is not None
-        assert scene.camera.pixels is not None
+        assert scene.camera.read_pixels is not None
         train = assemble_train(_unbinned(scene, side))
         sources = _finer(sources, side)
-        columns, rows = scene.camera.pixels
+        columns, rows = scene.camera.read_pixels
     expected = expected_image(
         train.basis,
         sources,

@@ -19,6 +19,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from simimg.arrays import FloatArray
+from simimg.scene.camera import Camera
 from simimg.scene.model import Scene
 
 if TYPE_CHECKING:
@@ -205,8 +206,17 @@ def field_geometry(scene: Scene) -> FieldGeometry:
         ra=pointing.ra if pointing is not None else 0.0,
         dec=pointing.dec if pointing is not None else 0.0,
         distortion=_distortion(scene),
-        axis=camera.field_centre if camera is not None else None,
+        axis=_axis(camera) if camera is not None else None,
     )
+
+
+def _axis(camera: Camera) -> tuple[float, float] | None:
+    """Where the field centre falls, pixels of the frame; None for its middle."""
+    if camera.sub_frame is None or camera.pixels is None:
+        return camera.field_centre
+    side = camera.binning
+    x, y = camera.field_centre or tuple(0.5 * (one // side - 1) for one in camera.pixels)
+    return x - camera.sub_frame[0] // side, y - camera.sub_frame[1] // side
 
 
 def _distortion(scene: Scene) -> float:

@@ -46,6 +46,10 @@ def detector_cards(settings: CameraSettings, columns: int, rows: int) -> dict[st
     if readout.em_gain > 1.0:
         cards["EMGAIN"] = (readout.em_gain, "gain of the multiplying register")
         cards["EXCESS"] = (excess_noise(readout.em_gain), "square of the excess noise factor")
+    if settings.window is not None:
+        across, along = settings.window.columns, settings.window.rows
+        part = f"[{across.start + 1}:{across.stop},{along.start + 1}:{along.stop}]"
+        cards["DETSEC"] = (part, "pixels of the detector that were read")
     if readout.binning > 1:
         cards["BINNING"] = (readout.binning, "pixels to the side of a bin")
     if readout.prescan or readout.overscan:

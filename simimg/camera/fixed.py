@@ -40,6 +40,16 @@ class FixedPatterns:
     flicker: FloatArray | None
     mask: MaskArray | None
 
+    def part(self, rows: slice, columns: slice) -> FixedPatterns:
+        """What some of the pixels do."""
+
+        def cut(pattern: AnyArray | None) -> AnyArray | None:
+            return None if pattern is None else pattern[rows, columns]
+
+        return FixedPatterns(
+            cut(self.response), cut(self.currents), cut(self.flicker), cut(self.mask)
+        )
+
 
 @lru_cache(maxsize=4)
 def fixed_patterns(

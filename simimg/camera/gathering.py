@@ -46,10 +46,15 @@ class Exposure:
         """With the camera's own patterns."""
         rows, columns = light.shape
         shape = (int(rows), int(columns))
-        fixed = fixed_patterns(shape, settings.patterns, settings.serial, settings.dark_current)
+        window = settings.window
+        whole = shape if window is None else window.shape
+        fixed = fixed_patterns(whole, settings.patterns, settings.serial, settings.dark_current)
         shutter = None
         if settings.shutter is not None:
-            shutter = shutter_pattern(shape, settings.shutter, time=settings.time)
+            shutter = shutter_pattern(whole, settings.shutter, time=settings.time)
+        if window is not None:
+            fixed = fixed.part(window.rows, window.columns)
+            shutter = None if shutter is None else shutter[window.rows, window.columns]
         return cls(light, settings, seed, frame, fixed, shutter)
 
     @property

@@ -46,12 +46,15 @@ class Reading:
     def of(cls, exposure: Exposure, shape: tuple[int, int]) -> Reading:
         """How a frame of so many rows and columns is read."""
         settings, readout = exposure.settings, exposure.settings.readout
+        window = None if settings.window is None else settings.window.binned(readout.binning)
         noise = None
         if readout.noise_spread:
             data = (shape[0], shape[1] - readout.prescan - readout.overscan)
-            noise = _around(
-                relative_noise(data, readout.noise_spread, settings.serial), settings, 1.0
-            )
+            rows, columns = slice(0, data[0]), slice(0, data[1])
+            if window is not None:
+                data, rows, columns = window.shape, window.rows, window.columns
+            own = relative_noise(data, readout.noise_spread, settings.serial)[rows, columns]
+            noise = _around(own, settings, 1.0)
         gain: FloatArray | float = settings.gain
         bias: FloatArray | float = settings.bias
         if readout.amplifiers > 1:
@@ -62,9 +65,12 @@ class Reading:
         if readout.bias_rms:
             fixed = fixed_stream(settings.serial, Fixed.BIAS)
             bias = np.zeros(shape, dtype=np.float32) + np.float32(bias)
+            width = shape[1] - readout.prescan - readout.overscan
             offsets = column_offsets(
-                shape[1] - readout.prescan - readout.overscan, readout.bias_rms, fixed
+                width if window is None else window.shape[1], readout.bias_rms, fixed
             )
+            if window is not None:
+                offsets = offsets[window.columns]
             bias += _around(offsets[np.newaxis, :], settings, 0.0)
         if readout.bias_drift:
             rng = exposure.stream(Stage.BIAS_DRIFT)

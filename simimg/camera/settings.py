@@ -189,6 +189,36 @@ class Readout:
 
 
 @dataclass(frozen=True, kw_only=True)
+class Window:
+    """The part of a detector that is read.
+
+    Parameters
+    ----------
+    shape : (int, int)
+        Rows and columns of the whole detector.
+    rows, columns : slice
+        Of it that are read, without a step.
+    """
+
+    shape: tuple[int, int]
+    rows: slice
+    columns: slice
+
+    def __post_init__(self) -> None:
+        for one, length in zip((self.rows, self.columns), self.shape, strict=True):
+            if not 0 <= one.start < one.stop <= length:
+                raise ValueError(f"{one} is no part of {length} pixels")
+
+    def binned(self, side: int) -> Window:
+        """The same in bins of so many pixels to the side."""
+        rows, columns = (
+            slice(one.start // side, one.stop // side) for one in (self.rows, self.columns)
+        )
+        height, width = self.shape
+        return Window(shape=(height // side, width // side), rows=rows, columns=columns)
+
+
+@dataclass(frozen=True, kw_only=True)
 class CameraSettings:
     """What the chain must know of a camera and an exposure.
 
@@ -216,6 +246,8 @@ class CameraSettings:
     cosmic_rays : CosmicRays or None
     shutter : Shutter or None
     readout : Readout
+    window : Window or None
+        What is read where that is not the whole detector.
 
     Raises
     ------
@@ -236,6 +268,7 @@ class CameraSettings:
     cosmic_rays: CosmicRays | None = None
     shutter: Shutter | None = None
     readout: Readout = field(default_factory=Readout)
+    window: Window | None = None
 
     def __post_init__(self) -> None:
         _within(self, ("time", "read_noise", "dark_current"))

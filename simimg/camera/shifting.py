@@ -70,6 +70,13 @@ def _trail(exposure: Exposure, signal: AnyArray) -> None:
     """Let charge lag on its way to the first row, or with four amplifiers to either end."""
     readout, rng = exposure.settings.readout, exposure.stream(Stage.TRAILING)
     half = signal.shape[0] // 2 if readout.amplifiers == 4 else signal.shape[0]
+    window = exposure.settings.window
     for part in (signal[:half], signal[half:][::-1]):
         if part.size:
-            trail(part, inefficiency=readout.inefficiency, length=readout.trail_length, rng=rng)
+            trail(
+                part,
+                inefficiency=readout.inefficiency,
+                length=readout.trail_length,
+                rng=rng,
+                before=0 if window is None else window.rows.start,
+            )

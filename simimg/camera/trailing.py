@@ -17,7 +17,12 @@ from simimg.arrays import AnyArray
 
 
 def trail(
-    electrons: AnyArray, *, inefficiency: float, length: float, rng: np.random.Generator
+    electrons: AnyArray,
+    *,
+    inefficiency: float,
+    length: float,
+    rng: np.random.Generator,
+    before: int = 0,
 ) -> None:
     """Let charge lag along the columns, in place.
 
@@ -30,9 +35,11 @@ def trail(
     length : float
         Rows over which a trail falls to 1/e, above 0.
     rng : numpy.random.Generator
+    before : int, optional
+        Rows between these and the register, 0 or more; each is another shift.
     """
     rows, columns = electrons.shape
-    lost = -np.expm1(np.arange(1, rows + 1) * np.log1p(-inefficiency))
+    lost = -np.expm1((before + np.arange(1, rows + 1)) * np.log1p(-inefficiency))
     released = -np.expm1(-1.0 / length)
     held = np.zeros(columns, dtype=np.int64)
     for row, share in enumerate(lost):

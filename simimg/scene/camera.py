@@ -24,6 +24,13 @@ class Camera(Detector):
     pixels: Annotated[tuple[int, int] | None, Several(Whole(1, 32768, 256), 2)] = key(
         "Columns and rows of the detector.", None
     )
+    sub_frame: Annotated[tuple[int, int, int, int] | None, Several(Whole(0, 32768, 64), 4)] = key(
+        "Part of the detector that is read: its first column and row, from 0, and how many columns "
+        "and rows. Places in pixels count from its first pixel.",
+        None,
+        absent="none",
+        meaning="all of the detector is read",
+    )
     pixel_size: Annotated[
         float | None, Quantity("length", at_least="0.01 um", at_most="1 m", sample="9 um")
     ] = key("Side of a pixel; with telescope.focal_length it gives the pixel scale.", None)
@@ -113,13 +120,20 @@ class Camera(Detector):
         meaning="east is left where north is up",
     )
 
+    @property
+    def read_pixels(self) -> tuple[int, int] | None:
+        """Columns and rows of the detector's pixels that are read; None where none are given."""
+        return self.pixels if self.sub_frame is None else self.sub_frame[2:]
+
     def agree(self) -> Iterator[Fault]:
         """The bias must leave room for counts; tracks need the size of a pixel."""
         yield from super().agree()
-        if self.pixels is not None and self.binning > min(self.pixels):
+        yield from self._part()
+        read = self.read_pixels
+        if read is not None and min(read) > 0 and self.binning > min(read):
             yield Fault(
                 ("binning",),
-                f"is more than the detector's pixels, {self.pixels[0]} x {self.pixels[1]}",
+                f"is more than the pixels that are read, {read[0]} x {read[1]}",
                 "write a smaller binning, or more pixels",
             )
         if self.cosmic_ray_rate and self.pixel_size is None:
@@ -134,4 +148,33 @@ class Camera(Detector):
                 ("bias",),
                 f"must be below the largest count of {self.bit_depth} bits, {largest}",
                 "write a smaller bias or a larger bit_depth",
+            )
+
+    def _part(self) -> Iterator[Fault]:
+        """A part of the detector lies on it, on whole bins, behind one amplifier."""
+        if self.sub_frame is None:
+            return
+        x, y, columns, rows = self.sub_frame
+        if self.pixels is None:
+            yield Fault(
+                ("sub_frame",), "needs camera.pixels, which is missing", "add pixels = [1024, 1024]"
+            )
+            return
+        if min(columns, rows) < 1 or x + columns > self.pixels[0] or y + rows > self.pixels[1]:
+            yield Fault(
+                ("sub_frame",),
+                f"does not lie on the detector's {self.pixels[0]} x {self.pixels[1]} pixels",
+                "write first column, first row, columns and rows within them",
+            )
+        if any(one % self.binning for one in self.sub_frame):
+            yield Fault(
+                ("sub_frame",),
+                f"does not begin and end with whole bins of {self.binning} pixels",
+                f"write multiples of {self.binning}",
+            )
+        if self.amplifier_gains or self.amplifier_biases:
+            yield Fault(
+                ("sub_frame",),
+                "is read by one amplifier",
+                "leave out amplifier_gains and amplifier_biases, or the sub-frame",
             )

@@ -146,9 +146,9 @@ class Scene(Table):
     @property
     def image_size(self) -> tuple[int, int] | None:
         """Columns and rows of the frame's pixels that see the sky; None where none are given."""
-        if self.camera is None or self.camera.pixels is None:
+        if self.camera is None or self.camera.read_pixels is None:
             return None
-        columns, rows = self.camera.pixels
+        columns, rows = self.camera.read_pixels
         return columns // self.camera.binning, rows // self.camera.binning
 
     @property

@@ -160,6 +160,9 @@ def detector_faults(detectors: Sequence[MosaicDetector], camera: Camera | None) 
             "add a [camera] table with what the detectors share",
         )
         return
+    if camera.sub_frame is not None:
+        what = "goes with one detector, and there are [[detector]] tables"
+        yield Fault(("camera", "sub_frame"), what, "leave it out, or give the detectors pixels")
     if len(detectors) > MOST_DETECTORS:
         what = f"there are too many detectors, {len(detectors)}"
         yield Fault(("detector",), what, f"write at most {MOST_DETECTORS}")

@@ -219,7 +219,7 @@ def aliased_power(transfer: Transfer) -> float:
 def _figures(
     scene: Scene, scales: FloatArray, found: dict[str, FloatArray]
 ) -> dict[str, FloatArray]:
-    pixels = scene.camera.pixels if scene.camera is not None else None
+    pixels = scene.camera.read_pixels if scene.camera is not None else None
     names = ("pixels_per_fwhm", "pixels_per_lambda_over_d", "aliased_power", "bound_separation",
              "share_resolved", "saturated")  # fmt: skip
     figures = {name: frozen(found[name]) for name in names}
