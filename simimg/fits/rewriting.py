@@ -1,8 +1,9 @@
 """A FITS file again with one image changed: every other HDU stays as it was, byte for byte.
 
 The image keeps its BITPIX, BSCALE, BZERO and BLANK, and its header every card that is not changed;
-the tables of a frame's truth are the only other thing that may be replaced or added. Checksums are
-made anew for what is written anew.
+the table of a frame's truth, and what a frame of ours says beside its image, pixel by pixel, are
+the only other things that may be replaced or added. Checksums are made anew for what is written
+anew.
 """
 
 from __future__ import annotations
@@ -11,7 +12,7 @@ import io
 import os
 import warnings
 from collections.abc import Iterable, Iterator, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -63,6 +64,8 @@ class Original:
         The TRUTH of the file.
     truth_number : int or None
         Its HDU.
+    beside : mapping of str to int
+        HDUs that a frame of ours has beside its image: EXPECTED and MASK.
     """
 
     content: bytes
@@ -74,6 +77,7 @@ class Original:
     blank: int | None
     truth: Table | None
     truth_number: int | None
+    beside: Mapping[str, int] = field(default_factory=dict)
 
     @property
     def header(self) -> Header:
@@ -83,15 +87,15 @@ class Original:
     @property
     def stored(self) -> AnyArray:
         """The image's plane as it is stored, big-endian and read only."""
-        header = self.header
-        count = [int(header[f"NAXIS{axis}"]) for axis in range(int(header["NAXIS"]), 0, -1)]
-        flat = np.frombuffer(
-            self.content,
-            dtype=_STORED[int(header["BITPIX"])],
-            count=int(np.prod(count)),
-            offset=self.spans[self.number].data,
-        )
-        return flat.reshape(count[-2:])
+        return _plane(self.content, self.spans[self.number])
+
+    def as_stored(self, name: str, values: AnyArray) -> AnyArray:
+        """Values as an image beside this one stores them."""
+        span = self.spans[self.beside[name]]
+        header = _header(self.content, span)
+        scale, zero = float(header.get("BSCALE", 1.0)), float(header.get("BZERO", 0.0))
+        kind = _plane(self.content, span).dtype
+        return np.asarray((values.astype(np.float64) - zero) / scale).astype(kind)
 
     def values(self, stored: AnyArray) -> FloatArray:
         """Stored pixels as values; NaN for those without."""
@@ -144,6 +148,16 @@ def read_original(path: str | os.PathLike[str], *, hdu: int | str | None = None)
         if "TRUTH" in [one.name for one in hdus[1:]]:
             truth_number = next(n for n, one in enumerate(hdus) if n and one.name == "TRUTH")
             truth = read_truth(hdus[truth_number], where)
+        beside = {}
+        if chosen is hdus[0] and str(chosen.header.get("CREATOR", "")).startswith("simimg"):
+            beside = {
+                one.name: n
+                for n, one in enumerate(hdus)
+                if n
+                and one.name in ("EXPECTED", "MASK")
+                and type(one).__name__ == "ImageHDU"
+                and one.shape == chosen.shape
+            }
     with opened(where) as handle:
         handle.seek(0)
         content = handle.read()
@@ -159,7 +173,18 @@ def read_original(path: str | os.PathLike[str], *, hdu: int | str | None = None)
         blank=blank if isinstance(blank, int) else None,
         truth=truth,
         truth_number=truth_number,
+        beside=beside,
     )
+
+
+def _plane(content: bytes, span: _Span) -> AnyArray:
+    """The last two axes of an image as it is stored, big-endian and read only."""
+    header = _header(content, span)
+    count = [int(header[f"NAXIS{axis}"]) for axis in range(int(header["NAXIS"]), 0, -1)]
+    flat = np.frombuffer(
+        content, dtype=_STORED[int(header["BITPIX"])], count=int(np.prod(count)), offset=span.data
+    )
+    return flat.reshape(count[-2:])
 
 
 def _header(content: bytes, span: _Span) -> Header:
@@ -177,6 +202,7 @@ def write_changed(
     cards: Mapping[str, tuple[object, str]],
     history: Sequence[str],
     truth_says: Iterable[str] = (),
+    beside: Mapping[str, AnyArray] | None = None,
     overwrite: bool = False,
 ) -> None:
     """Write a file again with its image changed and its truth grown.
@@ -195,6 +221,8 @@ def write_changed(
         Lines of HISTORY for the image's header.
     truth_says : iterable of str
         Further comments of the TRUTH.
+    beside : mapping of str to ndarray, optional
+        By name, the images of `Original.beside` as they are to be stored.
     overwrite : bool
         Whether a file of that name may be replaced.
 
@@ -203,17 +231,19 @@ def write_changed(
     InputError, RunError
         As `simimg.newfile.new_file`.
     """
+    planes = {original.beside[name]: plane for name, plane in (beside or {}).items()}
+    planes[original.number] = np.ascontiguousarray(stored, dtype=original.stored.dtype)
     with new_file(path, overwrite=overwrite) as handle, warnings.catch_warnings():
         warnings.simplefilter("ignore")
         for number, span in enumerate(original.spans):
             if number == original.truth_number:
                 write_truth(handle, truth, simulated=True, says=truth_says)
-            elif number in (0, original.number):
-                changed = number == original.number
-                header = _marked(original, number, cards, history if changed else ())
+            elif number == 0 or number in planes:
+                told = history if number == original.number else ()
+                header = _marked(original, number, cards, told)
                 data = (
-                    np.ascontiguousarray(stored, dtype=original.stored.dtype).tobytes()
-                    if changed
+                    planes[number].tobytes()
+                    if number in planes
                     else original.content[span.data : span.end]
                 )
                 write_hdu(handle, header, _blocks(data))

@@ -13,7 +13,8 @@ Electrons, counts, seconds; angles in radians, places in pixels from 0 at the ce
 from __future__ import annotations
 
 import os
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -44,6 +45,7 @@ from simimg.resolving.skyplane import Sky
 from simimg.scene.file import requirements_to_expose, scene_id
 from simimg.scene.model import Scene
 from simimg.study.injectplaces import matched_scene, placed_objects
+from simimg.study.injecttruth import grown_images, grown_truth
 from simimg.version import __version__
 
 if TYPE_CHECKING:
@@ -63,6 +65,8 @@ class Injection:
     ----------
     original : Original
         The file as it was.
+    beside : mapping of str to ndarray
+        EXPECTED and MASK of a frame of ours with what was put in, as they are to be stored.
     stored : ndarray, shape (rows, columns)
         The image as it is to be stored.
     expected : ndarray, shape (rows, columns)
@@ -98,6 +102,7 @@ class Injection:
     seed: int
     scene_id: str
     notes: tuple[str, ...] = ()
+    beside: Mapping[str, AnyArray] = field(default_factory=dict)
 
     def write(self, path: str | os.PathLike[str], *, overwrite: bool = False) -> None:
         """Write the file again with the image changed and the truth grown: whole, or not at all.
@@ -119,6 +124,7 @@ class Injection:
                 f"scene of sha256 {self.scene_id}"
             ],
             truth_says=_SAYS,
+            beside=self.beside,
             overwrite=overwrite,
         )
 
@@ -201,7 +207,7 @@ def inject(
     exposure = frame.value("EXPNUM", 0)
     if seed is None:
         seed = scene.exposure.seed if scene.exposure is not None else 0
-    stored, saturated = _with_electrons(
+    stored, full = _with_electrons(
         original,
         expected,
         gain=_gains(frame, given, gain),
@@ -219,15 +225,16 @@ def inject(
         original=original,
         stored=frozen(stored),
         expected=frozen(expected),
-        truth=_grown(original.truth, rows, original.name),
+        truth=grown_truth(original.truth, rows, original.name),
         added=len(objects),
         gain=gain,
         saturation=float(saturation),
         pixel_scale=sky.pixel_scale,
-        saturated=saturated,
+        saturated=int(full.sum()),
         seed=seed,
         scene_id=scene_id(scene),
         notes=tuple(notes),
+        beside=grown_images(original, frame, expected, full),
     )
 
 
@@ -289,13 +296,13 @@ def _with_electrons(
     saturation: float,
     seed: int,
     frame: int,
-) -> tuple[AnyArray, int]:
-    """The stored image with electrons added, and the number of pixels that they filled."""
+) -> tuple[AnyArray, AnyArray]:
+    """The stored image with electrons added, and which pixels they filled."""
     before = original.stored
     stored = np.array(before)
     least, most = original.value_range
     whole = before.dtype.kind != "f"
-    saturated = 0
+    filled = np.zeros(before.shape, dtype=bool)
     for block in range(-(-before.shape[0] // BLOCK_ROWS)):
         rows = slice(block * BLOCK_ROWS, (block + 1) * BLOCK_ROWS)
         electrons = np.empty(expected[rows].shape)
@@ -324,37 +331,7 @@ def _with_electrons(
         full = made * original.scale + original.zero >= (
             np.floor(saturation) if whole else saturation
         )
-        saturated += int(np.count_nonzero(touched & full & (value < saturation)))
+        filled[rows] = touched & full & (value < saturation)
         # A pixel whose whole number came out lower than it was took nothing in.
         stored[rows][touched] = made[touched].astype(before.dtype)
-    return stored, saturated
-
-
-def _grown(old: Table | None, new: Table, detector: str) -> Table:
-    """The truth of a frame with the rows of what was put in."""
-    from astropy.table import Table
-
-    new["injected"] = np.ones(len(new), dtype=bool)
-    new["injected"].description = "put into a frame that existed"
-    if old is None:
-        return new
-    if "detector" in old.colnames:
-        new["detector"] = np.full(len(new), detector or "")
-    new["partner"] = np.where(new["partner"] >= 0, new["partner"] + len(old), -1).astype(np.int32)
-    grown = Table()
-    for name in dict.fromkeys([*old.colnames, *new.colnames]):
-        kind = (old if name in old.colnames else new)[name]
-        parts = [
-            np.asarray(table[name]) if name in table.colnames else _nothing(kind.dtype, len(table))
-            for table in (old, new)
-        ]
-        grown[name] = np.concatenate(parts)
-        grown[name].unit = kind.unit
-        grown[name].description = kind.description
-    return grown
-
-
-def _nothing(kind: np.dtype[np.generic], count: int) -> AnyArray:
-    """What a table says in a column that has no value: NaN, no text, false, -1."""
-    fill = {"f": np.nan, "U": "", "S": "", "b": False}.get(kind.kind, -1)
-    return np.full(count, fill, dtype=kind)
+    return stored, filled

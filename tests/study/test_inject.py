@@ -324,6 +324,29 @@ def test_our_own_frame_grows_its_truth(tmp_path):
     assert verified(tmp_path / "h.fits")
 
 
+def test_expected_and_mask_of_our_own_frame_have_the_new_light(tmp_path):
+    text = (
+        '[camera]\npixels = [100, 90]\npixel_scale = "0.4 arcsec"\nbias = "500 adu"\n'
+        'full_well = "60000 electron"\n[[star]]\nx = 30\ny = 40\nelectrons = 3e6\n'
+    )
+    (tmp_path / "f.toml").write_text(TELESCOPE + text)
+    first = expose(load_scene(tmp_path / "f.toml"), keep={"expected"})
+    assert first.mask is not None
+    first.write(tmp_path / "f.fits")
+    (tmp_path / "new.toml").write_text(
+        TELESCOPE + "[[star]]\nx = 70.3\ny = 55.1\nelectrons = 3e6\n"
+    )
+    made = inject(tmp_path / "f.fits", load_scene(tmp_path / "new.toml"))
+    made.write(tmp_path / "g.fits")
+    again = Frame.read(tmp_path / "g.fits")
+    assert_allclose(again.expected, first.expected + made.expected, rtol=1e-6)
+    assert not first.mask[55, 70]
+    assert again.mask[55, 70] & 1
+    assert_array_equal(again.mask[:, :50], first.mask[:, :50])
+    assert ((again.mask & 1) > 0).sum() == ((first.mask & 1) > 0).sum() + made.saturated
+    assert verified(tmp_path / "g.fits")
+
+
 CAMERA = """
 [camera]
 pixels = [150, 150]
