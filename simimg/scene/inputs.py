@@ -15,6 +15,7 @@ from pathlib import Path
 from typing import Any
 
 from simimg.errors import InputError
+from simimg.scene.paths import MisplacedKeyError, parse_path
 from simimg.scene.readers import names_a_file
 
 LARGEST_KEPT = 16 * 2**20
@@ -176,6 +177,10 @@ def files_named(document: Mapping[str, Any]) -> Iterator[tuple[tuple[str | int, 
     for name, one in drawn.items() if isinstance(drawn, Mapping) else ():
         if isinstance(one, Mapping) and isinstance(one.get("table"), str):
             yield ("draw", name, "table"), one["table"]
+        elif isinstance(one, Mapping) and isinstance(one.get("choice"), list):
+            for number, path in enumerate(one["choice"]):
+                if isinstance(path, str) and _is_file(str(name), path):
+                    yield ("draw", name, "choice", number), path
     for kind, names in _OBJECT_FILES.items():
         tables = document.get(kind)
         for index, one in enumerate(tables if isinstance(tables, list) else []):
@@ -187,3 +192,16 @@ def files_named(document: Mapping[str, Any]) -> Iterator[tuple[tuple[str | int, 
                     for which, path in enumerate(value):
                         if isinstance(path, str):
                             yield (kind, index, name, which), path
+
+
+def _is_file(name: str, value: str) -> bool:
+    """Whether a value of a dotted key is the path of a file."""
+    try:
+        path = parse_path(name)
+    except MisplacedKeyError:
+        return False
+    if path in _FILE_OR_RATIO:
+        return names_a_file(value)
+    if path in _FILE_KEYS:
+        return True
+    return len(path) > 2 and path[2] in _OBJECT_FILES.get(str(path[0]), ())

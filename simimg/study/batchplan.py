@@ -60,8 +60,15 @@ class BatchPlan:
 
     @cached_property
     def still(self) -> Scene:
-        """The scene without what only a batch reads."""
-        return replace(self.scene, {"draw": None, "study": None})
+        """The scene without what only a batch reads, with the files that its frames may name."""
+        made = replace(self.scene, {"draw": None, "study": None})
+        return made.made_from(
+            made.document,
+            name=made.name,
+            where=made.where,
+            directory=made.directory,
+            inputs=self.scene.inputs,
+        )
 
     @cached_property
     def tables(self) -> dict[str, Any]:

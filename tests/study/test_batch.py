@@ -392,3 +392,33 @@ def test_a_full_disk_leaves_nothing_half_written(tmp_path):
         assert not list((disk / "out").glob(".simimg-*"))
     finally:
         subprocess.run(["umount", disk], check=True)
+
+
+def test_files_that_are_chosen_among_are_kept_once(tmp_path):
+    """The same frames again after the originals have gone."""
+    for name, slope in (("red.csv", 1.0), ("blue.csv", -1.0)):
+        rows = "".join(
+            f"{nm},{0.6 + slope * (nm - 550) / 1000:.3f}\n" for nm in range(450, 651, 20)
+        )
+        (tmp_path / name).write_text("wavelength_nm,throughput\n" + rows)
+    draws = USUAL + '"band.file" = { choice = ["red.csv", "blue.csv"] }\n'
+    path = tmp_path / "batch.toml"
+    path.write_text(TEXT.replace("{draws}", draws).replace('name = "V"', 'file = "red.csv"'))
+    out = tmp_path / "out"
+    batch(load_scene(path), count=8, folder=out)
+    assert len(list((out / "inputs").iterdir())) == 2
+    chosen = [str(one) for one in Table.read(out / "manifest.ecsv")["band_file"]]
+    assert len(set(chosen)) == 2
+    assert all((out / one).is_file() for one in chosen)
+    for name in ("red.csv", "blue.csv"):
+        (tmp_path / name).unlink()
+    frame = simimg.Frame.read(out / "frame-000000.fits")
+    record = {name: content for name, _, content in frame.scene_files}
+    assert record[chosen[0]] == b""
+    again = subprocess.run(
+        [sys.executable, "-m", "simimg_cli", "expose", out / "frame-000000.fits", "-q",
+         "-o", tmp_path / "again.fits"],
+        check=False,
+    )  # fmt: skip
+    assert again.returncode == 0
+    assert np.array_equal(simimg.Frame.read(tmp_path / "again.fits").counts, frame.counts)
