@@ -18,6 +18,7 @@ from tests.show.pages import Page
 from tests.show.test_report import TITLE, hostile_scene
 
 WIDTHS = (1280, 390)
+PAPER = 680  # dots of a screen on a sheet of A4 between its margins
 
 
 def chromium():
@@ -198,8 +199,10 @@ def test_by_the_keyboard(browser, file):
 
 
 def test_on_paper(browser, file):
-    one = Watched(browser, file)
+    one = Watched(browser, file, width=PAPER)
     one.page.emulate_media(media="print")
+    width, paper = one.page.evaluate("[document.documentElement.scrollWidth, innerWidth]")
+    assert width == paper, "a printer would cut off what is wider"
     shown = "one => getComputedStyle(one).display"
     assert one.page.locator("nav").evaluate(shown) == "none"
     assert one.page.locator("p.files").first.evaluate(shown) == "none"
