@@ -422,3 +422,26 @@ def test_files_that_are_chosen_among_are_kept_once(tmp_path):
     )  # fmt: skip
     assert again.returncode == 0
     assert np.array_equal(simimg.Frame.read(tmp_path / "again.fits").counts, frame.counts)
+
+
+@pytest.mark.skipif(os.geteuid() != 0, reason="only the superuser can make a read-only disk")
+def test_a_read_only_folder_is_told_and_left_alone(tmp_path):
+    scene_of(tmp_path)
+    disk = tmp_path / "disk"
+    disk.mkdir()
+    if subprocess.run(["mount", "-t", "tmpfs", "-o", "ro", "tmpfs", disk], check=False).returncode:
+        pytest.skip("no read-only disk could be mounted")
+    try:
+        for out in (disk, disk / "out"):
+            made = subprocess.run(
+                [*COMMAND, tmp_path / "batch.toml", "--count", "2", "--out", out],
+                capture_output=True,
+                text=True,
+                check=False,
+            )
+            assert made.returncode == 1
+            assert "Read-only file system" in made.stderr
+            assert "Traceback" not in made.stderr
+            assert list(disk.iterdir()) == []
+    finally:
+        subprocess.run(["umount", disk], check=True)
