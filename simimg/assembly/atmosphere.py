@@ -6,11 +6,12 @@ farther towards the zenith, unless a corrector takes it away. Metres and radians
 
 from __future__ import annotations
 
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from math import gamma, pi
 
 import numpy as np
 
+from simimg.air.layers import Layer, coherence_time, isoplanatic_angle, normalised
 from simimg.air.refraction import (
     airmass_from_altitude,
     altitude_from_airmass,
@@ -36,6 +37,65 @@ def scene_airmass(air: Air | None) -> float | None:
     if air.altitude is not None:
         return float(airmass_from_altitude(air.altitude))
     return 1.0 if air.airmass is None else air.airmass
+
+
+GROUND = Layer(height=0.0, share=1.0, wind=10.0)
+"""The one layer of a scene that names none."""
+
+
+def scene_layers(air: Air | None) -> tuple[Layer, ...]:
+    """Layers of a scene's turbulence as seen along the line of sight; none above the air.
+
+    Their heights are distances along it (the airmass times the height above the telescope), and
+    their shares add up to 1.
+    """
+    airmass = scene_airmass(air)
+    if air is None or airmass is None:
+        return ()
+    if not air.layer:
+        return (GROUND,)
+    return normalised(
+        [Layer(airmass * one.height, one.share, one.wind, one.direction) for one in air.layer]
+    )
+
+
+@dataclass(frozen=True)
+class AirFigures:
+    """What the layers of a scene come to, at the centre of the band and the airmass.
+
+    Attributes
+    ----------
+    fried_m : float
+        Fried's parameter.
+    coherence_time_ms : float
+        0.314 r0 over the effective wind; infinite where nothing moves.
+    isoplanatic_angle_arcsec : float
+        0.314 r0 over the effective distance; infinite where all lies at the telescope.
+    """
+
+    fried_m: float
+    coherence_time_ms: float
+    isoplanatic_angle_arcsec: float
+
+
+def air_figures(air: Air | None, fried: float | None) -> AirFigures | None:
+    """Figures of a scene's layers; None above the air and for a measured PSF.
+
+    Parameters
+    ----------
+    air : Air or None
+    fried : float or None
+        Fried's parameter at the wavelength and airmass in hand (m).
+    """
+    layers = scene_layers(air)
+    if fried is None or not layers:
+        return None
+    angle = isoplanatic_angle(fried, layers)
+    return AirFigures(
+        fried_m=fried,
+        coherence_time_ms=coherence_time(fried, layers) * 1e3,
+        isoplanatic_angle_arcsec=float(np.degrees(angle)) * 3600.0,
+    )
 
 
 def through_air(

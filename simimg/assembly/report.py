@@ -7,11 +7,12 @@ that were used, what will bite, and the cautions that go with a scene that could
 from __future__ import annotations
 
 from dataclasses import dataclass
-from math import degrees, sqrt
+from math import degrees, isfinite, sqrt
 
 import numpy as np
 
 from simimg.air.windows import shut_parts, shut_share
+from simimg.assembly.atmosphere import air_figures, scene_layers
 from simimg.assembly.brightness import (
     dark_electrons,
     exposure_time,
@@ -84,7 +85,7 @@ def describe(scene: Scene) -> Description:
         A pupil map that cannot serve, or an image quality sharper than diffraction.
     """
     train = assemble_train(scene)
-    lines = [*_light_lines(scene, train), *_air_lines(train), *_camera_lines(scene, train)]
+    lines = [*_light_lines(scene, train), *_air_lines(scene, train), *_camera_lines(scene, train)]
     return Description(
         lines=tuple(lines),
         defaults=tuple(defaults_used(scene)),
@@ -168,7 +169,7 @@ def _wavefront_lines(train: Train) -> list[tuple[str, str, str]]:
     return [("wavefront", f"{rms * 1e9:.4g} nm rms", remark)]
 
 
-def _air_lines(train: Train) -> list[tuple[str, str, str]]:
+def _air_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
     if train.fried is None or train.seeing is None:
         return [("air", "none", "above the atmosphere")]
     lines = [
@@ -179,6 +180,7 @@ def _air_lines(train: Train) -> list[tuple[str, str, str]]:
             "FWHM at 500 nm, at the zenith, for an infinite outer scale",
         ),
         ("Fried's r0", f"{train.fried * 100.0:.4g} cm", "in this band, at this airmass"),
+        *_layer_lines(scene, train),
         (
             "image quality",
             f"{_arcsec(half_light_width(train.focal)):.4g} arcsec",
@@ -194,6 +196,30 @@ def _air_lines(train: Train) -> list[tuple[str, str, str]]:
             )
         )
     return lines
+
+
+def _layer_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
+    """How fast the air changes, and over which angle."""
+    figures = air_figures(scene.air, train.fried)
+    if figures is None:
+        return []
+    count = len(scene_layers(scene.air))
+    of = "of one layer of turbulence" if count == 1 else f"of {count} layers of turbulence"
+    time, angle = figures.coherence_time_ms, figures.isoplanatic_angle_arcsec
+    return [
+        (
+            "coherence time",
+            f"{time:.3g} ms" if isfinite(time) else "infinite",
+            f"0.314 r0 over the wind, {of}" if isfinite(time) else "nothing moves",
+        ),
+        (
+            "isoplanatic angle",
+            f"{angle:.3g} arcsec" if isfinite(angle) else "infinite",
+            "0.314 r0 over the distance of the layers"
+            if isfinite(angle)
+            else "all turbulence lies at the telescope",
+        ),
+    ]
 
 
 def _camera_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
@@ -321,6 +347,7 @@ def _values(scene: Scene, train: Train) -> dict[str, object]:
         "zero_point_magnitude": 2.5 * float(np.log10(zero)),
         "airmass": train.airmass,
         "r0_m": train.fried,
+        **_air_values(scene, train),
         "wavelengths": train.wavelengths.size,
         "wavefront_rms_nm": train.aperture.rms * 1e9,
         "dispersion_arcsec": _arcsec(train.dispersion),
@@ -329,4 +356,14 @@ def _values(scene: Scene, train: Train) -> dict[str, object]:
         "pixel_scale_arcsec": None if scale is None else _arcsec(scale),
         "sky_electrons": sky_electrons(scene, area=train.pupil.area),
         "dark_electrons": dark_electrons(scene),
+    }
+
+
+def _air_values(scene: Scene, train: Train) -> dict[str, object]:
+    figures = air_figures(scene.air, train.fried)
+    time = None if figures is None else figures.coherence_time_ms
+    angle = None if figures is None else figures.isoplanatic_angle_arcsec
+    return {
+        "coherence_time_ms": time if time is not None and isfinite(time) else None,
+        "isoplanatic_angle_arcsec": angle if angle is not None and isfinite(angle) else None,
     }

@@ -13,6 +13,7 @@ from dataclasses import dataclass, fields, is_dataclass
 from math import degrees, isfinite, pi
 from typing import Any
 
+from simimg.assembly.atmosphere import AirFigures, air_figures
 from simimg.assembly.brightness import exposure_time, photometry
 from simimg.assembly.objects import inventory
 from simimg.assembly.train import Train, assemble_train
@@ -53,6 +54,8 @@ class Limits:
         Centre of the band.
     pixel_scale_arcsec, r0_m : float or None
         None without a pixel; None above the air.
+    air : AirFigures or None
+        Coherence time, isoplanatic angle, Fried's parameter; None above the air.
     position_angle_deg : float
         Direction in which the PSF is cut.
     diffraction, delivered : Resolution
@@ -79,6 +82,7 @@ class Limits:
     wavelength_nm: float
     pixel_scale_arcsec: float | None
     r0_m: float | None
+    air: AirFigures | None
     position_angle_deg: float
     diffraction: Resolution
     delivered: Resolution
@@ -185,6 +189,7 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
         wavelength_nm=train.wavelength * 1e9,
         pixel_scale_arcsec=None if scale is None else to_arcsec(scale),
         r0_m=train.fried,
+        air=air_figures(scene.air, train.fried),
         position_angle_deg=degrees(position_angle) % 360.0,
         diffraction=of_optics,
         delivered=of_all,

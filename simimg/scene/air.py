@@ -6,6 +6,7 @@ import math
 from collections.abc import Iterator, Mapping
 from typing import Annotated, Any, ClassVar, Literal
 
+from simimg.scene.airlayer import MOST_LAYERS, AirLayer
 from simimg.scene.keys import Choice, Flag, Quantity
 from simimg.scene.table import Fault, Table, key
 from simimg.scene.telescope import Angle
@@ -118,6 +119,13 @@ class Air(Table):
         when=("dispersion",),
     )
 
+    layer: tuple[AirLayer, ...] = key(
+        "Layers of the turbulence, on which hang how fast it changes and over which angle.",
+        (),
+        absent="one layer",
+        meaning="all turbulence lies at the telescope, 0 m, in a wind of 10 m/s",
+    )
+
     @classmethod
     def complete(cls, given: Mapping[str, Any]) -> Mapping[str, Any]:
         """Airmass 1 where neither airmass nor altitude is given."""
@@ -143,9 +151,22 @@ class Air(Table):
                 "contradicts air.airmass: each fixes the other",
                 "leave out airmass or altitude",
             )
+        layers = given.get("layer")
+        if isinstance(layers, Mapping):
+            yield Fault(("layer",), "is a single table", "write [[air.layer]], in double brackets")
+        elif isinstance(layers, list) and len(layers) > MOST_LAYERS:
+            yield Fault(
+                ("layer",), f"there are {len(layers)} layers", f"write at most {MOST_LAYERS}"
+            )
 
     def agree(self) -> Iterator[Fault]:
-        """Refraction needs a zenith distance."""
+        """Refraction needs a zenith distance, turbulence a layer that has some."""
+        if self.layer and not any(one.share for one in self.layer):
+            yield Fault(
+                ("layer", 0, "share"),
+                "is 0 for every layer: there is no turbulence to share",
+                "write share = 1 for one of them",
+            )
         if self.dispersion and self.airmass is not None and self.airmass > THICKEST:
             yield Fault(
                 ("dispersion",),

@@ -106,6 +106,9 @@ def _within(table: Table, given: Mapping[str, Any], prefix: str) -> Iterator[tup
     for name, value in table:
         if isinstance(value, Table):
             yield from _within(value, given[name], f"{prefix}{name}.")
+        elif isinstance(value, tuple) and value and isinstance(value[0], Table):
+            for index, one in enumerate(value):
+                yield from _within(one, given[name][index], f"{prefix}{name}.{index}.")
 
 
 def _absent(table: Table, given: Mapping[str, Any], prefix: str) -> Iterator[tuple[str, str, str]]:

@@ -60,6 +60,7 @@ def test_above_the_air_and_without_a_pixel(run, scene):
     narrow = ["--set", 'band.centre="550 nm"', "--set", 'band.width="0.1 nm"']
     found = run("limits", scene, *arguments, *narrow).json
     assert found["r0_m"] is None
+    assert found["air"] is None
     assert found["pixel_scale_arcsec"] is None
     assert found["strehl"] == pytest.approx(1)
     assert found["delivered"]["fwhm_arcsec"] == pytest.approx(found["diffraction"]["fwhm_arcsec"])
@@ -151,3 +152,14 @@ def test_an_orbit_without_a_date_says_both_mends(run, scene):
     assert done.out == ""
     assert "exposure.start" in done.err
     assert "--dates" in done.err
+
+
+def test_how_fast_the_air_changes_and_over_which_angle(run, scene):
+    found = run("limits", scene, "--json").json["air"]
+    assert found["coherence_time_ms"] == pytest.approx(31.4 * found["fried_m"])
+    assert found["isoplanatic_angle_arcsec"] is None
+    layer = 'air.layer=[{ height = "10 km", wind = "20 m/s" }]'
+    found = run("limits", scene, "--set", layer, "--json").json["air"]
+    assert found["coherence_time_ms"] == pytest.approx(15.7 * found["fried_m"])
+    angle = math.degrees(0.314e-4 * found["fried_m"]) * 3600
+    assert found["isoplanatic_angle_arcsec"] == pytest.approx(angle)
