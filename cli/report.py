@@ -96,15 +96,12 @@ def command(
 
 def _forbidden(opened: Source, scene: str, path: str, *, overwrite: bool) -> list[str]:
     """Why the page cannot be written, before any work is done."""
-    from simimg.newfile import check_new_file
+    from simimg.show.reportpage import check_page
 
     read = {os.path.realpath(one.path) for one in opened.scene.inputs.values() if one.path}
     if "\0" not in path and os.path.realpath(path) in read | {os.path.realpath(scene)}:
         return [mistake(path, "", "is a file that the scene reads", "choose another name")]
-    lines = check_new_file(path, overwrite=overwrite)
-    if not path.lower().endswith((".html", ".htm")) and "\0" not in path:
-        lines.append(mistake(path, "", "a report is a page", "end the name in .html"))
-    return lines
+    return check_page(path, overwrite=overwrite)
 
 
 def _payload(scene: str, path: str, made: Report) -> dict[str, Any]:

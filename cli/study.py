@@ -69,6 +69,13 @@ _TRIED = (("fraction_rayleigh", "by Rayleigh"), ("fraction_sparrow", "by Sparrow
     "--strip", type=click.Path(), metavar="FILE", help="Draw the frames side by side along one key."
 )
 @click.option(
+    "--report",
+    "page",
+    type=click.Path(),
+    metavar="PAGE",
+    help="Write picture, table and how to make them again as one page, .html.",
+)
+@click.option(
     "--pixel-advice",
     is_flag=True,
     help="Say which pixel scales suit the pair, and why, in place of varied keys.",
@@ -97,6 +104,7 @@ def command(
     column: str | None,
     level: float | None,
     strip: str | None,
+    page: str | None,
     pixel_advice: bool,
     separation_map: bool,
     width: float | None,
@@ -118,11 +126,16 @@ def command(
     from simimg_cli.scenes import open_scene
 
     lines = _wrong_files(output, plot, strip, check_sweep_file, overwrite=overwrite)
+    if page is not None:
+        from simimg.show.reportpage import check_page
+
+        lines += check_page(page, overwrite=overwrite)
     if lines:
         raise InputError(*lines)
     opened = open_scene(scene, overrides=overrides, without=without).scene
     if pixel_advice or separation_map:
-        if vary or strip or column or level or cluster or (pixel_advice and separation_map):
+        of_keys = vary or strip or page or column or level or cluster
+        if of_keys or (pixel_advice and separation_map):
             raise click.UsageError(
                 "--pixel-advice and --separation-map stand alone; leave out what is of varied keys"
             )
@@ -167,6 +180,10 @@ def command(
         write_sweep(made, output, overwrite=overwrite)
         checkpoint.remove()
     caption = _draw(made, plot, column, level, strip, planned, width, overwrite=overwrite)
+    if page is not None:
+        from simimg.show.reportstudy import write_study_page
+
+        write_study_page(made, page, pair=pair, overwrite=overwrite)
     warnings = list(dict.fromkeys(one for one in made.problems if one))
     if as_json:
         payload: dict[str, Any] = {

@@ -13,14 +13,13 @@ import shlex
 from dataclasses import dataclass
 
 from simimg.newfile import new_file
-from simimg.scene.file import scene_id, scene_record
+from simimg.scene.file import scene_id
 from simimg.scene.model import Scene
+from simimg.show.reportagain import again
 from simimg.show.reportbudget import largest, noise_shares, width_budget
 from simimg.show.reportfacts import Facts, Progress, gather
 from simimg.show.reportpage import (
-    File,
     Files,
-    Listing,
     Page,
     Pictures,
     Section,
@@ -28,7 +27,6 @@ from simimg.show.reportpage import (
     Words,
     csv_file,
     file_name,
-    file_of,
     items,
     page_html,
     section,
@@ -59,10 +57,6 @@ from simimg.show.reportsetup import (
 )
 from simimg.show.reporttable import Table, figures
 from simimg.show.reportviews import views
-from simimg.version import __version__
-
-MOST_KEPT = 1 << 20
-"""Largest file of a scene that the page holds, in bytes; a larger one is named by its hash."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -130,7 +124,7 @@ def report(
         _limits(facts),
         _budget(facts),
         _setup(facts),
-        _again(facts, stem, pair),
+        again(scene, _command(facts, stem, pair)),
     )
     page = Page(
         title=facts.title,
@@ -297,35 +291,11 @@ def _setup(facts: Facts) -> Section:
     )
 
 
-def _again(facts: Facts, stem: str, pair: str | None) -> Section:
-    """The scene and the command that make the page once more."""
-    record = scene_record(facts.scene)
-    name = file_name(facts.scene.name)
-    command = f"simimg report {shlex.quote(name)} -o {stem}.html"
+def _command(facts: Facts, stem: str, pair: str | None) -> str:
+    """The command that makes the page, for the scene as the page holds it."""
+    words = ["simimg", "report", file_name(facts.scene.name), "-o", f"{stem}.html"]
     if facts.pairs:
-        command += f" --trials {facts.trials}"
+        words += ["--trials", str(facts.trials)]
     if pair is not None:
-        command += f" --pair {shlex.quote(pair)}"
-    kept: list[File] = []
-    words = []
-    for path, sha256, content in record[1:]:
-        held = bool(content) and len(content) <= MOST_KEPT
-        if held:
-            kept.append(file_of(path, content, kind="application/octet-stream"))
-        where = "below" if held else "too large to be kept here"
-        words.append(f"The scene reads {path} ({where}), sha256 {sha256}.")
-    text = (
-        f"Save the scene below as {name} and run the command with simimg {__version__}: it makes "
-        "this page again, byte for byte on the same versions of NumPy, SciPy, astropy and "
-        "matplotlib. The scene is as it was run, with what it stands on and every change applied."
-    )
-    return section(
-        "again",
-        "How to make it again",
-        Words(text),
-        Listing("The command", command),
-        items(words),
-        Files(tuple(kept)) if kept else None,
-        Listing("The scene", record[0][2].decode(), file_of(name, record[0][2])),
-        Words(f"The sha256 of the scene with all it reads is {scene_id(facts.scene)}."),
-    )
+        words += ["--pair", pair]
+    return shlex.join(words)

@@ -9,12 +9,14 @@ from __future__ import annotations
 
 import base64
 import hashlib
+import os
 import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import ClassVar
 
-from simimg.show.reportpictures import Picture
+from simimg.errors import mistake
+from simimg.newfile import check_new_file
 from simimg.show.reporttable import Table, plain_text
 from simimg.version import __version__
 
@@ -51,6 +53,31 @@ class Tables:
 
     table: Table
     kind: ClassVar[str] = "table"
+
+
+@dataclass(frozen=True)
+class Picture:
+    """A picture of a page.
+
+    Attributes
+    ----------
+    key : str
+        A word that names it in the page.
+    source : str
+        The picture itself as a data URI.
+    alt : str
+        What it shows, for those who do not see it.
+    caption : str
+    width, height : int
+        Dots.
+    """
+
+    key: str
+    source: str
+    alt: str
+    caption: str
+    width: int
+    height: int
 
 
 @dataclass(frozen=True)
@@ -179,6 +206,15 @@ def file_name(name: str) -> str:
     """A name that every system takes as a file's: letters, digits, dots, hyphens."""
     kept = _WORD.sub("-", name.replace("\\", "/").rsplit("/", 1)[-1]).strip("-.")
     return kept[:80] or "file"
+
+
+def check_page(path: str | os.PathLike[str], *, overwrite: bool = False) -> list[str]:
+    """What forbids writing a page to this file; empty when nothing does."""
+    lines = check_new_file(path, overwrite=overwrite)
+    shown = os.fspath(path)
+    if not shown.lower().endswith((".html", ".htm")) and "\0" not in shown:
+        lines.append(mistake(shown, "", "a report is a page", "end the name in .html"))
+    return lines
 
 
 def page_html(page: Page) -> str:

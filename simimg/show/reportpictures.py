@@ -9,7 +9,7 @@ from __future__ import annotations
 import base64
 import io
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from math import isfinite
 from typing import Any
 
@@ -23,6 +23,7 @@ from simimg.show.framepanel import draw_frame
 from simimg.show.profile import Profile
 from simimg.show.profilepanel import draw_profile
 from simimg.show.reportfacts import Facts
+from simimg.show.reportpage import Picture
 from simimg.show.reporttable import Column, Table, figures, number, plain_text, table
 from simimg.show.reportviews import View
 from simimg.show.signal import Light, frame_light
@@ -34,31 +35,6 @@ _WIDTH = 100.0  # mm
 _SIDE = 64.0  # of a frame, mm
 _LEFT, _LOW, _HIGH = 13.0, 11.0, 6.0  # margins, mm
 _SECOND = "\N{DOUBLE PRIME}"
-
-
-@dataclass(frozen=True)
-class Picture:
-    """A picture of a page.
-
-    Attributes
-    ----------
-    key : str
-        A word that names it in the page.
-    source : str
-        The picture itself as a data URI.
-    alt : str
-        What it shows, for those who do not see it.
-    caption : str
-    width, height : int
-        Dots.
-    """
-
-    key: str
-    source: str
-    alt: str
-    caption: str
-    width: int
-    height: int
 
 
 def picture(figure: Any, key: str, *, alt: str, caption: str) -> Picture:

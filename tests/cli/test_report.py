@@ -95,6 +95,35 @@ def test_a_mosaic_is_refused(run, scene, folder, files):
     assert files() == ["tiny.toml"]
 
 
+def test_the_page_of_a_study_makes_itself_again(run, scene, folder):
+    vary = ("--vary", "air.seeing=0.5 arcsec:2 arcsec:3:log")
+    made = run("study", scene, *FAST, *vary, "--report", "tiny-study.html", "--quiet")
+    assert (made.code, made.err) == (0, "")
+    first = (folder / "tiny-study.html").read_bytes()
+    page = Page(first.decode())
+    (folder / "tiny.toml").write_bytes(page.files()["tiny.toml"])
+    (command,) = re.findall(r"^simimg (study tiny\.toml .*)$", visible(page), re.M)
+    assert run(*shlex.split(command), "--overwrite").code == 0
+    assert (folder / "tiny-study.html").read_bytes() == first
+
+
+@pytest.mark.parametrize(
+    ("words", "said"),
+    [
+        (
+            ("--vary", "air.seeing=1 arcsec,2 arcsec", "--report", "page.png"),
+            "end the name in .html",
+        ),
+        (("--pixel-advice", "--report", "page.html"), "stand alone"),
+    ],
+)
+def test_a_study_s_page_that_cannot_be(run, scene, files, words, said):
+    made = run("study", scene, *FAST, *words)
+    assert (made.code, made.out) == (2, "")
+    assert said in made.err
+    assert files() == ["tiny.toml"]
+
+
 def test_it_is_listed(run):
     assert "report" in COMMANDS
     assert COMMANDS["report"] in " ".join(run("--help").out.split())
