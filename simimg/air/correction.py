@@ -130,7 +130,7 @@ class CorrectedAir:
     def beyond(self, r: FloatArray) -> FloatArray:
         """Structure function (rad2) of what lies beyond the circle of frequencies."""
         seeing = von_karman_structure(r, self.turbulence.r0, self.turbulence.outer_scale)
-        return np.maximum(seeing - self._slow(np.minimum(r, self._most)), 0.0)
+        return np.asarray(np.maximum(seeing - self._slow(np.minimum(r, self._most)), 0.0))
 
     def within(self, sx: FloatArray, sy: FloatArray) -> FloatArray:
         """Structure function (rad2) of what is left within the circle."""

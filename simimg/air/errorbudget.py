@@ -21,8 +21,8 @@ from simimg.air.residual import (
     SPECTRUM,
     Turbulence,
     aliased_spectrum,
+    beyond_piston,
     noise_spectrum,
-    piston_share,
     residual_spectrum,
     tilt_share,
 )
@@ -53,7 +53,9 @@ class ErrorBudget:
     @property
     def total(self) -> float:
         """Sum of the causes, each alone."""
-        return sum(getattr(self, one.name) for one in fields(self) if one.name != "remainder")
+        return float(
+            sum(getattr(self, one.name) for one in fields(self) if one.name != "remainder")
+        )
 
     def path_nm(self, wavelength: float) -> dict[str, float]:
         """Root mean square optical paths (nm) of the causes and their sum, by name."""
@@ -77,7 +79,7 @@ def fitting_variance(turbulence: Turbulence, edge: float) -> float:
     # The integral of (f2 + low)^(-11/6) f df from the border out, over eight like octants.
     outside = 0.6 * (border**2 + low) ** (-5.0 / 6.0)
     whole = 8.0 * 0.125 * pi * float((weights * outside).sum())
-    return SPECTRUM * turbulence.r0 ** (-5.0 / 3.0) * whole
+    return float(SPECTRUM * turbulence.r0 ** (-5.0 / 3.0) * whole)
 
 
 def error_budget(air: CorrectedAir) -> ErrorBudget:
@@ -91,7 +93,7 @@ def error_budget(air: CorrectedAir) -> ErrorBudget:
     inside = nodes.inside
     fx, fy, weight = nodes.fx[inside], nodes.fy[inside], nodes.weight[inside]
     f = np.hypot(fx, fy)
-    piston, tilt = piston_share(f, loop.diameter), tilt_share(f, loop.diameter)
+    moving, tilt = beyond_piston(f, loop.diameter), tilt_share(f, loop.diameter)
     ideal = replace(
         loop, lag=0.0, noise=0.0, aliasing=False, offset=(0.0, 0.0), laser_height=inf,
         tilt_offset=None,
@@ -103,16 +105,16 @@ def error_budget(air: CorrectedAir) -> ErrorBudget:
 
     noise = aliasing = by_star = cone = 0.0
     if loop.noise > 0.0:
-        noise = float((noise_spectrum(fx, fy, loop) * (1.0 - piston) * weight).sum())
+        noise = float((noise_spectrum(fx, fy, loop) * moving * weight).sum())
     if loop.aliasing:
         power = aliased_spectrum(fx, fy, turbulence, loop.pitch)
-        aliasing = float((power * (1.0 - piston) * weight).sum())
+        aliasing = float((power * moving * weight).sum())
     if loop.laser_height < inf:
-        cone = left(1.0 - piston - tilt, laser_height=loop.laser_height)
+        cone = left(moving - tilt, laser_height=loop.laser_height)
     if loop.tilt_offset is not None:
         by_star = left(tilt, offset=loop.tilt_offset)
     all_f = np.hypot(nodes.fx, nodes.fy)
-    within = float((air.left * (1.0 - piston_share(all_f, loop.diameter))).sum())
+    within = float((air.left * beyond_piston(all_f, loop.diameter)).sum())
     # Beyond the circle of frequencies there is no piston to speak of.
     circle = turbulence.spectrum(all_f[~inside]) * nodes.weight[~inside]
     fitting = fitting_variance(turbulence, loop.edge)

@@ -174,9 +174,11 @@ def tilt_share(f: FloatArray, diameter: float) -> FloatArray:
     return np.where(small, 0.25 * z * z, 16.0 * (jv(2, safe) / safe) ** 2)
 
 
-def piston_share(f: FloatArray, diameter: float) -> FloatArray:
-    """Share of the power at a frequency that is piston over a round aperture (Noll 1976)."""
-    return np.asarray(_jinc(np.pi * diameter * np.asarray(f, dtype=np.float64)) ** 2)
+def beyond_piston(f: FloatArray, diameter: float) -> FloatArray:
+    """Share of the power at a frequency that is no piston over a round aperture (Noll 1976)."""
+    z = np.pi * diameter * np.asarray(f, dtype=np.float64)
+    # One less a number close to 1 would lose the digits that a steep spectrum asks for.
+    return np.where(z < 0.05, 0.25 * z * z * (1.0 - 5.0 * z * z / 48.0), 1.0 - _jinc(z) ** 2)
 
 
 def _slope(fx: FloatArray, fy: FloatArray, pitch: float) -> tuple[FloatArray, FloatArray]:
