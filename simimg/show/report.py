@@ -181,7 +181,7 @@ def _in_brief(facts: Facts) -> Section:
         "in-brief",
         "In brief",
         *blocks,
-        items(facts.meaning.warnings),
+        items([f"Warning: {text}." for text in facts.meaning.warnings]),
         _shown(verdict_table(facts)),
     )
 
@@ -228,6 +228,9 @@ def _split(facts: Facts) -> Section | None:
             "Photons, sky, dark signal and the detector's noise are drawn anew; telescope and air "
             "stay as they are."
         )
+        count = 1 if facts.scene.exposure is None else facts.scene.exposure.count
+        if count > 1:
+            text += f" As many sets of {count} exposures each were fitted together."
     else:
         text = (
             "No trials were made. How often an exposure splits the pair is not known from one "

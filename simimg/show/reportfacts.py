@@ -32,6 +32,8 @@ from simimg.study.trials import PairTrials, trials
 TRIALS = 100
 """Noise draws of a scene with a pair, unless another number is asked for."""
 
+UNTITLED = "A scene without a title"
+
 Progress = Callable[[int, int], None]
 
 
@@ -97,8 +99,8 @@ class Facts:
 
     @property
     def title(self) -> str:
-        """The scene's title, or its file's name."""
-        return self.scene.title or self.scene.name
+        """The scene's title."""
+        return self.scene.title or UNTITLED
 
 
 def gather(

@@ -46,13 +46,18 @@ def answer(told: Told) -> str:
     text += " in the frame shown here."
     if told.trials is None:
         return f"{text} No trials were made, so that the probability of a split is not known."
-    shares = [
-        f"{_share(getattr(told.trials, key))} under {label}'s criterion" for label, key in _CRITERIA
-    ]
-    return (
-        f"{text} The probability that one exposure splits it, from {told.trials.trials} trials: "
-        f"{shares[0]}, {shares[1]} (with 95 % intervals)."
+    text += (
+        f" The probability that one exposure splits it, from {told.trials.trials} trials: "
+        f"{_shares(told.trials)} (with 95 % intervals)."
     )
+    together = told.trials.together
+    if together is not None:
+        text += f" Of {told.trials.exposures} exposures fitted together: {_shares(together)}."
+    return text
+
+
+def _shares(one: Tally) -> str:
+    return ", ".join(f"{_share(getattr(one, key))} under {label}'s" for label, key in _CRITERIA)
 
 
 def _share(one: Fraction) -> str:

@@ -35,6 +35,7 @@ _WIDTH = 100.0  # mm
 _SIDE = 64.0  # of a frame, mm
 _LEFT, _LOW, _HIGH = 13.0, 11.0, 6.0  # margins, mm
 _SECOND = "\N{DOUBLE PRIME}"
+_SECOND_STAR = "second star"
 
 
 def picture(figure: Any, key: str, *, alt: str, caption: str) -> Picture:
@@ -56,9 +57,12 @@ def frame_picture(facts: Facts) -> Picture:
     alt = f"Picture of the simulated frame, {_extent(subject)}, {what}, with a scale bar"
     about = "" if subject.kind != "pair" else f" about {subject.label}"
     caption = f"The simulated frame{about}, asinh stretch"
-    if profile.fit is not None:
+    if profile.fit is not None and len(profile.fit.places) > 1:
         alt += "; small crosses mark the fitted stars"
         caption += "; crosses at the fitted stars"
+    elif profile.fit is not None:
+        alt += "; a small cross marks the one star that is fitted"
+        caption += "; a cross at the one star that is fitted"
     alt += f". {_directions(subject)}"
     if profile.offsets.size >= 2:
         through = "" if subject.kind == "pair" else f" through {_name(subject)}"
@@ -86,8 +90,9 @@ def profile_picture(facts: Facts) -> Picture | None:
         "errors"
     )
     if profile.fit is not None:
-        stars = "two stars" if len(profile.fit.places) > 1 else "one star"
-        caption += f"; the curves are {stars} of the frame's own PSF fitted to the pixels"
+        two = len(profile.fit.places) > 1
+        stars = "the curves are two stars" if two else "the curve is one star"
+        caption += f"; {stars} of the frame's own PSF fitted to the pixels"
     elif profile.curves:
         caption += "; the curve is the scene without noise"
     if profile.residuals is not None:
@@ -95,8 +100,8 @@ def profile_picture(facts: Facts) -> Picture | None:
     if bars:
         second = (
             "how far from the first star, at 0, the second is, and how far it must be"
-            if facts.chosen is not None
-            else "how far from this star, at 0, an equal one must be"
+            if any(name == _SECOND_STAR for name, *_ in bars)
+            else "how far from the star, at 0, another must be"
         )
         caption += (
             f". At the bottom, to the same scale: {second} for each criterion; the dark ring is "
@@ -146,9 +151,10 @@ def view_pictures(facts: Facts, views: Sequence[View]) -> tuple[Picture, ...]:
     with look():
         for view, light, cut in zip(views, lights, cuts, strict=True):
             caption = f"{view.title}. {view.remark}"
-            if view.full_pixels:
-                some = "pixel is" if view.full_pixels == 1 else "pixels are"
-                caption += f" {view.full_pixels} {some} full."
+            full = view.full_pixels(facts.subject.window)
+            if full:
+                some = "pixel is" if full == 1 else "pixels are"
+                caption += f" {full} {some} full."
             alt = (
                 f"{view.title}: {_extent(facts.subject)} of the simulated frame, "
                 f"{_what(facts.subject)}; the brightest pixel has {figures(float(cut.max()), 3)} "
@@ -198,7 +204,7 @@ def _bars(facts: Facts) -> list[_Bar]:
         measured = chosen.measured
         found.append(
             (
-                "second star",
+                _SECOND_STAR,
                 measured.separation_arcsec,
                 measured.separation_error_arcsec,
                 BLACK,

@@ -18,6 +18,7 @@ from simimg.newfile import new_file
 from simimg.scene.file import scene_id
 from simimg.show.canvas import look
 from simimg.show.reportagain import again
+from simimg.show.reportfacts import UNTITLED
 from simimg.show.reportpage import (
     Files,
     Page,
@@ -91,7 +92,7 @@ def study_page(made: Sweep, *, pair: str | None = None) -> str:
     )
     return page_html(
         Page(
-            title=scene.title or scene.name,
+            title=scene.title or UNTITLED,
             kind=f"Study of {keys}",
             stem=stem,
             cautions=cautions(scene),

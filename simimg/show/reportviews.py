@@ -36,11 +36,18 @@ class View:
     remark: str
     frame: Frame
 
-    @property
-    def full_pixels(self) -> int:
-        """Pixels in which charge reached the full well or counts the converter's end."""
-        mask = self.frame.mask
-        return 0 if mask is None else int(((mask & SATURATED) != 0).sum())
+    def full_pixels(self, window: tuple[int, int, int, int]) -> int:
+        """Pixels in which charge reached the full well or counts the converter's end.
+
+        Parameters
+        ----------
+        window : (int, int, int, int)
+            First and past-the-last column and row of the piece that counts.
+        """
+        if self.frame.mask is None:
+            return 0
+        left, right, bottom, top = window
+        return int(((self.frame.mask[bottom:top, left:right] & SATURATED) != 0).sum())
 
 
 def _above_the_air(scene: Scene, frame: Frame) -> View | None:  # noqa: ARG001

@@ -46,7 +46,8 @@ def hostile_scene():
         f"telescope.name={toml(NAME)}",
         f"camera.name={toml(LABEL)}",
     ]
-    return scene(HOSTILE, overrides=[*overrides, "pair.0.separation=1.1 arcsec"])
+    overrides += ["pair.0.separation=1.1 arcsec", "exposure.count=2"]
+    return scene(HOSTILE, overrides=overrides)
 
 
 @pytest.fixture(scope="module")
@@ -174,6 +175,12 @@ class TestWhatItSays:
             for name, of in (("share (%)", "fraction_resolved"), ("at least (%)", "low")):
                 assert float(rows[place][name]) == pytest.approx(100.0 * getattr(share, of))
             assert float(verdicts[place - 1]["at most (%)"]) == pytest.approx(100.0 * share.high)
+        assert [row["fitted"] for row in rows[::3]] == ["one exposure", "2 exposures together"]
+        share = told.together.sparrow.fraction_resolved
+        assert float(rows[5]["share (%)"]) == pytest.approx(100.0 * share)
+        said = visible(page)
+        assert "Of 2 exposures fitted together: " in said
+        assert "As many sets of 2 exposures each were fitted together." in said
         bias = told.bias.separation_arcsec
         assert float(page.table("accuracy")[0]["bias"]) == pytest.approx(bias, rel=1e-9)
         # Some bias is negative, and stays a number.
@@ -260,6 +267,19 @@ class TestOtherScenes:
         with pytest.raises(InputError, match="does not lie in the frame"):
             gather(off, pair="T-1")
         assert gather(off).pairs == ()
+
+    def test_a_pair_in_which_no_second_star_is_seen(self):
+        faint = scene(overrides=["pair.0.electrons=[30, 20]"])
+        made = report(replace(faint, {"title": None}), trials=2)
+        (told,) = made.facts.pairs
+        assert np.isnan(told.measured.separation_arcsec)
+        page = Page(made.html)
+        assert page.one("title")["text"] == "A scene without a title"
+        assert [row["measured"] for row in page.table("measured")] == [""] * 3
+        frame, profile, *_ = (one["text"] for one in page.all("figcaption"))
+        assert "a cross at the one star that is fitted" in frame
+        assert "how far from the star, at 0, another must be" in profile
+        assert {row["this frame"] for row in page.table("verdicts")} == {"unresolved"}
 
     def test_what_an_exposure_needs_is_said(self):
         with pytest.raises(InputError, match=r"camera\.pixels"):
@@ -353,6 +373,10 @@ class TestViews:
         one, other = view_pictures(made.facts, [View("full", "Full", "Too bright.", full), empty])
         assert full.mask.any()
         assert re.search(r"Too bright\. [0-9]+ pixels are full\.", one.caption)
+        # Of the piece that is shown, not of the frame.
+        rows, columns = full.counts.shape
+        assert View("v", "V", "V.", full).full_pixels((0, columns, 0, rows)) > 0
+        assert View("v", "V", "V.", full).full_pixels((0, 3, 0, 3)) == 0
         assert "full" not in other.caption
 
 
