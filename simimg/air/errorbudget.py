@@ -89,9 +89,8 @@ def error_budget(air: CorrectedAir) -> ErrorBudget:
     ----------
     air : CorrectedAir
     """
-    turbulence, loop, nodes = air.turbulence, air.loop, air.nodes
-    inside = nodes.inside
-    fx, fy, weight = nodes.fx[inside], nodes.fy[inside], nodes.weight[inside]
+    turbulence, loop = air.turbulence, air.bounded
+    fx, fy, weight = air.square.nodes()
     f = np.hypot(fx, fy)
     moving, tilt = beyond_piston(f, loop.diameter), tilt_share(f, loop.diameter)
     ideal = replace(
@@ -113,10 +112,8 @@ def error_budget(air: CorrectedAir) -> ErrorBudget:
         cone = left(moving - tilt, laser_height=loop.laser_height)
     if loop.tilt_offset is not None:
         by_star = left(tilt, offset=loop.tilt_offset)
-    all_f = np.hypot(nodes.fx, nodes.fy)
-    within = float((air.left * beyond_piston(all_f, loop.diameter)).sum())
-    # Beyond the circle of frequencies there is no piston to speak of.
-    circle = turbulence.spectrum(all_f[~inside]) * nodes.weight[~inside]
+    left_inside = residual_spectrum(fx, fy, turbulence, loop) * moving
+    # Beyond the square of control there is no piston to speak of.
     fitting = fitting_variance(turbulence, loop.edge)
     return ErrorBudget(
         fitting=fitting,
@@ -126,5 +123,5 @@ def error_budget(air: CorrectedAir) -> ErrorBudget:
         anisoplanatism=left(1.0, offset=loop.offset) if any(loop.offset) else 0.0,
         cone=cone,
         tilt=by_star,
-        remainder=within + fitting - float(circle.sum()),
+        remainder=fitting + float((left_inside * weight).sum()),
     )

@@ -3,7 +3,7 @@
 A mirror of n actuators across the aperture follows the wavefront up to the spatial frequency
 1/(2d), d = aperture / n, in x and in y (Rigaut, Veran & Lai 1998; Jolissaint, Veran & Conan 2006);
 beyond that square the turbulence stays as it is (*fitting*). Within it the mirror shows each layer
-as it stood a lag ago, and as it lies before the guide star: displaced by ``s = v t + h theta``,
+as it stood a lag ago, and as it lies before the guide star: displaced by ``s = h theta - v t``,
 which leaves ``2 (1 - cos 2 pi f.s)`` of its power (*lag*, *anisoplanatism*). A laser shines from a
 finite height H: at the pupil's place x it sees a layer displaced by ``x h / H`` more, whose mean
 over the aperture puts ``2 J1(z) / z``, z = pi D f h / H, beside the cosine (*cone*; its variance
@@ -135,6 +135,27 @@ def residual_spectrum(
     return np.asarray(power)
 
 
+def displacement(layer: Layer, *, lag: float, offset: tuple[float, float]) -> tuple[float, float]:
+    """How far (m; east, north) what a star shines through lies from what the mirror shows of it.
+
+    The layer moves on while the correction is on its way: a star ahead of the guide star in the
+    wind's direction sees what the guide star saw a moment ago.
+
+    Parameters
+    ----------
+    layer : Layer
+    lag : float
+        Seconds.
+    offset : (float, float)
+        Of the star from the guide star, towards east and north (rad).
+    """
+    east, north = (
+        layer.height * angle - speed * lag
+        for speed, angle in zip(layer.velocity, offset, strict=True)
+    )
+    return east, north
+
+
 def _displaced(
     fx: FloatArray, fy: FloatArray, f: FloatArray, layers: Sequence[Layer], loop: Loop
 ) -> FloatArray:
@@ -144,10 +165,7 @@ def _displaced(
         if layer.height >= loop.laser_height:
             left += layer.share
             continue
-        east, north = (
-            speed * loop.lag + layer.height * angle
-            for speed, angle in zip(layer.velocity, loop.offset, strict=True)
-        )
+        east, north = displacement(layer, lag=loop.lag, offset=loop.offset)
         # Twice the square of a sine keeps its digits where the displacement is small.
         half = np.pi * (fx * east + fy * north)
         stretch = loop.diameter * layer.height / loop.laser_height
