@@ -3,8 +3,8 @@
 import pytest
 
 
-def test_a_column_in_words_and_in_json(run, scene):
-    arguments = ["--for", "exposure.time", "--until", "snr=300", "--between", "1 s:100 s"]
+def test_a_column_in_json(run, scene):
+    arguments = ["--for", "exposure.time", "--until", "snr=300", "--between", "5 s:50 s"]
     found = run("solve", scene, *arguments, "--json", "--workers", 2)
     assert (found.code, found.err) == (0, "")
     answer = found.json
@@ -18,10 +18,6 @@ def test_a_column_in_words_and_in_json(run, scene):
     limits = run("limits", scene, "--set", f"exposure.time={answer['value']:.12g} s", "--json").json
     (pair,) = (one for one in limits["objects"] if one["kind"] == "pair")
     assert pair["snr"] == pytest.approx(300, rel=1e-3)
-    words = run("solve", scene, *arguments, "--workers", 2)
-    assert words.code == 0
-    assert words.out.startswith("exposure.time = ")
-    assert " s  (" in words.out
 
 
 def test_what_cannot_be_reached_is_an_answer(run, scene):

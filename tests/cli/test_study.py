@@ -126,7 +126,7 @@ def test_existing_tables_stay(run, scene, folder):
 
 
 def test_an_interrupted_study_goes_on_where_it_was(run, scene, folder):
-    arguments = [scene, "--vary", "air.seeing=1:2 arcsec:12", "-o", "s.ecsv"]
+    arguments = [scene, "--vary", "air.seeing=1:2 arcsec:6", "-o", "s.ecsv"]
     process = subprocess.Popen(
         [sys.executable, "-m", "simimg_cli", "study", *arguments],
         stderr=subprocess.PIPE,

@@ -37,7 +37,7 @@ def test_rerun_at_the_answer_finds_the_target(tmp_path):
     assert _share(scene, off) < 0.7 - 5.0 * _ERROR
 
 
-_FRESH = 800
+_FRESH = 500
 _ERROR = math.sqrt(0.7 * 0.3 / _FRESH)
 
 
