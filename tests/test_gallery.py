@@ -7,7 +7,7 @@ from pathlib import Path
 import pytest
 from PIL import Image
 
-from simimg.show import canvas
+from tests.commands import quickly
 
 FOLDER = Path(__file__).parents[1] / "scenes"
 BASES = {"station", "orbiter"}
@@ -69,9 +69,9 @@ def test_every_picture_is_there_and_small():
 
 @pytest.mark.parametrize("entry", gallery.ENTRIES, ids=[one.name for one in gallery.ENTRIES])
 def test_its_commands_run(entry, folder, monkeypatch):
-    monkeypatch.setattr(canvas, "_DOTS_PER_INCH", 40)  # quickly drawn
     assert entry.commands
-    content = gallery.picture(entry, folder)
+    with quickly(monkeypatch):
+        content = gallery.picture(entry, folder)
     assert content.startswith(b"\x89PNG")
     assert (folder / f"{entry.name}.png").exists()
 
