@@ -266,8 +266,9 @@ def _budget(facts: Facts) -> Section:
     text = "No single part widens the images by more than 2 %: they are as sharp as the pupil."
     if most is not None:
         text = (
-            f"Most of the width comes from the {most.part}: without it the delivered FWHM would be "
-            f"{figures(most.fwhm_arcsec, 3)} arcsec instead of {figures(rows[0].fwhm_arcsec, 3)}."
+            f"Of all parts the {most.part} widens the images most: without that the delivered FWHM "
+            f"would be {figures(most.fwhm_arcsec, 3)} arcsec instead of "
+            f"{figures(rows[0].fwhm_arcsec, 3)}."
         )
     if chosen is not None:
         text += (
