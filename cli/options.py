@@ -9,6 +9,7 @@ from collections.abc import Callable
 from typing import Any, TypeVar
 
 import click
+from click.shell_completion import CompletionItem
 
 _F = TypeVar("_F", bound=Callable[..., Any])
 
@@ -146,6 +147,19 @@ class Words(click.ParamType):
             known = ", ".join(self.known)
             self.fail(f"{unknown[0]!r} is none of {known}; write {value and self.name}", param, ctx)
         return words
+
+    def shell_complete(
+        self, ctx: click.Context, param: click.Parameter, incomplete: str
+    ) -> list[CompletionItem]:
+        """The words that may come next, after those that are there."""
+        del ctx, param
+        before, comma, begun = incomplete.rpartition(",")
+        there = before.split(",")
+        return [
+            CompletionItem(f"{before}{comma}{word}")
+            for word in self.known
+            if word.startswith(begun) and word not in there
+        ]
 
 
 def changes(function: _F) -> _F:
