@@ -8,7 +8,19 @@ from __future__ import annotations
 
 
 class SimimgError(Exception):
-    """Any failure that simimg reports in its own words; carries an exit code."""
+    """Any failure that simimg reports in its own words; carries an exit code.
+
+    Parameters
+    ----------
+    *lines : str
+        One for each mistake.
+
+    Attributes
+    ----------
+    lines : tuple of str
+    exit_code : int
+        Of a command that fails so.
+    """
 
     exit_code = 1
 
@@ -18,13 +30,29 @@ class SimimgError(Exception):
 
 
 class InputError(SimimgError):
-    """Wrong input: one line for each mistake, each with its mend."""
+    """Wrong input: one line for each mistake, each with its mend.
+
+    Attributes
+    ----------
+    lines : tuple of str
+        As ``FILE: key: what is wrong; what to write instead``.
+    exit_code : int
+        2.
+    """
 
     exit_code = 2
 
 
 class RunError(SimimgError):
-    """Something failed while running; no input would have been right."""
+    """Something failed while running; no input would have been right.
+
+    Attributes
+    ----------
+    lines : tuple of str
+        What failed.
+    exit_code : int
+        1.
+    """
 
     exit_code = 1
 
@@ -42,6 +70,10 @@ def mistake(where: str, key: str, what: str, mend: str = "") -> str:
         What is wrong.
     mend : str, optional
         What to write instead.
+
+    Returns
+    -------
+    str
     """
     head = f"{where}: {key}: " if key else f"{where}: "
     line = f"{head}{what}; {mend}" if mend else f"{head}{what}"

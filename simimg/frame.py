@@ -119,6 +119,11 @@ class Frame:
         keyword : str
         default : object
             Returned when the header has no such keyword.
+
+        Returns
+        -------
+        object
+            Text, a number, a flag, or `default`.
         """
         card = self.header.get(keyword, default)
         return card[0] if isinstance(card, tuple) else card

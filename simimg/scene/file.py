@@ -52,6 +52,11 @@ def load_scene(
     without : sequence of str, optional
         Tables to take away: ``air``, ``sky``, ``vanes``, ...
 
+    Returns
+    -------
+    Scene
+        Checked, frozen, SI inside; it carries its own text and what it read.
+
     Raises
     ------
     InputError

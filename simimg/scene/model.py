@@ -165,7 +165,25 @@ class Scene(Table):
         directory: Path,
         inputs: Mapping[str, InputFile],
     ) -> Self:
-        """The same scene, carrying what it was made from."""
+        """The same scene, carrying what it was made from.
+
+        Parameters
+        ----------
+        document : mapping
+            The scene as run: base and overrides applied, values as written.
+        name : str
+            Of the scene's file, without its folder.
+        where : str
+            What messages call the scene.
+        directory : Path
+            Folder that the paths in the scene are relative to.
+        inputs : mapping of str to InputFile
+            The files that the scene names, by their path as written.
+
+        Returns
+        -------
+        Scene
+        """
         made = self.model_copy()
         made._document = copy.deepcopy(dict(document))
         made._name = name

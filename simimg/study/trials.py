@@ -55,6 +55,16 @@ class PairTrials(Tally):
         How many exposures the scene asks for.
     together : Tally or None
         Of all these fitted together; None where it is one.
+    trials, measured : int
+        How many single frames, and in how many of them two stars were fitted.
+    double, rayleigh, sparrow : Fraction
+        Shares of single frames in which a single star is ruled out, and in which either criterion
+        says ``resolved``, with their 95 % intervals (Wilson 1927).
+    bias, scatter, error : Geometry
+        Mean of measured minus true, standard deviation, and median of the errors quoted; arcsec,
+        degrees, magnitudes.
+    bound : PairPrecision
+        Cramer-Rao bounds of a single frame.
     """
 
     label: str
