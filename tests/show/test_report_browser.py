@@ -46,7 +46,9 @@ def browser():
     if path is None:
         pytest.skip("needs Chromium (Debian package chromium)")
     with driver.sync_playwright() as started:
-        one = started.chromium.launch(executable_path=path, args=["--no-sandbox"])
+        one = started.chromium.launch(
+            executable_path=path, args=["--no-sandbox", "--disable-dev-shm-usage"]
+        )
         yield one
         one.close()
 
