@@ -19,6 +19,7 @@ if TYPE_CHECKING:
     from simimg.show.reportfacts import Told
     from simimg_cli.scenes import Source
 
+_MOST_LINES = 8
 _FEW = 200  # trials for which starting processes takes longer than it saves
 
 
@@ -125,8 +126,10 @@ def _payload(scene: str, path: str, made: Report) -> dict[str, Any]:
 def _print(path: str, made: Report) -> None:
     size = len(made.html.encode()) / 1e3
     say(f"{path}: {made.facts.title}, {size:.0f} kB")
-    for told in made.facts.pairs[:8]:
+    for told in made.facts.pairs[:_MOST_LINES]:
         say(_line(told))
+    if len(made.facts.pairs) > _MOST_LINES:
+        say(f"and {len(made.facts.pairs) - _MOST_LINES} pairs more")
 
 
 def _line(told: Told) -> str:

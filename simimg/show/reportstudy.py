@@ -139,7 +139,9 @@ def _in_brief(made: Sweep) -> Section:
     said = [Words(f"{points.capitalize()}, as {' and '.join(ranges)}.")]
     if made.trials:
         said.append(Words(f"At each point {made.trials} noise draws were exposed and measured."))
-    problems = list(dict.fromkeys(one for one in made.problems if one))
+    # Where the scene lies on this machine is nobody's business.
+    known = [one.replace(made.scene.where, made.scene.name) for one in made.problems if one]
+    problems = list(dict.fromkeys(known))
     return section(
         "in-brief",
         "In brief",

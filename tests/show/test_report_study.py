@@ -6,10 +6,11 @@ import shlex
 import numpy as np
 import pytest
 
+from simimg.scene.file import load_scene
 from simimg.scene.steps import steps_from_text
 from simimg.show.reportstudy import study_page
 from simimg.study.sweep import Varied, make, plan
-from tests.show.frames import PAIR, STARS
+from tests.show.frames import PAIR, STARS, STATION
 from tests.show.frames import scene as coloured
 from tests.show.pages import Page, visible
 
@@ -77,3 +78,14 @@ def test_a_map_of_a_scene_without_a_pair():
     assert "air.seeing=0.5 arcsec,0.9 arcsec" in visible(page)
     # Without a pair no bound and no share is claimed.
     assert "measured best" not in visible(page)
+
+
+def test_a_point_that_cannot_be_is_told_without_the_path(tmp_path):
+    file = tmp_path / "sharp.toml"
+    text = STATION.format(rotation=0.0, mirrored="false", ra=0.0, dec=0.0)
+    file.write_text(text.replace('seeing = "0.8', 'image_quality = "0.8') + STARS)
+    scene = load_scene(file, overrides=["band.nodes=1"])
+    varied = [Varied("telescope.aperture", steps_from_text("0.05 m,1 m"))]
+    page = study_page(make(plan(scene, vary=varied), workers=1))
+    assert "Not every point could be worked out: sharp.toml: air.image_quality: " in page
+    assert str(tmp_path) not in page
