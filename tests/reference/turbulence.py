@@ -73,3 +73,11 @@ TILT_REMOVED_NEAR_SAME_APERTURE_ATOL = (0.01, 0.05)
 AIRMASS_KASTEN_YOUNG = {60.0: 1.9943, 75.0: 3.8129, 85.0: 10.3058}
 AIRMASS_PICKERING = {60.0: 1.9932, 75.0: 3.8082, 85.0: 10.3337}
 AIRMASS_ATOL = 1e-4
+
+# C, exact; P. Noll 1976 table IV prints 0.1 to 0.5 % less: number of Zernike terms taken out ->
+# variance left over the aperture, in (D/r0)^(5/3) rad2.
+NOLL_RESIDUALS = {1: 1.03242, 3: 0.13466, 6: 0.06501, 10: 0.04024, 21: 0.02083}
+
+# C from the covariance of the modes (Fried 1978 fits 5.6 exp(-0.1557 (D/r0)^2), from memory, high
+# by up to 1.6): D/r0 -> share of frames whose variance after removal of tilt is at most 1 rad2.
+LUCKY_SHARES = {3.5: 0.519, 4.0: 0.325, 5.0: 0.0911}
