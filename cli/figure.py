@@ -11,7 +11,7 @@ import click
 from simimg.errors import InputError, mistake
 from simimg_cli import options
 from simimg_cli.output import document, paragraph, say
-from simimg_cli.scenes import named
+from simimg_cli.scenes import named, refuse_scene
 
 if TYPE_CHECKING:
     from simimg.frame import Frame
@@ -105,6 +105,9 @@ def command(
     from simimg.frame import Frame
     from simimg.newfile import check_new_file
 
+    refuse_scene(
+        frame, f"expose it first: simimg expose {frame} -o FRAME.fits; or draw its optics by --what"
+    )
     mistakes = check_new_file(output, overwrite=overwrite)
     if mistakes:
         raise InputError(*mistakes)

@@ -15,6 +15,7 @@ from simimg_cli.answers import Answers, answers_document
 from simimg_cli.foreign import Wanted, frame_options
 from simimg_cli.output import note, page_width, say, table, warn
 from simimg_cli.progress import with_progress
+from simimg_cli.scenes import refuse_scene
 from simimg_cli.trials import run_trials
 from simimg_cli.words import arcsec, figures, probability, short, with_error, with_interval
 
@@ -125,6 +126,9 @@ def command(
         answers.append(measured.together(frames))
     for path in () if together else with_progress(frames, "frames", quiet=quiet):
         try:
+            refuse_scene(
+                path, f"expose it first: simimg expose {path} -o FRAME.fits; or give --trials N"
+            )
             answers.append(measured.one(path))
         except InputError as error:
             mistakes += error.lines

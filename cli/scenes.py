@@ -62,6 +62,18 @@ def open_scene(
     return Source(where, scene, frame)
 
 
+def refuse_scene(path: str, mend: str) -> None:
+    """Refuse a scene where a frame is wanted.
+
+    Raises
+    ------
+    InputError
+        The path is one of a TOML file.
+    """
+    if path.lower().endswith(".toml"):
+        raise InputError(mistake(path, "", "is a scene, not a frame", mend))
+
+
 @contextmanager
 def named(path: str) -> Iterator[None]:
     """Give a frame's mistakes the name of its file, which a frame in memory does not know."""

@@ -111,11 +111,16 @@ def run_separation_map(
     say(f"Smallest separations ({found.share:.0%} of frames resolved), arcsec")
     _print(columns)
     say()
+    largest = float(found.magnitude_difference[-1])
     say(f"Faintest second star that shows ({SHOWS:g} standard deviations)")
     table(
         ("separation", "dm"),
         [
-            (f'{figures(one["separation"], 3)}"', figures(one["magnitude_difference"], 3))
+            (
+                f'{figures(one["separation"], 3)}"',
+                ("> " if one["magnitude_difference"] >= largest else "")
+                + figures(one["magnitude_difference"], 3),
+            )
             for one in contrast
         ],
         right=(0, 1),

@@ -118,7 +118,8 @@ def _setup_sentences(frame: Frame, setup: Setup | None) -> list[str]:
             parts.append(f"seeing {seeing:.3g}{_ARCSEC} (500 nm, zenith)")
             parts.append(f"airmass {train.airmass:.3g}")
     stated = [part for part in parts if part]
-    return [", ".join(stated) + "."] if stated else []
+    words = ", ".join(stated)
+    return [f"{words[0].upper()}{words[1:]}."] if words else []
 
 
 def _places(*, over: bool, restored: bool) -> tuple[str, str, str]:
@@ -202,7 +203,7 @@ def _criterion(name: str, outcome: CriterionVerdict) -> str:
     words = f"{name} (limit {limit}): {outcome.verdict}"
     if not isfinite(outcome.probability):
         return words
-    return f"{words}, {outcome.probability:.2f} that what was measured lies beyond the limit"
+    return f"{words}, with a chance of {outcome.probability:.2f} beyond it as measured"
 
 
 def _split_sentences(trials: Tally | None) -> list[str]:

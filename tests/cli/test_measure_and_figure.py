@@ -90,6 +90,11 @@ class TestMeasure:
         assert wide["separation_low_arcsec"] is None
         assert wide["separation_high_arcsec"] is None
 
+    def test_a_scene_is_to_be_exposed_first(self, run, scene):
+        result = run("measure", scene)
+        assert result.code == 2
+        assert result.err.startswith("tiny.toml: is a scene, not a frame; expose it first: ")
+
     def test_places_come_after_the_pairs_in_their_order(self, run, frame):
         arguments = ["measure", frame, "--near", "43,36", "--near", "24,20", "--json"]
         pairs = run(*arguments).json["pairs"]
@@ -301,4 +306,8 @@ class TestOptics:
     def test_a_scene_without_what(self, run, scene, files):
         result = run("figure", scene, "-o", "f.png")
         assert result.code == 2
+        assert result.err == (
+            "tiny.toml: is a scene, not a frame; expose it first: simimg expose tiny.toml -o "
+            "FRAME.fits; or draw its optics by --what\n"
+        )
         assert files() == [scene]

@@ -263,8 +263,8 @@ class TestCaption:
             "along position angle 40.3°, with 1-sigma errors; two stars of the frame's own PSF",
             "T-1: separation 0.6012 ± 0.0042″, position angle 40.30 ± 0.51°",
             "magnitude difference 0.752 ± 0.030, chance of a single star below 1e-6.",
-            "In this one exposure: Rayleigh (limit 0.95″): unresolved, 0.00 that what was measured",
-            "Sparrow (limit 0.61″): borderline, 0.41 that what was measured lies beyond the limit.",
+            "In this one exposure: Rayleigh (limit 0.95″): unresolved, with a chance of 0.00",
+            "Sparrow (limit 0.61″): borderline, with a chance of 0.41 beyond it as measured.",
             "A sentence of advice. How often such a pair would be split, a single noise draw does",
             "Every frame is a simulation",
         ):
