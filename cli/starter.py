@@ -9,6 +9,7 @@ STARTER = """\
 #   simimg expose SCENE -o FRAME.fits   the frame this set-up would record
 #   simimg measure FRAME.fits           resolved or not, and how sure
 #   simimg limits SCENE                 what this set-up can resolve at all
+#   simimg check --schema               every key, as a JSON schema for an editor
 #
 # A value with a dimension is text with a unit ("0.8 arcsec"). Only magnitudes and ratios are bare
 # numbers. A line that begins with # is a remark; take the # away to use what it shows.
