@@ -112,11 +112,11 @@ def _paint(
     weights = basis.weights(points)
     folded: AnyArray = np.zeros(0)
     for k, member in enumerate(basis.members):
-        grid = _spread(tile, plan, basis, sources, points, weights[:, k], k, pixel_scale)
+        grid = spread_sources(tile, plan, basis, sources, points, weights[:, k], k, pixel_scale)
         spectrum = _forward(grid, tile, member, pixel_scale, threads)
         del grid
         _multiply(spectrum, tile, plan, member, pixel_scale, threads)
-        part = _fold(spectrum, tile, plan)
+        part = fold_spectrum(spectrum, tile, plan)
         folded = folded + part if k else part
     periodic = scipy.fft.irfft2(
         folded, s=(tile.length_y, tile.length_x), workers=threads, overwrite_x=True
@@ -144,7 +144,7 @@ def _add_far_field(
         piece[row] += (1.0 - place + node) * across[node] + (place - node) * across[node + 1]
 
 
-def _spread(
+def spread_sources(
     tile: Tile,
     plan: GridPlan,
     basis: PsfBasis,
@@ -264,7 +264,7 @@ def _modulus_table(
     return value
 
 
-def _fold(spectrum: AnyArray, tile: Tile, plan: GridPlan) -> AnyArray:
+def fold_spectrum(spectrum: AnyArray, tile: Tile, plan: GridPlan) -> AnyArray:
     """Fold the fine grid's spectrum on the detector's: decimation to pixels, done in frequency."""
     count, length_x, length_y = plan.subdivision, tile.length_x, tile.length_y
     kept = spectrum.shape[1]

@@ -47,8 +47,22 @@ class Exposure(Table):
     time: Annotated[float | None, Quantity("time", above="0 s", at_most="10000000 s")] = key(
         "Exposure time of one frame; needed unless every signal is in electrons.", None
     )
+    frame_time: Annotated[
+        float | None, Quantity("time", above="0 s", at_most="10 s", sample="10 ms")
+    ] = key(
+        "Exposure time of each frame of a cube that shows the air instant by instant, in place of "
+        "time; count is then the number of its frames, and electrons and rates are those of one.",
+        None,
+    )
+    substeps: Annotated[int, Whole(1, 1000, 4)] = key(
+        "Instants that are averaged in each frame of a cube, even in time.",
+        1,
+        absent="1",
+        meaning="the air stands still during a frame",
+        when=("frame_time",),
+    )
     count: Annotated[int, Whole(1, 100_000, 3)] = key(
-        "Number of exposures.", 1, absent="1", meaning="one exposure"
+        "Number of exposures, or of the frames of a cube.", 1, absent="1", meaning="one exposure"
     )
     seed: Annotated[int, Whole(0, 2**63 - 1, 20260412)] = key(
         "Seed of all noise; the same seed gives the same frame.",
@@ -76,3 +90,27 @@ class Exposure(Table):
         absent="none",
         meaning="every exposure points at the field centre",
     )
+
+    @classmethod
+    def complete(cls, given: Mapping[str, Any]) -> Mapping[str, Any]:
+        """The exposure time of a frame is that of an exposure."""
+        if "frame_time" in given and "time" not in given:
+            return {**given, "time": given["frame_time"]}
+        return given
+
+    @classmethod
+    def together(cls, given: Mapping[str, Any]) -> Iterator[Fault]:
+        """One of the two times, and sub-steps only of frames."""
+        if "time" in given and "frame_time" in given:
+            yield Fault(
+                ("frame_time",),
+                "contradicts exposure.time: one is of each frame of a cube, the other of a frame "
+                "by itself",
+                "leave out time or frame_time",
+            )
+        if "substeps" in given and "frame_time" not in given:
+            yield Fault(
+                ("substeps",),
+                "is of the frames of a cube, and there is no frame_time",
+                'add frame_time = "10 ms", or leave out substeps',
+            )
