@@ -22,7 +22,7 @@ COLUMN, PAGE = 88.0, 180.0
 """Widths of a figure, mm: one column of a page, and two."""
 NARROWEST, WIDEST = 80.0, 400.0
 """Widths that a figure can have, mm."""
-TWO_ABREAST = 150.0
+TWO_ABREAST = 170.0
 """Width from which two panels stand side by side, mm; below it they stand over one another."""
 FORMATS = {".png": "png", ".pdf": "pdf", ".svg": "svg"}
 
@@ -95,6 +95,20 @@ def sheet(width: float, height: float) -> Any:
     figure = Figure(figsize=(width * MILLIMETRE, height * MILLIMETRE))
     FigureCanvasAgg(figure)
     return figure
+
+
+def beside(axes: Any, *, gap: float = 1.8, wide: float = 2.8) -> tuple[float, float, float, float]:
+    """Place of a colour bar to the right of a panel, in parts of the panel.
+
+    Parameters
+    ----------
+    axes : matplotlib.axes.Axes
+    gap, wide : float, optional
+        Between panel and bar, and across the bar, mm.
+    """
+    inches = axes.get_position(original=True).width * axes.figure.get_size_inches()[0]
+    across = inches / MILLIMETRE
+    return 1.0 + gap / across, 0.0, wide / across, 1.0
 
 
 @contextmanager

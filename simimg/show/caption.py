@@ -40,7 +40,7 @@ def panel_titles(frame: Frame, subject: Subject) -> tuple[str, str]:
     if len(set(verdicts.values())) == 1:
         words = f"{measured.rayleigh.verdict} (Rayleigh, Sparrow)"
     else:
-        words = ", ".join(f"{verdict} ({name})" for name, verdict in verdicts.items())
+        words = ", ".join(f"{name} {verdict}" for name, verdict in verdicts.items())
     return left, f"{label}: {separation}{_ARCSEC}\n{words}"
 
 

@@ -1,7 +1,7 @@
 """The proposal figure: a frame, the profile along its pair's axis, and a caption with the verdict.
 
 On request the frame stands beside a restored view of itself, with the profile below. Sized for two
-columns of a page (180 mm) unless another width is asked for; below 150 mm the panels stand over one
+columns of a page (180 mm) unless another width is asked for; below 170 mm the panels stand over one
 another. PNG, PDF or SVG; the same frame gives the same bytes.
 """
 
@@ -45,6 +45,8 @@ _LEFT, _RIGHT, _LOW, _HIGH = 13.0, 2.0, 11.0, 10.0  # margins of the page, mm: l
 _BAR = 23.0  # to the right of a frame: its colour bar, mm
 _AXIS = 15.0  # to the left of a profile: its labels, mm
 _BETWEEN = _LOW + _HIGH + 1.0  # panels over one another, mm
+_WIDEST = 90.0  # side of a frame that stands over its profile, mm
+_LEAST = 46.0  # of a profile's height, mm: its labels need so much
 _RESIDUAL = 13.0  # of the profile's height, mm
 
 _Box = tuple[float, float, float, float]
@@ -64,9 +66,10 @@ class _Page:
 def _page(width: float, *, restored: bool) -> _Page:
     """The places of the panels on a page of a width (mm)."""
     if width < TWO_ABREAST:
-        side = width - _LEFT - _BAR
-        tall = 0.75 * side
-        profile = (_AXIS, _LOW, width - _AXIS - _RIGHT, tall)
+        side = min(width - _LEFT - _BAR, _WIDEST)
+        tall = max(0.8 * side, _LEAST)
+        left = _AXIS + 2.0
+        profile = (left, _LOW, width - left - _RIGHT, tall)
         steps = [_LOW + tall + _BETWEEN + number * (side + _BETWEEN) for number in range(2)]
         boxes = [(_LEFT, bottom, side, side) for bottom in steps[::-1]]
         if not restored:

@@ -8,7 +8,7 @@ from typing import Any
 import numpy as np
 
 from simimg.arrays import AnyArray
-from simimg.show.canvas import grouped
+from simimg.show.canvas import beside, grouped
 from simimg.show.compass import round_length, round_number, shown_length
 from simimg.show.marks import draw_arrows, draw_scale_bar, draw_word, inked
 from simimg.show.profile import Profile
@@ -85,8 +85,7 @@ def _averaged(values: AnyArray) -> AnyArray:
 
 
 def _colour_bar(axes: Any, picture: Any, ticks: list[float], unit: str) -> None:
-    bar_axes = axes.inset_axes((1.03, 0.0, 0.045, 1.0))
-    bar = axes.figure.colorbar(picture, cax=bar_axes)
+    bar = axes.figure.colorbar(picture, cax=axes.inset_axes(beside(axes)))
     bar.set_ticks(ticks, labels=[grouped(tick) for tick in ticks])
     bar.ax.minorticks_off()
     bar.set_label(f"{unit}s per pixel above background" if unit == "electron" else "adu per pixel")

@@ -9,7 +9,7 @@ from typing import Any
 import numpy as np
 
 from simimg.arrays import FloatArray
-from simimg.show.canvas import BLACK, BLUE, GREEN, VERMILION
+from simimg.show.canvas import BLACK, BLUE, GREEN, VERMILION, beside
 from simimg.show.compass import round_number
 from simimg.show.framepanel import COLOUR_MAP
 from simimg.show.marks import draw_arrows, draw_scale_bar
@@ -48,7 +48,7 @@ def _of_cycles(cut_off: float) -> tuple[float, str]:
 
 
 def _colour_bar(axes: Any, picture: Any, label: str) -> Any:
-    bar = axes.figure.colorbar(picture, cax=axes.inset_axes((1.03, 0.0, 0.045, 1.0)))
+    bar = axes.figure.colorbar(picture, cax=axes.inset_axes(beside(axes)))
     bar.ax.minorticks_off()
     bar.set_label(label)
     bar.outline.set_linewidth(0.6)

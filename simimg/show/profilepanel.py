@@ -17,6 +17,10 @@ _STYLES = (
 )
 _LEAST_RESIDUAL = 3.5
 _HEADROOM = 1.38  # room above the peak for the legend and the width of the PSF
+_LONG = 1e5  # from which numbers are given in thousands, millions, and so on
+_RAISED = str.maketrans(
+    "0123456789", "\u2070\u00b9\u00b2\u00b3\u2074\u2075\u2076\u2077\u2078\u2079"
+)
 _CROWD = 100  # points that still stand apart
 
 
@@ -54,11 +58,13 @@ def draw_profile(
     axes.set_xlim(offsets[0] - scale, offsets[-1] + scale)
     _mark_stars(axes, profile, scale)
     _mark_fwhm(axes, profile, scale, known=subject.compass.scale is not None)
-    axes.yaxis.set_major_formatter(lambda value, _: grouped(value))
+    power = 3 * int(np.log10(top) // 3) if top >= _LONG else 0
+    axes.yaxis.set_major_formatter(lambda value, _: grouped(value / 10.0**power))
     axes.legend(
         loc="upper right", frameon=False, handlelength=2.2, borderaxespad=0.2, labelspacing=0.3
     )
-    axes.set_ylabel(f"{unit}s per pixel" if unit == "electron" else "adu per pixel")
+    words = f"{unit}s per pixel" if unit == "electron" else "adu per pixel"
+    axes.set_ylabel(words + (f" / 10{str(power).translate(_RAISED)}" if power else ""))
     lowest = axes if below is None else below
     lowest.set_xlabel(_along(subject))
     for one in (axes, below):

@@ -20,7 +20,7 @@ from simimg.arrays import AnyArray, FloatArray, frozen
 from simimg.frame import Frame
 from simimg.resolving.given import Given
 from simimg.resolving.observation import Observation, observe
-from simimg.show.canvas import grouped
+from simimg.show.canvas import beside, grouped
 from simimg.show.framepanel import COLOUR_MAP, orient
 from simimg.show.marks import draw_word
 from simimg.show.signal import clipped_background
@@ -173,8 +173,7 @@ def draw_restored(axes: Any, restored: Restored, subject: Subject, *, simulated:
     if simulated:
         draw_word(axes, suffix="-restored")
     orient(axes, subject, [], suffix="-restored")
-    bar_axes = axes.inset_axes((1.03, 0.0, 0.045, 1.0))
-    bar = axes.figure.colorbar(picture, cax=bar_axes)
+    bar = axes.figure.colorbar(picture, cax=axes.inset_axes(beside(axes)))
     ticks = stretch.ticks()
     bar.set_ticks(ticks, labels=[grouped(tick) for tick in ticks])
     bar.ax.minorticks_off()

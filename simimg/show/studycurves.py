@@ -70,8 +70,8 @@ def draw_curves(made: Sweep, *, width: float = COLUMN) -> Any:
         ncols=2,
         frameon=False,
         borderaxespad=0.2,
-        handlelength=2.6,
-        columnspacing=1.2,
+        handlelength=2.2,
+        columnspacing=0.8,
         labelspacing=0.25,
     )
     axes = [upper]

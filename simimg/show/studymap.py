@@ -10,7 +10,7 @@ from typing import Any
 import numpy as np
 
 from simimg.arrays import FloatArray
-from simimg.show.canvas import COLUMN, sheet
+from simimg.show.canvas import COLUMN, beside, sheet
 from simimg.show.marks import inked
 from simimg.show.studysheet import (
     BOTTOM,
@@ -61,7 +61,7 @@ def draw_map(made: Sweep, column: str, level: float | None, *, width: float = CO
     axes.set_xlabel(key_words(first))
     axes.set_ylabel(key_words(second))
     axes.tick_params(direction="out")
-    bar = figure.colorbar(picture, cax=axes.inset_axes((1.0 + 1.8 / wide, 0.0, 2.8 / wide, 1.0)))
+    bar = figure.colorbar(picture, cax=axes.inset_axes(beside(axes)))
     bar.outline.set_linewidth(0.6)
     bar.set_label(column_words(column))
     if level is not None and _crossed(shades, level):

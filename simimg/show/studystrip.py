@@ -22,6 +22,7 @@ from simimg.scene.file import requirements_to_expose
 from simimg.show.canvas import (
     PAGE,
     TWO_ABREAST,
+    beside,
     check_width,
     drawable,
     figure_format,
@@ -222,8 +223,8 @@ def _draw(views: list[_View], planned: Plan, page: float = PAGE) -> Any:
             length = round_number(0.6 * half)
             draw_scale_bar(axes, square, length, f"{length:.6g}{_SECOND}")
         if number == count - 1:
-            beside = axes
-    bar = figure.colorbar(picture, cax=beside.inset_axes((1.04, 0.0, 0.05, 1.0)))
+            last = axes
+    bar = figure.colorbar(picture, cax=last.inset_axes(beside(last, gap=1.0, wide=1.4)))
     ticks = stretch.ticks(apart=max(_TICKS / side, 0.085))
     bar.set_ticks(ticks, labels=[grouped(tick) for tick in ticks])
     bar.ax.minorticks_off()

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import os
+
 import numpy as np
 import pytest
 from matplotlib import colormaps
@@ -22,7 +24,8 @@ from simimg.study.sweep import Varied, make, plan
 from tests.show import drawn, frames
 from tests.study.pairs import pair_scene
 
-WIDTHS = (88.0, 180.0)
+FULL = os.environ.get("SIMIMG_FULL_GRID") == "1"
+WIDTHS = (80.0, 88.0, 169.0, 180.0, 400.0) if FULL else (88.0, 180.0)
 SKY = ("frame", "restored", "optics", "strip")
 ALL = (*SKY, "curves", "map", "separations")
 PLAIN = {
@@ -132,6 +135,32 @@ def test_it_can_be_read_at_its_width(made, name, width):
     assert drawn.overlaps(figure) == []
     assert min(text.get_fontsize() for text in drawn.texts(figure)) >= 6.5
     assert "simulated" in [text.get_text() for text in drawn.texts(figure)]
+
+
+@pytest.mark.parametrize("electrons", ["[3e5, 1.5e5]", "[3e12, 1.5e12]"])
+def test_long_names_and_large_numbers_at_any_width(electrons):
+    bright = [
+        f"pair.0.electrons={electrons}",
+        "camera.full_well='1e12 electron'",
+        "camera.bit_depth=31",
+        "camera.gain='900 electron/adu'",
+        f"telescope.name='{'M' * 60}'",
+    ]
+    shot = frames.frame(overrides=bright)
+    measured = frames.measurement(shot, label="W" * 60)
+    light, subject, profile, _ = figure_parts(shot, measurement=measured)
+    for width in (80.0, 88.0, 169.0, 170.0, 400.0):
+        with look():
+            figure = draw_figure(shot, light, subject, profile, width=width)
+            figure.canvas.draw()
+        assert drawn.outside(figure) == [], width
+        assert drawn.overlaps(figure) == [], width
+        ((power, label),) = [
+            (label.partition(" / ")[2], label)
+            for label in (axes.get_ylabel() for axes in figure.axes)
+            if label.startswith("electrons per pixel")
+        ]
+        assert (power == "10\u2079") == ("e12" in electrons), label
 
 
 @pytest.mark.parametrize("width", WIDTHS)
