@@ -117,8 +117,8 @@ ENTRIES = (
     ),
     framed(
         "spiral",
-        "A tilted spiral from a picture, taken as a map of surface brightness, as the air and the\n"
-        "camera leave it.",
+        "A tilted spiral from a picture, taken as a map of surface brightness, as the air and\n"
+        "the camera leave it, with some stars beside it.",
     ),
     framed(
         "phase-disc-and-ring",

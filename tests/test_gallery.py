@@ -7,7 +7,7 @@ from pathlib import Path
 import pytest
 from PIL import Image
 
-from tests.commands import quickly
+from tests.commands import in_one_colour, quickly
 
 FOLDER = Path(__file__).parents[1] / "scenes"
 BASES = {"station", "orbiter"}
@@ -29,6 +29,7 @@ gallery = _script()
 def folder(tmp_path_factory):
     made = tmp_path_factory.mktemp("gallery")
     shutil.copytree(FOLDER, made / "scenes")
+    in_one_colour(made / "scenes")
     return made
 
 

@@ -9,7 +9,7 @@ from pathlib import Path
 
 import pytest
 
-from tests.commands import quickly, run
+from tests.commands import in_one_colour, quickly, run
 
 ROOT = Path(__file__).resolve().parent.parent
 README = (ROOT / "README.md").read_text()
@@ -40,16 +40,6 @@ def same(found, shown):
             assert float(re.match(r"[0-9.]+", a)[0]) == pytest.approx(float(number[1]), rel=0.01)
 
 
-def in_one_colour(path):
-    """Make a base scene quicker to image: one wavelength, few pixels, no vanes or outer scale."""
-    text = path.read_text()
-    assert text.count("[band]\n") == 1
-    text = text.replace("[band]\n", "[band]\nnodes = 1\n")
-    text, count = re.subn(r"^pixels = .*\n", "pixels = [96, 96]\n", text, flags=re.M)
-    assert count == 1
-    path.write_text(re.sub(r"^(vanes|outer_scale) = .*\n", "", text, flags=re.M))
-
-
 @pytest.fixture(scope="module")
 def folder(tmp_path_factory):
     """A folder with the demo scenes, in which the commands run one after another."""
@@ -75,8 +65,7 @@ def test_the_first_two_blocks_set_up_and_run(folder, monkeypatch):
 
 
 def test_every_other_command_runs(folder, monkeypatch):
-    for name in ("station", "orbiter"):
-        in_one_colour(folder / "scenes" / f"{name}.toml")
+    in_one_colour(folder / "scenes")
     every = [one for block in blocks("sh")[2:] for one in commands(block)]
     assert len(every) >= 18
     assert {shlex.split(one)[1] for one in every} >= {
