@@ -132,6 +132,8 @@ def command(
         lines += check_page(page, overwrite=overwrite)
     if lines:
         raise InputError(*lines)
+    if width is not None and plot is None and strip is None:
+        raise click.UsageError("--width is that of a picture; it goes with --plot or --strip")
     opened = open_scene(scene, overrides=overrides, without=without).scene
     if pixel_advice or separation_map:
         of_keys = vary or strip or page or column or level or cluster

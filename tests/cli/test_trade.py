@@ -39,6 +39,7 @@ def test_separation_map(run, scene, files, folder):
         ["--separation-map", "--plot", "x.gif"],
         ["--separation-map", "--plot", "x.png", "--width", "1 m"],
         ["--pixel-advice", "--plot", "x.png"],
+        ["--separation-map", "--width", "88mm"],
         ["--pixel-advice", "--pair", "nobody"],
         ["--separation-map", "-o", "x.csv"],
     ],
