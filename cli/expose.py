@@ -99,6 +99,26 @@ def command(
         )
         return
 
+    if source.scene.exposure is not None and source.scene.exposure.frame_time is not None:
+        from simimg_cli.cubes import expose_cube_file
+
+        if preview or keep or compress:
+            what = "have no preview, no further extensions, and are not compressed"
+            raise InputError(
+                mistake(scene, "exposure.frame_time", f"cubes {what}", "leave them out")
+            )
+        expose_cube_file(
+            source.scene,
+            frames[0],
+            memory=memory,
+            threads=threads,
+            overwrite=overwrite,
+            as_json=as_json,
+            quiet=quiet,
+            warnings=warnings,
+        )
+        return
+
     from simimg.exposure import expose_prepared, prepare
 
     kept = keep or _kept(source)
@@ -168,7 +188,9 @@ def _indices(source: Source) -> list[int]:
             raise InputError(mistake(source.name, "EXPNUM", what, "use an undamaged frame"))
         return [number]
     exposure = source.scene.exposure
-    return list(range(1 if exposure is None else exposure.count))
+    # A cube has all its frames in one file.
+    single = exposure is None or exposure.frame_time is not None
+    return list(range(1 if exposure is None or single else exposure.count))
 
 
 def _numbered(path: str, indices: Sequence[int]) -> list[str]:

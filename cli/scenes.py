@@ -43,12 +43,13 @@ def open_scene(
     if not _is_frame(where):
         scene = load_scene(where, overrides=overrides, without=without)
         return Source(where, scene, None)
+    from simimg.fits.cubes import holds_cube
     from simimg.fits.reader import read_scene_files
     from simimg.frame import Frame
 
-    frame = Frame.read(where)
-    # The images of a mosaic are extensions; the scene stands beside them.
-    files = frame.scene_files or read_scene_files(where)
+    frame = None if holds_cube(where) else Frame.read(where)
+    # The images of a mosaic and of a cube are extensions; the scene stands beside them.
+    files = (frame.scene_files if frame is not None else ()) or read_scene_files(where)
     if not files:
         mend = "give a scene file, or a frame that simimg made"
         raise InputError(mistake(where, "", "carries no scene", mend))

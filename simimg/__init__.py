@@ -11,10 +11,12 @@ from typing import TYPE_CHECKING, Any
 from simimg.version import __version__
 
 if TYPE_CHECKING:
+    from simimg.cube import Cube as Cube
     from simimg.errors import InputError as InputError
     from simimg.errors import RunError as RunError
     from simimg.exposure import expose as expose
     from simimg.exposure import noise_free as noise_free
+    from simimg.filming import expose_cube as expose_cube
     from simimg.frame import Frame as Frame
     from simimg.resolving.bound import PairPrecision as PairPrecision
     from simimg.resolving.bound import precision as precision
@@ -32,6 +34,7 @@ if TYPE_CHECKING:
     from simimg.study.trials import trials as trials
 
 _HOMES = {
+    "Cube": "simimg.cube",
     "Frame": "simimg.frame",
     "InputError": "simimg.errors",
     "PairMeasurement": "simimg.resolving.records",
@@ -43,6 +46,7 @@ _HOMES = {
     "Sweep": "simimg.study.sweep",
     "Varied": "simimg.study.sweep",
     "expose": "simimg.exposure",
+    "expose_cube": "simimg.filming",
     "limits": "simimg.resolving.limits",
     "load_scene": "simimg.scene.file",
     "measure": "simimg.resolving.measure",

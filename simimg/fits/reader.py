@@ -143,8 +143,8 @@ def _parts(hdus: HDUList, where: str, wanted: int | str | None) -> dict[str, Any
     header = inherited(hdus, chosen)
     parts: dict[str, Any] = {
         "counts": counts,
-        "header": _plain_header(header),
-        "wcs": _read_wcs(chosen.header, (counts.shape[0], counts.shape[1]), where),
+        "header": plain_header(header),
+        "wcs": read_wcs(chosen.header, (counts.shape[0], counts.shape[1]), where),
         "simulated": chosen.header.get("SIMULATE") is True,
     }
     ours = parts["simulated"] and str(header.get("CREATOR", "")).startswith("simimg")
@@ -180,7 +180,8 @@ def _parts(hdus: HDUList, where: str, wanted: int | str | None) -> dict[str, Any
     return parts
 
 
-def _plain_header(header: Header) -> dict[str, object]:
+def plain_header(header: Header) -> dict[str, object]:
+    """Keyword to value and comment, of what can be parsed and is no layout or coordinate."""
     plain: dict[str, object] = {}
     texts: dict[str, list[str]] = {}
     for card in header.cards:
@@ -201,7 +202,14 @@ def _plain_header(header: Header) -> dict[str, object]:
     return plain
 
 
-def _read_wcs(header: Header, shape: tuple[int, int], where: str) -> WCS | None:
+def read_wcs(header: Header, shape: tuple[int, int], where: str) -> WCS | None:
+    """The celestial coordinates of an image of (rows, columns); None where there are none.
+
+    Raises
+    ------
+    InputError
+        Coordinates that make no sense.
+    """
     from astropy.wcs import WCS
 
     if not any(str(header.get(f"CTYPE{axis}", "")).strip() for axis in (1, 2)):

@@ -101,13 +101,12 @@ def write_frame(
         name = ""
         if compress:
             name = COUNTS
-            write_hdu(handle, _header("IMAGE", _NO_IMAGE, simulated, "", {}, ()), ())
+            write_hdu(handle, hdu_header("IMAGE", _NO_IMAGE, simulated, "", {}, ()), ())
         _write_image(handle, counts, simulated, name, {**coordinates, **own}, (), pack=compress)
         if truth is not None:
             write_truth(handle, truth, simulated=simulated)
         if scene_files:
-            columns = _scene_columns(scene_files)
-            _write_table(handle, columns, len(scene_files), simulated, "SCENE", _SCENE_SAYS)
+            write_scene(handle, scene_files, simulated=simulated)
         if expected is not None:
             cards = {"BUNIT": "electron", **coordinates}
             _write_image(handle, expected, simulated, "EXPECTED", cards, _EXPECTED_SAYS)
@@ -156,7 +155,7 @@ def write_mosaic_file(
         As `simimg.newfile.new_file`.
     """
     with new_file(path, overwrite=overwrite) as handle:
-        write_hdu(handle, _header("IMAGE", _NO_IMAGE, True, "", header, ()), ())
+        write_hdu(handle, hdu_header("IMAGE", _NO_IMAGE, True, "", header, ()), ())
         for number, (name, own, wcs, images) in enumerate(detectors, start=1):
             coordinates = {} if wcs is None else coordinate_cards(wcs)
             cards = {"INHERIT": (True, "keywords of the primary header hold, too"), **own}
@@ -173,8 +172,7 @@ def write_mosaic_file(
         if truth is not None:
             write_truth(handle, truth, simulated=True, says=truth_says)
         if scene_files:
-            columns = _scene_columns(scene_files)
-            _write_table(handle, columns, len(scene_files), True, "SCENE", _SCENE_SAYS)
+            write_scene(handle, scene_files, simulated=True)
 
 
 def write_truth(
@@ -194,6 +192,13 @@ def write_truth(
     """
     columns = _truth_columns(truth)
     _write_table(handle, columns, len(truth), simulated, "TRUTH", (*_TRUTH_SAYS, *says))
+
+
+def write_scene(
+    handle: BinaryIO, files: Sequence[tuple[str, str, bytes]], *, simulated: bool
+) -> None:
+    """Write the SCENE of a frame as an extension; arguments as for `write_truth`."""
+    _write_table(handle, _scene_columns(files), len(files), simulated, "SCENE", _SCENE_SAYS)
 
 
 def write_table_file(
@@ -228,7 +233,7 @@ def write_table_file(
     """
     rows = len(columns[0].values) if columns else 0
     with new_file(path, overwrite=overwrite) as handle:
-        write_hdu(handle, _header("IMAGE", _NO_IMAGE, simulated, "", {}, ()), ())
+        write_hdu(handle, hdu_header("IMAGE", _NO_IMAGE, simulated, "", {}, ()), ())
         _write_table(handle, columns, rows, simulated, name, says)
 
 
@@ -244,7 +249,7 @@ def _write_image(
 ) -> None:
     if pack:
         layout, data = packed_parts(image)
-        header = _header("BINTABLE", layout, simulated, name, cards, says)
+        header = hdu_header("BINTABLE", layout, simulated, name, cards, says)
         write_hdu(handle, header, [(memoryview(data), word_sum(data))])
         return
     layout = image_cards(image)
@@ -253,7 +258,7 @@ def _write_image(
     }
     if name:
         layout |= {"PCOUNT": (0, "no heap"), "GCOUNT": (1, "one group")}
-    header = _header("IMAGE", layout, simulated, name, {**scaling, **cards}, says)
+    header = hdu_header("IMAGE", layout, simulated, name, {**scaling, **cards}, says)
     write_hdu(handle, header, image_blocks(image))
 
 
@@ -267,11 +272,11 @@ def _write_table(
 ) -> None:
     layout, table, heap = table_parts(columns, rows)
     data = table + heap if heap else table
-    header = _header("BINTABLE", layout, simulated, name, {}, says)
+    header = hdu_header("BINTABLE", layout, simulated, name, {}, says)
     write_hdu(handle, header, [(memoryview(data), word_sum(data))])
 
 
-def _header(
+def hdu_header(
     kind: str,
     layout: Mapping[str, object],
     simulated: bool,
