@@ -180,7 +180,7 @@ def test_what_cubes_have_not(tmp_path, extra, said):
     scene(tmp_path)
     path = tmp_path / "cube.fits"
     run = CliRunner().invoke(
-        main, ["expose", str(tmp_path / "scene.toml"), "-o", str(path), *extra]
+        command, ["expose", str(tmp_path / "scene.toml"), "-o", str(path), *extra]
     )
     assert run.exit_code == 2
     assert said in run.output
