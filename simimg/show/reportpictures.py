@@ -16,8 +16,6 @@ from typing import Any
 import numpy as np
 
 from simimg.arrays import frozen
-from simimg.resolving.listing import ObjectLimits
-from simimg.resolving.resolution import Resolution
 from simimg.show.canvas import BLACK, BLUE, GREEN, VERMILION, drawable, look, sheet
 from simimg.show.framepanel import draw_frame
 from simimg.show.profile import Profile
@@ -197,25 +195,17 @@ def _bars(facts: Facts) -> list[_Bar]:
     if facts.subject.compass.scale is None or facts.subject.kind not in ("pair", "star"):
         return []
     found: list[_Bar] = []
-    chosen = facts.chosen
-    delivered: Resolution = facts.limits.delivered
-    own: ObjectLimits | None = None if chosen is None else chosen.limits
-    if chosen is not None:
-        measured = chosen.measured
-        found.append(
-            (
-                _SECOND_STAR,
-                measured.separation_arcsec,
-                measured.separation_error_arcsec,
-                BLACK,
-            )
-        )
-    if own is not None and own.delivered is not None:
-        delivered = own.delivered
-    found.append(("Sparrow", delivered.sparrow_arcsec, float("nan"), VERMILION))
-    found.append(("Rayleigh", delivered.rayleigh_arcsec, float("nan"), BLUE))
-    dark = facts.limits.diffraction.rayleigh_arcsec
-    found.append(("dark ring", dark, float("nan"), GREEN))
+    none, delivered = float("nan"), facts.limits.delivered
+    sparrow, rayleigh = delivered.sparrow_arcsec, delivered.rayleigh_arcsec
+    if facts.chosen is not None:
+        # The limits of the verdicts: for the magnitude difference that was measured.
+        one = facts.chosen.measured
+        second = one.separation_arcsec, one.separation_error_arcsec
+        found.append((_SECOND_STAR, *second, BLACK))
+        sparrow, rayleigh = one.sparrow.limit_arcsec, one.rayleigh.limit_arcsec
+    found.append(("Sparrow", sparrow, none, VERMILION))
+    found.append(("Rayleigh", rayleigh, none, BLUE))
+    found.append(("dark ring", facts.limits.diffraction.rayleigh_arcsec, none, GREEN))
     return [bar for bar in found if isfinite(bar[1])]
 
 
