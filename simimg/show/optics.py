@@ -135,7 +135,7 @@ def optics_caption(view: OpticsView, panels: Sequence[str]) -> str:
     words = {
         "pupil": "Pupil: transmission of the pupil as projected on the detector",
         "wavefront": "Wavefront: its error on the axis as optical path, piston and tilt taken out, "
-        "white where no light passes",
+        "grey where no light passes",
         "psf": "PSF: as it falls on the focal plane, without the pixel, on a logarithmic scale; "
         f"its FWHM is {_angle(view.fwhm)}",
         "transfer": "Transfer: modulus of the transfer functions along the detector's axes",

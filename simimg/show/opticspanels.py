@@ -102,6 +102,7 @@ def draw_wavefront(axes: Any, view: OpticsView) -> None:
         interpolation="nearest",
         gid="wavefront",
     )
+    axes.set_facecolor("0.7")
     _colour_bar(axes, picture, f"optical path ({name})")
     words = "no error"
     if rms > 0.0:
