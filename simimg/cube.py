@@ -86,7 +86,19 @@ class Cube:
         return iter(self.planes)
 
     def value(self, keyword: str, default: object = None) -> object:
-        """The value of a header keyword, without its comment."""
+        """The value of a header keyword, without its comment.
+
+        Parameters
+        ----------
+        keyword : str
+        default : object
+            Returned when the header has no such keyword.
+
+        Returns
+        -------
+        object
+            Text, a number, a flag, or `default`.
+        """
         card = self.header.get(keyword, default)
         return card[0] if isinstance(card, tuple) else card
 
@@ -122,6 +134,15 @@ class Cube:
     @classmethod
     def read(cls, path: str | os.PathLike[str]) -> Cube:
         """Open a cube; its frames are read from the file as they are asked for.
+
+        Parameters
+        ----------
+        path : path
+            A FITS file.
+
+        Returns
+        -------
+        Cube
 
         Raises
         ------
