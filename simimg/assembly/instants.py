@@ -24,6 +24,7 @@ from simimg.errors import InputError, mistake
 from simimg.imaging.basis import Transfer
 from simimg.imaging.instant import Instants, plan_instants, pupil_samples
 from simimg.imaging.render import DEFAULT_MEMORY
+from simimg.imaging.sources import Sources
 from simimg.optics.wavefront import pupil_places
 from simimg.scene.model import Scene
 
@@ -54,6 +55,10 @@ class SceneInstants:
     objects : Inventory
     memory_bytes : int, optional
         Most memory that an image may take; 2 GiB unless given.
+    sources : Sources, optional
+        What is seen in place of the scene's objects.
+    stream : int, optional
+        Of the seed that the air has.
 
     Raises
     ------
@@ -62,14 +67,22 @@ class SceneInstants:
     """
 
     def __init__(
-        self, scene: Scene, train: Train, objects: Inventory, *, memory_bytes: int | None = None
+        self,
+        scene: Scene,
+        train: Train,
+        objects: Inventory,
+        *,
+        memory_bytes: int | None = None,
+        sources: Sources | None = None,
+        stream: int = AIR_STREAM,
     ) -> None:
         refused = list(not_in_instants(scene))
         if refused:
             raise InputError(*refused)
         assert scene.exposure is not None
         geometry, pupil = objects.geometry, train.pupil
-        kinds = _kinds(objects)
+        shown = objects.sources if sources is None else sources
+        kinds = _kinds(shown)
         if len(kinds) > MOST_KINDS:
             what = (
                 f"has stars of {len(kinds)} spectra, and frames of instants can have {MOST_KINDS}"
@@ -82,7 +95,7 @@ class SceneInstants:
         if train.fried is not None:
             finest = min(finest, train.fried / PER_FRIED)
         plan = plan_instants(
-            objects.sources,
+            shown,
             columns=geometry.columns,
             rows=geometry.rows,
             pixel_scale=geometry.pixel_scale,
@@ -102,7 +115,7 @@ class SceneInstants:
         blur = trembling(scene, Transfer(inf)).with_pixel(geometry.pixel_scale)
         self._instants = Instants(
             plan,
-            objects.sources,
+            shown,
             columns=geometry.columns,
             rows=geometry.rows,
             pupils=waves,
@@ -131,7 +144,7 @@ class SceneInstants:
                 outer_scale=scene.air.outer_scale,
                 samples=plan.samples,
                 step=plan.step,
-                rng=np.random.default_rng([scene.exposure.seed, AIR_STREAM]),
+                rng=np.random.default_rng([scene.exposure.seed, stream]),
             )
 
     def phases(self, index: int) -> list[FloatArray]:
@@ -183,9 +196,9 @@ def not_in_instants(scene: Scene) -> Iterator[str]:
             )
 
 
-def _kinds(objects: Inventory) -> list[int]:
-    kinds = {int(kind) for kind in np.unique(objects.sources.points.kind)}
-    return sorted(kinds | {int(one.kind) for one in objects.sources.shapes})
+def _kinds(sources: Sources) -> list[int]:
+    kinds = {int(kind) for kind in np.unique(sources.points.kind)}
+    return sorted(kinds | {int(one.kind) for one in sources.shapes})
 
 
 def _count(scene: Scene, train: Train) -> int:
