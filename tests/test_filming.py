@@ -171,7 +171,6 @@ def test_command_makes_the_same_again(tmp_path):
     [
         (["--set", "air.tilt_removed=near"], "air.tilt_removed"),
         (["--set", "camera.binning=2"], "camera.binning"),
-        (["--set", "exposure.time=1 s"], "contradicts exposure.time"),
         (["--with", "psf"], "no further extensions"),
         (["--set", "camera.pixel_scale=20 arcsec"], "smaller pixel"),
     ],
@@ -192,6 +191,26 @@ def test_a_frame_time_is_needed(tmp_path):
     text = TEXT.replace("frame_time", "time")
     with pytest.raises(InputError, match="frame_time"):
         simimg.expose_cube(built(tmp_path, text))
+
+
+def test_one_of_two_times(tmp_path):
+    with pytest.raises(InputError, match=r"contradicts exposure\.time"):
+        built(tmp_path, TEXT.replace("count = 6", 'time = "1 s"'))
+
+
+def test_a_cube_at_a_station_of_long_exposures_and_back(tmp_path):
+    long = TEXT.replace('frame_time = "10 ms"', 'time = "30 s"')
+    (tmp_path / "station.toml").write_text(long)
+    over = tmp_path / "over.toml"
+    over.write_text(
+        'base = "station.toml"\n[exposure]\nframe_time = "20 ms"\nsubsteps = 3\ncount = 2\n'
+    )
+    moving = simimg.load_scene(over)
+    assert moving.exposure.frame_time == moving.exposure.time == 0.02
+    assert simimg.expose_cube(moving).shape == (2, 31, 33)
+    still = simimg.load_scene(over, overrides=["exposure.time=2 s"])
+    assert still.exposure.frame_time is None
+    assert (still.exposure.time, still.exposure.substeps) == (2.0, 1)
 
 
 @pytest.mark.parametrize("length", [-3000, -40000])

@@ -28,6 +28,7 @@ _RIVALS: Mapping[str, tuple[tuple[tuple[str, ...], ...], ...]] = {
     "band": ((("name",), ("centre", "width"), ("file",)),),
     "camera": ((("pixel_scale",), ("pixel_size",)),),
     "sky": ((("surface_brightness",), ("electrons",)),),
+    "exposure": ((("time",), ("frame_time", "substeps")),),
     "pair": (
         (("magnitudes", *ABROAD), ("electrons",)),
         (("separation", "position_angle"), ("orbit",)),
