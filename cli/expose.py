@@ -102,14 +102,15 @@ def command(
     if source.scene.exposure is not None and source.scene.exposure.frame_time is not None:
         from simimg_cli.cubes import expose_cube_file
 
-        if preview or keep or compress:
-            what = "have no preview, no further extensions, and are not compressed"
+        if keep or compress:
+            what = "have no further extensions, and are not compressed"
             raise InputError(
                 mistake(scene, "exposure.frame_time", f"cubes {what}", "leave them out")
             )
         expose_cube_file(
             source.scene,
             frames[0],
+            preview=preview,
             memory=memory,
             threads=threads,
             overwrite=overwrite,

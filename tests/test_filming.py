@@ -1,5 +1,6 @@
 """Cubes of short exposures: made, written, read and made again."""
 
+import json
 import shutil
 import subprocess
 import tracemalloc
@@ -8,6 +9,7 @@ import numpy as np
 import pytest
 from astropy.io import fits
 from click.testing import CliRunner
+from PIL import Image
 
 import simimg
 from simimg.cube import Cube, holds_cube
@@ -164,6 +166,17 @@ def test_command_makes_the_same_again(tmp_path):
     run = CliRunner().invoke(command, ["expose", str(first), "-o", str(second), "--threads", "1"])
     assert run.exit_code == 0, run.output
     assert first.read_bytes() == second.read_bytes()
+
+
+def test_a_preview_shows_some_frames(tmp_path):
+    scene(tmp_path)
+    path, picture = tmp_path / "cube.fits", tmp_path / "cube.png"
+    words = ["expose", str(tmp_path / "scene.toml"), "-o", str(path), "--preview", str(picture)]
+    run = CliRunner().invoke(command, [*words, "--json"])
+    assert run.exit_code == 0, run.output
+    assert json.loads(run.stdout)["cubes"][0]["preview"] == str(picture)
+    with Image.open(picture) as drawn:
+        assert drawn.width / drawn.height == pytest.approx(3 * 33 / (2 * 31))
 
 
 @pytest.mark.parametrize(
