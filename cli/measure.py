@@ -12,6 +12,7 @@ import click
 from simimg.errors import InputError
 from simimg_cli import options
 from simimg_cli.answers import Answers, answers_document
+from simimg_cli.cubes import Share, cube_answer
 from simimg_cli.foreign import Wanted, frame_options
 from simimg_cli.output import note, page_width, say, table, warn
 from simimg_cli.progress import with_progress
@@ -59,6 +60,32 @@ _SOURCES = {
     help="Fit the frames, which show one field, as if they were one: each with its own PSF, "
     "background, small shift and transparency. Places are those of the first.",
 )
+@click.option(
+    "--method",
+    type=click.Choice(["sum", "recentred", "lucky", "speckle"]),
+    help="How to measure cubes of short exposures: their sum, the sum of frames recentred, of the "
+    "sharpest frames, or by speckle interferometry.",
+)
+@click.option(
+    "--keep",
+    type=Share(),
+    default="5%",
+    show_default=True,
+    help="Share of the frames of a cube that --method lucky keeps.",
+)
+@click.option(
+    "--quality",
+    type=click.Choice(["peak", "sharpness"]),
+    default="peak",
+    show_default=True,
+    help="By what --method lucky chooses frames.",
+)
+@click.option(
+    "--reference",
+    type=click.Path(),
+    metavar="CUBE",
+    help="A cube of a single star for --method speckle, in place of the model.",
+)
 @frame_options
 @click.option(
     "--output",
@@ -78,6 +105,10 @@ def command(
     overrides: Sequence[str],
     without: Sequence[str],
     together: bool,
+    method: str | None,
+    keep: float,
+    quality: str,
+    reference: str | None,
     output: str | None,
     overwrite: bool,
     as_json: bool,
@@ -92,6 +123,8 @@ def command(
 
     Frames of other programs are measured alike. Their gain, read noise and coordinates are read
     from the header under the usual keywords; what is assumed besides is said as a warning.
+
+    Cubes of short exposures are measured with --method.
 
     With --trials a scene is given in place of frames (or a frame, which carries its scene).
     """
@@ -111,6 +144,10 @@ def command(
         return
     if overrides or without:
         raise click.UsageError("--set and --without go with --trials")
+    if method is not None and (asked.anything or together or output is not None):
+        raise click.UsageError("--method goes with --near, --keep, --quality and --reference alone")
+    if reference is not None and method != "speckle":
+        raise click.UsageError("--reference goes with --method speckle")
     if together and len(frames) < 2:
         raise click.UsageError("--together takes two frames or more")
     if output is not None:
@@ -129,7 +166,19 @@ def command(
             refuse_scene(
                 path, f"expose it first: simimg expose {path} -o FRAME.fits; or give --trials N"
             )
-            answers.append(measured.one(path))
+            if method is None:
+                answers.append(measured.one(path))
+            else:
+                answers.append(
+                    cube_answer(
+                        path,
+                        method=method,
+                        keep=keep,
+                        quality=quality,
+                        reference=reference,
+                        near=near,
+                    )
+                )
         except InputError as error:
             mistakes += error.lines
             answers.append({"frame": path, "error": list(error.lines)})

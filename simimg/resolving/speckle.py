@@ -51,7 +51,7 @@ REFERENCE_STREAM = 104
 SETTLED = 3.0
 """Errors of lopsidedness from which it is certain which star is the brighter."""
 
-_SPACED = 5  # frames from one of the model's to the next
+_SPACED = 10  # frames from one of the model's to the next
 _LOWEST, _HIGHEST = 1.3, 0.92  # of r0/wavelength, of the limit
 _REACH = 2.5  # of the seeing's width
 
@@ -191,7 +191,25 @@ def _model_power(seen: _Observed, shape: tuple[int, int]) -> FloatArray:
         own = scipy.fft.rfft2(image)
         power = own.real**2 + own.imag**2
         total = total + power if total.size else power
+    even = seen.train.pupil.round and seen.train.aperture.path is None
+    if even and seen.scene.exposure is not None and seen.scene.exposure.substeps == 1:
+        total = _round(total, columns)
     return np.asarray(total / REFERENCE_FRAMES)
+
+
+def _round(power: FloatArray, columns: int) -> FloatArray:
+    """A half-plane power spectrum averaged over the turns and mirrors that keep the grid.
+
+    That of a round pupil in still air is round; of a few hundred frames it is not yet.
+    """
+    rows = power.shape[0]
+    opposite = (-np.arange(rows)) % rows
+    power = 0.5 * (power + power[opposite])
+    if rows != columns:
+        return power
+    rest = power[opposite][:, 1 : columns - power.shape[1] + 1][:, ::-1]
+    whole = np.concatenate([power, rest], axis=1)
+    return np.asarray((0.5 * (whole + whole.T))[:, : power.shape[1]])
 
 
 def _answer(seen: _Observed, sums: SpeckleSums, fringes: Fringes) -> FrameMeasurement:
