@@ -80,7 +80,9 @@ def command(
                 note(f"warning: {line}")
         print_cautions(source.scene, quiet=quiet)
 
-    if source.scene.detector:
+    exposure = source.scene.exposure
+    cube = exposure is not None and exposure.frame_time is not None
+    if source.scene.detector and not cube:
         if preview or "psf" in keep:
             what = "have no preview and no PSF extension"
             raise InputError(mistake(scene, "detector", f"mosaics {what}", "leave them out"))
@@ -99,7 +101,7 @@ def command(
         )
         return
 
-    if source.scene.exposure is not None and source.scene.exposure.frame_time is not None:
+    if cube:
         from simimg_cli.cubes import expose_cube_file
 
         if keep or compress:

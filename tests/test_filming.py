@@ -14,6 +14,7 @@ from PIL import Image
 import simimg
 from simimg.cube import Cube, holds_cube
 from simimg.errors import InputError
+from simimg.study.batch import batch
 from simimg_cli.main import simimg as command
 from tests.assembly.scenes import scene as built
 
@@ -186,6 +187,7 @@ def test_a_preview_shows_some_frames(tmp_path):
         (["--set", "camera.binning=2"], "camera.binning"),
         (["--with", "psf"], "no further extensions"),
         (["--set", "camera.pixel_scale=20 arcsec"], "smaller pixel"),
+        (["--set", 'detector=[{name="A", offset=["0 px", "9 px"]}]'], "detector: is a mosaic"),
     ],
 )
 def test_what_cubes_have_not(tmp_path, extra, said):
@@ -198,6 +200,12 @@ def test_what_cubes_have_not(tmp_path, extra, said):
     assert said in run.output
     assert not path.exists()
     assert not list(tmp_path.glob(".simimg*"))
+
+
+def test_a_batch_is_of_single_frames(tmp_path):
+    with pytest.raises(InputError, match=r"exposure\.frame_time: makes a cube"):
+        batch(scene(tmp_path), count=2, folder=tmp_path / "many")
+    assert not (tmp_path / "many").exists()
 
 
 def test_a_frame_time_is_needed(tmp_path):

@@ -152,6 +152,10 @@ def plan_batch(scene: Scene, *, count: int) -> BatchPlan:
     missing = requirements_to_expose(scene)
     if missing:
         raise InputError(*missing)
+    if scene.exposure is not None and scene.exposure.frame_time is not None:
+        what = "makes a cube, and a batch is of single frames"
+        mend = "write time in its place, or expose the scene by itself"
+        raise InputError(mistake(scene.where, "exposure.frame_time", what, mend))
     plan = BatchPlan(_moved(scene), count)
     lines: list[str] = []
     for name, one in plan.drawn.items():
