@@ -12,7 +12,7 @@ block is drawn anew when it is reached. Lengths are in samples; phases are for r
 from __future__ import annotations
 
 from functools import lru_cache
-from math import pi, sqrt
+from math import floor, pi, sqrt
 
 import numpy as np
 import scipy.fft
@@ -128,7 +128,9 @@ class Blocks:
         self._key, self._entropy = key, entropy
         self._stretch = self._size / 2.0 - (0.5 + sqrt(0.5)) * samples - 2.0
         from_centre = np.arange(samples) - (samples - 1) / 2.0
-        self._ahead = np.add.outer(from_centre * direction[1], from_centre * direction[0])
+        ahead = np.add.outer(from_centre * direction[1], from_centre * direction[0])
+        self._ahead = (ahead / self._stretch).astype(np.float32)
+        self._reach = float(self._ahead.max())
         self._pairs: dict[int, AnyArray] = {}
 
     def patch(self, x: int, y: int) -> FloatArray:
@@ -139,12 +141,16 @@ class Blocks:
         ndarray, shape (samples, samples)
             In rad for r0 = 1 sample.
         """
-        way = (self._ahead + (x * self._direction[0] + y * self._direction[1])) / self._stretch
-        first, last = int(np.floor(way.min())) - 1, int(np.floor(way.max()))
+        here = (x * self._direction[0] + y * self._direction[1]) / self._stretch
+        first, last = floor(here - self._reach) - 1, floor(here + self._reach)
         total = np.zeros((self._samples, self._samples), dtype=np.float32)
         for k in range(first, last + 1):
-            weight = np.cos(0.5 * pi * np.clip(way - (k + 1), -1.0, 1.0))
-            total += weight.astype(np.float32) * self._cut(k, x, y)
+            part = self._ahead + np.float32(here - (k + 1))
+            np.clip(part, -1.0, 1.0, out=part)
+            part *= 0.5 * pi
+            np.cos(part, out=part)
+            part *= self._cut(k, x, y)
+            total += part
         for pair in [pair for pair in self._pairs if pair < first // 2]:
             del self._pairs[pair]
         return total
