@@ -136,6 +136,9 @@ def gather(
     if scene.detector:
         what = "a report is of one detector, and this scene is of a mosaic"
         missing.append(mistake(scene.where, "detector", what, "take the [[detector]] tables away"))
+    if scene.exposure is not None and scene.exposure.frame_time is not None:
+        what = "makes a cube, and a report is of single frames"
+        missing.append(mistake(scene.where, "exposure.frame_time", what, "write time in its place"))
     if missing:
         raise InputError(*missing)
     asked = question(scene, trials=count or 0, label=pair).pair

@@ -68,6 +68,7 @@ def test_a_frame_carries_its_scene(run, scene, folder, files):
         (("--pair", "SR-2"), "no pair is labelled 'SR-2'"),
         (("--set", "pair=[]", "--trials", "5"), "trials need a pair"),
         (("--set", "exposure.sead=5"), "exposure.sead"),
+        (("--set", "exposure.frame_time=10 ms"), "makes a cube, and a report is of single frames"),
         (("--trials", "-1"), "--trials"),
     ],
 )
