@@ -28,6 +28,12 @@ PERIODS = 8
 LOWEST = 8
 """Waves of at most so many periods to a block, along both axes, are left to `screenwaves`."""
 
+
+def block_side(samples: int) -> int:
+    """Side of a block in samples: even, `PERIODS` apertures or a little more, of small factors."""
+    return 2 * int(scipy.fft.next_fast_len(PERIODS * samples // 2))
+
+
 _FINE_CELLS = 24
 _ALIASES = 2
 
@@ -122,7 +128,7 @@ class Blocks:
         entropy: tuple[int, ...],
     ) -> None:
         self._samples = samples
-        self._size = PERIODS * samples
+        self._size = block_side(samples)
         self._outer_scale = outer_scale
         self._direction = direction
         self._key, self._entropy = key, entropy

@@ -24,7 +24,7 @@ from math import floor, pi
 import numpy as np
 from scipy.special import spherical_jn
 
-from simimg.air.screenblocks import LOWEST, PERIODS, phase_spectrum
+from simimg.air.screenblocks import LOWEST, block_side, phase_spectrum
 from simimg.arrays import AnyArray, FloatArray
 
 ORDERS = 14
@@ -45,7 +45,7 @@ def cells(samples: int, outer_scale: float) -> list[tuple[float, FloatArray]]:
 
     With an outer scale the cutting ends well below it, and the last level has the middle cell too.
     """
-    side = 1.0 / (PERIODS * samples)
+    side = 1.0 / block_side(samples)
     levels = [(side, side * _half_plane(LOWEST, hole=1)), (side, side * _half_plane(1, hole=0))]
     for _ in range(LEVELS):
         if side * outer_scale < 0.1:

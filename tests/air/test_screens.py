@@ -6,7 +6,7 @@ from functools import cache
 import numpy as np
 import pytest
 
-from simimg.air.screenblocks import Blocks, block_amplitudes
+from simimg.air.screenblocks import Blocks, block_amplitudes, block_side
 from simimg.air.screens import Flow, Screens
 from simimg.air.screenwaves import cells
 from simimg.air.turbulence import kolmogorov_structure, von_karman_structure
@@ -161,6 +161,8 @@ def test_waves_and_blocks_share_the_plane_between_them() -> None:
     parts = cells(SAMPLES, 25.0 / STEP)
     area = sum(side**2 * len(middles) * 2.0 for side, middles in parts[:-1]) + parts[-1][0] ** 2
     assert area == pytest.approx((17.0 / (8 * SAMPLES)) ** 2, rel=1e-12)
+    assert block_side(SAMPLES) == 8 * SAMPLES
+    assert block_side(122) == 980
     amplitudes = block_amplitudes(8 * SAMPLES, 25.0 / STEP)
     assert (amplitudes[:9, :9] == 0.0).all()
     assert (amplitudes[:9, 9] > 0.0).all()

@@ -20,6 +20,7 @@ from pathlib import Path
 
 import numpy as np
 
+from tests.benchmarks.cubes import bench_cube
 from tests.benchmarks.many import bench_batch, bench_measure
 
 SIDE = 4096
@@ -271,6 +272,7 @@ BENCHMARKS = {
     "help": bench_help,
     "measure": bench_measure,
     "batch": bench_batch,
+    "cube": bench_cube,
 }
 
 
