@@ -165,11 +165,47 @@ def _print(found: Limits, heading: str) -> None:
         ],
         right=(1,),
     )
+    _print_correction(found)
     if found.objects:
         _print_objects(found.objects)
     for text in found.notes:
         say()
         say(paragraph(text))
+
+
+_CAUSES = (
+    ("fitting", "finer than the actuators"),
+    ("lag", "the air moves on while the correction is on its way"),
+    ("noise", "the guide star's photons"),
+    ("aliasing", "errors too fine for the sensor taken for coarser ones"),
+    ("anisoplanatism", "the guide star stands aside"),
+    ("cone", "the laser's spot is not at infinity"),
+    ("tilt", "the tilt star stands aside"),
+    ("total", "in quadrature"),
+)
+
+
+def _print_correction(found: Limits) -> None:
+    correction = found.correction
+    if correction is None:
+        return
+    budget = correction.budget_nm
+    say()
+    say("What the correction leaves at the field centre, each cause alone")
+    table(
+        ("cause", "rms", ""),
+        [
+            (name, f"{figures(budget[name], 3)} nm", remark)
+            for name, remark in _CAUSES
+            if budget[name] > 0.0
+        ],
+        right=(1,),
+    )
+    say(
+        f"Strehl ratio of the corrected air {figures(correction.strehl, 3)}; "
+        f"{figures(correction.strehl_from_variance, 3)} by its variance "
+        f"({figures(correction.remainder_nm, 3)} nm, causes together, without piston)"
+    )
 
 
 def _optional_rows(found: Limits) -> list[tuple[str, str, str]]:

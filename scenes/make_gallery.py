@@ -84,6 +84,11 @@ ENTRIES = (
         "A hot and a cool star low in the sky, where the air is a weak prism: the light is drawn\n"
         "out towards the zenith, and the pair measured too close.",
     ),
+    framed(
+        "corrected-pair",
+        "Two stars 0.068 arcsec apart, brought apart by adaptive optics: each shows its first\n"
+        "ring again. `simimg limits` gives the error budget, cause by cause.",
+    ),
     Entry(
         "mirror-segments",
         "The optics of a mirror of eighteen hexagons, not quite in phase: the PSF has the spikes\n"

@@ -145,6 +145,13 @@ KINDS: Mapping[str, Kind] = {
     ),
     "pressure": Kind("a pressure", "780 hPa", "hPa", _PRESSURES, ("Pa",)),
     "speed": Kind("a speed", "10 m/s", "m/s", _SPEEDS, ("m / s",)),
+    "frequency": Kind(
+        "a frequency",
+        "1000 Hz",
+        "Hz",
+        {"Hz": 1.0, "kHz": 1e3, "MHz": 1e6, "1/s": 1.0, "/s": 1.0},
+        ("Hz",),
+    ),
     "angular rate": Kind(
         "an angular rate", "30 arcsec/h", "arcsec/s", _ANGULAR_RATES, ("rad / s",)
     ),

@@ -24,6 +24,7 @@ INNER = 0.25
 """Half side of the inner square over that of the whole."""
 
 _FINE = 16  # samples of a table to the shortest period
+_ORDER = 5  # of the splines
 _MARGIN = 16  # samples of a table beyond what is asked of it, so that its spline is right there
 _PER_CYCLE = 3.5  # nodes of Gauss' rule for a cycle of the fastest cosine, above pi
 _LEAST = 40
@@ -127,26 +128,25 @@ class StructureTable:
     def __init__(self, power: Power, square: ControlSquare, *, longest: float) -> None:
         # One thread: what a sum's order may change must not hang on the number of processors.
         with threadpool_limits(limits=1):
-            self._tables = (
-                _inner_table(power, square, longest),
-                _outer_table(power, square, longest),
-            )
+            inner, coarse = _inner_table(power, square, longest)
+            value, step, x, y = _outer_table(power, square, longest)
+        self._step = step
+        value += _looked_up(inner, coarse, *np.meshgrid(x, y))
+        self._coefficients = ndimage.spline_filter(value, order=_ORDER, mode="nearest")
 
     def __call__(self, sx: FloatArray, sy: FloatArray) -> FloatArray:
         """At shifts (m) of one shape."""
         sign = np.where(sy < 0.0, -1.0, 1.0)
-        value = np.zeros(np.shape(sx))
-        for coefficients, step in self._tables:
-            half = coefficients.shape[1] // 2
-            places = [(sign * sy) / step + _MARGIN, (sign * sx) / step + half]
-            value += ndimage.map_coordinates(
-                coefficients,
-                [one.ravel() for one in places],
-                order=5,
-                prefilter=False,
-                mode="nearest",
-            ).reshape(value.shape)
-        return value
+        return _looked_up(self._coefficients, self._step, sign * sx, sign * sy)
+
+
+def _looked_up(coefficients: FloatArray, step: float, sx: FloatArray, sy: FloatArray) -> FloatArray:
+    half = coefficients.shape[1] // 2
+    places = [(sy / step + _MARGIN).ravel(), (sx / step + half).ravel()]
+    found = ndimage.map_coordinates(
+        coefficients, places, order=_ORDER, prefilter=False, mode="nearest"
+    )
+    return np.asarray(found.reshape(np.shape(sx)))
 
 
 def _grid(fastest: float, longest: float) -> tuple[float, FloatArray, FloatArray]:
@@ -158,6 +158,7 @@ def _grid(fastest: float, longest: float) -> tuple[float, FloatArray, FloatArray
 
 
 def _inner_table(power: Power, square: ControlSquare, longest: float) -> tuple[FloatArray, float]:
+    """Spline coefficients and step of the inner square's part, whose waves are slower."""
     step, x, y = _grid(INNER * square.edge, longest)
     fx, fy, weight = square.polar()
     weight = weight * power(fx, fy)
@@ -168,10 +169,13 @@ def _inner_table(power: Power, square: ControlSquare, longest: float) -> tuple[F
     waves = (np.cos(ay) * weight[:, None]).T @ np.cos(ax)
     waves -= (np.sin(ay) * weight[:, None]).T @ np.sin(ax)
     value += 2.0 * (weight.sum() - waves)
-    return ndimage.spline_filter(value, order=5, mode="nearest"), step
+    return ndimage.spline_filter(value, order=_ORDER, mode="nearest"), step
 
 
-def _outer_table(power: Power, square: ControlSquare, longest: float) -> tuple[FloatArray, float]:
+def _outer_table(
+    power: Power, square: ControlSquare, longest: float
+) -> tuple[FloatArray, float, FloatArray, FloatArray]:
+    """Values, step, x and y of the part of the rectangles."""
     step, x, y = _grid(square.edge, longest)
     value = np.zeros((y.size, x.size))
     for one in square.rectangles():
@@ -180,7 +184,7 @@ def _outer_table(power: Power, square: ControlSquare, longest: float) -> tuple[F
         ax, ay = 2.0 * pi * np.outer(one.fx, x), 2.0 * pi * np.outer(y, one.fy)
         waves = np.cos(ay) @ (weight @ np.cos(ax)) - np.sin(ay) @ (weight @ np.sin(ax))
         value += 2.0 * (weight.sum() - waves)
-    return ndimage.spline_filter(value, order=5, mode="nearest"), step
+    return value, step, x, y
 
 
 def _slow_waves(

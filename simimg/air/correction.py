@@ -18,12 +18,16 @@ from functools import cached_property
 from math import hypot
 
 import numpy as np
+from scipy.interpolate import BSpline, make_interp_spline
 
 from simimg.air.controlsquare import ControlSquare, StructureTable
 from simimg.air.layers import Layer
 from simimg.air.residual import Loop, Turbulence, displacement, residual_spectrum
 from simimg.air.turbulence import von_karman_structure
 from simimg.arrays import FloatArray
+
+_MANY = 4096  # shifts of which a table of the seeing's structure function serves
+_NODES = 2048  # of that table, which is right to 1e-9
 
 FARTHEST = 6.0
 """Diameters by which a layer is displaced at most; farther off its waves have nothing in common
@@ -62,9 +66,22 @@ class CorrectedAir:
 
     def structure(self, sx: FloatArray, sy: FloatArray) -> FloatArray:
         """Structure function (rad2) of the residual phase at shifts (m) of one shape."""
-        turbulence = self.turbulence
-        seeing = von_karman_structure(np.hypot(sx, sy), turbulence.r0, turbulence.outer_scale)
-        return np.maximum(seeing - self._taken(sx, sy), 0.0)
+        r = np.hypot(sx, sy)
+        if r.size > _MANY:
+            root = np.cbrt(np.minimum(r, _margin(self.loop.diameter)))
+            seeing = np.asarray(self._seeing(root))
+        else:
+            seeing = self._exact(r)
+        return np.asarray(np.maximum(seeing - self._taken(sx, sy), 0.0))
+
+    def _exact(self, r: FloatArray) -> FloatArray:
+        return von_karman_structure(r, self.turbulence.r0, self.turbulence.outer_scale)
+
+    @cached_property
+    def _seeing(self) -> BSpline:
+        """The seeing's structure function by the cube root of distance, in which it is smooth."""
+        root = np.linspace(0.0, _margin(self.loop.diameter) ** (1.0 / 3.0), _NODES)
+        return make_interp_spline(root, self._exact(root**3), k=5)
 
     @cached_property
     def bounded(self) -> Loop:

@@ -21,7 +21,7 @@ from simimg.air.refraction import (
 from simimg.air.turbulence import KOLMOGOROV, long_exposure_transfer, tilt_removed_transfer
 from simimg.arrays import FloatArray
 from simimg.assembly.places import field_geometry
-from simimg.imaging.basis import Transfer
+from simimg.imaging.basis import Transfer, WingLaw
 from simimg.light.bands import Band
 from simimg.scene.air import Air
 from simimg.scene.model import Scene
@@ -127,16 +127,29 @@ def through_air(
         )
 
     turbulence = long_exposure if air.tilt_removed is None else tilt_removed
-    # The air blurs rings and spikes but moves little of their light: the laws add, and a spike is
-    # spread over the width of the seeing disc.
     blur = min(1.0, 2.0 * fried / diameter)
-    wings = replace(
-        optics.wings,
-        spikes=tuple((level * blur, angle) for level, angle in optics.wings.spikes),
-        kolmogorov=_WING * (wavelength / fried) ** (5.0 / 3.0),
-        core=optics.wings.core + 2.0 * wavelength / fried,
-    )
+    wings = seeing_wings(optics.wings, wavelength=wavelength, fried=fried, blur=blur)
     return replace(optics, radial=(*optics.radial, turbulence), wings=wings)
+
+
+def seeing_wings(optics: WingLaw, *, wavelength: float, fried: float, blur: float) -> WingLaw:
+    """Wings of the optics behind the air, whose laws add.
+
+    Parameters
+    ----------
+    optics : WingLaw
+    wavelength, fried : float
+        Wavelength and Fried's parameter there, at the airmass (m).
+    blur : float
+        By which spikes are dimmed, which the air spreads over the width of the seeing disc; of
+        rings and spikes it moves little light.
+    """
+    return replace(
+        optics,
+        spikes=tuple((level * blur, angle) for level, angle in optics.spikes),
+        kolmogorov=_WING * (wavelength / fried) ** (5.0 / 3.0),
+        core=optics.core + 2.0 * wavelength / fried,
+    )
 
 
 def _zenith_distance(airmass: float) -> float:

@@ -14,19 +14,17 @@ import numpy as np
 from simimg.arrays import AnyArray, FloatArray
 from simimg.assembly.aperture import Aperture
 from simimg.assembly.colours import KELVIN, Palette, colour_keys
+from simimg.assembly.correction import Corrector
+from simimg.assembly.fieldplaces import field_places, field_unit
 from simimg.assembly.motion import drawn_out, followed_trail
 from simimg.assembly.places import field_geometry
 from simimg.imaging.basis import PsfBasis, Transfer
 from simimg.imaging.sources import Points
 from simimg.light.colours import ColourMembers
-from simimg.optics.fieldaberration import field_nodes
 from simimg.scene.model import Scene
 
 FOLLOWED = 1_000_000
 """Added to the kind of a source that the telescope follows."""
-
-FIELD_NODES = 5
-"""Places a side of the field whose PSFs are mixed for the others."""
 
 Delivered = Callable[[FloatArray, tuple[float, float] | None], Transfer]
 StarTransfer = Callable[[int, float, float], Transfer]
@@ -39,6 +37,8 @@ def scene_basis(
     aperture: Aperture,
     wavelengths: FloatArray,
     delivered: Delivered,
+    *,
+    corrector: Corrector | None = None,
 ) -> tuple[PsfBasis, Transfer, StarTransfer]:
     """The basis of a scene, the PSF of its first object in the middle of the field, and any star's.
 
@@ -51,6 +51,8 @@ def scene_basis(
         Nodes of the band (m).
     delivered : callable
         PSF of weights of the nodes at a place of the field, without pixel.
+    corrector : Corrector, optional
+        The corrected air.
 
     Returns
     -------
@@ -65,7 +67,7 @@ def scene_basis(
     own = [palette.weights(spectrum, wavelengths) for spectrum in palette.spectra]
     shared = palette.members(wavelengths) if _catalogue_colours(scene) else None
     weights = [*own, *(shared.weights if shared is not None else ())]
-    places, mix_places = _places(scene, aperture)
+    places, mix_places = field_places(scene, aperture, corrector)
     focal = delivered(own[first], None)
     trail = followed_trail(scene)
     followed = trail != (0.0, 0.0)
@@ -120,7 +122,7 @@ def _star(
 ) -> StarTransfer:
     """The PSF of one kind of source at one place; each is worked out once."""
     trail, scale, geometry = followed_trail(scene), scene.pixel_scale, field_geometry(scene)
-    unit = _field_unit(scene, aperture)
+    unit = field_unit(scene, aperture)
     kept: dict[tuple[int, tuple[float, float] | None], Transfer] = {}
 
     def star(kind: int, x: float, y: float) -> Transfer:
@@ -137,14 +139,6 @@ def _star(
         return kept[key]
 
     return star
-
-
-def _field_unit(scene: Scene, aperture: Aperture) -> float | None:
-    """Pixels to the radius at which the field's errors are stated; None without any."""
-    errors = scene.telescope.field
-    if aperture.field is None or errors is None or scene.pixel_scale is None:
-        return None
-    return errors.radius / scene.pixel_scale
 
 
 def first_kind(scene: Scene, palette: Palette) -> int:
@@ -185,24 +179,3 @@ def _colour_shares(
         first = sum(colour < count for colour in used)
         shares[stars, first:] = shared.mixture(kind[stars].astype(np.float64))
     return shares
-
-
-def _places(
-    scene: Scene, aperture: Aperture
-) -> tuple[list[tuple[float, float] | None], Callable[[Points], FloatArray]]:
-    """Places of the field whose PSFs are mixed, and each source's shares in them."""
-    unit, geometry = _field_unit(scene, aperture), field_geometry(scene)
-    if unit is None:
-        return [None], lambda points: np.ones((len(points), 1))
-    half_x, half_y = geometry.columns / 2.0 / unit, geometry.rows / 2.0 / unit
-    nodes = field_nodes(half_x, half_y, count=FIELD_NODES)
-    # The lattice spans the detector, which the field centre may lie aside of.
-    aside_x = (geometry.middle[0] - geometry.centre[0]) / unit
-    aside_y = (geometry.middle[1] - geometry.centre[1]) / unit
-
-    def mix(points: Points) -> FloatArray:
-        x = (points.x - geometry.middle[0]) / unit
-        y = (points.y - geometry.middle[1]) / unit
-        return nodes.weights(x, y)
-
-    return [(x + aside_x, y + aside_y) for x, y in nodes.places], mix

@@ -22,16 +22,12 @@ from simimg.assembly.colours import colour_keys
 from simimg.assembly.dither import pointing_turn
 from simimg.assembly.motion import field_turn, moved_points, object_trail
 from simimg.assembly.orbits import pair_place
-from simimg.assembly.places import FieldGeometry, field_geometry
+from simimg.assembly.places import FieldGeometry, field_geometry, object_place
 from simimg.assembly.shapes import sky_shape
 from simimg.assembly.train import Train, assemble_train
 from simimg.imaging.sources import PlacedShape, Points, SkyShape, Sources
 from simimg.scene.model import Scene
-from simimg.scene.objects import (
-    Luminous,
-    Pair,
-    Placed,
-)
+from simimg.scene.objects import Luminous, Pair
 
 SHAPE_KEYS = (
     "sersic_index",
@@ -289,17 +285,6 @@ def _turned(trail: tuple[float, float], angle: float) -> tuple[float, float]:
         return trail
     c, s = cos(angle), sin(angle)
     return trail[0] * c - trail[1] * s, trail[0] * s + trail[1] * c
-
-
-def object_place(one: Placed, geometry: FieldGeometry) -> tuple[float, float]:
-    """Where an object is on the detector (pixels); of a pair the first star."""
-    if one.x is not None and one.y is not None:
-        return one.x, one.y
-    if one.ra is not None and one.dec is not None:
-        x, y = geometry.from_sky(np.array(one.ra), np.array(one.dec))
-    else:
-        x, y = geometry.to_pixels(np.array(one.east or 0.0), np.array(one.north or 0.0))
-    return float(x), float(y)
 
 
 def _electrons(

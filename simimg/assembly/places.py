@@ -21,6 +21,7 @@ import numpy as np
 from simimg.arrays import FloatArray
 from simimg.scene.camera import Camera
 from simimg.scene.model import Scene
+from simimg.scene.objects import Placed
 
 if TYPE_CHECKING:
     from astropy.wcs import WCS
@@ -225,3 +226,14 @@ def _distortion(scene: Scene) -> float:
     if field is None or scale is None:
         return 0.0
     return field.distortion * (scale / field.radius) ** 2
+
+
+def object_place(one: Placed, geometry: FieldGeometry) -> tuple[float, float]:
+    """Where an object is on the detector (pixels); of a pair the first star."""
+    if one.x is not None and one.y is not None:
+        return one.x, one.y
+    if one.ra is not None and one.dec is not None:
+        x, y = geometry.from_sky(np.array(one.ra), np.array(one.dec))
+    else:
+        x, y = geometry.to_pixels(np.array(one.east or 0.0), np.array(one.north or 0.0))
+    return float(x), float(y)

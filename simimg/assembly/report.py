@@ -20,6 +20,7 @@ from simimg.assembly.brightness import (
     zero_point,
 )
 from simimg.assembly.colours import scene_band
+from simimg.assembly.correction import correction_figures, sensor_photons
 from simimg.assembly.objects import inventory
 from simimg.assembly.orbits import scene_year
 from simimg.assembly.train import Train, assemble_train, half_light_width
@@ -33,6 +34,10 @@ from simimg.scene.model import Scene
 SIMULATION_NOTE = (
     "Every frame is a simulation: limits and exposure times are estimates for planning, to be "
     "confirmed with the observatory."
+)
+LASER_NOTE = (
+    "Lasers above the horizon need the leave of the aviation and laser-clearance authorities and "
+    "trained staff; local rules govern."
 )
 SUN_NOTE = (
     "Never point an unfiltered telescope or eye at or near the Sun; follow the observatory's rules "
@@ -97,9 +102,12 @@ def describe(scene: Scene) -> Description:
 
 def cautions(scene: Scene) -> tuple[str, ...]:
     """What must be said beside any product of a scene."""
+    found = []
     if names_the_sun(scene):
-        return (SUN_NOTE, SIMULATION_NOTE)
-    return (SIMULATION_NOTE,)
+        found.append(SUN_NOTE)
+    if scene.correction is not None and scene.correction.guide == "laser":
+        found.append(LASER_NOTE)
+    return (*found, SIMULATION_NOTE)
 
 
 def names_the_sun(scene: Scene) -> bool:
@@ -181,6 +189,7 @@ def _air_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
         ),
         ("Fried's r0", f"{train.fried * 100.0:.4g} cm", "in this band, at this airmass"),
         *_layer_lines(scene, train),
+        *_correction_lines(scene, train),
         (
             "image quality",
             f"{_arcsec(half_light_width(train.focal)):.4g} arcsec",
@@ -218,6 +227,30 @@ def _layer_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
             "0.314 r0 over the distance of the layers"
             if isfinite(angle)
             else "all turbulence lies at the telescope",
+        ),
+    ]
+
+
+def _correction_lines(scene: Scene, train: Train) -> list[tuple[str, str, str]]:
+    """What corrects the air, and how well."""
+    figures = correction_figures(train.corrector, train.optics)
+    correction, airmass = scene.correction, train.airmass
+    if figures is None or correction is None or airmass is None:
+        return []
+    pitch = scene.telescope.aperture / correction.actuators
+    photons = sensor_photons(correction, pitch=pitch)
+    sensor = "no noise" if photons is None else f"{photons:.3g} photons a measurement"
+    return [
+        (
+            "correction",
+            f"{correction.actuators} actuators across",
+            f"{pitch * 100.0:.3g} cm apart; a lag of {correction.lag * 1e3:.3g} ms; the sensor "
+            f"has {sensor}",
+        ),
+        (
+            "corrected wavefront",
+            f"{figures.budget_nm['total']:.3g} nm rms",
+            f"a Strehl ratio of {figures.strehl:.3g} at the field centre, perfect optics",
         ),
     ]
 
@@ -281,6 +314,9 @@ def _warnings(scene: Scene, train: Train) -> list[str]:
             found.append(
                 f"undersampled: {width / scale:.2g} pixels a FWHM; the pixel sets the resolution"
             )
+    if scene.correction is not None and train.corrector is None:
+        why = "above the air" if scene.air is None else "beside a measured PSF"
+        found.append(f"[correction] has nothing to correct {why}")
     found += _blocked(train)
     if train.dispersion > half_light_width(train.focal) / 3.0:
         found.append(

@@ -25,6 +25,8 @@ from simimg.assembly.atmosphere import (
 )
 from simimg.assembly.basis import StarTransfer, first_kind, one_for_all, scene_basis
 from simimg.assembly.colours import Palette, scene_palette
+from simimg.assembly.correction import Corrector, scene_corrector
+from simimg.assembly.fieldplaces import field_unit, sky_offset
 from simimg.assembly.measured import measured_transfer
 from simimg.assembly.motion import trembling
 from simimg.assembly.optics import Optics
@@ -80,6 +82,8 @@ class Train:
         ``star(kind, x, y)`` is the PSF with the pixel of one kind of source at one place (pixels).
     first : int
         Kind of the first pair's first star, or else of the first object.
+    corrector : Corrector or None
+        The corrected air; None where nothing corrects it.
     """
 
     wavelength: float
@@ -98,6 +102,7 @@ class Train:
     basis: PsfBasis
     star: StarTransfer
     first: int
+    corrector: Corrector | None = None
 
     @property
     def pupil(self) -> Pupil:
@@ -123,20 +128,30 @@ def assemble_train(scene: Scene) -> Train:
     fried = None
     if seeing is not None and airmass is not None:
         fried = fried_parameter(seeing, wavelength=wavelength, airmass=airmass)
-    wavelengths, flat = palette.nodes(_count(scene, palette, aperture.pupil, fried))
+    corrector = scene_corrector(scene, fried=fried, wavelength=wavelength)
+    blurred = fried if corrector is None else None
+    wavelengths, flat = palette.nodes(_count(scene, palette, aperture.pupil, blurred))
+    unit = field_unit(scene, aperture)
     perfect = mixture([Part(optics.perfect(w), s) for w, s in zip(wavelengths, flat, strict=True)])
     shift_x, shift_y = colour_shifts(scene, wavelengths, palette.wavelength)
 
     def delivered(weights: FloatArray, place: tuple[float, float] | None) -> Transfer:
         """The PSF of one spectrum at one place of the field, without pixel."""
+        if corrector is None:
+            lights = [_one_colour(scene, optics, w, place, seeing, airmass) for w in wavelengths]
+        else:
+            offset = (0.0, 0.0) if place is None or unit is None else sky_offset(scene, place, unit)
+            lights = [
+                corrector.through(optics.aberrated(w, place), *offset, w) for w in wavelengths
+            ]
         parts = [
             Part(
-                _one_colour(scene, optics, w, place, seeing, airmass),
+                light,
                 float(share),
                 float(dx),
                 float(dy),
             )
-            for w, share, dx, dy in zip(wavelengths, weights, shift_x, shift_y, strict=True)
+            for light, share, dx, dy in zip(lights, weights, shift_x, shift_y, strict=True)
         ]
         return trembling(scene, mixture(parts))
 
@@ -146,7 +161,9 @@ def assemble_train(scene: Scene) -> Train:
         basis, star = PsfBasis((focal,)), one_for_all(focal)
         effective = focal
     else:
-        basis, focal, star = scene_basis(scene, palette, aperture, wavelengths, delivered)
+        basis, focal, star = scene_basis(
+            scene, palette, aperture, wavelengths, delivered, corrector=corrector
+        )
         effective = focal if scale is None else focal.with_pixel(scale)
     return Train(
         wavelength=wavelength,
@@ -165,6 +182,7 @@ def assemble_train(scene: Scene) -> Train:
         basis=basis,
         star=star,
         first=first_kind(scene, palette),
+        corrector=corrector,
     )
 
 

@@ -18,9 +18,8 @@ from simimg.assembly.basis import FOLLOWED
 from simimg.assembly.brightness import photometry
 from simimg.assembly.colours import colour_keys
 from simimg.assembly.motion import drawn_out, object_trail
-from simimg.assembly.objects import object_place
 from simimg.assembly.orbits import places_at
-from simimg.assembly.places import field_geometry
+from simimg.assembly.places import field_geometry, object_place
 from simimg.assembly.train import Train, assemble_train
 from simimg.imaging.basis import Transfer
 from simimg.resolving.resolution import Directions, computable, to_arcsec

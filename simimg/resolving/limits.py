@@ -15,6 +15,7 @@ from typing import Any
 
 from simimg.assembly.atmosphere import AirFigures, air_figures
 from simimg.assembly.brightness import exposure_time, photometry
+from simimg.assembly.correction import CorrectionFigures, correction_figures
 from simimg.assembly.objects import inventory
 from simimg.assembly.train import Train, assemble_train
 from simimg.imaging.circles import encircled_diameters
@@ -56,6 +57,8 @@ class Limits:
         None without a pixel; None above the air.
     air : AirFigures or None
         Coherence time, isoplanatic angle, Fried's parameter; None above the air.
+    correction : CorrectionFigures or None
+        Error budget and Strehl ratio of the adaptive optics; None without them.
     position_angle_deg : float
         Direction in which the PSF is cut.
     diffraction, delivered : Resolution
@@ -83,6 +86,7 @@ class Limits:
     pixel_scale_arcsec: float | None
     r0_m: float | None
     air: AirFigures | None
+    correction: CorrectionFigures | None
     position_angle_deg: float
     diffraction: Resolution
     delivered: Resolution
@@ -113,6 +117,8 @@ def _plain(value: Any) -> Any:
         return value if isfinite(value) else None
     if isinstance(value, tuple):
         return [_plain(one) for one in value]
+    if isinstance(value, dict):
+        return {name: _plain(one) for name, one in value.items()}
     if isinstance(value, PairPrecision):
         return value.to_dict()
     if is_dataclass(value):
@@ -190,6 +196,7 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
         pixel_scale_arcsec=None if scale is None else to_arcsec(scale),
         r0_m=train.fried,
         air=air_figures(scene.air, train.fried),
+        correction=correction_figures(train.corrector, train.optics),
         position_angle_deg=degrees(position_angle) % 360.0,
         diffraction=of_optics,
         delivered=of_all,

@@ -8,11 +8,12 @@ weighted by light, each about the centre of its own light. Radians and detector 
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from math import atan2, degrees, hypot
+from math import atan2, degrees, hypot, inf
 
 import numpy as np
 
 from simimg.arrays import AnyArray, FloatArray
+from simimg.assembly.correction import ALIKE
 from simimg.assembly.motion import drawn_out
 from simimg.assembly.objects import Inventory
 from simimg.imaging.basis import Transfer
@@ -97,9 +98,17 @@ class StarPsfs:
         alike = found.colour[first] == found.colour[second] and found.turn == 0.0
         if alike and (found.trails[first] == found.trails[second]).all():
             step = hypot(found.x[second] - found.x[first], found.y[second] - found.y[first])
-            if step < 0.01 * min(found.geometry.columns, found.geometry.rows):
+            if step < min(0.01 * min(found.geometry.columns, found.geometry.rows), self._near):
                 return self.star(first)
         return self.star(second)
+
+    @property
+    def _near(self) -> float:
+        """Pixels within which stars behind a correction have one PSF."""
+        corrector = self.found.train.corrector
+        if corrector is None or not corrector.varies:
+            return inf
+        return ALIKE * corrector.isoplanatic_angle / self.pixel_scale
 
     def _star(self, row: int) -> Transfer:
         found, scale = self.found, self.pixel_scale

@@ -30,6 +30,7 @@ def scene_faults(scene: Scene) -> Iterator[Fault]:
     """Mistakes in how the tables of a scene go together, where each is right by itself."""
     yield from _light(scene)
     yield from _optics(scene)
+    yield from _correcting(scene)
     yield from _tracking(scene)
     yield from _trails(scene)
     yield from _magnitudes(scene)
@@ -72,6 +73,16 @@ def _optics(scene: Scene) -> Iterator[Fault]:
             ("telescope", "field", "distortion"),
             f"grows to {distortion:.3g} at the corner of the detector",
             f"write a value that stays within {MOST_DISTORTION:g} there, or a larger radius",
+        )
+
+
+def _correcting(scene: Scene) -> Iterator[Fault]:
+    air = scene.air
+    if scene.correction is not None and air is not None and air.tilt_removed is not None:
+        yield Fault(
+            ("air", "tilt_removed"),
+            "contradicts [correction], which takes the tilt away by itself",
+            "leave out tilt_removed or [correction]",
         )
 
 

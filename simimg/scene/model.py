@@ -19,6 +19,7 @@ from simimg.scene.agreement import scene_faults
 from simimg.scene.air import Air
 from simimg.scene.band import Band
 from simimg.scene.camera import Camera
+from simimg.scene.correction import Correction
 from simimg.scene.draw import Draw, DrawnKeys
 from simimg.scene.exposure import Exposure, Sky
 from simimg.scene.header import Header
@@ -60,6 +61,12 @@ class Scene(Table):
         None,
         absent="none",
         meaning="the telescope is above the atmosphere",
+    )
+    correction: Correction | None = key(
+        "Adaptive optics, which correct the air.",
+        None,
+        absent="none",
+        meaning="nothing corrects the air",
     )
     band: Band = key("The wavelengths, and the system of magnitudes.")
     camera: Camera | None = key(

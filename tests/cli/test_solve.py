@@ -4,7 +4,7 @@ import pytest
 
 
 def test_a_column_in_json(run, scene):
-    arguments = ["--for", "exposure.time", "--until", "snr=300", "--between", "5 s:50 s"]
+    arguments = ["--for", "exposure.time", "--until", "snr=300", "--between", "2 s:100 s"]
     found = run("solve", scene, *arguments, "--json", "--workers", 2)
     assert (found.code, found.err) == (0, "")
     answer = found.json
