@@ -49,6 +49,7 @@ from simimg.show.reportpictures import (
 )
 from simimg.show.reportsetup import (
     band_words,
+    correction_table,
     defaults_table,
     figures_table,
     limits_table,
@@ -251,6 +252,7 @@ def _limits(facts: Facts) -> Section:
         "What can be resolved",
         _shown(limits_table(facts)),
         _shown(figures_table(facts)),
+        _shown(correction_table(facts)),
         items(facts.limits.notes),
     )
 
@@ -263,7 +265,11 @@ def _budget(facts: Facts) -> Section:
         place = own.index(chosen.limits)
     rows = width_budget(facts.scene, facts.limits, place)
     most = largest(rows)
-    text = "No single part widens the images by more than 2 %: they are as sharp as the pupil."
+    text = (
+        "No single part widens the images by more than 2 %: they are about as sharp as the pupil."
+    )
+    if facts.scene.psf is not None:
+        text = "The PSF is one that was measured: what widens it cannot be told apart."
     if most is not None:
         text = (
             f"Of all parts the {most.part} widens the images most: without that the delivered FWHM "

@@ -172,7 +172,10 @@ def _parts(scene: Scene, train: Train) -> Iterator[tuple[str, str, Mapping[str, 
     camera, pointing = scene.camera, scene.pointing
     if scene.psf is None:
         if scene.air is not None:
-            yield "air", "no turbulence, no extinction", {"air": None}
+            nothing = {"air": None, "correction": None}
+            yield "air", "no turbulence, no extinction", nothing
+        if scene.air is not None and scene.correction is not None:
+            yield "correction of the air", "adaptive optics off", {"correction": None}
         if train.dispersion > 0.0:
             yield "refraction", "the air's colours not drawn apart", {"air.dispersion": None}
         if scene.telescope.wavefront is not None:

@@ -90,6 +90,19 @@ def figures_table(facts: Facts) -> Table:
     )
 
 
+def correction_table(facts: Facts) -> Table | None:
+    """What the adaptive optics leave of the wavefront; None without them."""
+    found = facts.limits.correction
+    if found is None:
+        return None
+    return table(
+        "correction",
+        "What the correction of the air leaves at the field centre, each cause alone",
+        (Column("cause"), Column("wavefront error", "nm rms", numbers=True)),
+        [[word(cause), number(rms, 3)] for cause, rms in found.budget_nm.items() if rms > 0.0],
+    )
+
+
 def objects_table(facts: Facts) -> Table | None:
     """How well each object is seen; None where none is listed."""
     objects = facts.limits.objects
@@ -171,6 +184,8 @@ def band_words(facts: Facts) -> str:
         scene.band.name or wavelength_text(found.wavelength_nm * 1e-9),
         "above the atmosphere" if found.r0_m is None else _seeing(facts),
     ]
+    if scene.air is not None and scene.correction is not None:
+        parts.append(f"adaptive optics of {scene.correction.actuators} actuators across")
     if found.pixel_scale_arcsec is not None:
         parts.append(f"pixels of {figures(found.pixel_scale_arcsec, 3)} arcsec")
     if scene.exposure is not None and scene.exposure.time is not None:

@@ -51,22 +51,37 @@ class View:
 
 
 def _above_the_air(scene: Scene, frame: Frame) -> View | None:  # noqa: ARG001
-    """The same telescope lifted above its air."""
+    """The same telescope lifted above its air, where nothing is to be corrected."""
     if scene.air is None or scene.psf is not None:
         return None
     remark = "The same telescope, camera, exposure and noise without the air: no turbulence, no "
     remark += "refraction, no extinction."
-    return View("above", "Above the air", remark, expose(replace(scene, {"air": None})))
+    above = replace(scene, {"air": None, "correction": None})
+    return View("above", "Above the air", remark, expose(above))
+
+
+def _uncorrected(scene: Scene, frame: Frame) -> View | None:  # noqa: ARG001
+    """The air as it comes, where the scene corrects it."""
+    if scene.air is None or scene.psf is not None or scene.correction is None:
+        return None
+    remark = "The same with the adaptive optics switched off."
+    blurred = replace(scene, {"correction": None})
+    return View("uncorrected", "In the air, uncorrected", remark, expose(blurred))
 
 
 def _in_the_air(scene: Scene, frame: Frame) -> View | None:
     """The scene as it is, where it has air."""
     if scene.air is None or scene.psf is not None:
         return None
-    return View("in-air", "In the air", "The scene as it stands: the frame of this report.", frame)
+    title = "In the air" if scene.correction is None else "In the air, corrected"
+    return View("in-air", title, "The scene as it stands: the frame of this report.", frame)
 
 
-_WAYS: tuple[Callable[[Scene, Frame], View | None], ...] = (_above_the_air, _in_the_air)
+_WAYS: tuple[Callable[[Scene, Frame], View | None], ...] = (
+    _above_the_air,
+    _uncorrected,
+    _in_the_air,
+)
 """In the order in which they are shown; each says None of a scene that it does not fit."""
 
 

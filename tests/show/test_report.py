@@ -379,6 +379,22 @@ class TestViews:
         assert View("v", "V", "V.", full).full_pixels((0, 3, 0, 3)) == 0
         assert "full" not in other.caption
 
+    def test_corrected_air_is_seen_uncorrected_too(self):
+        ways = ["correction.actuators=20", "air.seeing=0.8 arcsec"]
+        one = scene(overrides=ways)
+        frame = simimg.expose(one)
+        above, blurred, corrected = views(one, frame)
+        assert [v.key for v in (above, blurred, corrected)] == ["above", "uncorrected", "in-air"]
+        peaks = [int(v.frame.counts.max()) for v in (above, blurred, corrected)]
+        assert peaks[1] < 0.7 * peaks[2]
+        assert peaks[2] < peaks[0]
+        found = simimg.limits(one)
+        rows = {row.part: row for row in width_budget(one, found, None)}
+        plain = simimg.limits(replace(one, {"correction": None}))
+        without = rows["correction of the air"].fwhm_arcsec
+        assert without == pytest.approx(plain.delivered.fwhm_arcsec, rel=1e-6)
+        assert rows["air"].fwhm_arcsec < rows[""].fwhm_arcsec < without
+
 
 class TestFiles:
     def test_whole_or_not_at_all(self, tmp_path, made):
