@@ -29,6 +29,7 @@ FINEST_SUBDIVISION = 64
 # The gridding kernel needs twice the room; the stars' spectrum is made there once and cropped.
 _ROOM = 2
 _FAINT = 1.0e-6
+_CLOSE = 1.15
 
 
 @dataclass(frozen=True)
@@ -106,10 +107,15 @@ def plan_instants(
     pitch = pixel_scale / count
     reference = wavelengths[len(wavelengths) // 2]
     side = _fast_even(reference / (finest * pitch))
+    whole = columns * count
+    if len(wavelengths) == 1 and columns == rows and side < whole <= _CLOSE * side:
+        # A transform as long as the image needs no laying out.
+        side = whole if _fast_even(whole) == whole else side
     step = reference / (side * pitch)
     sides = tuple(2 * round(one / (2.0 * step * pitch)) for one in wavelengths)
     samples = 2 * ceil(diameter / (2.0 * step) - 1e-9)
-    half = ceil(max(sides) / (2.0 * count))
+    # The outermost two pixels of a halo may fold back: they are folded light themselves.
+    half = ceil(max(sides) / (2.0 * count)) - 2
     left, right, bottom, top = _extent(sources, columns, rows, half, pixel_scale)
     smallest = ceil(max(sides) / count)
     length_x = max(columns, columns + half - left, right + half, smallest)
@@ -263,7 +269,7 @@ class Instants:
         for pupil, ratio, side in zip(self._pupils, self._ratios, self.plan.sides, strict=True):
             total: AnyArray = np.zeros(0)
             for phase in phases:
-                turn = (ratio * phase).astype(np.float32)
+                turn = np.asarray(phase if ratio == 1.0 else ratio * phase, dtype=np.float32)
                 wave = np.zeros((pupil.shape[0], side), dtype=np.complex64)
                 part = wave[:, : pupil.shape[1]]
                 np.cos(turn, out=part.real)
@@ -302,7 +308,7 @@ class Instants:
         """The PSFs of all wavelengths added on the image's cells, each with its share."""
         n_y, n_x = self._grid
         if len(psfs) == 1 and psfs[0].shape == self._grid:
-            return np.asarray(psfs[0] * share[0])
+            return psfs[0] if share[0] == 1.0 else np.asarray(psfs[0] * share[0])
         grid = np.zeros(self._grid, dtype=np.float32)
         for psf, part in zip(psfs, share, strict=True):
             half = psf.shape[0] // 2
