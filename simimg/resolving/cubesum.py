@@ -43,6 +43,7 @@ REFERENCE_FRAMES = 400
 """Frames of the model's single star of which the best are chosen."""
 
 _SPACED = 5
+_LEAST_GAIN = 2e-6  # electrons to the count, below which a frame's gain is taken for a mistake
 
 
 def measure_cube(
@@ -94,6 +95,7 @@ def measure_cube(
     gain = settings.gain / settings.readout.em_gain
     light = max(float((frame.counts - np.median(frame.counts)).sum()) * gain, 1.0)
     share = min(air_electrons(scene, cube, frame, method=method) / light, 1.0)
+    share = max(share, min(_LEAST_GAIN / gain, 1.0))
     noise = settings.read_noise / settings.readout.em_gain * count**0.5
     given = None
     if share < 1.0:

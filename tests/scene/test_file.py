@@ -272,7 +272,7 @@ def test_a_table_is_taken_away_before_it_is_set(load):
         ("telescope", "cannot"),
         ("ari", '"air"'),
         ("vans", '"vanes"'),
-        ("correction", "one of"),
+        ("adaptation", "one of"),
         ("", "one of"),
     ],
 )
@@ -532,6 +532,7 @@ def test_defaults_used(load):
         "telescope.wavefront",
         "telescope.field",
         "air",
+        "correction",
         "band.nodes",
         "band.system",
         "camera",
