@@ -97,14 +97,14 @@ class Correction(Table):
         meaning="the band in which the sensor sees the guide star",
         when=("guide_magnitude",),
     )
-    sensor_efficiency: Annotated[
-        float, Quantity("ratio", above=0.0, at_most=1.0, sample="0.3")
-    ] = key(
-        "Photons that the sensor detects over those that reach the air above the aperture.",
-        0.3,
-        absent="0.3",
-        meaning="what air, optics and sensor let through of the guide star",
-        when=("guide_magnitude",),
+    sensor_efficiency: Annotated[float, Quantity("ratio", above=0.0, at_most=1.0, sample="0.3")] = (
+        key(
+            "Photons that the sensor detects over those that reach the air above the aperture.",
+            0.3,
+            absent="0.3",
+            meaning="what air, optics and sensor let through of the guide star",
+            when=("guide_magnitude",),
+        )
     )
     noise: Annotated[bool, Flag()] = key(
         "False: the sensor has no noise, however faint the guide star.",
