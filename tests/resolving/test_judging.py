@@ -144,9 +144,15 @@ def is_calibrated(claimed: np.ndarray, true: np.ndarray) -> bool:
 @pytest.mark.parametrize(
     "pairs",
     [
-        Pairs("rayleigh", 0.0, 6e2),
         Pairs("sparrow", 1.5, 3e3),
-        *(FULL * [Pairs("rayleigh", 1.5, 2e4, air=False), Pairs("sparrow", 0.0, 2e4)]),
+        *(
+            FULL
+            * [
+                Pairs("rayleigh", 0.0, 6e2),
+                Pairs("rayleigh", 1.5, 2e4, air=False),
+                Pairs("sparrow", 0.0, 2e4),
+            ]
+        ),
     ],
     ids=str,
 )

@@ -431,6 +431,8 @@ def test_json_keys(scene):
         "ee50_arcsec",
         "ee80_arcsec",
         "nyquist_pixel_arcsec",
+        "air",
+        "correction",
         "objects",
         "notes",
     }

@@ -276,7 +276,7 @@ def test_killed_at_any_moment_and_gone_on_with(tmp_path):
     assert whole.returncode == 0
     rng = np.random.default_rng(4)
     kills = 0
-    for _ in range(int(os.environ.get("SIMIMG_KILLS", "6"))):
+    for _ in range(int(os.environ.get("SIMIMG_KILLS", "4"))):
         process = subprocess.Popen(
             [*arguments, "--out", tmp_path / "killed"], start_new_session=True
         )
