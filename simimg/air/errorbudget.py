@@ -17,8 +17,8 @@ from math import inf, pi, sqrt
 import numpy as np
 
 from simimg.air.correction import CorrectedAir
+from simimg.air.phasespectrum import SPECTRUM
 from simimg.air.residual import (
-    SPECTRUM,
     Turbulence,
     aliased_spectrum,
     beyond_piston,

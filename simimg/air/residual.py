@@ -28,10 +28,8 @@ import numpy as np
 from scipy.special import j1, jv
 
 from simimg.air.layers import Layer
+from simimg.air.phasespectrum import phase_spectrum
 from simimg.arrays import FloatArray
-
-SPECTRUM = 0.0228956
-"""Of Kolmogorov's phase spectrum, r0^(-5/3) f^(-11/3) (Noll 1976 rounds it to 0.023)."""
 
 ALIASES = 4
 """Multiples of the sampling frequency, either way, whose power is taken for low frequencies."""
@@ -103,9 +101,7 @@ class Turbulence:
 
     def spectrum(self, f: FloatArray) -> FloatArray:
         """Power spectrum of the phase at moduli of frequency above 0."""
-        low = 0.0 if self.outer_scale == inf else self.outer_scale**-2
-        power = (np.square(f) + low) ** (-11.0 / 6.0)
-        return np.asarray(SPECTRUM * self.r0 ** (-5.0 / 3.0) * power)
+        return np.asarray(self.r0 ** (-5.0 / 3.0) * phase_spectrum(f * f, self.outer_scale))
 
 
 def residual_spectrum(

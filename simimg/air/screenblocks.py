@@ -17,10 +17,8 @@ from math import floor, pi, sqrt
 import numpy as np
 import scipy.fft
 
+from simimg.air.phasespectrum import SPECTRUM, phase_spectrum
 from simimg.arrays import AnyArray, FloatArray, frozen
-
-SPECTRUM = 0.0228956
-"""Factor of the phase power spectrum r0^(-5/3) (f^2 + 1/L0^2)^(-11/6) (Noll 1976: 0.023)."""
 
 PERIODS = 8
 """Side of a block over that of the aperture."""
@@ -36,24 +34,6 @@ def block_side(samples: int) -> int:
 
 _FINE_CELLS = 24
 _ALIASES = 2
-
-
-def phase_spectrum(f2: AnyArray, outer_scale: float) -> FloatArray:
-    """Power spectrum of the phase (rad2, r0 = 1) at squared frequency `f2`; von Karman's.
-
-    Parameters
-    ----------
-    f2 : ndarray
-        Squared modulus of the frequency, cycles per unit length squared; above 0 for an infinite
-        outer scale.
-    outer_scale : float
-        L0 in the same length, or infinity.
-
-    References
-    ----------
-    Noll, R. J. 1976, J. Opt. Soc. Am. 66, 207.
-    """
-    return np.asarray(SPECTRUM * (f2 + outer_scale**-2.0) ** (-11.0 / 6.0))
 
 
 @lru_cache(maxsize=4)

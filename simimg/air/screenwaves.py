@@ -24,7 +24,8 @@ from math import floor, pi
 import numpy as np
 from scipy.special import spherical_jn
 
-from simimg.air.screenblocks import LOWEST, block_side, phase_spectrum
+from simimg.air.phasespectrum import phase_spectrum
+from simimg.air.screenblocks import LOWEST, block_side
 from simimg.arrays import AnyArray, FloatArray
 
 ORDERS = 14

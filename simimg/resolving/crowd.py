@@ -20,7 +20,7 @@ import numpy as np
 from simimg.arrays import frozen
 from simimg.resolving.doubles import probability_single
 from simimg.resolving.layout import Layout
-from simimg.resolving.neighbours import CLEAR, PlacedStar, star_light
+from simimg.resolving.neighbours import CLEAR, PlacedStar, placed_stars, star_light
 from simimg.resolving.observation import Observation
 from simimg.resolving.secondstar import scan_second_star
 from simimg.resolving.sighting import Sighting
@@ -99,14 +99,7 @@ def look_among(
         sighting = _sighting(cutout, fit, number, known, star, count)
         if sighting is not None:
             pairs.append((number, sighting))
-    return Crowd(tuple(_placed(fit, range(len(fit.places)))), tuple(pairs))
-
-
-def _placed(fit: StarFit, numbers: Sequence[int]) -> list[PlacedStar]:
-    return [
-        PlacedStar(float(fit.places[i, 0]), float(fit.places[i, 1]), float(fit.electrons[i]))
-        for i in numbers
-    ]
+    return Crowd(tuple(placed_stars(fit)), tuple(pairs))
 
 
 def _hidden(cutout: Cutout, fit: StarFit) -> StarFit:
@@ -154,7 +147,8 @@ def _sighting(
         return None
     if fit_width(cutout, single).deviance < fit.deviance + DEARER:
         return None
-    company = _placed(fit, [i for i in rest if i > 0])
+    stars = placed_stars(fit)
+    company = [stars[i] for i in rest if i > 0]
     own = cutout.with_known(cutout.known + star_light(company, cutout))
     return Sighting(
         cutouts=(own,),

@@ -7,14 +7,12 @@ very place needs it, too, and is a single star otherwise. Electrons and detector
 
 from __future__ import annotations
 
-from math import hypot
-
 from simimg.resolving.fieldsingles import SingleStar, single_at
 from simimg.resolving.finding import FieldSearch
-from simimg.resolving.neighbours import CLEAR, PlacedStar
+from simimg.resolving.neighbours import PlacedStar
 from simimg.resolving.ownpsfs import OwnPsfs
 from simimg.resolving.sighting import Sighting, look
-from simimg.resolving.suspect import FALSE
+from simimg.resolving.suspect import is_certain
 
 
 def confirmed(own: OwnPsfs, field: FieldSearch) -> FieldSearch:
@@ -35,7 +33,7 @@ def confirmed(own: OwnPsfs, field: FieldSearch) -> FieldSearch:
         brighter = max(sighting.stars, key=lambda star: star.electrons)
         observation = own.place(brighter[:2], exact=True)
         again = look(observation, brighter[:2], known=sighting.neighbours)
-        if _sure(again, stars, observation.fwhm):
+        if is_certain(again, count=stars, fwhm=observation.fwhm):
             pairs.append(again)
             continue
         star = PlacedStar(*brighter[:2], sum(one.electrons for one in sighting.stars))
@@ -44,11 +42,3 @@ def confirmed(own: OwnPsfs, field: FieldSearch) -> FieldSearch:
             singles.append(single)
     singles.sort(key=lambda one: -float(one.point.electrons[0]))
     return FieldSearch(tuple(pairs), tuple(singles))
-
-
-def _sure(sighting: Sighting, stars: int, fwhm: float) -> bool:
-    """Whether no single star of the field is likely to look so double."""
-    double = sighting.double
-    if double is None or not sighting.probability_single < FALSE / max(stars, 1):
-        return False
-    return hypot(*(double.places[1] - double.places[0])) < 0.999 * CLEAR * fwhm

@@ -167,7 +167,7 @@ def limits(scene: Scene, *, position_angle: float = 0.5 * pi, all_stars: bool = 
         shown = inventory(scene, train=train) if scene.catalogue and not all_stars else found
         expectation = Expectation.of(scene, train, shown)
     angle = found.geometry.direction(position_angle)
-    diffraction = Directions(train.optics, dark_ring=_dark_ring(train), saddle=False)
+    diffraction = Directions(train.optics, dark_ring=dark_ring(train), saddle=False)
     effective = computable(train.effective)
     delivered, focal = Directions(effective), Directions(train.focal)
     psfs = StarPsfs(found)
@@ -220,7 +220,7 @@ def _strehl(train: Train) -> float:
     return min(1.0, psf_peak(train.focal) / psf_peak(train.perfect))
 
 
-def _dark_ring(train: Train) -> float | None:
+def dark_ring(train: Train) -> float | None:
     """First dark ring (rad) of the pupil's outline; None for a map."""
     if not train.pupil.enveloped:
         return None

@@ -19,7 +19,7 @@ from scipy import signal
 from simimg.arrays import FloatArray
 from simimg.resolving.observation import Observation
 from simimg.resolving.psfmodel import PsfModel
-from simimg.resolving.starfit import Cutout, fit_stars
+from simimg.resolving.starfit import Cutout, StarFit, fit_stars
 
 _SURE = 6.5  # standard deviations of a peak that is no chance
 _MOST = 12
@@ -33,6 +33,14 @@ class PlacedStar(NamedTuple):
     x: float
     y: float
     electrons: float
+
+
+def placed_stars(fit: StarFit) -> list[PlacedStar]:
+    """The stars of a fit, in its order."""
+    return [
+        PlacedStar(float(x), float(y), float(light))
+        for (x, y), light in zip(fit.places, fit.electrons)
+    ]
 
 
 def star_light(stars: Sequence[PlacedStar], cutout: Cutout) -> FloatArray:

@@ -20,6 +20,7 @@ from simimg.resolving.neighbours import (
     PlacedStar,
     find_neighbours,
     matched_filter,
+    placed_stars,
     star_light,
 )
 from simimg.resolving.observation import Observation
@@ -74,14 +75,7 @@ class Sighting:
     def stars(self) -> list[PlacedStar]:
         """The one or two stars that the data ask for."""
         surely = self.double is not None and self.probability_single < SURELY_DOUBLE
-        return _stars(self.double if surely and self.double is not None else self.single)
-
-
-def _stars(fit: StarFit) -> list[PlacedStar]:
-    return [
-        PlacedStar(float(x), float(y), float(light))
-        for (x, y), light in zip(fit.places, fit.electrons)
-    ]
+        return placed_stars(self.double if surely and self.double is not None else self.single)
 
 
 def look(
@@ -234,7 +228,7 @@ def _look_twice(
         if known is not None:
             break
         if attempt == 0:
-            stars = _stars(double)
+            stars = placed_stars(double)
             half = (CLEAR + 2.0 * _MARGIN) * fwhm
             neighbours = find_neighbours(observation, stars, half=half)
             neighbours += [

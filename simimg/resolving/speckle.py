@@ -31,7 +31,7 @@ from simimg.errors import InputError, mistake
 from simimg.frame import Frame
 from simimg.imaging.sources import Sources, one_point
 from simimg.resolving.fringes import Band, Fringes, fit_fringes, lopsidedness, noise_level
-from simimg.resolving.limits import _dark_ring
+from simimg.resolving.limits import dark_ring
 from simimg.resolving.measure import FrameMeasurement, named_pairs
 from simimg.resolving.pairlimits import PairLimits
 from simimg.resolving.psfquality import PsfReport
@@ -239,7 +239,7 @@ def _answer(seen: _Observed, sums: SpeckleSums, fringes: Fringes) -> FrameMeasur
     separation = length * scale
     joint = [[variance, 0.0], [0.0, spread**2]]
     train = seen.train
-    pupil = Directions(train.optics, dark_ring=_dark_ring(train), saddle=False)
+    pupil = Directions(train.optics, dark_ring=dark_ring(train), saddle=False)
     direction = atan2(dy, dx)
     rayleigh = pupil.resolution(direction).rayleigh_arcsec
     limit = PairLimits(pupil).of(direction, difference, 6.0 * min(spread, 2.0))

@@ -28,6 +28,7 @@ FALSE = 0.01
 DEARER = 4.0
 """Deviance that two parameters more must win (Akaike 1974)."""
 _FITS = 1.5  # reduced chi-square within a FWHM that point sources may leave
+_WITHIN = 0.999  # of the search disc: a star on its rim is held back by it
 _SHOWN = 10.0  # of a first screen's squared score: below this no fit can reach certainty
 
 
@@ -55,10 +56,7 @@ def pair_at(
     if not close and not _looks_double(observation, star, known, count):
         return None
     sighting = look(observation, star[:2], known=known)
-    if sighting.double is None or not sighting.probability_single < FALSE / count:
-        return None
-    apart = hypot(*(sighting.double.places[1] - sighting.double.places[0]))
-    if apart > 0.999 * CLEAR * observation.fwhm:
+    if sighting.double is None or not is_certain(sighting, count=count, fwhm=observation.fwhm):
         return None
     if not explained(sighting.cutouts, sighting.double):
         return None
@@ -70,6 +68,23 @@ def pair_at(
         if wide.deviance < sighting.double.deviance + DEARER:
             return None
     return sighting
+
+
+def is_certain(sighting: Sighting, *, count: int, fwhm: float) -> bool:
+    """Whether no single star of a field is likely to look so double, within two FWHM.
+
+    Parameters
+    ----------
+    sighting : Sighting
+    count : int
+        Stars of the frame, 1 or more.
+    fwhm : float
+        Of the PSF, pixels.
+    """
+    double = sighting.double
+    if double is None or not sighting.probability_single < FALSE / count:
+        return False
+    return hypot(*(double.places[1] - double.places[0])) <= _WITHIN * CLEAR * fwhm
 
 
 def _looks_double(
