@@ -54,7 +54,11 @@ def image_hdu(hdus: HDUList, where: str, wanted: int | str | None = None) -> Any
         axes_seen.append(axes)
     if any(axes > 2 for axes in axes_seen):
         what = f"has no 2-D image, only one of {max(axes_seen)} axes"
-        raise InputError(mistake(where, "", what, "write one of its planes to a file of its own"))
+        mend = "write one of its planes to a file of its own"
+        if any(hdu.name == "CUBE" and hdu.header.get("SIMULATE") is True for hdu in hdus):
+            # A single short exposure has not the PSF of a long one.
+            mend = "a cube of short exposures is measured by simimg measure --method speckle"
+        raise InputError(mistake(where, "", what, mend))
     if 1 in axes_seen:
         what = "has no 2-D image, only one of 1 axis"
     else:
